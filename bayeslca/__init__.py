@@ -1,0 +1,41 @@
+"""Bayesian latent class modelling for small samples of categorical answers."""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import Any
+
+_HOME = {
+    "Comparison": "bayeslca.assess.compare",
+    "Groups": "bayeslca.responses.item",
+    "Item": "bayeslca.responses.item",
+    "LatentClassModel": "bayeslca.model.latent_class_model",
+    "Posterior": "bayeslca.posterior.posterior",
+    "Responses": "bayeslca.responses.responses",
+    "compare": "bayeslca.assess.compare",
+    "compare_class_counts": "bayeslca.assess.compare",
+}
+"""Where each public name lives; loaded when first used, so that importing stays light."""
+
+__all__ = [
+    "Comparison",
+    "Groups",
+    "Item",
+    "LatentClassModel",
+    "Posterior",
+    "Responses",
+    "compare",
+    "compare_class_counts",
+]
+__version__ = "0.1.0"
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOME:
+        msg = f"module 'bayeslca' has no attribute {name!r}; it has {', '.join(__all__)}"
+        raise AttributeError(msg)
+    return getattr(import_module(_HOME[name]), name)
+
+
+def __dir__() -> list[str]:
+    return sorted([*__all__, "__version__"])

@@ -1,0 +1,1 @@
+"""Should it be believed: convergence, information criteria, comparison."""

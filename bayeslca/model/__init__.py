@@ -1,0 +1,1 @@
+"""What is assumed: classes, priors, statements, and the compiled table."""

@@ -1,0 +1,92 @@
+"""The compiled form: rows as sums of cells, cells as constant times elements of blocks.
+
+Flat arrays and nothing else; the only description of a model that engines read. For every row
+and class, p(row | class) = sum over its cells of constant x product of elements. Nearly always
+a row has one cell with one element and constant 1 (``direct_element`` then holds it: the fast
+path).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from bayeslca._typing import Bools, Floats, Ints
+
+
+@dataclass(frozen=True, eq=False)
+class Table:
+    """A latent class model as arrays.
+
+    Sizes: R rows, K classes, B blocks, E elements (all blocks laid end to end), C cells, G
+    response groups (1 when all groups share their response probabilities), A response columns
+    (all items' categories laid end to end: "fees=no", "fees=yes", ...).
+
+    Attributes
+    ----------
+    n_classes : int
+    block_start : ndarray of int64, shape (B + 1,)
+        Block b holds the elements block_start[b]:block_start[b + 1]; they sum to 1.
+    element_prior : ndarray of float64, shape (E,)
+        Dirichlet parameter of each element.
+    element_lower, element_upper : ndarray of float64, shape (E,)
+        Constant bounds; 0 and 1 where there is none.
+    order_above, order_below : ndarray of int64, shape (orders,)
+        element order_above[i] > element order_below[i].
+    cell_start : ndarray of int64, shape (R * K + 1,)
+        Cells of row r in class k are cell_start[r * K + k]:cell_start[r * K + k + 1].
+    cell_constant : ndarray of float64, shape (C,)
+    cell_element_start : ndarray of int64, shape (C + 1,)
+    cell_element : ndarray of int64
+        Elements multiplied within each cell, CSR by cell_element_start.
+    direct_element : ndarray of int64, shape (R, K)
+        The one element of a row whose one cell has constant 1; -1 otherwise.
+    response_row : ndarray of int64, shape (G, A)
+        Row of each response column in each response group.
+    item_start : ndarray of int64, shape (J + 1,)
+        Response columns of item j are item_start[j]:item_start[j + 1].
+    response_group : ndarray of int64, shape (prevalence groups,)
+        The response group of each (declared) group of cases.
+    pair_items, pair_row : see ``compile``
+        Items answered together within a class: row of each joint answer (empty when none).
+    """
+
+    n_classes: int
+    block_start: Ints
+    element_prior: Floats
+    element_lower: Floats
+    element_upper: Floats
+    order_above: Ints
+    order_below: Ints
+    cell_start: Ints
+    cell_constant: Floats
+    cell_element_start: Ints
+    cell_element: Ints
+    direct_element: Ints
+    response_row: Ints
+    item_start: Ints
+    response_group: Ints
+
+
+@dataclass(frozen=True, eq=False)
+class UnitTable:
+    """Units as the engines read them.
+
+    Attributes
+    ----------
+    row_start : ndarray of int64, shape (U + 1,)
+        Rows of unit u are row[row_start[u]:row_start[u + 1]]; a missing answer has no row.
+    row : ndarray of int64
+    count : ndarray of int64, shape (U,)
+    prevalence_row : ndarray of int64, shape (U,)
+    log_weight : ndarray of float64, shape (U, K) or (0, K)
+        Extra log weight per class (verified class: 0 and -inf); (0, K) when there is none.
+    """
+
+    row_start: Ints
+    row: Ints
+    count: Ints
+    prevalence_row: Ints
+    log_weight: Floats
+
+
+_ = Bools

@@ -1,0 +1,1 @@
+"""What was learnt: draws with names, tables, membership, storage."""

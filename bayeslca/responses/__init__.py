@@ -1,0 +1,1 @@
+"""What was observed: items, answers, and the units they collapse to."""

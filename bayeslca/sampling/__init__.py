@@ -1,0 +1,1 @@
+"""How the posterior is computed: Gibbs, NUTS, starting points, relabelling."""
