@@ -1,0 +1,1 @@
+"""A study file, and the whole job done from it."""

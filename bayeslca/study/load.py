@@ -1,0 +1,272 @@
+"""Reading a study file: TOML to a checked :class:`Study`, errors with file, line and remedy."""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cached_property
+from pathlib import Path
+from typing import Any
+
+from pydantic import BaseModel, ValidationError
+
+from bayeslca.exceptions import StudyError, near_names
+from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.responses.responses import ItemSpec, Responses
+from bayeslca.study.schema import NOT_YET, SourcedStatement, StudyFile
+
+Place = tuple[str | int, ...]
+
+
+@dataclass(frozen=True)
+class Study:
+    """A study file that was read and checked.
+
+    Attributes
+    ----------
+    path : Path
+        The file; relative paths inside it are relative to its folder.
+    text : str
+        Its text, kept with the results.
+    said : StudyFile
+        What it says, section by section.
+    """
+
+    path: Path
+    text: str
+    said: StudyFile
+
+    @cached_property
+    def responses(self) -> Responses:
+        """The answers, read as the study says."""
+        answers = self.said.answers
+        return Responses.read(
+            self.path.parent / answers.file,
+            items=[self._item_spec(name) for name in answers.items],
+            case=answers.case,
+            group=answers.group,
+            counts=answers.count,
+            keep_only=answers.keep_only or None,
+            no_answer=tuple(answers.no_answer),
+            sheet=answers.sheet,
+            header_row=answers.header_row,
+            encoding=answers.encoding,
+            separator=answers.separator,
+        )
+
+    def _item_spec(self, name: str) -> ItemSpec:
+        said = self.said.items.get(name)
+        if said is None:
+            return ItemSpec(name)
+        return ItemSpec(
+            name,
+            categories=tuple(said.categories) if said.categories else None,
+            label=said.label,
+            ordered=said.ordered,
+            yes=said.yes,
+            merge={kept: tuple(others) for kept, others in said.merge.items()},
+            no_answer=tuple(said.no_answer),
+        )
+
+    @property
+    def statements(self) -> tuple[str, ...]:
+        """The model's statements as text."""
+        return tuple(
+            said.statement if isinstance(said, SourcedStatement) else said
+            for said in self.said.model.statements
+        )
+
+    @property
+    def statement_sources(self) -> Mapping[str, str]:
+        """Where statements come from, for those that say so."""
+        return {
+            said.statement: said.source
+            for said in self.said.model.statements
+            if isinstance(said, SourcedStatement)
+        }
+
+    @cached_property
+    def model(self) -> LatentClassModel | None:
+        """The study's own model; None when the number of classes is left open."""
+        classes = self.said.model.classes
+        if classes is None:
+            return None
+        return LatentClassModel(
+            self.responses.items,
+            classes if isinstance(classes, int) else tuple(classes),
+            statements=self.statements,
+            groups=self.responses.groups,
+            statement_sources=self.statement_sources,
+        )
+
+    @cached_property
+    def shared_statements(self) -> tuple[str, ...]:
+        """Statements that speak of all classes alike, and so hold for any number of classes."""
+        return tuple(text for text in self.statements if re.search(r"\|\s*\.|P\(\s*\.", text))
+
+
+def load_study(path: str | Path) -> Study:
+    """Read and check a study file.
+
+    Parameters
+    ----------
+    path : str or Path
+        The TOML file.
+
+    Raises
+    ------
+    StudyError
+        When the file cannot be found or read, is not TOML, or says something unknown or wrong;
+        the message names file, line and key, and what to do.
+    """
+    path = Path(path)
+    text = _read_text(path)
+    try:
+        content = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        msg = f"{path.name}: not valid TOML: {error}. Text needs quotes, and each key stands once."
+        raise StudyError(msg) from None
+    _refuse_not_yet(path, text, content)
+    try:
+        said = StudyFile.model_validate(content)
+    except ValidationError as error:
+        raise StudyError(_in_words(path, text, error)) from None
+    study = Study(path, text, said)
+    _refuse_open_statements(study)
+    return study
+
+
+def _read_text(path: Path) -> str:
+    if path.is_dir():
+        msg = f"{path.name} is a folder; name the study file in it, such as {path.name}/study.toml."
+        raise StudyError(msg)
+    try:
+        return path.read_text(encoding="utf-8-sig")
+    except FileNotFoundError:
+        there = [other.name for other in path.parent.glob("*.toml")] if path.parent.is_dir() else []
+        msg = (
+            f"{path}: no such study file{near_names(path.name, there)}. "
+            "`bayeslca draft DATA -o study.toml` writes a first one."
+        )
+        raise StudyError(msg) from None
+    except (UnicodeDecodeError, OSError) as error:
+        msg = f"{path}: cannot be read as UTF-8 text ({error}). Save the study file as UTF-8."
+        raise StudyError(msg) from None
+
+
+def _refuse_not_yet(path: Path, text: str, content: Mapping[str, Any]) -> None:
+    for place, what in NOT_YET.items():
+        inside: Any = content
+        for key in place:
+            inside = inside.get(key) if isinstance(inside, Mapping) else None
+        if inside is not None:
+            msg = (
+                f"{_where(path, text, place)}: {what} are not supported in this version; they are "
+                "planned for a coming one. Take the key out to run the rest of the study."
+            )
+            raise StudyError(msg)
+
+
+def _refuse_open_statements(study: Study) -> None:
+    """Statements about named classes need the classes."""
+    if study.said.model.classes is not None:
+        return
+    open_statements = [text for text in study.statements if text not in study.shared_statements]
+    if open_statements:
+        msg = (
+            f"{_where(study.path, study.text, ('model', 'statements'))}: {open_statements[0]!r} "
+            "speaks of a class, but [model] classes is left out. Name the classes, or write "
+            "statements about all classes: P(item=answer | .)."
+        )
+        raise StudyError(msg)
+
+
+def _in_words(path: Path, text: str, error: ValidationError) -> str:
+    problems = [_problem(path, text, one) for one in error.errors()]
+    more = f" (and {len(problems) - 1} more: {'; '.join(problems[1:4])})" if problems[1:] else ""
+    return problems[0] + more
+
+
+def _problem(path: Path, text: str, one: Mapping[str, Any]) -> str:
+    place: Place = tuple(
+        part for part in one["loc"] if part not in ("str", "int", "SourcedStatement", "list[str]")
+    )
+    where = _where(path, text, place)
+    kind = one["type"]
+    if kind == "extra_forbidden":
+        known = _known_keys(place[:-1])
+        return (
+            f"{where}: unknown key {place[-1]!r}{near_names(str(place[-1]), known)}. "
+            f"Known here: {', '.join(known)}."
+        )
+    if kind == "missing":
+        return f"{where}: is missing, and a study cannot do without it. Add {place[-1]} = ..."
+    if kind == "value_error":
+        return f"{where}: {one['ctx']['error']}."
+    expected = str(one["msg"]).removeprefix("Input should be ")
+    return f"{where}: found {one['input']!r}; should be {expected}."
+
+
+def _known_keys(place: Place) -> list[str]:
+    """List the keys that a section takes, found by walking the schema."""
+    section: Any = StudyFile
+    for part in place:
+        if section is None:
+            return []
+        if isinstance(part, str) and part in section.model_fields:
+            annotation = section.model_fields[part].annotation
+            section = _section_of(annotation)
+    return list(section.model_fields) if section is not None else []
+
+
+def _section_of(annotation: Any) -> type[BaseModel] | None:
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        return annotation
+    for inner in getattr(annotation, "__args__", ()):
+        found = _section_of(inner)
+        if found is not None:
+            return found
+    return None
+
+
+def _where(path: Path, text: str, place: Place) -> str:
+    names = [str(part) for part in place if isinstance(part, str)]
+    line = _line_of(text, names)
+    at_line = f", line {line}" if line else ""
+    if len(names) > 1:
+        key = f", [{'.'.join(names[:-1])}] {names[-1]}"
+    else:
+        key = f", {names[0]}" if names else ""
+    item = "".join(f", entry {part + 1}" for part in place if isinstance(part, int))
+    return f"{path.name}{at_line}{key}{item}"
+
+
+def _line_of(text: str, names: list[str]) -> int | None:
+    """Find the line of a key, or of its section when the key is not there."""
+    if not names:
+        return None
+    lines = text.splitlines()
+    for depth in range(len(names), 0, -1):
+        header = re.compile(r"\s*\[+\s*" + r"\s*\.\s*".join(map(_key, names[:depth])) + r"\s*\]")
+        for number, line in enumerate(lines, start=1):
+            if header.match(line):
+                return _line_in_section(lines, number, names[depth:]) or number
+    return None
+
+
+def _line_in_section(lines: list[str], start: int, rest: list[str]) -> int | None:
+    if not rest:
+        return None
+    key = re.compile(r"\s*" + _key(rest[0]) + r"\s*[=.]")
+    for number in range(start, len(lines)):
+        if lines[number].lstrip().startswith("["):
+            return None
+        if key.match(lines[number]):
+            return number + 1
+    return None
+
+
+def _key(name: str) -> str:
+    return rf"[\"']?{re.escape(name)}[\"']?"

@@ -1,0 +1,159 @@
+"""What a study file may say: its sections, keys and their meaning.
+
+The file is TOML and reads like the study's protocol. Every section is one class here, every key
+one field; ``bayeslca.study.load`` turns what pydantic finds into messages with file and line.
+"""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, field_validator, model_validator
+
+
+def _as_text(value: Any) -> Any:
+    """Let whole numbers and truth values stand for category names, as TOML writes them."""
+    if isinstance(value, bool):
+        return "true" if value else "false"
+    return str(value) if isinstance(value, int) else value
+
+
+Text = Annotated[str, BeforeValidator(_as_text)]
+"""A category or a code: text, or a whole number read as its digits."""
+
+
+class _Section(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True, strict=False)
+
+
+class StudySection(_Section):
+    """What the study is about."""
+
+    title: str = "Latent class study"
+    question: str = ""
+    diagnostic: bool = False
+
+
+class AnswersSection(_Section):
+    """Where the answers are and how to read them."""
+
+    file: str
+    items: list[str] = Field(min_length=1)
+    sheet: str | int | None = None
+    header_row: int = Field(default=1, ge=1)
+    encoding: str | None = None
+    separator: str | None = None
+    keep_only: dict[str, list[Text]] = {}
+    case: str | None = None
+    group: str | None = None
+    count: str | None = None
+    no_answer: list[Text] = []
+
+    @field_validator("items")
+    @classmethod
+    def _each_once(cls, items: list[str]) -> list[str]:
+        repeated = sorted({name for name in items if items.count(name) > 1})
+        if repeated:
+            msg = f"names {repeated[0]!r} more than once; name each item once"
+            raise ValueError(msg)
+        return items
+
+
+class ItemSection(_Section):
+    """What is said of one item."""
+
+    label: str = ""
+    categories: list[Text] | None = None
+    ordered: bool = False
+    yes: Text | None = None
+    merge: dict[str, list[Text]] = {}
+    no_answer: list[Text] = []
+
+
+class SourcedStatement(_Section):
+    """A statement with the place it comes from."""
+
+    statement: str
+    source: str
+
+
+class ModelSection(_Section):
+    """The classes and what is assumed about them."""
+
+    classes: int | list[str] | None = None
+    chosen_because: str = ""
+    statements: list[str | SourcedStatement] = []
+
+    @field_validator("classes")
+    @classmethod
+    def _at_least_one(cls, classes: int | list[str] | None) -> int | list[str] | None:
+        if classes == [] or (isinstance(classes, int) and classes < 1):
+            msg = "must be a number from 1 up, or a list of names"
+            raise ValueError(msg)
+        return classes
+
+
+class ClassCountSection(_Section):
+    """Which numbers of classes are compared."""
+
+    compare: list[Annotated[int, Field(ge=1, le=20)]] = [1, 2, 3, 4, 5, 6]
+
+    @field_validator("compare")
+    @classmethod
+    def _each_once(cls, compare: list[int]) -> list[int]:
+        if len(set(compare)) != len(compare):
+            msg = "names a number of classes more than once"
+            raise ValueError(msg)
+        return sorted(compare)
+
+
+class SamplingSection(_Section):
+    """How the posterior is computed."""
+
+    seed: int = Field(default=1, ge=0)
+    sampler: Literal["auto", "gibbs", "nuts"] = "auto"
+    chains: int = Field(default=4, ge=2, le=64)
+    draws: int = Field(default=1000, ge=100)
+    ess: int = Field(default=1000, ge=100)
+    r_hat: float = Field(default=1.01, gt=1, le=1.1)
+    max_sweeps: int | None = Field(default=None, ge=1000)
+
+
+class ReportSection(_Section):
+    """What the report shows."""
+
+    interval: float = Field(default=0.95, gt=0.5, lt=1)
+    show_cases: bool = False
+
+
+class StudyFile(_Section):
+    """A whole study file."""
+
+    study: StudySection = StudySection()
+    answers: AnswersSection
+    items: dict[str, ItemSection] = {}
+    model: ModelSection = ModelSection()
+    class_count: ClassCountSection = ClassCountSection()
+    sampling: SamplingSection = SamplingSection()
+    report: ReportSection = ReportSection()
+
+    @model_validator(mode="after")
+    def _items_are_listed(self) -> StudyFile:
+        for name in self.items:
+            if name not in self.answers.items:
+                msg = (
+                    f"[items.{name}] describes an item that [answers] items does not list; "
+                    "add it there, or leave the section out"
+                )
+                raise ValueError(msg)
+        return self
+
+
+NOT_YET = {
+    ("answers", "weight"): "sampling weights",
+    ("answers", "cluster"): "clusters of a complex sample",
+    ("answers", "stratum"): "strata of a complex sample",
+    ("hypotheses",): "hypotheses",
+    ("quantities",): "quantities",
+}
+"""Keys that are known but do not work yet, with what they stand for."""
