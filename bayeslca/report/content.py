@@ -1,0 +1,122 @@
+"""What a report is made from, and the files it becomes."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from bayeslca.assess.compare import Comparison
+    from bayeslca.posterior.posterior import Posterior
+    from bayeslca.responses.responses import Responses
+
+
+@dataclass(frozen=True)
+class Change:
+    """One number that moved since the last run into the same folder.
+
+    Attributes
+    ----------
+    what : str
+        The quantity, in words ("prevalence of managed").
+    before, after : str
+        How it was and how it is, as the report would print it.
+    """
+
+    what: str
+    before: str
+    after: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class ReportContent:
+    """Everything a report is written from.
+
+    Attributes
+    ----------
+    responses : Responses
+        The answers.
+    posterior : Posterior
+        The model the answer rests on.
+    title, question : str
+        The study's title and the question it asks.
+    chosen_because : str
+        Why the study has this number of classes; empty when it does not say.
+    comparison : Comparison or None
+        Of unconstrained models with different numbers of classes; None when not done.
+    study_row : int, str or None
+        The row of ``comparison.table`` that is the model the answer rests on; None when it has
+        no row there.
+    alternatives : mapping of str to Posterior
+        Other numbers of classes that the data support as well, where the study leaves the number
+        open; each is shown beside the answer. Keys are headings ("2 classes").
+    diagnostic : bool
+        True when the items are diagnostic tests; adds the cautions that go with them.
+    interval : float
+        Level of the intervals.
+    show_cases : bool
+        True when the report may show single cases' names and answers.
+    decisions : tuple of str
+        What was decided on reading the answers (no-answer codes, merges, rows kept), a sentence
+        each.
+    seed : int or None
+    command : str
+        The command that was run, without the names of private folders.
+    study_text : str
+        The study file's text, so that the page can be reproduced from itself; empty when none.
+    versions : mapping of str to str
+        Versions of the software; filled in by ``write_report`` when empty.
+    changes : tuple of Change
+        What moved since the last run; shown when ``replaced`` is True.
+    replaced : bool
+        True when an earlier run in the same folder was replaced.
+    """
+
+    responses: Responses
+    posterior: Posterior
+    title: str = "Latent class study"
+    question: str = ""
+    chosen_because: str = ""
+    comparison: Comparison | None = None
+    study_row: int | str | None = None
+    alternatives: Mapping[str, Posterior] = field(default_factory=dict)
+    diagnostic: bool = False
+    interval: float = 0.95
+    show_cases: bool = False
+    decisions: tuple[str, ...] = ()
+    seed: int | None = None
+    command: str = ""
+    study_text: str = ""
+    versions: Mapping[str, str] = field(default_factory=dict)
+    changes: tuple[Change, ...] = ()
+    replaced: bool = False
+
+
+@dataclass(frozen=True)
+class WrittenReport:
+    """The files of a report.
+
+    Attributes
+    ----------
+    page : Path
+        ``report.html``, which needs no other file.
+    workbook : Path
+        ``tables.xlsx``: every table, and a sheet that explains every column.
+    tables : mapping of str to Path
+        ``tables/<name>.csv`` by name: ``prevalence``, ``response_probabilities``,
+        ``membership_of_patterns``, ``assignment_error``, ``separation``, ``diagnostics``,
+        ``class_counts`` (when compared), ``answers`` (what was observed), ``priors``, ``columns``
+        (what every column means).
+    figures : mapping of str to Path
+        ``figures/<name>.png`` and ``figures/<name>.svg`` by file name.
+    headline : str
+        The first sentence of the report, without mark-up.
+    """
+
+    page: Path
+    workbook: Path
+    tables: Mapping[str, Path]
+    figures: Mapping[str, Path]
+    headline: str
