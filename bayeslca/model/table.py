@@ -10,7 +10,9 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from bayeslca._typing import Bools, Floats, Ints
+import numpy as np
+
+from bayeslca._typing import Floats, Ints
 
 
 @dataclass(frozen=True, eq=False)
@@ -46,8 +48,20 @@ class Table:
         Response columns of item j are item_start[j]:item_start[j + 1].
     response_group : ndarray of int64, shape (prevalence groups,)
         The response group of each (declared) group of cases.
-    pair_items, pair_row : see ``compile``
-        Items answered together within a class: row of each joint answer (empty when none).
+    pair_item : ndarray of int64, shape (pairs, 2)
+        The two items of each pair that is answered together within a class; (0, 2) when none.
+    pair_start : ndarray of int64, shape (pairs + 1,)
+        Joint answers of pair p are columns pair_start[p]:pair_start[p + 1] of ``pair_row``, the
+        second item's category changing fastest.
+    pair_row : ndarray of int64, shape (G, joint answers)
+        Row of each joint answer in each response group. A case that answered one item of the
+        pair has that item's own row, a sum of joint cells, instead.
+
+    Notes
+    -----
+    A row without a cell in a class has probability 0 there; a cell without elements is its
+    constant (a known probability). Rows of different response groups are one row where the
+    groups share all of its cells.
     """
 
     n_classes: int
@@ -65,6 +79,70 @@ class Table:
     response_row: Ints
     item_start: Ints
     response_group: Ints
+    pair_item: Ints
+    pair_start: Ints
+    pair_row: Ints
+
+    @property
+    def n_rows(self) -> int:
+        """Number of rows, R."""
+        return int(self.direct_element.shape[0])
+
+    @property
+    def n_elements(self) -> int:
+        """Number of elements of all blocks, E."""
+        return int(self.element_prior.size)
+
+    @property
+    def n_blocks(self) -> int:
+        """Number of blocks, B."""
+        return int(self.block_start.size) - 1
+
+    @property
+    def n_items(self) -> int:
+        """Number of items, J."""
+        return int(self.item_start.size) - 1
+
+    @property
+    def n_response_groups(self) -> int:
+        """Number of response groups, G."""
+        return int(self.response_row.shape[0])
+
+    @property
+    def n_prevalence_rows(self) -> int:
+        """Number of prevalence rows: one per group of cases."""
+        return int(self.response_group.size)
+
+    @property
+    def is_direct(self) -> bool:
+        """True when every row is one element in every class (the fast path throughout)."""
+        return bool(np.all(self.direct_element >= 0))
+
+    @property
+    def is_bounded(self) -> bool:
+        """True when an element has a bound or an order."""
+        inside = np.any(self.element_lower > 0) or np.any(self.element_upper < 1)
+        return bool(inside or self.order_above.size)
+
+    @property
+    def element_block(self) -> Ints:
+        """Block of each element, shape (E,)."""
+        return np.repeat(np.arange(self.n_blocks), np.diff(self.block_start))
+
+    def cells(self, row: int, latent_class: int) -> tuple[tuple[float, tuple[int, ...]], ...]:
+        """Return the (constant, elements) cells of a row in a class."""
+        at = row * self.n_classes + latent_class
+        return tuple(
+            (
+                float(self.cell_constant[c]),
+                tuple(
+                    self.cell_element[
+                        self.cell_element_start[c] : self.cell_element_start[c + 1]
+                    ].tolist()
+                ),
+            )
+            for c in range(self.cell_start[at], self.cell_start[at + 1])
+        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -88,5 +166,12 @@ class UnitTable:
     prevalence_row: Ints
     log_weight: Floats
 
+    @property
+    def n_units(self) -> int:
+        """Number of units, U."""
+        return int(self.count.size)
 
-_ = Bools
+    @property
+    def n_cases(self) -> int:
+        """Number of cases."""
+        return int(np.sum(self.count))

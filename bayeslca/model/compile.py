@@ -1,0 +1,116 @@
+"""From a model and responses to the arrays that engines read."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca._typing import Floats, Ints
+from bayeslca.model.table import Table, UnitTable
+from bayeslca.model.table_builder import TableBuilder
+from bayeslca.responses.units import MISSING, Units
+
+if TYPE_CHECKING:
+    from bayeslca.model.latent_class_model import LatentClassModel
+
+
+def compile_table(model: LatentClassModel) -> Table:
+    """Compile a model: a block of its own for each item and class, with its stated prior.
+
+    Prevalences have a row per group; the groups share the response probabilities.
+    """
+    n_groups = len(model.groups.levels) if model.groups else 1
+    builder = TableBuilder(
+        [item.n_categories for item in model.items], model.n_classes, (0,) * n_groups
+    )
+    for j in range(len(model.items)):
+        for k in range(model.n_classes):
+            builder.set_item(0, j, k, builder.block(model.response_prior(j, k)))
+    return builder.build()
+
+
+def compile_units(table: Table, units: Units, log_weight: Floats | None = None) -> UnitTable:
+    """Find the rows of each unit's answers.
+
+    A missing answer has no row. Of a pair that is answered together, both answers are one joint
+    row, and a single answer is its own row.
+
+    Parameters
+    ----------
+    table : Table
+    units : Units
+    log_weight : ndarray, shape (U, K), optional
+        Extra log weight of each unit in each class; see ``split_units``.
+    """
+    group = np.asarray(units.group, dtype=np.int64)
+    response_group = table.response_group[group]
+    rows = np.full(units.pattern.shape, -1, dtype=np.int64)
+    for j in range(table.n_items):
+        code = units.pattern[:, j].astype(np.int64)
+        at = np.flatnonzero(code != MISSING)
+        rows[at, j] = table.response_row[response_group[at], table.item_start[j] + code[at]]
+    for pair, (first, second) in enumerate(table.pair_item):
+        one, two = units.pattern[:, first].astype(np.int64), units.pattern[:, second]
+        at = np.flatnonzero((one != MISSING) & (two != MISSING))
+        n_second = table.item_start[second + 1] - table.item_start[second]
+        joint = table.pair_start[pair] + one[at] * n_second + two[at]
+        rows[at, first] = table.pair_row[response_group[at], joint]
+        rows[at, second] = -1
+    has_row = rows >= 0
+    return UnitTable(
+        row_start=np.concatenate([[0], np.cumsum(has_row.sum(axis=1))]).astype(np.int64),
+        row=rows[has_row],
+        count=np.asarray(units.count, dtype=np.int64),
+        prevalence_row=group,
+        log_weight=np.zeros((0, table.n_classes)) if log_weight is None else log_weight,
+    )
+
+
+def verified_log_weight(verified: Ints, n_classes: int) -> Floats:
+    """Return the extra log weight (row, K) of rows whose class is known.
+
+    Parameters
+    ----------
+    verified : ndarray of int, shape (row,)
+        The class of each row, -1 where it is not known.
+    n_classes : int
+    """
+    classes = np.arange(n_classes)
+    may_be = (verified[:, None] < 0) | (verified[:, None] == classes)
+    return np.where(may_be, 0.0, -np.inf)
+
+
+def split_units(units: Units, counts: Ints, log_weight: Floats) -> tuple[Units, Floats]:
+    """Split units whose rows differ in their extra log weight.
+
+    Parameters
+    ----------
+    units : Units
+    counts : ndarray of int, shape (row,)
+        Cases per row of the responses.
+    log_weight : ndarray, shape (row, K)
+
+    Returns
+    -------
+    Units
+        Distinct combinations of unit and log weight.
+    ndarray, shape (U, K)
+        Their log weight, for ``compile_units``.
+    """
+    used = np.flatnonzero(units.unit_of_row >= 0)
+    parent = units.unit_of_row[used]
+    key = np.column_stack([parent.astype(np.float64), log_weight[used]])
+    _, first, split = np.unique(key, axis=0, return_index=True, return_inverse=True)
+    split = split.reshape(-1)
+    unit_of_row = np.full(units.unit_of_row.shape, -1, dtype=np.int64)
+    unit_of_row[used] = split
+    count = np.zeros(first.size, dtype=np.int64)
+    np.add.at(count, split, counts[used])
+    out = Units(
+        pattern=units.pattern[parent[first]],
+        group=units.group[parent[first]],
+        count=count,
+        unit_of_row=unit_of_row,
+    )
+    return out, log_weight[used][first]
