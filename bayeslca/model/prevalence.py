@@ -6,6 +6,7 @@ hierarchical prior can take the place of a Dirichlet per group without touching 
 
 from __future__ import annotations
 
+from collections.abc import Hashable
 from dataclasses import dataclass
 from typing import Any, Protocol
 
@@ -42,6 +43,10 @@ class PrevalenceSource(Protocol):
 
     def predict(self, prevalence: Floats, row: int) -> Floats:
         """Return the prevalences (..., K) of a new case in a prevalence row."""
+        ...
+
+    def class_key(self, row: int, latent_class: int) -> Hashable:
+        """Return what must be equal for two classes of a row to be exchangeable in the prior."""
         ...
 
     def is_invariant(self, permutation: Ints) -> bool:
@@ -93,6 +98,10 @@ class DirichletPrevalence:
         """Return the prevalences (..., K) of a new case in a prevalence row."""
         return prevalence[..., row, :]
 
+    def class_key(self, row: int, latent_class: int) -> Hashable:
+        """Return what must be equal for two classes of a row to be exchangeable in the prior."""
+        return float(self.concentration[row, latent_class])
+
     def is_invariant(self, permutation: Ints) -> bool:
         """Tell whether the prior is unchanged by a permutation (row, K) of the classes."""
         moved = np.take_along_axis(self.concentration, np.asarray(permutation), axis=1)
@@ -109,8 +118,9 @@ class DirichletPrevalence:
             ``("latent_class",)`` or ``("group", "latent_class")``.
         """
         import pymc as pm
+        import pytensor.tensor as pt
 
         a = self.concentration[0] if len(dims) == 1 else self.concentration
         if self.n_classes == 1:  # a simplex of one: nothing to sample
-            return pm.Deterministic(name, pm.math.constant(np.ones_like(a)), dims=dims)
+            return pm.Deterministic(name, pt.as_tensor_variable(np.ones_like(a)), dims=dims)
         return pm.Dirichlet(name, a=a, dims=dims)
