@@ -7,6 +7,8 @@ from typing import Any, TypeVar, cast
 
 import numba
 
+SETTINGS: dict[str, Any] = {"nogil": True, "error_model": "numpy", "boundscheck": False}
+
 Function = TypeVar("Function", bound=Callable[..., Any])
 
 
@@ -17,5 +19,19 @@ def compiled(function: Function) -> Function:
     ``fastmath`` stays off. numba's cache looks at a file's own time only, so a change in a file
     of compiled functions that others call needs their caches removed too.
     """
-    decorate = numba.njit(nogil=True, cache=True, error_model="numpy", boundscheck=False)
+    return cast(Function, numba.njit(cache=True, **SETTINGS)(function))
+
+
+def compiled_inline(function: Function) -> Function:
+    """Compile like `compiled`, and write the body into every compiled caller.
+
+    For functions that take a `Layout`: handing such a tuple over counts references to each of
+    its arrays, which costs as much as two dozen random numbers.
+    """
+    return cast(Function, numba.njit(cache=True, inline="always", **SETTINGS)(function))
+
+
+def compiled_part(function: Function) -> Function:
+    """Compile a function that only compiled functions call: no entry from Python is built."""
+    decorate = numba.njit(no_cpython_wrapper=True, no_cfunc_wrapper=True, **SETTINGS)
     return cast(Function, decorate(function))

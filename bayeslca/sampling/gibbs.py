@@ -7,7 +7,7 @@ functions.
 
 A sweep costs less than twice its random numbers because units share parts (see
 `bayeslca.sampling.layout`) and because weights are products, not sums of logs; a unit whose
-product falls below 1e-280 is done again in logs.
+product falls below 1e-100 is done again in logs.
 """
 
 from __future__ import annotations
@@ -17,18 +17,19 @@ import math
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.sampling.compiled import compiled
+from bayeslca.sampling.cells import count_general_rows, general_rows
+from bayeslca.sampling.compiled import compiled, compiled_inline, compiled_part
 from bayeslca.sampling.layout import Layout, Workspace
-from bayeslca.sampling.split import draw_shares, pick, split_count
+from bayeslca.sampling.split import CASE_BY_CASE, draw_shares, pick, split_count
 
-TOO_SMALL = 1e-280
-"""Below it a product of probabilities may have lost digits to underflow."""
+TOO_SMALL = 1e-100
+"""A unit whose product of probabilities is below this is done again in logs."""
 
 LOG_NOW = 1e-200
 """A running product of likelihoods is turned into a log when it falls below this."""
 
 
-@compiled
+@compiled_inline
 def sweep(
     layout: Layout,
     work: Workspace,
@@ -61,11 +62,11 @@ def sweep(
     if math.isnan(log_likelihood):
         return log_likelihood
     draw_blocks(layout, work, elements, rng)
-    draw_prevalence(concentration, work, prevalence, rng)
+    draw_prevalence(layout, work, concentration, prevalence, rng)
     return log_likelihood
 
 
-@compiled
+@compiled_inline
 def allocate(
     layout: Layout,
     work: Workspace,
@@ -76,38 +77,67 @@ def allocate(
     """Split every unit's cases over the classes, and count what that gives.
 
     Leaves ``work.element_parameter`` (prior plus counts), ``work.class_count`` and, on request,
-    ``work.unit_count`` and ``work.unit_log_probability``. Returns the log likelihood, nan when
+    ``work.unit_count`` and ``unit_log_probability``. Returns the log likelihood, nan when
     a unit is impossible.
     """
-    _rows_from_elements(layout, work, elements)
-    _parts_from_rows(layout, work)
-    log_likelihood = _split_units(layout, work, prevalence, rng)
-    _rows_from_parts(layout, work)
-    _elements_from_rows(layout, work, elements, rng)
+    _rows_from_elements(layout.direct_element, elements, work.row_probability)
+    if layout.general.shape[0]:
+        general_rows(layout, work, elements)
+    _parts_from_rows(
+        layout.part_start, layout.part_row, work.row_probability, work.part_probability
+    )
+    log_likelihood = layout.log_shift + _split_units(
+        layout.unit_part,
+        layout.cases,
+        layout.prevalence_row,
+        layout.weight,
+        layout.log_weight,
+        layout.shift,
+        layout.part_start,
+        layout.part_row,
+        work.row_probability,
+        work.part_probability,
+        prevalence,
+        work.weights,
+        work.cumulative,
+        work.numbers,
+        work.part_count,
+        work.class_count,
+        work.unit_count,
+        work.unit_log_probability,
+        rng,
+    )
+    _rows_from_parts(layout.part_start, layout.part_row, work.part_count, work.row_count)
+    _elements_from_rows(
+        layout.direct_element, layout.element_prior, work.row_count, work.element_parameter
+    )
+    if layout.general.shape[0]:
+        count_general_rows(layout, work, elements, rng)
     return log_likelihood
 
 
-@compiled
+@compiled_inline
 def draw_blocks(
     layout: Layout, work: Workspace, elements: Floats, rng: np.random.Generator
 ) -> None:
     """Draw every block from its Dirichlet given the counts that `allocate` left."""
-    for b in range(layout.block_start.shape[0] - 1):
-        draw_shares(
-            work.element_parameter, layout.block_start[b], layout.block_start[b + 1], elements, rng
-        )
+    draw_shares(layout.block_start, work.element_parameter, elements, rng)
 
 
-@compiled
+@compiled_inline
 def draw_prevalence(
-    concentration: Floats, work: Workspace, prevalence: Floats, rng: np.random.Generator
+    layout: Layout,
+    work: Workspace,
+    concentration: Floats,
+    prevalence: Floats,
+    rng: np.random.Generator,
 ) -> None:
     """Draw each prevalence row from its Dirichlet given the counts that `allocate` left."""
     n_classes = prevalence.shape[1]
     for g in range(prevalence.shape[0]):
         for k in range(n_classes):
-            work.weights[k] = concentration[g, k] + work.class_count[g, k]
-        draw_shares(work.weights, 0, n_classes, prevalence[g], rng)
+            work.class_parameter[g * n_classes + k] = concentration[g, k] + work.class_count[g, k]
+    draw_shares(layout.class_start, work.class_parameter, prevalence.reshape(-1), rng)
 
 
 @compiled
@@ -234,182 +264,157 @@ def run_sweeps(
     return 0
 
 
-@compiled
-def _rows_from_elements(layout: Layout, work: Workspace, elements: Floats) -> None:
-    direct = layout.direct_element
-    out = work.row_probability
+@compiled_part
+def _rows_from_elements(direct: Ints, elements: Floats, row_probability: Floats) -> None:
     for r in range(direct.shape[0]):
         for k in range(direct.shape[1]):
-            out[r, k] = elements[max(direct[r, k], 0)] if direct[r, k] >= 0 else 0.0
-    for i in range(layout.general.shape[0]):
-        r, k = layout.general[i, 0], layout.general[i, 1]
-        cells = layout.cell_start[r * direct.shape[1] + k : r * direct.shape[1] + k + 2]
-        for c in range(cells[0], cells[1]):
-            out[r, k] += _cell_probability(layout, c, elements)
+            row_probability[r, k] = elements[max(direct[r, k], 0)]
 
 
-@compiled
-def _cell_probability(layout: Layout, cell: int, elements: Floats) -> float:
-    product = layout.cell_constant[cell]
-    for i in range(layout.cell_element_start[cell], layout.cell_element_start[cell + 1]):
-        product *= elements[layout.cell_element[i]]
-    return float(product)
+@compiled_part
+def _parts_from_rows(
+    part_start: Ints, part_row: Ints, row_probability: Floats, part_probability: Floats
+) -> None:
+    for s in range(part_probability.shape[0]):
+        part_probability[s] = 1.0
+        for i in range(part_start[s], part_start[s + 1]):
+            r = part_row[i]
+            for k in range(part_probability.shape[1]):
+                part_probability[s, k] *= row_probability[r, k]
 
 
-@compiled
-def _parts_from_rows(layout: Layout, work: Workspace) -> None:
-    n_classes = work.row_probability.shape[1]
-    for s in range(work.part_probability.shape[0]):
-        for k in range(n_classes):
-            work.part_probability[s, k] = 1.0
-            work.part_count[s, k] = 0
-        for i in range(layout.part_start[s], layout.part_start[s + 1]):
-            r = layout.part_row[i]
-            for k in range(n_classes):
-                work.part_probability[s, k] *= work.row_probability[r, k]
-
-
-@compiled
+@compiled_part
 def _split_units(
-    layout: Layout, work: Workspace, prevalence: Floats, rng: np.random.Generator
+    unit_part: Ints,
+    all_cases: Ints,
+    prevalence_row: Ints,
+    extra: Floats,
+    log_extra: Floats,
+    shift: Floats,
+    part_start: Ints,
+    part_row: Ints,
+    row_probability: Floats,
+    part_probability: Floats,
+    prevalence: Floats,
+    weights: Floats,
+    cumulative: Floats,
+    numbers: Ints,
+    part_count: Ints,
+    class_count: Ints,
+    unit_count: Ints,
+    unit_log_probability: Floats,
+    rng: np.random.Generator,
 ) -> float:
-    """Split all units; return the log likelihood, nan when a unit is impossible."""
+    """Split all units; return the log likelihood, nan when a unit is impossible.
+
+    Takes single arrays: handing over the tuples costs as much as two dozen random numbers.
+    """
     n_classes = prevalence.shape[1]
-    n_chunks = layout.unit_part.shape[1]
-    weights, numbers = work.weights, work.numbers
-    weighted = layout.weight.shape[0] > 0
-    keep = work.unit_count.shape[0] > 0
-    log_likelihood = layout.log_shift
+    n_chunks = unit_part.shape[1]
+    weighted = extra.shape[0] > 0
+    keep = unit_count.shape[0] > 0
+    log_likelihood = 0.0
     running = 1.0
-    work.class_count[:] = 0
-    for u in range(layout.cases.shape[0]):
-        g = layout.prevalence_row[u]
+    class_count[:] = 0
+    part_count[:] = 0
+    for u in range(all_cases.shape[0]):
+        g = prevalence_row[u]
         for k in range(n_classes):
             weights[k] = prevalence[g, k]
         for h in range(n_chunks):
-            s = layout.unit_part[u, h]
+            s = unit_part[u, h]
             for k in range(n_classes):
-                weights[k] *= work.part_probability[s, k]
+                weights[k] *= part_probability[s, k]
         if weighted:
             for k in range(n_classes):
-                weights[k] *= layout.weight[u, k]
-        total = 0.0
-        for k in range(n_classes):
-            total += weights[k]
+                weights[k] *= extra[u, k]
+        total = _accumulate(weights, cumulative)
         rescued = 0.0
         if total < TOO_SMALL:
-            rescued = _weights_in_logs(layout, work, prevalence, u)
+            for k in range(n_classes):
+                weights[k] = math.log(prevalence[g, k])
+                if weighted:
+                    weights[k] += log_extra[u, k] - shift[u]
+            for h in range(n_chunks):
+                s = unit_part[u, h]
+                _add_logs(part_row[part_start[s] : part_start[s + 1]], row_probability, weights)
+            rescued = _out_of_logs(weights)
             if rescued == -math.inf:
                 return math.nan
-            total = 0.0
-            for k in range(n_classes):
-                total += weights[k]
-        count = layout.cases[u]
-        if keep:
-            work.unit_log_probability[u] = math.log(total) + rescued
-            if weighted:
-                work.unit_log_probability[u] += layout.shift[u]
-        if count == 1 and not keep:
-            running *= total
-            log_likelihood += rescued
-            if running < LOG_NOW or running > 1.0 / LOG_NOW:
-                log_likelihood += math.log(running)
-                running = 1.0
-            k = pick(weights, total, rng)
-            work.class_count[g, k] += 1
-            for h in range(n_chunks):
-                work.part_count[layout.unit_part[u, h], k] += 1
+            total = _accumulate(weights, cumulative)
+        cases = all_cases[u]
+        if cases <= CASE_BY_CASE and not keep:
+            log_likelihood += cases * rescued
+            for _ in range(cases):
+                running *= total
+                if running < LOG_NOW:
+                    log_likelihood += math.log(running)
+                    running = 1.0
+                k = pick(cumulative, rng)
+                class_count[g, k] += 1
+                for h in range(n_chunks):
+                    part_count[unit_part[u, h], k] += 1
             continue
-        log_likelihood += count * (math.log(total) + rescued)
-        split_count(count, weights, total, numbers, rng)
+        log_probability = math.log(total) + rescued
+        log_likelihood += cases * log_probability
+        split_count(cases, weights, cumulative, numbers, rng)
         for k in range(n_classes):
-            work.class_count[g, k] += numbers[k]
-            if keep:
-                work.unit_count[u, k] = numbers[k]
+            class_count[g, k] += numbers[k]
         for h in range(n_chunks):
-            s = layout.unit_part[u, h]
+            s = unit_part[u, h]
             for k in range(n_classes):
-                work.part_count[s, k] += numbers[k]
+                part_count[s, k] += numbers[k]
+        if keep:
+            unit_log_probability[u] = log_probability + (shift[u] if weighted else 0.0)
+            unit_count[u] = numbers
     return log_likelihood + math.log(running)
 
 
-@compiled
-def _weights_in_logs(layout: Layout, work: Workspace, prevalence: Floats, u: int) -> float:
-    """Set the weights of a unit whose products underflow, the largest to 1; return its log."""
-    n_classes = prevalence.shape[1]
+@compiled_part
+def _accumulate(weights: Floats, cumulative: Floats) -> float:
+    """Set the cumulative sums of the weights; return the last."""
+    total = 0.0
+    for k in range(weights.shape[0]):
+        total += weights[k]
+        cumulative[k] = total
+    return total
+
+
+@compiled_part
+def _add_logs(rows: Ints, row_probability: Floats, weights: Floats) -> None:
+    for r in rows:
+        for k in range(weights.shape[0]):
+            weights[k] += math.log(row_probability[r, k])
+
+
+@compiled_part
+def _out_of_logs(weights: Floats) -> float:
+    """Turn log weights into weights, the largest 1; return its log (-inf when all are 0)."""
     highest = -math.inf
-    for k in range(n_classes):
-        log_weight = math.log(prevalence[layout.prevalence_row[u], k])
-        if layout.log_weight.shape[0]:
-            log_weight += layout.log_weight[u, k] - layout.shift[u]
-        for h in range(layout.unit_part.shape[1]):
-            s = layout.unit_part[u, h]
-            for i in range(layout.part_start[s], layout.part_start[s + 1]):
-                log_weight += math.log(work.row_probability[layout.part_row[i], k])
-        work.weights[k] = log_weight
-        highest = max(highest, log_weight)
-    if highest == -math.inf:
-        return highest
-    for k in range(n_classes):
-        work.weights[k] = math.exp(work.weights[k] - highest)
+    for k in range(weights.shape[0]):
+        highest = max(highest, weights[k])
+    if highest > -math.inf:
+        for k in range(weights.shape[0]):
+            weights[k] = math.exp(weights[k] - highest)
     return highest
 
 
-@compiled
-def _rows_from_parts(layout: Layout, work: Workspace) -> None:
-    work.row_count[:] = 0
-    for s in range(work.part_count.shape[0]):
-        for i in range(layout.part_start[s], layout.part_start[s + 1]):
-            r = layout.part_row[i]
-            for k in range(work.part_count.shape[1]):
-                work.row_count[r, k] += work.part_count[s, k]
+@compiled_part
+def _rows_from_parts(part_start: Ints, part_row: Ints, part_count: Ints, row_count: Ints) -> None:
+    row_count[:] = 0
+    for s in range(part_count.shape[0]):
+        for i in range(part_start[s], part_start[s + 1]):
+            r = part_row[i]
+            for k in range(part_count.shape[1]):
+                row_count[r, k] += part_count[s, k]
 
 
-@compiled
+@compiled_part
 def _elements_from_rows(
-    layout: Layout, work: Workspace, elements: Floats, rng: np.random.Generator
+    direct: Ints, prior: Floats, row_count: Ints, element_parameter: Floats
 ) -> None:
-    """Add the rows' counts to the elements; a row of several cells is split over them first."""
-    direct = layout.direct_element
-    n_classes = direct.shape[1]
-    parameter = work.element_parameter
-    parameter[:] = layout.element_prior
+    element_parameter[:] = prior
     for r in range(direct.shape[0]):
-        for k in range(n_classes):
+        for k in range(direct.shape[1]):
             if direct[r, k] >= 0:
-                parameter[direct[r, k]] += work.row_count[r, k]
-    for i in range(layout.general.shape[0]):
-        r, k = layout.general[i, 0], layout.general[i, 1]
-        count = work.row_count[r, k]
-        if count:
-            first = layout.cell_start[r * n_classes + k]
-            n_cells = layout.cell_start[r * n_classes + k + 1] - first
-            _count_cells(layout, work, elements, first, n_cells, count, rng)
-
-
-@compiled
-def _count_cells(
-    layout: Layout,
-    work: Workspace,
-    elements: Floats,
-    first: int,
-    n_cells: int,
-    count: int,
-    rng: np.random.Generator,
-) -> None:
-    total = 0.0
-    for c in range(n_cells):
-        work.cells[c] = _cell_probability(layout, first + c, elements)
-        total += work.cells[c]
-    left = count
-    for c in range(n_cells):
-        taken = left
-        if c < n_cells - 1 and left > 0:
-            share = work.cells[c] / total if total > 0.0 else 0.0
-            taken = left if share >= 1.0 else rng.binomial(left, max(share, 0.0))
-            total -= work.cells[c]
-        left -= taken
-        for i in range(
-            layout.cell_element_start[first + c], layout.cell_element_start[first + c + 1]
-        ):
-            work.element_parameter[layout.cell_element[i]] += taken
+                element_parameter[direct[r, k]] += row_count[r, k]

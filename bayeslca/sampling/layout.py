@@ -47,8 +47,8 @@ class Layout(NamedTuple):
     shift : ndarray of float64, shape (U,) or (0,)
     unit : ndarray of int64, shape (U,)
         Position in the unit table of each unit of the layout.
-    groups : int
-        Number of prevalence rows.
+    class_start : ndarray of int64, shape (groups + 1,)
+        Where each prevalence row starts when they are laid end to end.
     """
 
     block_start: Ints
@@ -73,7 +73,12 @@ class Layout(NamedTuple):
     log_shift: float
     shift: Floats
     unit: Ints
-    groups: int
+    class_start: Ints
+
+    @property
+    def groups(self) -> int:
+        """Number of prevalence rows."""
+        return self.class_start.size - 1
 
 
 class Workspace(NamedTuple):
@@ -93,9 +98,11 @@ class Workspace(NamedTuple):
         Cases of each unit per class, after `allocate`; (0, K) when nobody asked for it.
     unit_log_probability : ndarray of float64, shape (U,) or (0,)
         log p(unit) with the class summed out, likewise on request.
-    weights : ndarray of float64, shape (K,)
+    class_parameter : ndarray of float64, shape (groups * K,)
+    weights, cumulative : ndarray of float64, shape (K,)
     numbers : ndarray of int64, shape (K,)
-    cells : ndarray of float64
+    cells, cell_cumulative : ndarray of float64
+    cell_numbers : ndarray of int64
     swap_elements : ndarray of float64, shape (E,)
     swap_prevalence : ndarray of float64, shape (groups, K)
     """
@@ -108,9 +115,13 @@ class Workspace(NamedTuple):
     class_count: Ints
     unit_count: Ints
     unit_log_probability: Floats
+    class_parameter: Floats
     weights: Floats
+    cumulative: Floats
     numbers: Ints
     cells: Floats
+    cell_cumulative: Floats
+    cell_numbers: Ints
     swap_elements: Floats
     swap_prevalence: Floats
 
@@ -168,7 +179,7 @@ def arrange(table: Table, units: UnitTable, groups: int) -> Layout:
         log_shift=float(cases @ shift) if shift.size else 0.0,
         shift=shift,
         unit=_integers(order),
-        groups=groups,
+        class_start=np.arange(groups + 1, dtype=np.int64) * table.n_classes,
     )
 
 
@@ -194,9 +205,13 @@ def workspace(layout: Layout, *, keep_units: bool = False) -> Workspace:
         class_count=np.zeros((layout.groups, n_classes), dtype=np.int64),
         unit_count=np.zeros((n_units, n_classes), dtype=np.int64),
         unit_log_probability=np.zeros(n_units),
+        class_parameter=np.zeros(layout.groups * n_classes),
         weights=np.zeros(n_classes),
+        cumulative=np.zeros(n_classes),
         numbers=np.zeros(n_classes, dtype=np.int64),
         cells=np.zeros(most_cells),
+        cell_cumulative=np.zeros(most_cells),
+        cell_numbers=np.zeros(most_cells, dtype=np.int64),
         swap_elements=np.zeros(layout.element_prior.size),
         swap_prevalence=np.zeros((layout.groups, n_classes)),
     )
