@@ -1,0 +1,107 @@
+"""What every column of every table means: heads in words, and one line that explains each."""
+
+from __future__ import annotations
+
+from typing import Literal, NamedTuple
+
+Kind = Literal["text", "share", "count", "number", "flag"]
+
+
+class Column(NamedTuple):
+    """A column of a table.
+
+    Attributes
+    ----------
+    words : str
+        Its head on the page and in the workbook.
+    gloss : str
+        One line that explains it.
+    kind : str
+        How its values are written.
+    """
+
+    words: str
+    gloss: str
+    kind: Kind
+
+
+_STATISTICS = {
+    "median": Column("Median", "half of the posterior lies below it", "number"),
+    "mean": Column("Mean", "average over the posterior", "number"),
+    "sd": Column("Spread", "standard deviation of the posterior", "number"),
+    "lower": Column("From", "lower end of the interval", "number"),
+    "upper": Column("To", "upper end of the interval", "number"),
+    "mcse": Column(
+        "Simulation error", "Monte Carlo standard error of the mean; small beside the spread",
+        "number",
+    ),
+    "ess_bulk": Column(
+        "Independent draws, middle", "effective sample size of the mean; 1,000 or more is ample",
+        "count",
+    ),
+    "ess_tail": Column(
+        "Independent draws, tails", "effective sample size of the interval's ends", "count"
+    ),
+    "r_hat": Column("R-hat", "1 when chains agree; above 1.01 they do not", "number"),
+}  # fmt: skip
+
+COLUMNS: dict[str, Column] = {
+    "latent_class": Column("Class", "the class that the row is about", "text"),
+    "assigned_class": Column("Placed in", "the most probable class given the answers", "text"),
+    "item": Column("Item", "the item's name in the data", "text"),
+    "label": Column("Text", "the item's text", "text"),
+    "category": Column("Answer", "one of the item's possible answers", "text"),
+    "group": Column("Group", "the group of cases", "text"),
+    "quantity": Column("Quantity", "what the row is about", "text"),
+    "case": Column("Case", "the case's name in the data", "text"),
+    "cases": Column("Cases", "number of cases", "count"),
+    "count": Column("Cases", "number of cases", "count"),
+    "share": Column("Share", "part of all, between 0 and 1", "share"),
+    **_STATISTICS,
+    "prior": Column("Prior", "what was assumed before the answers", "text"),
+    "prior_mean": Column("Prior mean", "expected before the answers", "share"),
+    "prior_lower": Column("Prior from", "lower end of the prior's interval", "share"),
+    "prior_upper": Column("Prior to", "upper end of the prior's interval", "share"),
+    "prior_cases": Column(
+        "Weight", "the cases that the prior counts for (sum of its parameters)", "number"
+    ),
+    "prior_share": Column(
+        "Share of the prior",
+        "weight over weight plus the expected cases that answered; above half, the prior rules",
+        "share",
+    ),
+    "statement": Column("Stated as", "the statement in the study, empty for a default", "text"),
+    "source": Column("Source", "where the prior comes from, as the study says", "text"),
+    "elpd": Column(
+        "Predictive accuracy",
+        "expected log predictive density of a new case's answers, summed over cases; higher is "
+        "better",
+        "number",
+    ),
+    "elpd_se": Column("± of accuracy", "standard error of the predictive accuracy", "number"),
+    "elpd_diff": Column("Behind the best", "difference in accuracy from the best model", "number"),
+    "elpd_diff_se": Column("± of difference", "standard error of the difference", "number"),
+    "p_loo": Column("Effective parameters", "flexibility that the answers used up", "number"),
+    "pareto_k_high": Column(
+        "Unreliable cases", "cases whose leave-one-out figure is not reliable (k too high)", "count"
+    ),
+    "waic": Column(
+        "WAIC", "accuracy by the widely applicable criterion, on the same scale", "number"
+    ),
+    "weight": Column("Weight", "share in the best mixture of predictions (stacking)", "share"),
+    "smallest_class": Column("Smallest class", "prevalence of the smallest class", "share"),
+    "separation": Column(
+        "Separation", "relative entropy: 1 when every case is placed surely, 0 by chance", "number"
+    ),
+    "trustworthy": Column("Sampling", "whether the sampling is to be trusted", "flag"),
+    "tied": Column("Tie", "too close to the best to tell", "flag"),
+    "table": Column("Table", "the table that has the column", "text"),
+    "column": Column("Column", "the column's name in the files", "text"),
+    "words": Column("Head", "the column's head on the page", "text"),
+    "meaning": Column("Meaning", "what the column holds", "text"),
+}
+
+
+def column(name: str) -> Column:
+    """Return what a column means; a column that nobody described is called by its name."""
+    return COLUMNS.get(name, Column(name.replace("_", " "), "", "text"))

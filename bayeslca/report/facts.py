@@ -1,0 +1,163 @@
+"""Facts that several sections state, computed once so that they say the same."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca.report.content import ReportContent
+from bayeslca.report.placement import Placement, placement
+from bayeslca.report.priors import ruled_by_prior
+from bayeslca.report.wording import about_of, called, listed, percent_interval, whole
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from bayeslca.assess.convergence import Diagnostics
+    from bayeslca.posterior.posterior import Posterior
+
+TEST_RESULTS = frozenset(
+    {"positive", "negative", "pos", "neg", "+", "-", "reactive", "non-reactive", "nonreactive"}
+)
+"""Answers that make an item look like a diagnostic test."""
+
+
+@dataclass(frozen=True)
+class Share:
+    """A share of the cases with its interval."""
+
+    name: str
+    median: float
+    lower: float
+    upper: float
+
+    @property
+    def text(self) -> str:
+        """``41 % (30 to 52)``."""
+        return percent_interval(self.median, self.lower, self.upper)
+
+
+@dataclass(frozen=True)
+class Facts:
+    """What the sections of one report draw on.
+
+    Attributes
+    ----------
+    content : ReportContent
+    """
+
+    content: ReportContent
+
+    @property
+    def posterior(self) -> Posterior:
+        """The model the answer rests on, fitted."""
+        return self.content.posterior
+
+    @property
+    def class_names(self) -> tuple[str, ...]:
+        """Names of the classes."""
+        return self.posterior.model.class_names
+
+    @property
+    def n_cases(self) -> int:
+        """Cases with at least one answer, which is what all shares are of."""
+        return self.content.responses.units.n_cases
+
+    @cached_property
+    def diagnostics(self) -> Diagnostics:
+        """How the sampling went."""
+        return self.posterior.diagnostics()
+
+    @cached_property
+    def placement(self) -> Placement:
+        """How surely the cases are placed."""
+        return placement(self.posterior)
+
+    @cached_property
+    def probabilities(self) -> pd.DataFrame:
+        """The probability of each answer in each class."""
+        return self.posterior.response_probabilities(interval=self.content.interval)
+
+    @cached_property
+    def overall(self) -> tuple[Share, ...]:
+        """The share of each class among all cases, groups weighted by their sizes."""
+        return overall_shares(self.posterior, self.content.interval)
+
+    @cached_property
+    def ruled(self) -> frozenset[tuple[str, str]]:
+        """The (class, item) pairs that rest mostly on the prior."""
+        return ruled_by_prior(self.posterior)
+
+    @property
+    def n_missing(self) -> int:
+        """Answers that are missing among the cases with at least one answer."""
+        units = self.content.responses.units
+        return int(((units.pattern < 0).sum(axis=1) * units.count).sum())
+
+    @property
+    def looks_diagnostic(self) -> bool:
+        """True when the study says that its items are tests, or their answers look like it."""
+        answers = [
+            {category.strip().casefold() for category in item.categories}
+            for item in self.posterior.model.items
+        ]
+        return self.content.diagnostic or any(len(found & TEST_RESULTS) > 1 for found in answers)
+
+    @property
+    def untrusted_ties(self) -> tuple[object, ...]:
+        """Models in the tie, other than the answer's own, whose sampling is not to be trusted."""
+        if self.content.comparison is None:
+            return ()
+        table = self.content.comparison.table
+        return tuple(
+            name
+            for name, row in table.iterrows()
+            if row["tied"] and not row["trustworthy"] and name != self.content.study_row
+        )
+
+    @property
+    def tied(self) -> tuple[object, ...]:
+        """Models that predict as well as the best, within their errors."""
+        if self.content.comparison is None:
+            return ()
+        table = self.content.comparison.table
+        return tuple(table.index[table["tied"].astype(bool)])
+
+    @property
+    def outside_tie(self) -> bool:
+        """True when the answer's own model predicts worse than the best by more than a tie."""
+        comparison, row = self.content.comparison, self.content.study_row
+        if comparison is None or row not in comparison.table.index:
+            return False
+        return not bool(comparison.table.loc[row, "tied"])
+
+
+def overall_shares(posterior: Posterior, interval: float) -> tuple[Share, ...]:
+    """Return the share of each class among all cases, groups weighted by their sizes."""
+    units = posterior.responses.units
+    draws = np.asarray(posterior.prevalence_draws)
+    sizes = np.bincount(units.group, weights=units.count, minlength=draws.shape[2])
+    shares = np.einsum("cdgk,g->cdk", draws, sizes / sizes.sum()).reshape(-1, draws.shape[3])
+    tail = (1 - interval) / 2
+    lower, median, upper = np.quantile(shares, [tail, 0.5, 1 - tail], axis=0)
+    return tuple(
+        Share(name, float(median[k]), float(lower[k]), float(upper[k]))
+        for k, name in enumerate(posterior.model.class_names)
+    )
+
+
+def shares_in_words(shares: tuple[Share, ...], n_cases: int) -> str:
+    """Return a clause that says how common each class is, the largest first."""
+    first, *others = sorted(shares, key=lambda share: -share.median)
+    rest = [
+        f"{called(share.name)} holds {share.text}, about {whole(share.median * n_cases)}"
+        for share in others
+    ]
+    largest = (
+        f"the largest class, {first.name}, holds {first.text} of the cases, "
+        f"{about_of(first.median, n_cases)}"
+    )
+    return "; ".join([largest, listed(rest)]) if rest else largest

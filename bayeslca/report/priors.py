@@ -1,0 +1,138 @@
+"""What was assumed beforehand, block by block, and what it weighs against the answers."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca._typing import Floats
+from bayeslca.report.wording import significant
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from bayeslca.posterior.posterior import Posterior
+
+HEAVY = 0.2
+"""Share of the prior from which a reader is told."""
+RULING = 0.5
+"""Share of the prior from which a result rests mostly on it, and is marked."""
+
+
+@dataclass(frozen=True)
+class PriorWeight:
+    """What the prior of one item in one class weighs.
+
+    Attributes
+    ----------
+    latent_class, item : str
+    parameters : ndarray of float64, shape (category,)
+        Its Dirichlet parameters.
+    cases : float
+        Expected number of cases of the class that answered the item.
+    """
+
+    latent_class: str
+    item: str
+    parameters: Floats
+    cases: float
+
+    @property
+    def weight(self) -> float:
+        """The number of cases that the prior counts for."""
+        return float(self.parameters.sum())
+
+    @property
+    def share(self) -> float:
+        """Part of the result that the prior makes: weight over weight plus cases."""
+        return self.weight / (self.weight + self.cases)
+
+
+def prior_weights(posterior: Posterior) -> tuple[PriorWeight, ...]:
+    """Return what the prior of each item in each class weighs against the answers."""
+    model = posterior.model
+    units = posterior.responses.units
+    share = np.asarray(posterior.prevalence_draws).mean(axis=(0, 1))
+    weights = []
+    for j, item in enumerate(model.items):
+        answered = np.where(units.pattern[:, j] >= 0, units.count, 0)
+        by_group = np.bincount(units.group, weights=answered, minlength=share.shape[0])
+        expected = by_group @ share
+        weights.extend(
+            PriorWeight(name, item.name, model.response_prior(j, k), float(expected[k]))
+            for k, name in enumerate(model.class_names)
+        )
+    return tuple(weights)
+
+
+def ruled_by_prior(posterior: Posterior) -> frozenset[tuple[str, str]]:
+    """Return the (class, item) pairs whose probabilities rest mostly on the prior."""
+    return frozenset(
+        (weight.latent_class, weight.item)
+        for weight in prior_weights(posterior)
+        if weight.share >= RULING
+    )
+
+
+def distribution(parameters: Sequence[float] | Floats) -> str:
+    """Return how a prior is written: ``Beta(9, 2)`` or ``Dirichlet(1, 1, 1)``.
+
+    A Beta is of the answer that counts as yes, so its parameters come in the order yes, no.
+    """
+    numbers = ", ".join(significant(float(value), 3) for value in parameters)
+    return f"{'Beta' if len(parameters) == 2 else 'Dirichlet'}({numbers})"
+
+
+def priors_table(posterior: Posterior) -> pd.DataFrame:
+    """Return the prior of each prevalence and of each answer in each class, a row each.
+
+    Columns: group (where there are groups), latent_class, item, category, prior, prior_mean,
+    prior_lower, prior_upper (95 %), prior_cases, prior_share. The rows of prevalences have
+    neither item nor category.
+    """
+    import pandas as pd
+
+    model = posterior.model
+    rows: list[dict[str, object]] = []
+    for g, concentration in enumerate(model.prevalence_source.concentration):
+        cases = float(posterior.responses.units.count[posterior.responses.units.group == g].sum())
+        share = float(concentration.sum() / (concentration.sum() + cases))
+        group = {"group": model.groups.levels[g]} if model.groups else {}
+        for k, name in enumerate(model.class_names):
+            rows.append(
+                {**group, "latent_class": name, "item": "", "category": ""}
+                | _summary(concentration, k, distribution(concentration), share)
+            )
+    items = {item.name: item for item in model.items}
+    for weight in prior_weights(posterior):
+        item = items[weight.item]
+        group = {"group": ""} if model.groups else {}
+        for c, category in enumerate(item.categories):
+            order = [c, 1 - c] if item.n_categories == 2 else range(item.n_categories)
+            written = distribution([weight.parameters[at] for at in order])
+            rows.append(
+                {**group, "latent_class": weight.latent_class, "item": item.name}
+                | {"category": category}
+                | _summary(weight.parameters, c, written, weight.share)
+            )
+    return pd.DataFrame(rows)
+
+
+def _summary(parameters: Floats, at: int, written: str, share: float) -> dict[str, object]:
+    from scipy.stats import beta
+
+    total = float(parameters.sum())
+    mine = float(parameters[at])
+    known = mine >= total  # a class alone holds everyone: no distribution to take a quantile of
+    lower, upper = (1.0, 1.0) if known else beta.ppf([0.025, 0.975], mine, total - mine)
+    return {
+        "prior": written,
+        "prior_mean": mine / total,
+        "prior_lower": float(lower),
+        "prior_upper": float(upper),
+        "prior_cases": total,
+        "prior_share": share,
+    }

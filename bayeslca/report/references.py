@@ -1,0 +1,60 @@
+"""The papers that a report cites."""
+
+from __future__ import annotations
+
+REFERENCES: dict[str, str] = {
+    "Hoffman & Gelman 2014": (
+        "Hoffman, M. D. & Gelman, A. (2014). The No-U-Turn sampler: adaptively setting path "
+        "lengths in Hamiltonian Monte Carlo. Journal of Machine Learning Research 15, 1593-1623."
+    ),
+    "Kostoulas et al. 2017": (
+        "Kostoulas, P., Nielsen, S. S., Branscum, A. J., Johnson, W. O., Dendukuri, N., Dhand, "
+        "N. K., Toft, N. & Gardner, I. A. (2017). STARD-BLCM: Standards for the Reporting of "
+        "Diagnostic accuracy studies that use Bayesian Latent Class Models. Preventive Veterinary "
+        "Medicine 138, 37-47."
+    ),
+    "Kruschke 2021": (
+        "Kruschke, J. K. (2021). Bayesian Analysis Reporting Guidelines. Nature Human Behaviour "
+        "5, 1282-1291. doi:10.1038/s41562-021-01177-7"
+    ),
+    "Depaoli & van de Schoot 2017": (
+        "Depaoli, S. & van de Schoot, R. (2017). Improving transparency and replication in "
+        "Bayesian statistics: the WAMBS-checklist. Psychological Methods 22, 240-261."
+    ),
+    "Merkle, Furr & Rabe-Hesketh 2019": (
+        "Merkle, E. C., Furr, D. & Rabe-Hesketh, S. (2019). Bayesian comparison of latent variable "
+        "models: conditional versus marginal likelihoods. Psychometrika 84, 802-829."
+    ),
+    "Sivula et al. 2020": (
+        "Sivula, T., Magnusson, M., Matamoros, A. A. & Vehtari, A. (2020). Uncertainty in Bayesian "
+        "leave-one-out cross-validation based model comparison. arXiv:2008.10296"
+    ),
+    "Stephens 2000": (
+        "Stephens, M. (2000). Dealing with label switching in mixture models. Journal of the Royal "
+        "Statistical Society: Series B 62, 795-809."
+    ),
+    "Vehtari, Gelman & Gabry 2017": (
+        "Vehtari, A., Gelman, A. & Gabry, J. (2017). Practical Bayesian model evaluation using "
+        "leave-one-out cross-validation and WAIC. Statistics and Computing 27, 1413-1432."
+    ),
+    "Vehtari et al. 2021": (
+        "Vehtari, A., Gelman, A., Simpson, D., Carpenter, B. & Bürkner, P.-C. (2021). "
+        "Rank-normalization, folding, and localization: an improved R-hat for assessing "
+        "convergence of MCMC. Bayesian Analysis 16, 667-718."
+    ),
+    "Watanabe 2010": (
+        "Watanabe, S. (2010). Asymptotic equivalence of Bayes cross validation and widely "
+        "applicable information criterion in singular learning theory. Journal of Machine Learning "
+        "Research 11, 3571-3594."
+    ),
+    "Yao et al. 2018": (
+        "Yao, Y., Vehtari, A., Simpson, D. & Gelman, A. (2018). Using stacking to average Bayesian "
+        "predictive distributions. Bayesian Analysis 13, 917-1007."
+    ),
+}
+"""Full references by the short form in which the text cites them."""
+
+
+def cited_in(text: str) -> tuple[str, ...]:
+    """Return the full references of the papers that a text cites, in the order of the list."""
+    return tuple(full for short, full in REFERENCES.items() if short in text)

@@ -1,0 +1,135 @@
+"""The question and the answer: what a reader takes home, with the warnings before it."""
+
+from __future__ import annotations
+
+from bayeslca.report.blocks import Banner, Block, Bullets, Head, Lead, PageTable, Paragraph, Section
+from bayeslca.report.content import ReportContent
+from bayeslca.report.facts import Facts, Share, shares_in_words
+from bayeslca.report.plots import row_name
+from bayeslca.report.sections.portraits import portrait
+from bayeslca.report.wording import (
+    about_of,
+    called,
+    counted,
+    counted_in_words,
+    decimal,
+    listed,
+    percent,
+    sentence,
+    whole,
+)
+
+ANCHOR, HEADING = "answer", "The question and the answer"
+
+
+def answer_section(facts: Facts) -> Section:
+    """Return the section that opens the report."""
+    content = facts.content
+    blocks: list[Block] = []
+    if content.question:
+        blocks.append(Paragraph(sentence(content.question)))
+    if not is_to_be_trusted(facts):
+        blocks.append(_warning(facts))
+    blocks.append(Lead(headline(facts), facts.diagnostics.trustworthy))
+    if len(facts.class_names) > 1:
+        shares = sorted(facts.overall, key=lambda share: -share.median)
+        blocks.append(Bullets(tuple(_entry(facts, share) for share in shares)))
+    blocks.append(Paragraph(" ".join(_how_sure(facts))))
+    blocks.extend(_changes(content))
+    return Section(ANCHOR, HEADING, tuple(blocks))
+
+
+def headline(facts: Facts) -> str:
+    """Return the sentence that answers the question with numbers.
+
+    It says first that it is not to be trusted, or that the study's own model predicts worse than
+    others, where that is so.
+    """
+    n_classes = len(facts.class_names)
+    if n_classes == 1:
+        clause = (
+            f"with a single class all {counted(facts.n_cases, 'case')} are described alike: there "
+            "are no kinds to tell apart"
+        )
+    else:
+        clause = shares_in_words(facts.overall, facts.n_cases)
+    clause = f"{_outside_tie(facts)}{clause}"
+    if not facts.diagnostics.trustworthy:
+        clause = f"not to be trusted as it stands: {clause}"
+    return sentence(clause)
+
+
+def is_to_be_trusted(facts: Facts) -> bool:
+    """Tell whether the sampling of the answer's model, and of every tied one, is to be trusted."""
+    return facts.diagnostics.trustworthy and not facts.untrusted_ties
+
+
+def _outside_tie(facts: Facts) -> str:
+    comparison, row = facts.content.comparison, facts.content.study_row
+    if comparison is None or row is None or not facts.outside_tie:
+        return ""
+    table = comparison.table
+    best = table.index[table["elpd_diff"].abs().argmin()]
+    behind = table.loc[row]
+    return (
+        f"the study's own model ({row_name(row)}) predicts new cases worse than the best of those "
+        f"compared ({row_name(best)}), by {decimal(abs(behind['elpd_diff']))} with a standard "
+        f"error of {decimal(behind['elpd_diff_se'])}; under it, "
+    )
+
+
+def _warning(facts: Facts) -> Banner:
+    diagnostics = facts.diagnostics
+    texts = [] if diagnostics.trustworthy else [sentence(diagnostics.verdict)]
+    texts += [
+        sentence(f"{finding.message.rstrip('.')}. {finding.remedy}")
+        for finding in diagnostics.findings
+        if finding.level == "problem"
+    ]
+    if facts.untrusted_ties:
+        names = listed([row_name(name) for name in facts.untrusted_ties])
+        texts.append(
+            f"Within the tie of models that predict equally well, the sampling of {names} is not "
+            "to be trusted either; the number of classes may change when it is."
+        )
+    return Banner("The sampling behind this report is not to be trusted yet", tuple(texts))
+
+
+def _entry(facts: Facts, share: Share) -> tuple[str, str]:
+    term = f"{called(share.name)}: {share.text}, {about_of(share.median, facts.n_cases)}"
+    return term, portrait(facts, share.name)
+
+
+def _how_sure(facts: Facts) -> list[str]:
+    content, n_classes = facts.content, len(facts.class_names)
+    chosen = counted_in_words(n_classes, "class", "classes")
+    because = f", because {content.chosen_because.rstrip('.')}" if content.chosen_because else ""
+    says = [sentence(f"the answer is for {chosen}{because}")]
+    if content.comparison is not None:
+        says.append(sentence(content.comparison.verdict))
+    if n_classes > 1:
+        placed = facts.placement
+        sure = placed.n_at_least(0.8)
+        says.append(
+            f"A case's most probable class has a probability of {percent(placed.mean_highest)} on "
+            f"average; for {whole(sure)} of {counted(placed.n_cases, 'case')} it is 80 % or more."
+        )
+    says.append(
+        "Classes are a model's summary of the answers; how far to trust it stands under "
+        "“Limits and cautions”."
+    )
+    return says
+
+
+def _changes(content: ReportContent) -> list[Block]:
+    if not content.replaced:
+        return []
+    if not content.changes:
+        return [Paragraph("Nothing moved since the last run into the same folder.")]
+    rows = tuple((change.what, change.before, change.after) for change in content.changes)
+    heads = (
+        Head("Quantity", "what moved", numeric=False),
+        Head("Before", "in the last run"),
+        Head("Now", "in this run"),
+    )
+    return [PageTable("What moved since the last run into the same folder", heads, rows)]

@@ -1,0 +1,163 @@
+"""What was assumed: the model in words, the priors with their sources and their weight."""
+
+from __future__ import annotations
+
+from bayeslca.report.blocks import (
+    Block,
+    Bullets,
+    Head,
+    PageTable,
+    Paragraph,
+    Section,
+    Subheading,
+    Verbatim,
+)
+from bayeslca.report.facts import Facts
+from bayeslca.report.priors import HEAVY, PriorWeight, distribution, prior_weights
+from bayeslca.report.wording import (
+    called,
+    counted,
+    counted_in_words,
+    listed,
+    percent,
+    significant,
+)
+
+ANCHOR, HEADING = "assumptions", "What was assumed"
+
+
+def assumptions_section(facts: Facts) -> Section:
+    """Return the section on the model and its priors."""
+    model = facts.posterior.model
+    blocks: list[Block] = [Paragraph(model_in_words(facts)), Paragraph(answers_in_words(facts))]
+    blocks += _statements(facts)
+    blocks += [
+        Subheading("What the priors weigh"),
+        Paragraph(weights_in_words(facts)),
+        _weights_table(facts),
+        Verbatim(model.describe(facts.content.responses), "The whole model in words"),
+    ]
+    notes = [
+        (finding.message, finding.remedy)
+        for finding in (*facts.content.responses.findings, *model.findings(facts.content.responses))
+    ]
+    decisions = [(text, "") for text in facts.content.decisions]
+    if decisions or notes:
+        blocks += [
+            Subheading("What was noticed and decided on reading"),
+            Bullets((*decisions, *notes)),
+        ]
+    return Section(ANCHOR, HEADING, tuple(blocks))
+
+
+def model_in_words(facts: Facts) -> str:
+    """Return the model in a few sentences."""
+    model = facts.posterior.model
+    classes = counted_in_words(model.n_classes, "class", "classes")
+    names = "" if model.exploratory else f" ({listed(model.class_names)})"
+    text = (
+        f"Each case belongs to one of {classes}{names}, which nobody observed. "
+        if model.n_classes > 1
+        else "All cases belong to one class. "
+    )
+    text += (
+        "Within a class, the answers to different items are independent of each other, and every "
+        "case of the class has the same probability of each answer."
+    )
+    if model.groups:
+        text += (
+            f" Each group of {model.groups.name} ({listed(model.groups.levels)}) has its own "
+            "prevalences; the classes look the same in all groups."
+        )
+    return text
+
+
+def answers_in_words(facts: Facts) -> str:
+    """Return how missing answers and cases set aside were treated, with their numbers."""
+    responses = facts.content.responses
+    n_answers = facts.n_cases * len(responses.items)
+    if facts.n_missing:
+        text = (
+            f"Of {counted(n_answers, 'answer')} of {counted(facts.n_cases, 'case')}, "
+            f"{counted(facts.n_missing, 'answer')} "
+            f"({percent(facts.n_missing / n_answers)}) "
+            f"{'is' if facts.n_missing == 1 else 'are'} missing. Every case counts with the "
+            "answers it gave: whether an answer is missing may depend on the answers that are "
+            "there, but not on the missing one itself (missing at random)."
+        )
+    else:
+        text = f"All {counted(facts.n_cases, 'case')} answered every item."
+    if responses.n_set_aside:
+        text += (
+            f" {counted(responses.n_set_aside, 'case')} without a single answer "
+            f"{'was' if responses.n_set_aside == 1 else 'were'} set aside."
+        )
+    return text
+
+
+def weights_in_words(facts: Facts) -> str:
+    """Return how heavy the priors are, and where they matter."""
+    heavy = [weight for weight in prior_weights(facts.posterior) if weight.share > HEAVY]
+    text = (
+        "A prior counts as if so many cases of the class had been seen before; its share is that "
+        "number over itself plus the cases expected in the class. Priors pull probabilities near "
+        "0 or 100 % a little inward."
+    )
+    if not heavy:
+        return f"{text} No prior makes up more than {percent(HEAVY)} of any result."
+    worst = max(heavy, key=lambda weight: weight.share)
+    return (
+        f"{text} In {counted(len(heavy), 'place')} the prior makes up more than {percent(HEAVY)} "
+        f"of the result, most in {_item_text(facts, worst)} of {called(worst.latent_class)} "
+        f"({percent(worst.share)})."
+    )
+
+
+def _statements(facts: Facts) -> list[Block]:
+    model = facts.posterior.model
+    if not model.statements:
+        return [Paragraph("The study states nothing beyond this: all priors are the defaults.")]
+    rows = tuple(
+        (statement, model.statement_sources.get(statement, "not given"))
+        for statement in model.statements
+    )
+    heads = (
+        Head("Statement", "a prior, or a rule that names a class", numeric=False),
+        Head("Source", "where it comes from, as the study says", numeric=False),
+    )
+    return [PageTable("What the study states", heads, rows)]
+
+
+def _weights_table(facts: Facts) -> PageTable:
+    model = facts.posterior.model
+    rows = [
+        ("Prevalences" if not model.groups else f"Prevalences, {model.groups.levels[g]}", "",
+         distribution(concentration) if model.n_classes > 1 else "none: one class",
+         significant(float(concentration.sum())), "")
+        for g, concentration in enumerate(model.prevalence_source.concentration)
+    ]  # fmt: skip
+    rows += [
+        (_item_text(facts, weight), called(weight.latent_class), _written(facts, weight),
+         significant(weight.weight), percent(weight.share))
+        for weight in prior_weights(facts.posterior)
+    ]  # fmt: skip
+    heads = (
+        Head("Of", "the prevalences, or an item", numeric=False),
+        Head("Class", "the class that it is about", numeric=False),
+        Head("Prior", "a Beta is of the answer that counts as yes", numeric=False),
+        Head("Weight", "the cases that it counts for"),
+        Head("Share", "of the result that the prior makes"),
+    )
+    return PageTable("The priors and their weight", heads, tuple(rows), folded=len(rows) > 12)
+
+
+def _written(facts: Facts, weight: PriorWeight) -> str:
+    item = next(item for item in facts.posterior.model.items if item.name == weight.item)
+    if item.n_categories > 2:
+        return distribution(weight.parameters)
+    yes = item.categories.index(item.yes or item.categories[-1])
+    return distribution([weight.parameters[yes], weight.parameters[1 - yes]])
+
+
+def _item_text(facts: Facts, weight: PriorWeight) -> str:
+    return next(item.text for item in facts.posterior.model.items if item.name == weight.item)

@@ -1,0 +1,93 @@
+"""Limits and cautions, each with the number that makes it matter here."""
+
+from __future__ import annotations
+
+from bayeslca.report.blocks import Bullets, Section
+from bayeslca.report.facts import Facts
+from bayeslca.report.sections.class_counts import tie_in_words
+from bayeslca.report.wording import called, counted, level, listed, percent_value, whole
+
+ANCHOR, HEADING = "limits", "Limits and cautions"
+FEW = 5
+
+
+def limits_section(facts: Facts) -> Section:
+    """Return the section on limits."""
+    entries = [
+        (
+            "Classes are a model's summary",
+            "of the answers to these items, not kinds found in nature. Other items, or another "
+            "model, can divide the same cases differently.",
+        )
+    ]
+    if facts.looks_diagnostic:
+        entries.insert(0, _diagnostic())
+    if len(facts.class_names) > 1:
+        entries += [_size(facts), _placement(facts)]
+    if len(facts.tied) > 1:
+        entries.append(
+            (
+                "The number of classes is not settled",
+                f"by these data: {tie_in_words(facts)} predict equally well within their errors.",
+            )
+        )
+    entries.append(
+        (
+            "Independence within a class was assumed, not checked",
+            "in this report. Items that ask nearly the same can make up a class of their own.",
+        )
+    )
+    if facts.n_missing:
+        entries.append(
+            (
+                "Missing answers were taken to be missing at random",
+                f"({counted(facts.n_missing, 'answer')}). If cases left out just the answers that "
+                "would have told, the classes are off.",
+            )
+        )
+    entries += _small_or_ruled(facts)
+    return Section(ANCHOR, HEADING, (Bullets(tuple(entries)),))
+
+
+def _diagnostic() -> tuple[str, str]:
+    return (
+        "Not for decisions on a single patient or animal",
+        "The figures here describe tests and populations under a model without a perfect "
+        "reference. Local rules and licensed practice come first.",
+    )
+
+
+def _size(facts: Facts) -> tuple[str, str]:
+    widest = max(facts.overall, key=lambda share: share.upper - share.lower)
+    return (
+        f"{counted(facts.n_cases, 'case')} leave much open",
+        f"the {level(facts.content.interval)} interval of the share of {called(widest.name)} runs "
+        f"from {percent_value(widest.lower)} to {percent_value(widest.upper)} %.",
+    )
+
+
+def _placement(facts: Facts) -> tuple[str, str]:
+    placed = facts.placement
+    unsure = placed.n_cases - placed.n_at_least(0.8)
+    return (
+        "Membership is uncertain",
+        f"for {whole(unsure)} of {counted(placed.n_cases, 'case')} the most probable class has a "
+        "probability below 80 %. Do not treat it as data.",
+    )
+
+
+def _small_or_ruled(facts: Facts) -> list[tuple[str, str]]:
+    entries = []
+    few = [called(s.name) for s in facts.overall if s.median * facts.n_cases < FEW]
+    if few:
+        entries.append(
+            (f"Few cases are expected in {listed(few)}", "what is said of so small a class is thin")
+        )
+    if facts.ruled:
+        entries.append(
+            (
+                "Some numbers rest mostly on the prior",
+                f"({counted(len(facts.ruled), 'place')}); they are marked † where they stand.",
+            )
+        )
+    return entries

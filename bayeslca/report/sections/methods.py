@@ -1,0 +1,129 @@
+"""A methods paragraph to paste into a paper, with its references."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from bayeslca.report.blocks import Block, Bullets, Paragraph, Section
+from bayeslca.report.facts import Facts, shares_in_words
+from bayeslca.report.references import cited_in
+from bayeslca.report.sections.assumptions import answers_in_words, model_in_words
+from bayeslca.report.sections.sampling import starts_in_words
+from bayeslca.report.wording import (
+    counted,
+    counted_in_words,
+    decimal,
+    in_words,
+    level,
+    listed,
+    sentence,
+    whole,
+)
+
+ANCHOR, HEADING = "methods", "A methods paragraph to paste"
+
+
+def methods_section(facts: Facts, versions: Mapping[str, str]) -> Section:
+    """Return the section with the methods paragraph."""
+    text = methods_paragraph(facts, versions)
+    blocks: list[Block] = []
+    if not facts.diagnostics.trustworthy:
+        blocks.append(
+            Paragraph("Do not use it yet: the sampling behind this report is not to be trusted.")
+        )
+    blocks += [Paragraph(text), Bullets(tuple((full, "") for full in cited_in(text)))]
+    return Section(ANCHOR, HEADING, tuple(blocks))
+
+
+def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
+    """Return what was done, in the past tense and with its numbers."""
+    model = facts.posterior.model
+    n_items = counted_in_words(len(model.items), "item")
+    kind = "latent class model with " + counted_in_words(model.n_classes, "class", "classes")
+    parts = [
+        f"The answers of {counted(facts.n_cases, 'case')} to {n_items} were analysed with a "
+        f"Bayesian {kind}. {model_in_words(facts)} {answers_in_words(facts)}",
+        _priors(facts),
+        _sampling(facts),
+        _comparison(facts),
+        _software(versions),
+    ]
+    if model.n_classes > 1:
+        parts.append(
+            sentence(
+                "by posterior medians with equal-tailed "
+                f"{level(facts.content.interval)} intervals, "
+                f"{shares_in_words(facts.overall, facts.n_cases)}"
+            )
+        )
+    return " ".join(part for part in parts if part)
+
+
+def _priors(facts: Facts) -> str:
+    model = facts.posterior.model
+    if not model.statements:
+        return "All priors were uniform."
+    rules = [text for text in model.statements if "~" not in text]
+    priors = [text for text in model.statements if "~" in text]
+    text = "Priors were uniform"
+    if priors:
+        sources = dict.fromkeys(
+            model.statement_sources[s] for s in priors if s in model.statement_sources
+        )
+        text += f" except for {listed(priors)}"
+        text += f" (source: {'; '.join(sources)})" if sources else " (no source was given)"
+    text += "."
+    if rules:
+        text += f" Classes were named by rule: {listed(rules)}."
+    return text
+
+
+def _sampling(facts: Facts) -> str:
+    draws, diagnostics = facts.posterior.draws, facts.diagnostics
+    if draws.sampler == "nuts":
+        how = "the No-U-Turn sampler (Hoffman & Gelman 2014)"
+    else:
+        how = "blocked Gibbs sampling with a move that permutes the classes"
+    text = (
+        f"The posterior was sampled by {how}, with {counted_in_words(draws.n_chains, 'chain')} of "
+        f"{whole(draws.sweeps)} iterations, of which the first {whole(draws.warmup)} were thrown "
+        f"away and {counted(draws.n_draws, 'draw')} per chain were kept. "
+        f"{starts_in_words(facts)}"
+    )
+    if len(facts.class_names) > 1:
+        text += (
+            " The classes were matched across draws by their membership probabilities "
+            "(Stephens 2000)."
+        )
+    table = diagnostics.table
+    if {"r_hat", "ess_bulk", "ess_tail"} <= set(table.columns):
+        worst = table["r_hat"].max()
+        fewest = min(table["ess_bulk"].min(), table["ess_tail"].min())
+        text += (
+            " Convergence was judged by rank-normalised R-hat and by bulk and tail effective "
+            f"sample sizes (Vehtari et al. 2021): the largest R-hat was {decimal(worst, 3)}, the "
+            f"smallest effective sample size {whole(fewest)}."
+        )
+    return text
+
+
+def _comparison(facts: Facts) -> str:
+    comparison = facts.content.comparison
+    if comparison is None:
+        return ""
+    text = (
+        f"{in_words(len(comparison.table)).capitalize()} models were compared by the leave-one-out "
+        "predictive accuracy of a case's answers, class summed out (Merkle, Furr & Rabe-Hesketh "
+        "2019), estimated by Pareto-smoothed importance sampling (Vehtari, Gelman & Gabry 2017)"
+    )
+    if "waic" in comparison.table:
+        text += ", by WAIC (Watanabe 2010)"
+    if "weight" in comparison.table:
+        text += " and by stacking weights (Yao et al. 2018)"
+    return f"{text}. {sentence(comparison.verdict)}"
+
+
+def _software(versions: Mapping[str, str]) -> str:
+    others = [f"{name} {number}" for name, number in versions.items() if name != "bayeslca"]
+    own = versions.get("bayeslca", "")
+    return f"Computations were done with bayeslca {own} ({', '.join(others)})."

@@ -1,0 +1,94 @@
+"""How common each class is, in shares and in cases."""
+
+from __future__ import annotations
+
+from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
+from bayeslca.report.facts import Facts, shares_in_words
+from bayeslca.report.figures import draw
+from bayeslca.report.plots import plot_prevalence
+from bayeslca.report.wording import (
+    called,
+    counted,
+    level,
+    listed,
+    percent_interval,
+    sentence,
+    whole,
+)
+
+ANCHOR, HEADING = "prevalence", "How common each class is"
+FEW = 5
+"""A class with fewer expected cases is named as one with few."""
+
+
+def prevalence_section(facts: Facts) -> Section:
+    """Return the section on prevalences."""
+    if len(facts.class_names) == 1:
+        text = f"There is one class, so it holds all {counted(facts.n_cases, 'case')}."
+        return Section(ANCHOR, HEADING, (Paragraph(text),))
+    interval = facts.content.interval
+    groups = facts.posterior.model.groups
+    n_rows = len(facts.class_names) * (len(groups.levels) if groups else 1)
+    figure = draw(
+        "prevalence",
+        lambda drawing: plot_prevalence(facts.posterior, interval=interval, ax=drawing.subplots()),
+        size=(7.0, 1.0 + 0.36 * n_rows),
+        caption=(
+            f"The share of the cases in each class{' by group' if groups else ''}: a marker at the "
+            f"median, a line over the {level(interval)} interval."
+        ),
+        alt=sentence(shares_in_words(facts.overall, facts.n_cases)),
+    )
+    blocks: list[Block] = [Paragraph(_in_words(facts)), Picture(figure), _table(facts)]
+    return Section(ANCHOR, HEADING, tuple(blocks))
+
+
+def _in_words(facts: Facts) -> str:
+    groups = facts.posterior.model.groups
+    among = "among all cases, groups weighted by their sizes, " if groups else ""
+    text = sentence(f"{among}{shares_in_words(facts.overall, facts.n_cases)}")
+    few = [
+        f"{called(share.name)} (about {counted(round(share.median * facts.n_cases), 'case')})"
+        for share in facts.overall
+        if share.median * facts.n_cases < FEW
+    ]
+    if few:
+        text += (
+            f" Few cases are expected in {listed(few)}: what is said of so small a class rests on "
+            "very little."
+        )
+    return text
+
+
+def _table(facts: Facts) -> PageTable:
+    frame = facts.posterior.prevalence(interval=facts.content.interval)
+    groups = facts.posterior.model.groups
+    units = facts.content.responses.units
+    rows = []
+    for row in frame.to_dict("records"):
+        size, where = facts.n_cases, []
+        if groups:
+            where = [str(row["group"])]
+            at = groups.levels.index(row["group"]) if row["group"] in groups.levels else None
+            size = facts.n_cases if at is None else int(units.count[units.group == at].sum())
+        share = percent_interval(row["median"], row["lower"], row["upper"])
+        cases = (
+            f"{whole(row['median'] * size)} "
+            f"({whole(row['lower'] * size)} to {whole(row['upper'] * size)})"
+        )
+        rows.append((called(str(row["latent_class"])), *where, share, cases, whole(size)))
+    if groups:
+        rows += [
+            (called(share.name), "overall", share.text,
+             f"{whole(share.median * facts.n_cases)} ({whole(share.lower * facts.n_cases)} to "
+             f"{whole(share.upper * facts.n_cases)})", whole(facts.n_cases))
+            for share in facts.overall
+        ]  # fmt: skip
+    heads = (
+        Head("Class", "the class that the row is about", numeric=False),
+        *([Head("Group", "the group of cases", numeric=False)] if groups else []),
+        Head("Share", f"of the cases, median ({level(facts.content.interval)} interval)"),
+        Head("In cases", "the share times the cases observed"),
+        Head("Of", "cases observed with at least one answer"),
+    )
+    return PageTable("The share of the cases in each class", heads, tuple(rows))

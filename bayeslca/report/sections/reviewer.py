@@ -1,0 +1,273 @@
+"""What a reviewer will ask: each question with its answer, its place, or that it was not done.
+
+Item numbers are those of the guidelines cited; subjects are in our own words.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+
+from bayeslca.report.blocks import Answered, Bullets, Paragraph, Questions, Section
+from bayeslca.report.facts import Facts
+from bayeslca.report.plots import row_name
+from bayeslca.report.references import REFERENCES
+from bayeslca.report.sections import (
+    assumptions,
+    class_counts,
+    classes,
+    limits,
+    membership,
+    prevalence,
+    reproduce,
+    sampling,
+)
+from bayeslca.report.wording import counted, counted_in_words, decimal, listed, sentence, whole
+
+ANCHOR, HEADING = "reviewer", "What a reviewer will ask"
+NOT_DONE = "Not done in this study."
+
+_PRIORS = (assumptions.ANCHOR, assumptions.HEADING)
+_COUNTS = (class_counts.ANCHOR, class_counts.HEADING)
+_CLASSES = (classes.ANCHOR, classes.HEADING)
+_PREVALENCE = (prevalence.ANCHOR, prevalence.HEADING)
+_PLACED = (membership.ANCHOR, membership.HEADING)
+_SAMPLING = (sampling.ANCHOR, sampling.HEADING)
+_LIMITS = (limits.ANCHOR, limits.HEADING)
+_REPRODUCE = (reproduce.ANCHOR, reproduce.HEADING)
+
+_FOR_THE_AUTHORS = (
+    ("1-4", "title, summary, background, the tests' role and the study's aims"),
+    ("5-9", "how, where and when the cases were found and sampled, and who was eligible"),
+    ("10-11", "the tests in enough detail to repeat them, what each picks up, why these"),
+    ("12-13", "cut-offs and whether they were planned; what the readers of the tests knew"),
+    ("18-22", "planned sample size, flow and description of the cases, time between the tests"),
+    ("25, 27-30", "harms of testing, use in practice, registration, protocol, funding"),
+)
+"""What STARD-BLCM asks for and a page made from answers cannot know."""
+
+
+def reviewer_section(facts: Facts, versions: Mapping[str, str]) -> Section:
+    """Return the section of questions and answers."""
+    entries = tuple(_all(facts, versions))
+    n_open = sum(not entry.done for entry in entries)
+    used = ["Kruschke 2021", "Depaoli & van de Schoot 2017"]
+    used += ["Kostoulas et al. 2017"] if facts.looks_diagnostic else []
+    said = (
+        f"Of {counted(len(entries), 'question')}, {whole(n_open)} "
+        f"{'names' if n_open == 1 else 'name'} something that was not done in this study. The "
+        "numbers in brackets are items of reporting guidelines that ask the same; read the "
+        "originals before you claim to follow them."
+    )
+    blocks = [
+        Paragraph(said),
+        Questions(entries),
+        *([_for_the_authors()] if facts.looks_diagnostic else []),
+        Bullets(tuple((REFERENCES[name], "") for name in used)),
+    ]
+    return Section(ANCHOR, HEADING, tuple(blocks))
+
+
+def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
+    yield _why_this_number(facts)
+    yield _best_solution(facts)
+    yield _converged(facts)
+    yield _priors(facts)
+    yield _open("What did the priors imply before the data?", "BARG 1E; WAMBS 1")
+    yield _open("Would other priors have changed the answer?", "BARG 5A-5C; WAMBS 7-9", "14b")
+    yield _independence(facts)
+    yield _open("Does the model reproduce the answers that were seen?", "BARG 3A")
+    yield _missing(facts)
+    yield _unclear(facts)
+    yield _separated(facts)
+    yield _estimates(facts)
+    yield _size(facts)
+    yield _software(facts, versions)
+    yield _same_again(facts)
+    if facts.looks_diagnostic:
+        yield _cross_classified(facts)
+    yield Answered(
+        "What are the limits?",
+        "The section on limits names them with the numbers that make them matter here.",
+        (_LIMITS,),
+        _items("BARG 4E", "26", facts),
+    )
+
+
+def _items(others: str, stard: str, facts: Facts) -> str:
+    mine = f"STARD-BLCM {stard}" if stard and facts.looks_diagnostic else ""
+    return "; ".join(part for part in (others, mine) if part)
+
+
+def _open(question: str, guidelines: str, stard: str = "") -> Answered:
+    where = f"{guidelines}; STARD-BLCM {stard}" if stard else guidelines
+    return Answered(question, NOT_DONE, guidelines=where, done=False)
+
+
+def _why_this_number(facts: Facts) -> Answered:
+    content = facts.content
+    question = (
+        f"Why {counted_in_words(len(facts.class_names), 'class', 'classes')} and not more or fewer?"
+    )
+    says = []
+    if content.chosen_because:
+        says.append(sentence(content.chosen_because))
+    if content.comparison is not None:
+        says.append(sentence(content.comparison.verdict))
+        row = content.study_row
+        if row in content.comparison.table.index:
+            mine = content.comparison.table.loc[row]
+            says.append(
+                f"The model the answer rests on ({row_name(row)}) lies "
+                f"{decimal(abs(mine['elpd_diff']))} behind the best, with a standard error of "
+                f"{decimal(mine['elpd_diff_se'])}."
+            )
+    if not says:
+        return Answered(question, NOT_DONE, done=False)
+    if content.comparison is None:
+        says.append("Other numbers were not compared in this study.")
+    return Answered(question, " ".join(says), (_COUNTS,))
+
+
+def _best_solution(facts: Facts) -> Answered:
+    question = "Was the best solution found, and not only a good one?"
+    text = sampling.starts_in_words(facts)
+    if not text:
+        return Answered(question, "No runs from scattered points were made.", done=False)
+    return Answered(question, text, (_SAMPLING,))
+
+
+def _converged(facts: Facts) -> Answered:
+    return Answered(
+        "Did the chains converge, and are there enough draws?",
+        f"{sentence(facts.diagnostics.verdict)} Chains run twice as long were not tried.",
+        (_SAMPLING,),
+        "BARG 2B, 2C; WAMBS 2, 3, 5",
+    )
+
+
+def _priors(facts: Facts) -> Answered:
+    model = facts.posterior.model
+    stated = [text for text in model.statements if "~" in text]
+    sourced = [text for text in stated if text in model.statement_sources]
+    if not stated:
+        text = "All priors are the defaults: uniform on prevalences and response probabilities."
+    else:
+        text = (
+            f"{counted(len(stated), 'prior')} {'was' if len(stated) == 1 else 'were'} stated, "
+            f"{whole(len(sourced))} with a source; all others are uniform."
+        )
+    return Answered(
+        "Which priors were used, and where do they come from?",
+        f"{text} {assumptions.weights_in_words(facts)}",
+        (_PRIORS,),
+        _items("BARG 1C; WAMBS 1", "14b", facts),
+    )
+
+
+def _independence(facts: Facts) -> Answered:
+    return Answered(
+        "Are the items independent within a class?",
+        "It was assumed. Whether pairs of items go together more than the classes explain was "
+        "not checked in this study.",
+        (_PRIORS,),
+        _items("BARG 1B", "14a", facts),
+        done=False,
+    )
+
+
+def _missing(facts: Facts) -> Answered:
+    return Answered(
+        "What was done about missing answers?",
+        assumptions.answers_in_words(facts),
+        (_PRIORS,),
+        _items("BARG 1A", "16", facts),
+    )
+
+
+def _unclear(facts: Facts) -> Answered:
+    decisions = facts.content.decisions
+    text = (
+        " ".join(sentence(decision) for decision in decisions)
+        if decisions
+        else "No answer was merged with another, and none was taken out on reading."
+    )
+    places = (_PRIORS,) if decisions else ()
+    return Answered(
+        "How were unclear answers treated?", text, places, _items("BARG 1A", "15", facts)
+    )
+
+
+def _separated(facts: Facts) -> Answered:
+    question = "How well are the classes told apart?"
+    if len(facts.class_names) == 1:
+        return Answered(question, "There is one class.", (_PLACED,))
+    unsure = facts.placement.n_cases - facts.placement.n_at_least(0.8)
+    text = (
+        f"{membership.separation_in_words(facts)} The most probable class of {whole(unsure)} of "
+        f"{counted(facts.placement.n_cases, 'case')} has a probability below 80 %."
+    )
+    return Answered(question, text, (_PLACED,))
+
+
+def _estimates(facts: Facts) -> Answered:
+    return Answered(
+        "Are all estimates given with their uncertainty?",
+        "Every probability and every share stands with its interval, and all of them in the files.",
+        (_CLASSES, _PREVALENCE),
+        _items("BARG 3B", "24", facts),
+    )
+
+
+def _size(facts: Facts) -> Answered:
+    return Answered(
+        "Why so many cases?",
+        f"There are {counted(facts.n_cases, 'case')}. How many would be enough was not worked out "
+        "in this study.",
+        guidelines=_items("", "18", facts),
+        done=False,
+    )
+
+
+def _software(facts: Facts, versions: Mapping[str, str]) -> Answered:
+    main = [f"{name} {versions[name]}" for name in ("bayeslca", "Python") if name in versions]
+    return Answered(
+        "Which software, in which version?",
+        sentence(listed(main)) + " The others are listed.",
+        (_REPRODUCE,),
+        "BARG 2A, 6A",
+    )
+
+
+def _same_again(facts: Facts) -> Answered:
+    content = facts.content
+    seed = f"The seed is {content.seed}" if content.seed is not None else "No seed was fixed"
+    return Answered(
+        "Can somebody else get the same numbers?",
+        f"{seed}; the data have the fingerprint {content.responses.data_hash[:12]}…; command and "
+        "study file are printed, and the draws are kept in fit.nc. Whether the data may be given "
+        "away is for the authors to say.",
+        (_REPRODUCE,),
+        "BARG 6B-6E",
+    )
+
+
+def _cross_classified(facts: Facts) -> Answered:
+    return Answered(
+        "Where are the cross-classified test results?",
+        f"The file membership_of_patterns.csv lists the {counted(_n_units(facts), 'combination')} "
+        "of results with the number of cases of each population.",
+        guidelines="STARD-BLCM 23",
+    )
+
+
+def _n_units(facts: Facts) -> int:
+    return facts.content.responses.units.n_units
+
+
+def _for_the_authors() -> Bullets:
+    return Bullets(
+        tuple(
+            (f"STARD-BLCM {numbers}", f"is for the paper itself to say: {subject}.")
+            for numbers, subject in _FOR_THE_AUTHORS
+        )
+    )

@@ -1,0 +1,101 @@
+"""The tables of a report as they go into files: stable columns, one row a quantity."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca.report.columns import column
+from bayeslca.report.priors import priors_table
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from bayeslca.report.content import ReportContent
+
+
+@dataclass(frozen=True)
+class FileTable:
+    """A table for ``tables/<name>.csv`` and a sheet of the workbook.
+
+    Attributes
+    ----------
+    name : str
+        File name without its ending; the sheet's name.
+    title : str
+        What it holds, in a sentence.
+    frame : pandas.DataFrame
+        Key columns first, no index.
+    """
+
+    name: str
+    title: str
+    frame: pd.DataFrame
+
+
+def file_tables(content: ReportContent) -> tuple[FileTable, ...]:
+    """Return all tables of a report; none holds a single case's name or answers."""
+    posterior, interval = content.posterior, content.interval
+    named: dict[str, tuple[str, pd.DataFrame]] = {
+        "prevalence": ("How common each class is", posterior.prevalence(interval=interval)),
+        "response_probabilities": (
+            "The probability of each answer in each class",
+            posterior.response_probabilities(interval=interval),
+        ),
+        "assignment_error": (
+            "Of the cases of each class, the share whose most probable class is each class",
+            posterior.assignment_error(interval=interval),
+        ),
+        "separation": (
+            "How well the answers tell the classes apart",
+            posterior.separation(interval=interval),
+        ),
+        "priors": ("What was assumed before the answers", priors_table(posterior)),
+        "answers": ("What was answered", content.responses.summary()),
+        "diagnostics": ("How the sampling went", posterior.diagnostics().table),
+    }
+    if content.comparison is not None:
+        counts = content.comparison.table
+        named["class_counts"] = (
+            "How well models with different numbers of classes predict",
+            counts.rename_axis(counts.index.name or "model"),
+        )
+    tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
+    return (*tables, _columns_table(tables))
+
+
+def _flat(frame: pd.DataFrame) -> pd.DataFrame:
+    """Return the frame with its index, where that means something, as columns."""
+    if frame.index.name is None and frame.index.nlevels == 1:
+        return frame.reset_index(drop=True)
+    return frame.reset_index()
+
+
+def _columns_table(tables: list[FileTable]) -> FileTable:
+    import pandas as pd
+
+    rows: list[Mapping[str, str]] = []
+    for table in tables:
+        for name in table.frame.columns:
+            meaning = column(str(name))
+            rows.append(
+                {
+                    "table": table.name,
+                    "column": str(name),
+                    "words": meaning.words,
+                    "meaning": meaning.gloss,
+                }
+            )
+    return FileTable("columns", "What every column of every table means", pd.DataFrame(rows))
+
+
+def records(frame: pd.DataFrame) -> list[dict[str, object]]:
+    """Return the rows of a frame with plain Python values, missing ones as None."""
+    cleaned = frame.astype(object).where(frame.notna(), None)
+    return [
+        {str(key): value.item() if isinstance(value, np.generic) else value for key, value in row}
+        for row in (record.items() for record in cleaned.to_dict("records"))
+    ]
