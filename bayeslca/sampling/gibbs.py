@@ -19,6 +19,7 @@ import numpy as np
 from bayeslca._typing import Floats, Ints
 from bayeslca.sampling.cells import count_general_rows, general_rows
 from bayeslca.sampling.compiled import compiled, compiled_inline, compiled_part
+from bayeslca.sampling.label_move import swap_labels
 from bayeslca.sampling.layout import Layout, Workspace
 from bayeslca.sampling.split import CASE_BY_CASE, draw_shares, pick, split_count
 
@@ -138,60 +139,6 @@ def draw_prevalence(
         for k in range(n_classes):
             work.class_parameter[g * n_classes + k] = concentration[g, k] + work.class_count[g, k]
     draw_shares(layout.class_start, work.class_parameter, prevalence.reshape(-1), rng)
-
-
-@compiled
-def swap_labels(
-    layout: Layout,
-    work: Workspace,
-    concentration: Floats,
-    permutations: Ints,
-    element_maps: Ints,
-    elements: Floats,
-    prevalence: Floats,
-    rng: np.random.Generator,
-) -> int:
-    """Propose one permutation of the classes that leaves the likelihood unchanged.
-
-    Accepted with the ratio of prior densities, so that chains are not trapped in a labelling
-    that the priors like less (or more) than another. The list of moves holds each move's inverse
-    too, so the proposal is symmetric.
-
-    Parameters
-    ----------
-    layout, work, concentration, elements, prevalence, rng : see `sweep`
-    permutations : ndarray of int64, shape (M, groups, K)
-        permutations[m, g, k] is the old position that becomes class k.
-    element_maps : ndarray of int64, shape (M, E)
-        New element e takes the value of old element element_maps[m, e].
-
-    Returns
-    -------
-    int
-        1 when accepted, 0 otherwise.
-    """
-    move = min(int(rng.random() * permutations.shape[0]), permutations.shape[0] - 1)
-    log_ratio = 0.0
-    for e in range(elements.shape[0]):
-        old = element_maps[move, e]
-        work.swap_elements[e] = elements[old]
-        if layout.element_prior[e] != layout.element_prior[old]:
-            log_ratio += (layout.element_prior[e] - layout.element_prior[old]) * math.log(
-                elements[old]
-            )
-    for g in range(prevalence.shape[0]):
-        for k in range(prevalence.shape[1]):
-            old = permutations[move, g, k]
-            work.swap_prevalence[g, k] = prevalence[g, old]
-            if concentration[g, k] != concentration[g, old]:
-                log_ratio += (concentration[g, k] - concentration[g, old]) * math.log(
-                    prevalence[g, old]
-                )
-    if math.log1p(-rng.random()) >= log_ratio:
-        return 0
-    elements[:] = work.swap_elements
-    prevalence[:] = work.swap_prevalence
-    return 1
 
 
 @compiled

@@ -1,0 +1,248 @@
+"""A chain: the state of one Gibbs sampler, its generator, and the task it works on."""
+
+from __future__ import annotations
+
+import threading
+import time
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca._typing import Floats, Ints
+from bayeslca.exceptions import SamplingError
+from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
+from bayeslca.model.symmetry import Symmetry, element_map
+from bayeslca.model.table import Table, UnitTable
+from bayeslca.sampling.layout import Layout, arrange, workspace
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+MOVES_EVERY = 5
+"""Sweeps from one proposal of a permutation to the next."""
+
+BLOCK_SECONDS = 0.05
+"""A chain looks at the stop flag about so often."""
+
+
+class Stopped(Exception):
+    """A chain left its work because the stop flag was set."""
+
+
+@dataclass(frozen=True, eq=False)
+class Task:
+    """What the chains sample: the same for all of them, never changed.
+
+    Attributes
+    ----------
+    table : Table
+    units : UnitTable
+    source : DirichletPrevalence
+    layout : Layout
+    permutations : ndarray of int64, shape (M, groups, K)
+        Permutation moves to propose; none when labels only differ where the prior does not.
+    element_maps : ndarray of int64, shape (M, E)
+    """
+
+    table: Table
+    units: UnitTable
+    source: DirichletPrevalence
+    layout: Layout
+    permutations: Ints
+    element_maps: Ints
+
+
+@dataclass(frozen=True, eq=False)
+class Kept:
+    """Kept draws of one chain; see `bayeslca.sampling.draws.Draws`.
+
+    Attributes
+    ----------
+    elements : ndarray, shape (draw, E)
+    prevalence : ndarray, shape (draw, groups, K)
+    log_likelihood, swaps : ndarray, shape (draw,)
+    """
+
+    elements: Floats
+    prevalence: Floats
+    log_likelihood: Floats
+    swaps: Floats
+
+    @classmethod
+    def empty(cls, draws: int, n_elements: int, groups: int, n_classes: int) -> Kept:
+        """Return room for so many draws."""
+        return cls(
+            np.empty((draws, n_elements)),
+            np.empty((draws, groups, n_classes)),
+            np.empty(draws),
+            np.empty(draws),
+        )
+
+    def part(self, rows: slice) -> Kept:
+        """Return some of the draws (views, not copies)."""
+        return Kept(
+            self.elements[rows],
+            self.prevalence[rows],
+            self.log_likelihood[rows],
+            self.swaps[rows],
+        )
+
+
+def make_task(
+    table: Table, units: UnitTable, source: PrevalenceSource, labels: Symmetry | None
+) -> Task:
+    """Collect what the chains need.
+
+    Parameters
+    ----------
+    table : Table
+    units : UnitTable
+    source : PrevalenceSource
+    labels : Symmetry or None
+        None to do without permutation moves.
+
+    Raises
+    ------
+    SamplingError
+        Where the Gibbs sampler has no exact step.
+    """
+    if not isinstance(source, DirichletPrevalence):
+        msg = (
+            f"prevalences come from {type(source).__name__}, for which the Gibbs sampler has no "
+            "exact step. Use sampler='nuts'."
+        )
+        raise SamplingError(msg)
+    if table.is_bounded:
+        msg = (
+            "the model bounds or orders probabilities (statements with <, >, <= or >=), which "
+            "the Gibbs sampler does not draw yet. Leave these statements out."
+        )
+        raise SamplingError(msg)
+    permutations = np.zeros((0, table.n_prevalence_rows, table.n_classes), dtype=np.int64)
+    if labels is not None and labels.table_group.n_members > labels.prior_group.n_members:
+        permutations = np.ascontiguousarray(labels.table_group.proposals, dtype=np.int64)
+    maps = [element_map(table, permutation) for permutation in permutations]
+    return Task(
+        table=table,
+        units=units,
+        source=source,
+        layout=arrange(table, units, source.n_rows),
+        permutations=permutations,
+        element_maps=np.asarray(maps, dtype=np.int64).reshape(-1, table.n_elements),
+    )
+
+
+class Chain:
+    """One chain: everything that changes while it runs belongs to it alone.
+
+    Parameters
+    ----------
+    task : Task
+    elements : ndarray, shape (E,)
+    prevalence : ndarray, shape (groups, K)
+    rng : numpy.random.Generator
+    """
+
+    def __init__(
+        self, task: Task, elements: Floats, prevalence: Floats, rng: np.random.Generator
+    ) -> None:
+        self.task = task
+        self.elements = np.array(elements, dtype=np.float64)
+        self.prevalence = np.array(prevalence, dtype=np.float64, order="C")
+        self.rng = rng
+        self.sweeps = 0
+        self._work = workspace(task.layout)
+        self._seconds_per_sweep = 1e-5
+
+    def run(
+        self,
+        draws: int,
+        thin: int,
+        stop: threading.Event | None = None,
+        report: Callable[[int], None] | None = None,
+    ) -> Kept:
+        """Go on for draws x thin sweeps and keep every thin-th state.
+
+        The compiled code runs in blocks of some hundredths of a second; what is drawn does not
+        depend on where they end.
+
+        Parameters
+        ----------
+        draws, thin : int
+        stop : threading.Event, optional
+            Looked at between blocks.
+        report : callable, optional
+            Given the number of sweeps of each block.
+
+        Raises
+        ------
+        Stopped
+            When the stop flag was set.
+        SamplingError
+            When a unit has probability 0 in every class.
+        """
+        kept = Kept.empty(draws, self.elements.size, *self.prevalence.shape)
+        first = 0
+        while first < draws:
+            if stop is not None and stop.is_set():
+                raise Stopped
+            block = max(1, int(BLOCK_SECONDS / (self._seconds_per_sweep * thin)))
+            last = min(draws, first + block)
+            start = time.perf_counter()
+            self._run_block(kept.part(slice(first, last)), thin)
+            n_sweeps = (last - first) * thin
+            self._seconds_per_sweep = max((time.perf_counter() - start) / n_sweeps, 1e-7)
+            if report is not None:
+                report(n_sweeps)
+            first = last
+        return kept
+
+    def _run_block(self, kept: Kept, thin: int) -> None:
+        from bayeslca.sampling.gibbs import run_sweeps
+
+        task = self.task
+        failed = run_sweeps(
+            task.layout,
+            self._work,
+            task.source.concentration,
+            task.permutations,
+            task.element_maps,
+            MOVES_EVERY,
+            self.sweeps,
+            thin,
+            self.elements,
+            self.prevalence,
+            kept.elements,
+            kept.prevalence,
+            kept.log_likelihood,
+            kept.swaps,
+            self.rng,
+        )
+        self.sweeps += kept.log_likelihood.size * thin
+        if failed:
+            msg = "some answers have probability 0 in every class; check the fixed probabilities."
+            raise SamplingError(msg)
+
+
+def thinned(older: Kept, newer: Kept) -> Kept:
+    """Drop every other draw of the older ones and append the newer, thinned twice as much."""
+    half = older.part(slice(1, None, 2))
+    pairs = older.swaps[: 2 * half.swaps.size].reshape(-1, 2).sum(axis=1)
+    return Kept(
+        np.concatenate([half.elements, newer.elements]),
+        np.concatenate([half.prevalence, newer.prevalence]),
+        np.concatenate([half.log_likelihood, newer.log_likelihood]),
+        np.concatenate([pairs, newer.swaps]),
+    )
+
+
+def stacked(chains: Sequence[Kept]) -> Kept:
+    """Stack the kept draws of chains: a leading chain axis on every array."""
+    return Kept(
+        np.stack([kept.elements for kept in chains]),
+        np.stack([kept.prevalence for kept in chains]),
+        np.stack([kept.log_likelihood for kept in chains]),
+        np.stack([kept.swaps for kept in chains]),
+    )
