@@ -67,6 +67,19 @@ def compile_units(table: Table, units: Units, log_weight: Floats | None = None) 
     )
 
 
+def pool_groups(units: Units) -> Units:
+    """Join units that differ in their group only, for a model without groups."""
+    pattern, joined = np.unique(units.pattern, axis=0, return_inverse=True)
+    joined = joined.reshape(-1)
+    unit_of_row = np.where(units.unit_of_row >= 0, joined[units.unit_of_row], -1)
+    return Units(
+        pattern=pattern,
+        group=np.zeros(len(pattern), dtype=np.int32),
+        count=np.bincount(joined, weights=units.count, minlength=len(pattern)).astype(np.int64),
+        unit_of_row=unit_of_row,
+    )
+
+
 def verified_log_weight(verified: Ints, n_classes: int) -> Floats:
     """Return the extra log weight (row, K) of rows whose class is known.
 

@@ -97,6 +97,8 @@ def identifiability(
         rank = int(np.sum(values > RELATIVE_ZERO * values.max(initial=0.0)))
         if rank > best[0]:
             best = rank, vectors[rank:]
+        if rank == n_free:
+            break
     rank, null = best
     not_identified = _named(free_names, null)
     weak: bool | None = None

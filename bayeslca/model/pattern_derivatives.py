@@ -121,7 +121,8 @@ def _derivatives(table: Table, cells: Ints, g: int, point: Parameters) -> Floats
     share = point.prevalence[g]
     joint = before[:, -1]  # p(cell | class)
     by_row = np.zeros((len(cells), table.n_rows + 1, n_classes))
-    np.add.at(by_row, (np.arange(len(cells))[:, None], rows), others * share)
+    for j in range(table.n_items):  # of one item, each cell has one row only
+        by_row[np.arange(len(cells)), rows[:, j]] += others[:, j] * share
     out = np.zeros((len(cells), n_elements + table.n_prevalence_rows * n_classes))
     at = by_row[:, :-1].reshape(len(cells), -1)
     out[:, :n_elements] = at @ _row_derivatives(table, point.elements)
