@@ -72,6 +72,8 @@ COLUMNS: dict[str, Column] = {
     ),
     "statement": Column("Stated as", "the statement in the study, empty for a default", "text"),
     "source": Column("Source", "where the prior comes from, as the study says", "text"),
+    "model": Column("Model", "the number of classes, or the study's own model", "text"),
+    "classes": Column("Classes", "the number of classes, or the study's own model", "text"),
     "elpd": Column(
         "Predictive accuracy",
         "expected log predictive density of a new case's answers, summed over cases; higher is "

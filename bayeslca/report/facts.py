@@ -11,7 +11,7 @@ import numpy as np
 from bayeslca.report.content import ReportContent
 from bayeslca.report.placement import Placement, placement
 from bayeslca.report.priors import ruled_by_prior
-from bayeslca.report.wording import about_of, called, listed, percent_interval, whole
+from bayeslca.report.wording import about_of, called, in_words, percent_interval, whole
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -149,15 +149,29 @@ def overall_shares(posterior: Posterior, interval: float) -> tuple[Share, ...]:
     )
 
 
+MOST_LISTED = 4
+"""With more classes, a sentence names the largest and the smallest only."""
+
+
 def shares_in_words(shares: tuple[Share, ...], n_cases: int) -> str:
     """Return a clause that says how common each class is, the largest first."""
     first, *others = sorted(shares, key=lambda share: -share.median)
-    rest = [
-        f"{called(share.name)} holds {share.text}, about {whole(share.median * n_cases)}"
-        for share in others
-    ]
+    which = "the largest" if first.name.isdigit() else "the largest class"
     largest = (
-        f"the largest class, {first.name}, holds {first.text} of the cases, "
+        f"{which}, {called(first.name)}, holds {first.text} of the cases, "
         f"{about_of(first.median, n_cases)}"
     )
-    return "; ".join([largest, listed(rest)]) if rest else largest
+    if len(shares) > MOST_LISTED:
+        last = others[-1]
+        return (
+            f"of {in_words(len(shares))} classes, {largest}, and the smallest, "
+            f"{called(last.name)}, {last.text}, about {whole(last.median * n_cases)}"
+        )
+    rest = [_holds(share, n_cases) for share in others]
+    if len(rest) > 1:
+        rest[-1] = f"and {rest[-1]}"
+    return "; ".join([largest, *rest])
+
+
+def _holds(share: Share, n_cases: int) -> str:
+    return f"{called(share.name)} holds {share.text}, about {whole(share.median * n_cases)}"

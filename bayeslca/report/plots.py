@@ -23,7 +23,7 @@ from bayeslca.report.palette import (
 )
 from bayeslca.report.placement import placement
 from bayeslca.report.sampling_plots import plot_ranks, plot_traces
-from bayeslca.report.wording import level, percent_value
+from bayeslca.report.wording import called, level, percent_value
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -96,7 +96,7 @@ def plot_profile(
     for k, name in enumerate(names):
         cells = [table[(name, item.name, category)] for item, category in rows]
         places = np.arange(len(rows)) + offsets[k]
-        _points(ax, cells, places, k, label=plain(name, LABEL_WIDTH, 1))
+        _points(ax, cells, places, k, label=plain(called(name), LABEL_WIDTH, 1))
     ax.set_yticks(range(len(rows)), [_row_label(item, category) for item, category in rows])
     ax.set_ylim(len(rows) - 0.5, -0.5)
     _percent_axis(ax, f"Probability of the answer given the class, with {level(interval)} interval")
@@ -164,7 +164,7 @@ def plot_ordered_item(
                     ha="center", va="center", fontsize=8, color=ink_on(colours[position]),
                 )  # fmt: skip
         _border_intervals(ax, draws[:, k], k, interval)
-    ax.set_yticks(range(len(names)), [plain(name, LABEL_WIDTH) for name in names])
+    ax.set_yticks(range(len(names)), [plain(called(name), LABEL_WIDTH) for name in names])
     ax.set_ylim(len(names) - 0.5, -0.5)
     _percent_axis(ax, f"Share of the class; borders with {level(interval)} interval")
     _legend_above(ax, count)
@@ -192,13 +192,12 @@ def plot_prevalence(
     height = 1.1 + 0.36 * len(names) * len(groups)
     ax = ax if ax is not None else _new_axes(7.0, height)
     labels = []
-    for at, group in enumerate(groups):
-        part = frame if group is None else frame[frame["group"] == group]
-        by_class = part.set_index("latent_class")
-        for k, name in enumerate(names):
-            place = at * len(names) + k
-            _points(ax, [by_class.loc[name]], np.array([place]), k)
-            labels.append(name if group is None else f"{name}, {group}")
+    for k, name in enumerate(names):
+        mine = frame[frame["latent_class"] == name]
+        for group in groups:
+            part = mine if group is None else mine[mine["group"] == group]
+            _points(ax, part.to_dict("records"), np.array([len(labels)]), k)
+            labels.append(called(name) if group is None else f"{called(name)}, {group}")
     ax.set_yticks(range(len(labels)), [plain(text, LABEL_WIDTH) for text in labels])
     ax.set_ylim(len(labels) - 0.5, -0.5)
     _percent_axis(ax, f"Share of the cases, with {level(interval)} interval")
@@ -286,7 +285,7 @@ def plot_membership(posterior: Posterior, *, ax: Axes | None = None) -> Axes:
             xytext=(4, 0), textcoords="offset points", fontsize=8.5, va="center", color=INK,
         )  # fmt: skip
     ax.set_yticks(
-        np.arange(len(names)) + 0.3, [plain(name, LABEL_WIDTH) for name in reversed(names)]
+        np.arange(len(names)) + 0.3, [plain(called(name), LABEL_WIDTH) for name in reversed(names)]
     )
     ax.set_ylim(-0.05, len(names))
     _percent_axis(ax, "Probability of the case's most probable class")
@@ -361,7 +360,7 @@ def _keyed(frame: pd.DataFrame) -> dict[tuple[str, str, str], dict[str, float]]:
 
 
 def _row_label(item: Item, category: str) -> str:
-    if item.n_categories == 2 and item.yes is not None:
+    if item.n_categories == 2 and item.yes is not None and item.yes.casefold() == "yes":
         return plain(item.text, LABEL_WIDTH)
     return plain(f"{item.text}: {category}", LABEL_WIDTH)
 

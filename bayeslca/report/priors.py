@@ -9,7 +9,6 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats
-from bayeslca.report.wording import significant
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -82,7 +81,7 @@ def distribution(parameters: Sequence[float] | Floats) -> str:
 
     A Beta is of the answer that counts as yes, so its parameters come in the order yes, no.
     """
-    numbers = ", ".join(significant(float(value), 3) for value in parameters)
+    numbers = ", ".join(f"{float(value):.4g}" for value in parameters)
     return f"{'Beta' if len(parameters) == 2 else 'Dirichlet'}({numbers})"
 
 

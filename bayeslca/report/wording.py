@@ -60,7 +60,13 @@ def percent_interval(median: float, lower: float, upper: float) -> str:
     """Return a share with its interval: ``41 % (30 to 52)``."""
     if not math.isfinite(median):
         return NOTHING
-    return f"{percent(median)} ({percent_value(lower)} to {percent_value(upper)})"
+    return f"{percent(median)} ({percent_bound(lower)} to {percent_bound(upper)})"
+
+
+def percent_bound(share: float) -> str:
+    """Return an interval's end as a percentage without its sign, 0 and 100 when it is as near."""
+    value = percent_value(share)
+    return {"below 0.1": "0", "above 99.9": "100"}.get(value, value)
 
 
 def number_interval(median: float, lower: float, upper: float, places: int = 2) -> str:

@@ -96,7 +96,7 @@ def _warning(facts: Facts) -> Banner:
 
 
 def _entry(facts: Facts, share: Share) -> tuple[str, str]:
-    term = f"{called(share.name)}: {share.text}, {about_of(share.median, facts.n_cases)}"
+    term = f"{called(share.name)}: {share.text}, {about_of(share.median, facts.n_cases)}."
     return term, portrait(facts, share.name)
 
 

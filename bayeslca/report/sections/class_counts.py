@@ -8,7 +8,15 @@ from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, S
 from bayeslca.report.facts import Facts
 from bayeslca.report.figures import draw
 from bayeslca.report.plots import plot_class_counts, row_name
-from bayeslca.report.wording import NOTHING, decimal, listed, percent, sentence, whole
+from bayeslca.report.wording import (
+    NOTHING,
+    counted_in_words,
+    decimal,
+    listed,
+    percent,
+    sentence,
+    whole,
+)
 
 ANCHOR, HEADING = "class-counts", "How many classes the data support"
 SMALL = 100
@@ -56,7 +64,8 @@ def _in_words(facts: Facts) -> str:
         return ""
     text = sentence(comparison.verdict)
     if facts.content.chosen_because:
-        text += " " + sentence(f"the study chose because {facts.content.chosen_because}")
+        chosen = counted_in_words(len(facts.class_names), "class", "classes")
+        text += " " + sentence(f"the study has {chosen} because {facts.content.chosen_because}")
     if facts.outside_tie:
         text += (
             " The study's own model lies outside the tie: the data alone would not have led to it."

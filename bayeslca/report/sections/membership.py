@@ -14,7 +14,6 @@ from bayeslca.report.wording import (
     number_interval,
     percent,
     percent_interval,
-    sentence,
     whole,
 )
 
@@ -74,7 +73,7 @@ def _in_words(facts: Facts) -> str:
         f"Of {total}, {whole(sure)} have a most probable class of 90 % or more, and {whole(unsure)}"
         f" one of less than 60 %; the average is {percent(placed.mean_highest)}. "
     )
-    return text + sentence(f"by most probable class, the cases lie {most}")
+    return text + f"By most probable class, there are {most}."
 
 
 def _placed_table(facts: Facts) -> PageTable:

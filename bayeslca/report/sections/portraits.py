@@ -19,7 +19,7 @@ def portrait(facts: Facts, latent_class: str) -> str:
     cells = class_cells(facts, latent_class)
     usual: dict[str, list[str]] = {}
     seldom: dict[str, list[str]] = {}
-    between: dict[str, list[str]] = {}
+    between: list[str] = []
     several: list[str] = []
     for item in facts.posterior.model.items:
         mark = PRIOR_MARK if (latent_class, item.name) in facts.ruled else ""
@@ -30,13 +30,17 @@ def portrait(facts: Facts, latent_class: str) -> str:
             continue
         yes = item.yes or item.categories[-1]
         median = cells[(item.name, yes)]["median"]
-        where = usual if median >= USUAL else seldom if median <= SELDOM else between
-        where.setdefault(yes, []).append(f"{item.text} ({percent(median)}{mark})")
+        text = f"{item.text} ({percent(median)}{mark})"
+        if USUAL > median > SELDOM:
+            between.append(text)
+        else:
+            (usual if median >= USUAL else seldom).setdefault(yes, []).append(text)
     parts = [
         *_sentences(f"usually ({percent(USUAL)} or more)", usual),
         *_sentences(f"seldom ({percent(SELDOM)} or less)", seldom),
-        *_sentences("in between", between),
     ]
+    if between:
+        parts.append(f"in between: {listed_up_to(between, MOST_NAMED)}.")
     if several:
         parts.append(f"{listed_up_to(several, MOST_NAMED)}.")
     return " ".join(part[0].upper() + part[1:] for part in parts)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
-from bayeslca.report.facts import Facts, shares_in_words
+from bayeslca.report.facts import Facts, Share, shares_in_words
 from bayeslca.report.figures import draw
 from bayeslca.report.plots import plot_prevalence
 from bayeslca.report.wording import (
@@ -11,7 +11,6 @@ from bayeslca.report.wording import (
     counted,
     level,
     listed,
-    percent_interval,
     sentence,
     whole,
 )
@@ -64,26 +63,18 @@ def _table(facts: Facts) -> PageTable:
     frame = facts.posterior.prevalence(interval=facts.content.interval)
     groups = facts.posterior.model.groups
     units = facts.content.responses.units
-    rows = []
-    for row in frame.to_dict("records"):
-        size, where = facts.n_cases, []
+    rows: list[tuple[str, ...]] = []
+    for name, overall in zip(facts.class_names, facts.overall, strict=True):
+        for row in frame[frame["latent_class"] == name].to_dict("records"):
+            size, where = facts.n_cases, []
+            if groups:
+                where = [str(row["group"])]
+                at = groups.levels.index(row["group"])
+                size = int(units.count[units.group == at].sum())
+            share = Share(name, row["median"], row["lower"], row["upper"])
+            rows.append(_row(share, where, size))
         if groups:
-            where = [str(row["group"])]
-            at = groups.levels.index(row["group"]) if row["group"] in groups.levels else None
-            size = facts.n_cases if at is None else int(units.count[units.group == at].sum())
-        share = percent_interval(row["median"], row["lower"], row["upper"])
-        cases = (
-            f"{whole(row['median'] * size)} "
-            f"({whole(row['lower'] * size)} to {whole(row['upper'] * size)})"
-        )
-        rows.append((called(str(row["latent_class"])), *where, share, cases, whole(size)))
-    if groups:
-        rows += [
-            (called(share.name), "overall", share.text,
-             f"{whole(share.median * facts.n_cases)} ({whole(share.lower * facts.n_cases)} to "
-             f"{whole(share.upper * facts.n_cases)})", whole(facts.n_cases))
-            for share in facts.overall
-        ]  # fmt: skip
+            rows.append(_row(overall, ["overall"], facts.n_cases))
     heads = (
         Head("Class", "the class that the row is about", numeric=False),
         *([Head("Group", "the group of cases", numeric=False)] if groups else []),
@@ -92,3 +83,9 @@ def _table(facts: Facts) -> PageTable:
         Head("Of", "cases observed with at least one answer"),
     )
     return PageTable("The share of the cases in each class", heads, tuple(rows))
+
+
+def _row(share: Share, where: list[str], size: int) -> tuple[str, ...]:
+    low, high = whole(share.lower * size), whole(share.upper * size)
+    cases = f"{whole(share.median * size)} ({low} to {high})"
+    return (called(share.name), *where, share.text, cases, whole(size))

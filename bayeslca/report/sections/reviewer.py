@@ -73,7 +73,10 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     yield _converged(facts)
     yield _priors(facts)
     yield _open("What did the priors imply before the data?", "BARG 1E; WAMBS 1")
-    yield _open("Would other priors have changed the answer?", "BARG 5A-5C; WAMBS 7-9", "14b")
+    yield _open(
+        "Would other priors have changed the answer?",
+        _items("BARG 5A-5C; WAMBS 7-9", "14b", facts),
+    )
     yield _independence(facts)
     yield _open("Does the model reproduce the answers that were seen?", "BARG 3A")
     yield _missing(facts)
@@ -98,9 +101,8 @@ def _items(others: str, stard: str, facts: Facts) -> str:
     return "; ".join(part for part in (others, mine) if part)
 
 
-def _open(question: str, guidelines: str, stard: str = "") -> Answered:
-    where = f"{guidelines}; STARD-BLCM {stard}" if stard else guidelines
-    return Answered(question, NOT_DONE, guidelines=where, done=False)
+def _open(question: str, guidelines: str) -> Answered:
+    return Answered(question, NOT_DONE, guidelines=guidelines, done=False)
 
 
 def _why_this_number(facts: Facts) -> Answered:
@@ -232,7 +234,7 @@ def _software(facts: Facts, versions: Mapping[str, str]) -> Answered:
     main = [f"{name} {versions[name]}" for name in ("bayeslca", "Python") if name in versions]
     return Answered(
         "Which software, in which version?",
-        sentence(listed(main)) + " The others are listed.",
+        f"It was {listed(main)}; the others are listed.",
         (_REPRODUCE,),
         "BARG 2A, 6A",
     )

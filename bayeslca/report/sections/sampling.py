@@ -10,6 +10,7 @@ from bayeslca.report.figures import Figure, draw
 from bayeslca.report.sampling_plots import plot_ranks, plot_traces, traced_quantities
 from bayeslca.report.wording import (
     counted,
+    counted_in_words,
     decimal,
     duration,
     sentence,
@@ -65,18 +66,17 @@ def starts_in_words(facts: Facts) -> str:
         return ""
     n_runs = len(starts.mode)
     n_best = int((starts.mode == 0).sum())
+    best = "all" if n_best == n_runs else whole(n_best)
     text = (
-        f"Before that, {counted(n_runs, 'short run')} from scattered points found "
-        f"{counted(starts.n_modes, 'mode')} within {significant(starts.reach)} nats of the best; "
-        f"{whole(n_best)} of them reached the best."
+        f"From scattered points, {counted(n_runs, 'short run')} found "
+        f"{counted_in_words(starts.n_modes, 'mode')} within {significant(starts.reach)} nats of "
+        f"the best; {best} of them reached the best."
     )
     if starts.dropped:
-        text += f" {counted(len(starts.dropped), 'mode')} further down {_was(starts.dropped)} left."
+        n_dropped = len(starts.dropped)
+        was = "was" if n_dropped == 1 else "were"
+        text += f" {counted(n_dropped, 'mode')} further down {was} left."
     return text
-
-
-def _was(many: tuple[int, ...]) -> str:
-    return "was" if len(many) == 1 else "were"
 
 
 def _figure(facts: Facts) -> Figure:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass, field
 from functools import cached_property
 from types import SimpleNamespace
@@ -137,7 +136,11 @@ class StandInPosterior:
     ) -> pd.DataFrame:
         means = self.membership_draws.mean(axis=(0, 1))
         frame = pd.DataFrame(means, columns=list(self.model.class_names))
-        return frame.iloc[self.responses.units.unit_of_row].reset_index(drop=True)
+        if rows == "patterns":
+            return frame
+        frame = frame.iloc[self.responses.units.unit_of_row].reset_index(drop=True)
+        frame.insert(0, "case", self.responses.case_ids)
+        return frame
 
     def diagnostics(self) -> Any:
         rows = [
@@ -161,6 +164,16 @@ def make_items(n_items: int, **special: Item) -> tuple[Item, ...]:
     return (*items, *special.values())
 
 
+class StandInModel(LatentClassModel):
+    """The model, with what it says of itself made up."""
+
+    def describe(self, responses: Any = None) -> str:
+        return "The model in words."
+
+    def findings(self, responses: Any = None) -> tuple[Finding, ...]:
+        return ()
+
+
 def one_mode() -> StartingPoints:
     every = np.zeros(16, dtype=int)
     return StartingPoints(np.full(16, -420.0), every, 1, np.arange(4), (), -420.0)
@@ -172,12 +185,13 @@ def make_posterior(
     *,
     n_cases: int = 118,
     groups: Groups | None = None,
+    statements: tuple[str, ...] = (),
     seed: int = 1,
     **more: Any,
 ) -> StandInPosterior:
     """Make a posterior around made-up parameters, with answers simulated from them."""
     rng = np.random.default_rng(seed)
-    model = LatentClassModel(items, classes, groups=groups)
+    model = StandInModel(items, classes, statements=statements, groups=groups)
     k, n_groups = model.n_classes, model.n_groups
     prevalence = rng.dirichlet(np.full(k, 6.0), size=n_groups)
     blocks = [rng.dirichlet(np.full(i.n_categories, 0.6)) for i in items for _ in range(k)]
@@ -227,7 +241,11 @@ def make_comparison(counts: range = range(1, 7), best: int = 2) -> Any:
 @pytest.fixture(scope="session")
 def small() -> StandInPosterior:
     """Seven yes/no items, three named classes."""
-    return make_posterior(make_items(7), ("managed", "informal", "lapsed"))
+    rules = (
+        "managed is where P(item_1=yes) is highest",
+        "lapsed is where P(item_2=yes) is lowest",
+    )
+    return make_posterior(make_items(7), ("managed", "informal", "lapsed"), statements=rules)
 
 
 @pytest.fixture(scope="session")
@@ -267,5 +285,11 @@ def make_content(posterior: StandInPosterior, **more: Any) -> ReportContent:
 
 
 @pytest.fixture(scope="session")
-def posterior_of() -> Callable[..., StandInPosterior]:
-    return make_posterior
+def made() -> SimpleNamespace:
+    """Return the makers above: test modules cannot import this file."""
+    return SimpleNamespace(
+        items=make_items,
+        posterior=make_posterior,
+        comparison=make_comparison,
+        content=make_content,
+    )
