@@ -191,7 +191,7 @@ def plot_prevalence(
     groups = list(dict.fromkeys(frame["group"])) if "group" in frame else [None]
     height = 1.1 + 0.36 * len(names) * len(groups)
     ax = ax if ax is not None else _new_axes(7.0, height)
-    labels = []
+    labels: list[str] = []
     for k, name in enumerate(names):
         mine = frame[frame["latent_class"] == name]
         for group in groups:

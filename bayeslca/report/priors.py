@@ -55,7 +55,7 @@ def prior_weights(posterior: Posterior) -> tuple[PriorWeight, ...]:
     model = posterior.model
     units = posterior.responses.units
     share = np.asarray(posterior.prevalence_draws).mean(axis=(0, 1))
-    weights = []
+    weights: list[PriorWeight] = []
     for j, item in enumerate(model.items):
         answered = np.where(units.pattern[:, j] >= 0, units.count, 0)
         by_group = np.bincount(units.group, weights=answered, minlength=share.shape[0])
@@ -125,8 +125,10 @@ def _summary(parameters: Floats, at: int, written: str, share: float) -> dict[st
 
     total = float(parameters.sum())
     mine = float(parameters[at])
-    known = mine >= total  # a class alone holds everyone: no distribution to take a quantile of
-    lower, upper = (1.0, 1.0) if known else beta.ppf([0.025, 0.975], mine, total - mine)
+    if mine < total:
+        lower, upper = np.asarray(beta.ppf([0.025, 0.975], mine, total - mine))
+    else:  # a single class holds everyone: there is no distribution to take a quantile of
+        lower, upper = 1.0, 1.0
     return {
         "prior": written,
         "prior_mean": mine / total,

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 
-from bayeslca.report.blocks import Answered, Bullets, Paragraph, Questions, Section
+from bayeslca.report.blocks import Answered, Block, Bullets, Paragraph, Questions, Section
 from bayeslca.report.facts import Facts
 from bayeslca.report.plots import row_name
 from bayeslca.report.references import REFERENCES
@@ -58,7 +58,7 @@ def reviewer_section(facts: Facts, versions: Mapping[str, str]) -> Section:
         "numbers in brackets are items of reporting guidelines that ask the same; read the "
         "originals before you claim to follow them."
     )
-    blocks = [
+    blocks: list[Block] = [
         Paragraph(said),
         Questions(entries),
         *([_for_the_authors()] if facts.looks_diagnostic else []),

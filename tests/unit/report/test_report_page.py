@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Callable
 from html.parser import HTMLParser
 from pathlib import Path
 from typing import Any
@@ -14,7 +15,9 @@ from bayeslca.findings import Finding
 from bayeslca.report.columns import COLUMNS
 from bayeslca.report.content import Change, ReportContent, WrittenReport
 from bayeslca.report.facts import Facts
+from bayeslca.report.figures import Figure
 from bayeslca.report.references import REFERENCES, cited_in
+from bayeslca.report.sections import class_counts, classes, membership, prevalence, sampling
 from bayeslca.report.sections.answer import headline
 from bayeslca.report.sections.methods import methods_paragraph
 from bayeslca.report.write import write_report
@@ -73,8 +76,23 @@ class Text(HTMLParser):
         return " ".join(" ".join(self.words).replace("\u00a0", " ").split())
 
 
-def page_of(content: ReportContent, folder: Path) -> Text:
-    return Text(write_report(content, folder).page.read_text(encoding="utf-8"))
+PageOf = Callable[[ReportContent], Text]
+
+
+@pytest.fixture
+def page_of(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> PageOf:
+    """Return a function that writes a page whose figures are not drawn, and reads its text."""
+
+    def undrawn(name: str, plot: object, *, size: object, caption: str, alt: str) -> Figure:
+        return Figure(name, caption, alt, "", b"", b"")
+
+    for section in (classes, prevalence, class_counts, membership, sampling):
+        monkeypatch.setattr(section, "draw", undrawn)
+
+    def write(content: ReportContent) -> Text:
+        return Text(write_report(content, tmp_path).page.read_text(encoding="utf-8"))
+
+    return write
 
 
 @pytest.fixture(scope="module")
@@ -142,7 +160,7 @@ def test_pictures_have_300_dots_an_inch(written: WrittenReport) -> None:
 
 
 def test_an_untrusted_posterior_is_marked_before_anything_is_claimed(
-    made: Any, tmp_path: Path
+    made: Any, page_of: PageOf
 ) -> None:
     posterior = made.posterior(
         made.items(5),
@@ -152,7 +170,7 @@ def test_an_untrusted_posterior_is_marked_before_anything_is_claimed(
         findings=(Finding("modes_differ", "problem", "Two modes hold chains", "Sample longer"),),
     )
     content = made.content(posterior)
-    page = page_of(content, tmp_path)
+    page = page_of(content)
     assert headline(Facts(content)).startswith("Not to be trusted as it stands: ")
     warning = page.text.index("not to be trusted yet")
     assert warning < page.text.index("the largest, class")
@@ -162,11 +180,11 @@ def test_an_untrusted_posterior_is_marked_before_anything_is_claimed(
 
 
 def test_a_tied_count_that_is_not_to_be_trusted_is_said(
-    small: Any, tmp_path: Path, made: Any
+    small: Any, made: Any, page_of: PageOf
 ) -> None:
     comparison = made.comparison()
     comparison.table.loc[1, "trustworthy"] = False
-    page = page_of(made.content(small, comparison=comparison), tmp_path)
+    page = page_of(made.content(small, comparison=comparison))
     assert "the sampling of 1 class is not to be trusted either" in page.text
 
 
@@ -182,7 +200,7 @@ def test_a_model_inside_the_tie_has_no_such_clause(content: ReportContent) -> No
     assert "worse" not in headline(Facts(content))
 
 
-def test_mark_up_in_names_is_text(mixed: Any, tmp_path: Path, made: Any) -> None:
+def test_mark_up_in_names_is_text(mixed: Any, made: Any, page_of: PageOf) -> None:
     content = made.content(
         mixed,
         title="<b>bold</b>",
@@ -192,7 +210,7 @@ def test_mark_up_in_names_is_text(mixed: Any, tmp_path: Path, made: Any) -> None
         study_text="</pre><script>alert(3)</script>",
         command='"><script>',
     )
-    page = page_of(content, tmp_path)
+    page = page_of(content)
     assert "script" not in page.tags
     assert "img" not in page.tags
     assert "b" not in page.tags
@@ -201,24 +219,24 @@ def test_mark_up_in_names_is_text(mixed: Any, tmp_path: Path, made: Any) -> None
 
 
 def test_groups_have_rows_of_their_own_and_an_overall_one(
-    mixed: Any, tmp_path: Path, made: Any
+    mixed: Any, made: Any, page_of: PageOf
 ) -> None:
-    page = page_of(made.content(mixed, comparison=None), tmp_path)
+    page = page_of(made.content(mixed, comparison=None))
     assert re.search(r"class 1 north \d+ % .* class 1 south \d+ % .* class 1 overall", page.text)
     assert "groups weighted by their sizes" in page.text
 
 
-def test_one_class_is_not_called_kinds(made: Any, tmp_path: Path) -> None:
-    page = page_of(made.content(made.posterior(made.items(4), 1, n_cases=30)), tmp_path)
+def test_one_class_is_not_called_kinds(made: Any, page_of: PageOf) -> None:
+    page = page_of(made.content(made.posterior(made.items(4), 1, n_cases=30)))
     assert "all 30 cases are described alike" in page.text
     assert "one classes" not in page.text
     assert "nan" not in page.text
 
 
 @pytest.mark.parametrize("n_classes", [1, 2, 8])
-def test_grammar_of_one_and_many(made: Any, tmp_path: Path, n_classes: int) -> None:
+def test_grammar_of_one_and_many(made: Any, n_classes: int, page_of: PageOf) -> None:
     posterior = made.posterior(made.items(3), n_classes, n_cases=60)
-    page = page_of(made.content(posterior, comparison=made.comparison(range(1, 3))), tmp_path)
+    page = page_of(made.content(posterior, comparison=made.comparison(range(1, 3))))
     assert not re.search(r"\b1 (cases|classes|answers|draws|modes|places|minutes)\b", page.text)
     assert not re.search(r"\b(\d*[02-9]|\d+1) (case|class|answer|draw|mode)\b(?! \d)", page.text)
     assert "  " not in page.text
@@ -233,13 +251,13 @@ def test_not_done_is_said_and_counted(page: Text) -> None:
     assert "STARD-BLCM" not in page.text
 
 
-def test_tests_bring_their_cautions_and_their_checklist(made: Any, tmp_path: Path) -> None:
+def test_tests_bring_their_cautions_and_their_checklist(made: Any, page_of: PageOf) -> None:
     from bayeslca.responses.item import Item
 
     items = tuple(
         Item(name, ("negative", "positive"), yes="positive") for name in ("elisa", "culture", "pcr")
     )
-    page = page_of(made.content(made.posterior(items, 2), comparison=None), tmp_path)
+    page = page_of(made.content(made.posterior(items, 2), comparison=None))
     assert "Not for decisions on a single patient or animal" in page.text
     assert "Local rules and licensed practice come first" in page.text
     assert "STARD-BLCM 14b" in page.text
@@ -250,37 +268,35 @@ def test_yes_no_practices_are_not_taken_for_tests(page: Text) -> None:
     assert "single patient" not in page.text
 
 
-def test_changes_are_shown_with_before_and_now(small: Any, tmp_path: Path, made: Any) -> None:
+def test_changes_are_shown_with_before_and_now(small: Any, made: Any, page_of: PageOf) -> None:
     changes = (Change("prevalence of managed", "40 % (30 to 50)", "47 % (37 to 57)"),)
-    page = page_of(made.content(small, changes=changes, replaced=True), tmp_path)
+    page = page_of(made.content(small, changes=changes, replaced=True))
     assert "prevalence of managed 40 % (30 to 50) 47 % (37 to 57)" in page.text
 
 
 def test_nothing_moved_is_said_only_after_a_replacement(
-    small: Any, tmp_path: Path, made: Any
+    small: Any, made: Any, page_of: PageOf
 ) -> None:
-    replaced = page_of(made.content(small, replaced=True), tmp_path / "replaced")
+    replaced = page_of(made.content(small, replaced=True))
     assert "Nothing moved since the last run" in replaced.text
-    assert "Nothing moved" not in page_of(made.content(small), tmp_path / "first").text
+    assert "Nothing moved" not in page_of(made.content(small)).text
 
 
-def test_other_counts_in_the_tie_are_shown(made: Any, tmp_path: Path) -> None:
+def test_other_counts_in_the_tie_are_shown(made: Any, page_of: PageOf) -> None:
     posterior = made.posterior(made.items(5), 2)
     other = made.posterior(made.items(5), 3)
-    page = page_of(made.content(posterior, alternatives={"3 classes": other}), tmp_path)
+    page = page_of(made.content(posterior, alternatives={"3 classes": other}))
     assert "The same answers with 3 classes" in page.text
     assert "With three classes, the data are predicted as well" in page.text
 
 
-def test_fewer_than_100_cases_are_cautioned(made: Any, tmp_path: Path) -> None:
-    page = page_of(made.content(made.posterior(made.items(4), 2, n_cases=60)), tmp_path)
+def test_fewer_than_100_cases_are_cautioned(made: Any, page_of: PageOf) -> None:
+    page = page_of(made.content(made.posterior(made.items(4), 2, n_cases=60)))
     assert "With only 60 cases the standard errors are known to be too small" in page.text
 
 
-def test_results_that_rest_on_the_prior_are_marked(made: Any, tmp_path: Path) -> None:
-    few = page_of(
-        made.content(made.posterior(made.items(4), 8, n_cases=10), comparison=None), tmp_path
-    )
+def test_results_that_rest_on_the_prior_are_marked(made: Any, page_of: PageOf) -> None:
+    few = page_of(made.content(made.posterior(made.items(4), 8, n_cases=10), comparison=None))
     assert "†" in few.text
     assert "rests mostly on the prior" in few.text
 
@@ -289,8 +305,8 @@ def test_enough_cases_leave_no_mark(page: Text) -> None:
     assert "†" not in page.text
 
 
-def test_cases_are_shown_when_asked_for(small: Any, tmp_path: Path, made: Any) -> None:
-    page = page_of(made.content(small, show_cases=True), tmp_path)
+def test_cases_are_shown_when_asked_for(small: Any, made: Any, page_of: PageOf) -> None:
+    page = page_of(made.content(small, show_cases=True))
     assert "The membership of each case" in page.text
     assert "WP001" in page.text
 
