@@ -1,10 +1,124 @@
-"""From stated priors and defaults to Dirichlet parameters.
+"""From stated priors and defaults to the Dirichlet parameters of every block."""
 
-Signatures, filled in next:
+from __future__ import annotations
 
-    prior_table(priors, vocabulary, default=1.0) -> PriorTable
-    PriorTable.prevalence  ndarray (groups, K)
-    PriorTable.response    response[response group][item][class] -> ndarray (categories,)
-    PriorTable.prevalence_origin  tuple (groups,) of "default" or the statement's text
-    PriorTable.response_origin    [response group][item][class] -> "default" or the text
-"""
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import TypeVar
+
+import numpy as np
+
+from bayeslca._typing import Floats
+from bayeslca.exceptions import StatementError
+from bayeslca.model.resolved import PrevalencePrior, ResponsePrior
+from bayeslca.model.vocabulary import Vocabulary
+
+_Key = TypeVar("_Key")
+_Stated = TypeVar("_Stated", PrevalencePrior, ResponsePrior)
+
+DEFAULT = "default"
+"""Origin of a prior that nobody stated."""
+
+
+@dataclass(frozen=True, eq=False)
+class PriorTable:
+    """The Dirichlet parameters of all prevalences and response probabilities.
+
+    Attributes
+    ----------
+    prevalence : ndarray of float64, shape (group, K)
+    response : tuple
+        ``response[g][j][k]``: parameters (category,) of item j in class k of response group g.
+    prevalence_origin : tuple of str, shape (group,)
+        ``"default"``, or the text of the statement.
+    response_origin : tuple
+        ``response_origin[g][j][k]``, likewise.
+    """
+
+    prevalence: Floats
+    response: tuple[tuple[tuple[Floats, ...], ...], ...]
+    prevalence_origin: tuple[str, ...]
+    response_origin: tuple[tuple[tuple[str, ...], ...], ...]
+
+
+def prior_table(
+    priors: Sequence[PrevalencePrior | ResponsePrior],
+    vocabulary: Vocabulary,
+    default: float = 1.0,
+) -> PriorTable:
+    """Fill a table with the stated priors, and with a default where nothing was stated.
+
+    Parameters
+    ----------
+    priors : sequence of PrevalencePrior or ResponsePrior
+    vocabulary : Vocabulary
+    default : float
+        Dirichlet parameter of every class and category without a stated prior; 1 is uniform.
+
+    Raises
+    ------
+    StatementError
+        When two statements give one position different priors, or a statement gives groups
+        response probabilities of their own.
+    """
+    prevalence: dict[int, PrevalencePrior] = {}
+    response: dict[tuple[int, int], ResponsePrior] = {}
+    for prior in priors:
+        if isinstance(prior, PrevalencePrior):
+            groups = range(vocabulary.n_groups) if prior.group is None else (prior.group,)
+            for g in groups:
+                _put(prevalence, g, prior)
+        else:
+            _refuse_group(prior, vocabulary)
+            every = range(vocabulary.n_classes)
+            for k in every if prior.latent_class is None else (prior.latent_class,):
+                _put(response, (prior.item, k), prior)
+
+    def parameters(prior: PrevalencePrior | ResponsePrior | None, n: int) -> Floats:
+        return np.full(n, default) if prior is None else np.asarray(prior.concentration, float)
+
+    def origin(prior: PrevalencePrior | ResponsePrior | None) -> str:
+        return DEFAULT if prior is None else prior.text
+
+    groups, classes = range(vocabulary.n_groups), range(vocabulary.n_classes)
+    items = range(len(vocabulary.items))
+    return PriorTable(
+        prevalence=np.stack([parameters(prevalence.get(g), len(classes)) for g in groups]),
+        response=(
+            tuple(
+                tuple(
+                    parameters(response.get((j, k)), vocabulary.items[j].n_categories)
+                    for k in classes
+                )
+                for j in items
+            ),
+        ),
+        prevalence_origin=tuple(origin(prevalence.get(g)) for g in groups),
+        response_origin=(
+            tuple(tuple(origin(response.get((j, k))) for k in classes) for j in items),
+        ),
+    )
+
+
+def _put(stated: dict[_Key, _Stated], position: _Key, prior: _Stated) -> None:
+    """Give a position its prior; a second, different one is refused."""
+    first = stated.setdefault(position, prior)
+    if not np.array_equal(first.concentration, prior.concentration):
+        msg = f"this and an earlier statement give one probability two priors: {first.text}"
+        remedy = (
+            "Keep one of them. A statement on every class or group leaves none for a second one: "
+            "write one statement for each."
+        )
+        raise StatementError(msg, statement=prior.text, position=0, remedy=remedy)
+
+
+def _refuse_group(prior: ResponsePrior, vocabulary: Vocabulary) -> None:
+    if prior.group is None or vocabulary.groups is None:
+        return
+    msg = (
+        "the groups share their response probabilities, so one group cannot have a prior of its "
+        "own; response probabilities by group come in the next version"
+    )
+    level = vocabulary.groups.levels[prior.group]
+    remedy = f"Leave out {vocabulary.groups.name}={level}."
+    raise StatementError(msg, statement=prior.text, position=0, remedy=remedy)
