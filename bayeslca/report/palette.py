@@ -19,7 +19,6 @@ CLASS_COLOURS = (
     "#7F7F7F",
 )
 CLASS_MARKERS = ("o", "s", "^", "D", "v", "P", "X", "*")
-CLASS_HATCHES = ("", "////", "....", "xxxx", "\\\\\\\\", "++++", "oooo", "----")
 LINE_STYLES = ("-", "--", "-.", ":")
 
 INK = "#222222"
@@ -35,11 +34,6 @@ def class_colour(index: int) -> str:
 def class_marker(index: int) -> str:
     """Return the marker of a class; shifted past eight, so that colour and marker stay a pair."""
     return CLASS_MARKERS[(index + index // len(CLASS_COLOURS)) % len(CLASS_MARKERS)]
-
-
-def class_hatch(index: int) -> str:
-    """Return the pattern of a class's areas."""
-    return CLASS_HATCHES[(index + index // len(CLASS_COLOURS)) % len(CLASS_HATCHES)]
 
 
 def line_style(index: int) -> str:

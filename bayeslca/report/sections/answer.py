@@ -90,9 +90,14 @@ def _warning(facts: Facts) -> Banner:
         names = listed([row_name(name) for name in facts.untrusted_ties])
         texts.append(
             f"Within the tie of models that predict equally well, the sampling of {names} is not "
-            "to be trusted either; the number of classes may change when it is."
+            "to be trusted; the number of classes may change when it is."
         )
-    return Banner("The sampling behind this report is not to be trusted yet", tuple(texts))
+    heading = (
+        "The number of classes is not to be trusted yet"
+        if diagnostics.trustworthy
+        else "The sampling behind this report is not to be trusted yet"
+    )
+    return Banner(heading, tuple(texts))
 
 
 def _entry(facts: Facts, share: Share) -> tuple[str, str]:

@@ -20,6 +20,7 @@ from bayeslca.report.wording import (
     counted_in_words,
     listed,
     percent,
+    sentence,
     significant,
 )
 
@@ -37,16 +38,9 @@ def assumptions_section(facts: Facts) -> Section:
         _weights_table(facts),
         Verbatim(model.describe(facts.content.responses), "The whole model in words"),
     ]
-    notes = [
-        (finding.message, finding.remedy)
-        for finding in (*facts.content.responses.findings, *model.findings(facts.content.responses))
-    ]
-    decisions = [(text, "") for text in facts.content.decisions]
-    if decisions or notes:
-        blocks += [
-            Subheading("What was noticed and decided on reading"),
-            Bullets((*decisions, *notes)),
-        ]
+    noticed = _noticed(facts)
+    if noticed:
+        blocks += [Subheading("What was noticed and decided on reading"), Bullets(noticed)]
     return Section(ANCHOR, HEADING, tuple(blocks))
 
 
@@ -111,6 +105,18 @@ def weights_in_words(facts: Facts) -> str:
         f"of the result, most in {_item_text(facts, worst)} of {called(worst.latent_class)} "
         f"({percent(worst.share)})."
     )
+
+
+def _noticed(facts: Facts) -> tuple[tuple[str, str], ...]:
+    content = facts.content
+    findings = (
+        *content.responses.findings,
+        *facts.posterior.model.findings(content.responses),
+    )
+    noticed = {sentence(text): "" for text in content.decisions}
+    for finding in findings:
+        noticed[sentence(finding.message)] = sentence(finding.remedy)
+    return tuple(noticed.items())
 
 
 def _statements(facts: Facts) -> list[Block]:

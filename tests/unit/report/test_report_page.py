@@ -185,7 +185,7 @@ def test_a_tied_count_that_is_not_to_be_trusted_is_said(
     comparison = made.comparison()
     comparison.table.loc[1, "trustworthy"] = False
     page = page_of(made.content(small, comparison=comparison))
-    assert "the sampling of 1 class is not to be trusted either" in page.text
+    assert "the sampling of 1 class is not to be trusted; the number" in page.text
 
 
 def test_a_model_outside_the_tie_is_said_first(small: Any, made: Any) -> None:
