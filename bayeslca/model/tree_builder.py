@@ -38,10 +38,12 @@ class TreeBuilder:
     """What the parser calls for each rule of the grammar, with the rule's parts."""
 
     def start(self, parts: list[Any]) -> Statement:
+        """Return the statement."""
         out: Statement = parts[0]
         return out
 
     def relations(self, parts: list[Any]) -> Statement:
+        """Join relations; one part alone is itself."""
         relations = parts[::2]
         if len(relations) == 1:
             only: Statement = relations[0]
@@ -57,6 +59,7 @@ class TreeBuilder:
         return Conjunction(tuple(relations), relations[0].position)
 
     def relation(self, parts: list[Any]) -> Relation | Expression:
+        """Build a chain; an expression that is compared with nothing is itself."""
         if len(parts) == 1:
             only: Expression = parts[0]
             return only
@@ -64,6 +67,7 @@ class TreeBuilder:
         return Relation(tuple(parts[::2]), signs, parts[0].position)  # type: ignore[arg-type]
 
     def prior(self, parts: list[Any]) -> Prior:
+        """Build a prior on one probability."""
         probability, _, distribution = parts
         if not isinstance(probability, Probability):
             msg = "a prior stands on one probability"
@@ -72,34 +76,42 @@ class TreeBuilder:
         return Prior(probability, distribution, probability.position)
 
     def naming_rule(self, parts: list[Any]) -> NamingRule:
+        """Build a naming rule."""
         name, probability, extreme = parts[0], parts[3], str(parts[5])
         subject = probability if isinstance(probability, Probability) else None
         return NamingRule(name, subject, extreme, name.position)  # type: ignore[arg-type]
 
     def operation(self, parts: list[Any]) -> BinaryOperation:
+        """Build a sum, difference, product or ratio."""
         left, sign, right = parts
         return BinaryOperation(str(sign), left, right, sign.start_pos)  # type: ignore[arg-type]
 
     def negative(self, parts: list[Any]) -> Negative:
+        """Build minus an expression."""
         return Negative(parts[1], parts[0].start_pos)
 
     def absolute(self, parts: list[Any]) -> Absolute:
+        """Build the size of an expression."""
         return Absolute(parts[1], parts[0].start_pos)
 
     def inside(self, parts: list[Any]) -> Expression:
+        """Return what stands in parentheses."""
         out: Expression = parts[1]
         return out
 
     def number(self, parts: list[Any]) -> Number:
+        """Build a number."""
         return Number(_finite(parts[0]), parts[0].start_pos)
 
     def probability(self, parts: list[Any]) -> Probability:
+        """Build P(...), split at its bar."""
         kept = [part for part in parts[1:-1] if part is not None]
         bar = next((i for i, part in enumerate(kept) if _type(part) == "BAR"), len(kept))
         before, given = kept[:bar:2], kept[bar + 1 :: 2]
         return Probability(tuple(before), tuple(given), parts[0].start_pos)
 
     def event(self, parts: list[Any]) -> Event | AllClasses:
+        """Build what stands before a bar."""
         if _type(parts[0]) == "DOT":
             return AllClasses(parts[0].start_pos)
         sign = str(parts[1]) if len(parts) > 1 else ""
@@ -107,11 +119,13 @@ class TreeBuilder:
         return Event(parts[0], sign, names)  # type: ignore[arg-type]
 
     def condition(self, parts: list[Any]) -> Event | AllClasses | Overall:
+        """Build what stands after a bar."""
         if _type(parts[0]) == "OVERALL":
             return Overall(parts[0].start_pos)
         return self.event(parts)
 
     def name(self, parts: list[Any]) -> Name:
+        """Build a name without its quotes."""
         token = parts[0]
         if token.type == "WORD":
             if token in RESERVED:
@@ -126,12 +140,14 @@ class TreeBuilder:
         return Name(str(token[1:-1]).replace(quote * 2, quote), token.start_pos)
 
     def argument(self, parts: list[Any]) -> tuple[str, float, int]:
+        """Return the keyword (or ""), the value and the position of an argument."""
         keyword, _, minus, number = parts
         first = next(part for part in parts if part is not None)
         value = _finite(number)
         return str(keyword or ""), -value if minus else value, first.start_pos
 
     def distribution(self, parts: list[Any]) -> Distribution:
+        """Build a distribution from its name and arguments."""
         name = parts[0]
         arguments = [part for part in parts if isinstance(part, tuple)]
         builders = {"Beta": _beta, "Dirichlet": _dirichlet}
