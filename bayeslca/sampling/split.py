@@ -96,9 +96,8 @@ def draw_shares(start: Ints, parameter: Floats, out: Floats, rng: np.random.Gene
             smallest = min(smallest, parameter[e])
         if smallest < SMALL_PARAMETER:
             total = _gammas_by_logs(parameter, start[i], start[i + 1], out, rng)
-        scale = 1.0 / total
         for e in range(start[i], start[i + 1]):
-            out[e] = max(out[e] * scale, SMALLEST)
+            out[e] = max(out[e] / total, SMALLEST)  # divided: one share alone is exactly 1
 
 
 @compiled_part

@@ -82,9 +82,10 @@ def judge(quantities: Mapping[str, Floats]) -> Convergence:
     for name, values in quantities.items():
         if not np.ptp(values) > 0.0:
             continue
-        bulk = float(array_stats.ess(values, method="bulk"))
-        tail = float(array_stats.ess(values, method="tail", prob=TAIL))
-        r_hat = float(array_stats.rhat(values))
+        with np.errstate(invalid="ignore", divide="ignore"):  # chains that never move: nan
+            bulk = float(array_stats.ess(values, method="bulk"))
+            tail = float(array_stats.ess(values, method="tail", prob=TAIL))
+            r_hat = float(array_stats.rhat(values))
         ess = min(bulk, tail) if math.isfinite(bulk) and math.isfinite(tail) else 0.0
         if ess < worst_ess:
             worst_ess, ess_of = ess, name
