@@ -26,7 +26,7 @@ def compile_table(model: LatentClassModel) -> Table:
     )
     for j in range(len(model.items)):
         for k in range(model.n_classes):
-            builder.set_item(0, j, k, builder.block(model.response_prior(j, k)))
+            builder.set_item(0, j, k, builder.block(model.priors.response[0][j][k]))
     return builder.build()
 
 

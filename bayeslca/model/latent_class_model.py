@@ -2,20 +2,38 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import asdict, dataclass, field
 from functools import cached_property
+from typing import TYPE_CHECKING, Any, Literal
 
-import numpy as np
-
-from bayeslca._typing import Floats
-from bayeslca.model.compile import compile_table
+from bayeslca._typing import Bools, Seed
+from bayeslca.exceptions import ModelError, near_names
+from bayeslca.findings import Finding
+from bayeslca.model.agreement import check_agreement
+from bayeslca.model.cautions import model_findings
+from bayeslca.model.compile import compile_table, pool_groups
+from bayeslca.model.describe import describe
+from bayeslca.model.identifiability import Identifiability, identifiability
+from bayeslca.model.naming import classes_named
+from bayeslca.model.position_names import element_names, prevalence_names
 from bayeslca.model.prevalence import DirichletPrevalence
+from bayeslca.model.priors import PriorTable, prior_table
+from bayeslca.model.resolve import ModelStatements, read_statements
+from bayeslca.model.resolved import ResolvedNamingRule
+from bayeslca.model.simulate import Parameters, Simulation, simulate
+from bayeslca.model.symmetry import Symmetry, symmetry
 from bayeslca.model.table import Table
+from bayeslca.model.vocabulary import Vocabulary
 from bayeslca.responses.item import Groups, Item
 
+if TYPE_CHECKING:
+    from bayeslca.posterior.posterior import Posterior
+    from bayeslca.responses.responses import Responses
+    from bayeslca.responses.units import Units
 
-@dataclass(frozen=True)
+
+@dataclass(frozen=True, repr=False)
 class LatentClassModel:
     """A latent class model.
 
@@ -27,11 +45,26 @@ class LatentClassModel:
         A number of classes (exploratory: they are called "1", "2", ... by falling prevalence)
         or their names (confirmatory: something stated must tell them apart).
     statements : tuple of str
-        Priors and naming rules, such as ``"P(fees=yes | managed) ~ Beta(9, 2)"``.
+        Priors and naming rules, such as ``"P(fees=yes | managed) ~ Beta(9, 2)"`` and
+        ``"managed is where P(fees=yes) is highest"``. What is not stated is uniform.
     groups : Groups, optional
-        Groups of cases with prevalences of their own, usually ``responses.groups``.
+        Groups of cases with prevalences of their own, usually ``responses.groups``. The groups
+        share the response probabilities.
     statement_sources : mapping from str to str
-        Where the prior in a statement comes from, for the report.
+        Where a statement comes from, for the report.
+
+    Raises
+    ------
+    ModelError
+        When something is given twice or missing, a statement cannot be used, or nothing tells
+        two named classes apart.
+
+    Examples
+    --------
+    >>> from bayeslca import Item, LatentClassModel
+    >>> items = [Item("fees", ("no", "yes")), Item("meets", ("no", "yes"))]
+    >>> LatentClassModel(items, 2).class_names
+    ('1', '2')
     """
 
     items: tuple[Item, ...]
@@ -41,11 +74,15 @@ class LatentClassModel:
     statement_sources: Mapping[str, str] = field(default_factory=dict, hash=False)
 
     def __post_init__(self) -> None:
-        object.__setattr__(self, "items", tuple(self.items))
-        if not isinstance(self.classes, int):
-            object.__setattr__(self, "classes", tuple(self.classes))
-        object.__setattr__(self, "statements", tuple(self.statements))
-        object.__setattr__(self, "statement_sources", dict(self.statement_sources))
+        # Lists are welcome where tuples are kept; a frozen dataclass is set through object.
+        keep = object.__setattr__
+        keep(self, "items", tuple(self.items))
+        keep(self, "classes", _checked_classes(self.classes))
+        keep(self, "statements", _checked_statements(self.statements))
+        keep(self, "statement_sources", dict(self.statement_sources))
+        _check_items(self.items)
+        _check_sources(self.statement_sources, self.statements)
+        self._refuse_classes_not_told_apart()
 
     @property
     def exploratory(self) -> bool:
@@ -69,16 +106,278 @@ class LatentClassModel:
         """Number of groups of cases; 1 when there are none."""
         return len(self.groups.levels) if self.groups else 1
 
-    def response_prior(self, item: int, latent_class: int) -> Floats:
-        """Return the Dirichlet parameters (R,) of an item's answers in a class."""
-        return np.ones(self.items[item].n_categories)
+    @cached_property
+    def vocabulary(self) -> Vocabulary:
+        """The names that statements about this model may use."""
+        return Vocabulary(self.items, self.class_names, self.groups, self.exploratory)
+
+    @cached_property
+    def stated(self) -> ModelStatements:
+        """What the statements say, by what they do."""
+        return read_statements(self.statements, self.vocabulary)
+
+    @cached_property
+    def priors(self) -> PriorTable:
+        """The Dirichlet parameters of all prevalences and response probabilities."""
+        return prior_table(self.stated.priors, self.vocabulary)
+
+    @property
+    def naming_rules(self) -> tuple[ResolvedNamingRule, ...]:
+        """The rules that say which class gets which name."""
+        return self.stated.naming_rules
 
     @cached_property
     def prevalence_source(self) -> DirichletPrevalence:
         """The prior of the prevalences."""
-        return DirichletPrevalence(np.ones((self.n_groups, self.n_classes)))
+        return DirichletPrevalence(self.priors.prevalence)
 
     @cached_property
     def table(self) -> Table:
         """The compiled form that engines read."""
         return compile_table(self)
+
+    @cached_property
+    def symmetry(self) -> Symmetry:
+        """Which classes the table, the priors and the naming rules leave exchangeable."""
+        named = classes_named(self.naming_rules, self.n_classes)
+        return symmetry(self.table, self.prevalence_source, named=named)
+
+    def response_prior_origin(self, response_group: int, item: int, latent_class: int) -> str:
+        """Return the statement that set a prior, or ``"default"``."""
+        return self.priors.response_origin[response_group][item][latent_class]
+
+    def units(self, responses: Responses) -> Units:
+        """Return the distinct answers of responses, as this model sees them.
+
+        Cases of all groups are pooled when the model has no groups.
+
+        Raises
+        ------
+        ModelError
+            When the responses do not have the model's items or groups.
+        """
+        check_agreement(self, responses)
+        if self.groups is None and responses.groups is not None:
+            return pool_groups(responses.units)
+        return responses.units
+
+    def describe(self, responses: Responses | None = None) -> str:
+        """Return the model in words; with responses, also what each prior weighs against them."""
+        return describe(self, responses)
+
+    def findings(self, responses: Responses) -> tuple[Finding, ...]:
+        """Return what should be known of the model before it is sampled on these responses."""
+        return model_findings(self, responses)
+
+    def identifiability(
+        self,
+        responses: Responses | None = None,
+        seed: int = 0,
+        estimate: Parameters | None = None,
+    ) -> Identifiability:
+        """Check whether the answers determine the parameters.
+
+        Parameters
+        ----------
+        responses : Responses, optional
+            Which items were answered together; all when left out.
+        seed : int
+            For the random points at which the rank is found.
+        estimate : Parameters, optional
+            A posterior mean, to see what is weakly identified there; needs responses.
+        """
+        return identifiability(
+            self.table,
+            (element_names(self), prevalence_names(self)),
+            units=None if responses is None else self.units(responses),
+            seed=seed,
+            estimate=estimate,
+        )
+
+    def simulate(
+        self,
+        n: int | Sequence[int],
+        seed: Seed = None,
+        parameters: Parameters | None = None,
+        answered: Bools | None = None,
+    ) -> Simulation:
+        """Draw responses from the prior, or from given parameters.
+
+        Parameters
+        ----------
+        n : int or sequence of int
+            Number of cases; with groups, of each group (a single number is divided evenly).
+        seed : int or numpy Generator, optional
+        parameters : Parameters, optional
+            What to draw from; see ``bayeslca.model.simulate.parameters_from``.
+        answered : ndarray of bool, shape (case, item), optional
+            Which answers are given; all when left out.
+        """
+        return simulate(self, n, seed, parameters, answered)
+
+    def sample(
+        self,
+        responses: Responses,
+        *,
+        seed: int | None = None,
+        sampler: Literal["auto", "gibbs", "nuts"] = "auto",
+        chains: int = 4,
+        draws: int = 1000,
+        ess: float = 1000,
+        r_hat: float = 1.01,
+        progress: bool | Callable[..., None] = True,
+        **options: Any,
+    ) -> Posterior:
+        """Sample the posterior of this model given responses.
+
+        Parameters
+        ----------
+        responses : Responses
+        seed : int, optional
+            Makes the result the same every time, whatever the number of threads.
+        sampler : {"auto", "gibbs", "nuts"}
+        chains, draws : int
+            Number of chains, and of draws that are kept of each.
+        ess, r_hat : float
+            Sampling goes on until every quantity has this effective sample size and R-hat.
+        progress : bool or callable
+        **options
+            Further options of ``bayeslca.posterior.fit.fit``.
+        """
+        from bayeslca.posterior.fit import fit
+
+        return fit(
+            self,
+            responses,
+            seed=seed,
+            sampler=sampler,
+            chains=chains,
+            draws=draws,
+            ess=ess,
+            r_hat=r_hat,
+            progress=progress,
+            **options,
+        )
+
+    def to_pymc(self, responses: Responses) -> Any:
+        """Return the model as an ordinary ``pymc.Model``, to be extended or sampled."""
+        from bayeslca.model.pymc_model import build
+
+        return build(self, responses)
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the model as plain values, for saving."""
+        return {
+            "items": [asdict(item) | {"categories": list(item.categories)} for item in self.items],
+            "classes": self.classes if isinstance(self.classes, int) else list(self.classes),
+            "statements": list(self.statements),
+            "groups": None
+            if self.groups is None
+            else {"name": self.groups.name, "levels": list(self.groups.levels)},
+            "statement_sources": dict(self.statement_sources),
+        }
+
+    @classmethod
+    def from_dict(cls, values: Mapping[str, Any]) -> LatentClassModel:
+        """Return the model that ``to_dict`` gave."""
+        groups = values["groups"]
+        return cls(
+            items=tuple(
+                Item(**(item | {"categories": tuple(item["categories"])}))
+                for item in values["items"]
+            ),
+            classes=values["classes"],
+            statements=values["statements"],
+            groups=groups and Groups(groups["name"], tuple(groups["levels"])),
+            statement_sources=values["statement_sources"],
+        )
+
+    def __repr__(self) -> str:
+        classes = self.classes if self.exploratory else list(self.class_names)
+        parts = [f"{len(self.items)} items", f"classes={classes}"]
+        if self.statements:
+            parts.append(f"statements={list(self.statements)}")
+        if self.groups:
+            parts.append(f"groups={self.groups.name}: {', '.join(self.groups.levels)}")
+        return f"LatentClassModel({', '.join(parts)})"
+
+    def _refuse_classes_not_told_apart(self) -> None:
+        """Refuse names that nothing stated gives a meaning; also reads all statements."""
+        if self.exploratory:
+            _ = self.priors
+            return
+        mixed = self.symmetry.named_group.mixed_classes()
+        if not mixed:
+            return
+        names = [self.class_names[k] for k in mixed[0]]
+        item = self.items[0]
+        example = f"{item.name}={item.yes or item.categories[-1]}"
+        msg = (
+            f"nothing in the study tells {names[0]} from {' or '.join(names[1:])}. Add a naming "
+            f"rule, such as '{names[0]} is where P({example}) is highest', or a prior, such as "
+            f"'P({example} | {names[0]}) ~ Beta(9, 2)'; or give the number of classes "
+            f"instead of names (classes={self.n_classes})."
+        )
+        raise ModelError(msg)
+
+
+def _checked_classes(classes: object) -> int | tuple[str, ...]:
+    if isinstance(classes, bool) or not isinstance(classes, int | Sequence):
+        msg = f"classes must be a number or a list of names; got {classes!r}."
+        raise ModelError(msg)
+    if isinstance(classes, int):
+        if classes < 1:
+            msg = f"classes is {classes}; a model has at least 1 class."
+            raise ModelError(msg)
+        return classes
+    if isinstance(classes, str):
+        msg = f"classes is the text {classes!r}. Give a list of names: classes=[{classes!r}, ...]."
+        raise ModelError(msg)
+    for name in classes:
+        if not isinstance(name, str) or not name.strip():
+            msg = f"{name!r} cannot be the name of a class. Give each class a name in words."
+            raise ModelError(msg)
+    if not classes:
+        msg = "classes is an empty list. Give the names of the classes, or their number."
+        raise ModelError(msg)
+    _refuse_repeated(classes, "class")
+    return tuple(classes)
+
+
+def _checked_statements(statements: object) -> tuple[str, ...]:
+    if isinstance(statements, str) or not isinstance(statements, Sequence):
+        msg = f"statements must be a list of texts; got {statements!r}. Put it in brackets."
+        raise ModelError(msg)
+    for statement in statements:
+        if not isinstance(statement, str):
+            msg = f"the statement {statement!r} is not a text. Write it in quotes."
+            raise ModelError(msg)
+    return tuple(statements)
+
+
+def _check_items(items: tuple[Item, ...]) -> None:
+    for item in items:
+        if not isinstance(item, Item):
+            msg = f"{item!r} is not an Item. Give Item(name, categories), or responses.items."
+            raise ModelError(msg)
+    if not items:
+        msg = "the model has no items. Give at least one, usually responses.items."
+        raise ModelError(msg)
+    _refuse_repeated([item.name for item in items], "item")
+
+
+def _check_sources(sources: Mapping[str, str], statements: Sequence[str]) -> None:
+    for text in sources:
+        if text not in statements:
+            msg = (
+                f"statement_sources speaks of {text!r}, which is not a statement of the model"
+                f"{near_names(text, statements)}. Write the statement in both places alike."
+            )
+            raise ModelError(msg)
+
+
+def _refuse_repeated(names: Sequence[str], what: str) -> None:
+    repeated = [name for name in dict.fromkeys(names) if list(names).count(name) > 1]
+    if repeated:
+        msg = f"the {what} '{repeated[0]}' is given twice. Give each {what} a name of its own."
+        raise ModelError(msg)

@@ -276,10 +276,7 @@ class _Search:
             groups = {g}
             apart = []
             for others, theirs in sets:
-                same_rows = any(
-                    self.table.response_group[g] == self.table.response_group[h] for h in others
-                )
-                if same_rows or theirs & reached:
+                if theirs & reached:
                     groups |= others
                     reached |= theirs
                 else:

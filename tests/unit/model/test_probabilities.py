@@ -157,24 +157,25 @@ def test_block_densities_are_scipys_dirichlet():
 
 
 def test_the_prior_is_nought_outside_bounds_and_orders():
-    builder = TableBuilder([2], 2)
-    blocks = [builder.block((1.0, 1.0)) for _ in range(2)]
-    for k in range(2):
+    builder = TableBuilder([2], 3)
+    blocks = [builder.block((1.0, 1.0)) for _ in range(3)]
+    for k in range(3):
         builder.set_item(0, 0, k, blocks[k])
     builder.bound(blocks[0][1], lower=0.5)
     builder.order(blocks[0][1], blocks[1][1])
+    builder.order(blocks[1][1], blocks[2][1])
     table = builder.build()
     elements = np.array(
         [
-            [0.4, 0.6, 0.5, 0.5],  # keeps both
-            [0.6, 0.4, 0.7, 0.3],  # below the bound
-            [0.4, 0.6, 0.3, 0.7],  # the wrong way round
+            [0.4, 0.6, 0.5, 0.5, 0.6, 0.4],  # keeps all
+            [0.6, 0.4, 0.7, 0.3, 0.8, 0.2],  # below the bound
+            [0.4, 0.6, 0.5, 0.5, 0.3, 0.7],  # the last the wrong way round
         ]
     )
     assert inside_bounds(table, elements).tolist() == [True, False, False]
-    source = DirichletPrevalence(np.ones((1, 2)))
-    found = log_prior(table, source, elements, np.full((3, 1, 2), 0.5))
-    assert found.tolist() == [0.0, -np.inf, -np.inf]
+    source = DirichletPrevalence(np.ones((1, 3)))
+    found = log_prior(table, source, elements, np.full((3, 1, 3), 1 / 3))
+    np.testing.assert_allclose(found, [np.log(2.0), -np.inf, -np.inf])
 
 
 def test_elements_are_drawn_from_their_dirichlet_prior():

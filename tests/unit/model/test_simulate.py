@@ -44,15 +44,15 @@ def parameters(model):
 
 def test_answers_and_classes_have_the_given_probabilities(model, parameters):
     """Chi-squared test of the whole table of class by answers in each group, p > 0.001."""
-    drawn = simulate(model, [4000, 4000], seed=1, parameters=parameters)
+    drawn = simulate(model, [40_000, 40_000], seed=1, parameters=parameters)
     responses = drawn.responses
     fees = {0: (0.1, 0.9), 1: (0.8, 0.2)}
     meets = {0: (0.1, 0.2, 0.7), 1: (0.6, 0.4, 0.0)}
     for g, k in product(range(2), range(2)):
         chosen = (responses.group_codes == g) & (drawn.latent_class == k)
         n_class = int(chosen.sum())
-        expected_class = 4000 * parameters.prevalence[g, k]
-        error = np.sqrt(4000 * parameters.prevalence[g, k] * (1 - parameters.prevalence[g, k]))
+        expected_class = 40_000 * parameters.prevalence[g, k]
+        error = np.sqrt(40_000 * parameters.prevalence[g, k] * (1 - parameters.prevalence[g, k]))
         assert abs(n_class - expected_class) < 4 * error
         cells = [(a, b) for a in range(2) for b in range(3) if meets[k][b] > 0]
         observed = [int(np.sum(chosen & (responses.codes == c).all(axis=1))) for c in cells]

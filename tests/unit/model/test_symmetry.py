@@ -108,6 +108,17 @@ def chain(n_classes, links):
     return builder.build()
 
 
+def half_and_half():
+    """Class 0 mixes the blocks answer by answer, class 1 block by block: no exchange."""
+    builder = TableBuilder([2], 2)
+    a, b = builder.block((1.0, 1.0)), builder.block((1.0, 1.0))
+    for category, pair in enumerate([(a[0], b[0]), (a[1], b[1])]):
+        builder.set_row(0, 0, category, 0, [(0.5, (e,)) for e in pair])
+    for category, pair in enumerate([(a[0], a[1]), (b[0], b[1])]):
+        builder.set_row(0, 0, category, 1, [(0.5, (e,)) for e in pair])
+    return builder.build()
+
+
 CASES = {
     # name: (table, source, members of L, members of P)
     "everything": (plain(4), uniform(1, 4), 24, 24),
@@ -159,6 +170,7 @@ CASES = {
     "two equal known values": (with_known((0.2, 0.2, None)), uniform(1, 3), 2, 2),
     "two known values": (with_known((0.2, 0.3, None)), uniform(1, 3), 1, 1),
     "identity": (with_known((0.0, 0.1, None)), uniform(1, 3), 1, 1),
+    "elements could move, blocks could not": (half_and_half(), uniform(1, 2), 1, 1),
     "a chain": (chain(3, [(0, 1), (1, 2)]), uniform(1, 3), 6, 1),
     "a chain with a link that follows": (
         chain(4, [(0, 1), (1, 2), (0, 2)]),
@@ -221,6 +233,11 @@ def test_every_member_gives_the_relabelled_probabilities_and_no_other_permutatio
         else:
             with pytest.raises(ModelError, match="changes the model's table"):
                 element_map(table, permutation)
+
+
+def test_what_is_no_permutation_is_refused():
+    with pytest.raises(ModelError, match="changes the model's table"):
+        element_map(plain(3), np.array([[0, 0, 1]]))
 
 
 def test_ten_exchangeable_classes_are_a_product_that_is_not_enumerated():
@@ -302,3 +319,26 @@ def test_a_bound_in_one_class_breaks_the_priors_symmetry_only():
             builder.bound(block[1], lower=0.5)
     found = symmetry(builder.build(), uniform(1, 2))
     assert (found.table_group.n_members, found.prior_group.n_members) == (2, 1)
+
+
+def test_orders_that_follow_from_others_break_nothing():
+    """Two chains of three, one of them with a link stated that follows from the others."""
+    table = chain(6, [(0, 1), (1, 2), (0, 2), (3, 4), (4, 5)])
+    group = symmetry(table, uniform(1, 6)).prior_group
+    assert {tuple(p[0]) for p in group.permutations} == {
+        (0, 1, 2, 3, 4, 5),
+        (3, 4, 5, 0, 1, 2),
+    }
+
+
+class OnlyRotations(DirichletPrevalence):
+    """A source whose classes look alike but may only be turned round in a ring."""
+
+    def is_invariant(self, permutation):
+        return tuple(permutation[0]) in {(0, 1, 2), (1, 2, 0), (2, 0, 1)}
+
+
+def test_the_source_has_the_last_word_on_its_own_symmetry():
+    rotations = symmetry(plain(3), OnlyRotations(np.ones((1, 3)))).prior_group
+    assert rotations.n_members == 3
+    assert rotations.factors is None
