@@ -18,6 +18,7 @@ if TYPE_CHECKING:
 
     from bayeslca.assess.convergence import Diagnostics
     from bayeslca.posterior.posterior import Posterior
+    from bayeslca.responses.units import Units
 
 TEST_RESULTS = frozenset(
     {"positive", "negative", "pos", "neg", "+", "-", "reactive", "non-reactive", "nonreactive"}
@@ -64,7 +65,12 @@ class Facts:
     @property
     def n_cases(self) -> int:
         """Cases with at least one answer, which is what all shares are of."""
-        return self.content.responses.units.n_cases
+        return self.units.n_cases
+
+    @cached_property
+    def units(self) -> Units:
+        """The distinct answers, as the model sees them."""
+        return self.posterior.model.units(self.content.responses)
 
     @cached_property
     def diagnostics(self) -> Diagnostics:
@@ -94,7 +100,7 @@ class Facts:
     @property
     def n_missing(self) -> int:
         """Answers that are missing among the cases with at least one answer."""
-        units = self.content.responses.units
+        units = self.units
         return int(((units.pattern < 0).sum(axis=1) * units.count).sum())
 
     @property
@@ -137,7 +143,7 @@ class Facts:
 
 def overall_shares(posterior: Posterior, interval: float) -> tuple[Share, ...]:
     """Return the share of each class among all cases, groups weighted by their sizes."""
-    units = posterior.responses.units
+    units = posterior.model.units(posterior.responses)
     draws = np.asarray(posterior.prevalence_draws)
     sizes = np.bincount(units.group, weights=units.count, minlength=draws.shape[2])
     shares = np.einsum("cdgk,g->cdk", draws, sizes / sizes.sum()).reshape(-1, draws.shape[3])

@@ -9,10 +9,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats
+from bayeslca.model.priors import DEFAULT
 
 if TYPE_CHECKING:
     import pandas as pd
 
+    from bayeslca.model.latent_class_model import LatentClassModel
     from bayeslca.posterior.posterior import Posterior
 
 HEAVY = 0.2
@@ -32,12 +34,15 @@ class PriorWeight:
         Its Dirichlet parameters.
     cases : float
         Expected number of cases of the class that answered the item.
+    origin : str
+        The statement that set the prior, or ``"default"``.
     """
 
     latent_class: str
     item: str
     parameters: Floats
     cases: float
+    origin: str
 
     @property
     def weight(self) -> float:
@@ -53,7 +58,7 @@ class PriorWeight:
 def prior_weights(posterior: Posterior) -> tuple[PriorWeight, ...]:
     """Return what the prior of each item in each class weighs against the answers."""
     model = posterior.model
-    units = posterior.responses.units
+    units = model.units(posterior.responses)
     share = np.asarray(posterior.prevalence_draws).mean(axis=(0, 1))
     weights: list[PriorWeight] = []
     for j, item in enumerate(model.items):
@@ -61,7 +66,13 @@ def prior_weights(posterior: Posterior) -> tuple[PriorWeight, ...]:
         by_group = np.bincount(units.group, weights=answered, minlength=share.shape[0])
         expected = by_group @ share
         weights.extend(
-            PriorWeight(name, item.name, model.response_prior(j, k), float(expected[k]))
+            PriorWeight(
+                name,
+                item.name,
+                model.priors.response[0][j][k],
+                float(expected[k]),
+                model.response_prior_origin(0, j, k),
+            )
             for k, name in enumerate(model.class_names)
         )
     return tuple(weights)
@@ -89,21 +100,23 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
     """Return the prior of each prevalence and of each answer in each class, a row each.
 
     Columns: group (where there are groups), latent_class, item, category, prior, prior_mean,
-    prior_lower, prior_upper (95 %), prior_cases, prior_share. The rows of prevalences have
-    neither item nor category.
+    prior_lower, prior_upper (95 %), prior_cases, prior_share, statement, source. The rows of
+    prevalences have neither item nor category.
     """
     import pandas as pd
 
     model = posterior.model
+    units = model.units(posterior.responses)
     rows: list[dict[str, object]] = []
     for g, concentration in enumerate(model.prevalence_source.concentration):
-        cases = float(posterior.responses.units.count[posterior.responses.units.group == g].sum())
+        cases = float(units.count[units.group == g].sum())
         share = float(concentration.sum() / (concentration.sum() + cases))
         group = {"group": model.groups.levels[g]} if model.groups else {}
         for k, name in enumerate(model.class_names):
             rows.append(
                 {**group, "latent_class": name, "item": "", "category": ""}
                 | _summary(concentration, k, distribution(concentration), share)
+                | _stated(model, model.priors.prevalence_origin[g])
             )
     items = {item.name: item for item in model.items}
     for weight in prior_weights(posterior):
@@ -116,8 +129,15 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
                 {**group, "latent_class": weight.latent_class, "item": item.name}
                 | {"category": category}
                 | _summary(weight.parameters, c, written, weight.share)
+                | _stated(model, weight.origin)
             )
     return pd.DataFrame(rows)
+
+
+def _stated(model: LatentClassModel, origin: str) -> dict[str, object]:
+    if origin == DEFAULT:
+        return {"statement": "", "source": ""}
+    return {"statement": origin, "source": model.statement_sources.get(origin, "")}
 
 
 def _summary(parameters: Floats, at: int, written: str, share: float) -> dict[str, object]:

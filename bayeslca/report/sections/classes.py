@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Sequence
 from typing import TYPE_CHECKING
 
@@ -116,19 +117,17 @@ def _tells_apart(facts: Facts) -> str:
 def _pieces(items: Sequence[Item], n_classes: int) -> Iterator[list[Item]]:
     """Split items into runs of similar height, none taller than a figure may be."""
     heights = [len(profile_rows([item])) * row_height(n_classes) for item in items]
-    total = sum(heights)
-    if not items:
-        return
-    most = total / max(1, -(-total // TALLEST)) + max(heights) / 2
+    n_pieces = math.ceil(sum(heights) / TALLEST)
     piece: list[Item] = []
-    used = 0.0
+    used, cuts = 0.0, 1
     for item, height in zip(items, heights, strict=True):
-        if piece and used + height > most:
+        if piece and used + height / 2 > cuts * sum(heights) / n_pieces:
             yield piece
-            piece, used = [], 0.0
+            piece, cuts = [], cuts + 1
         piece.append(item)
         used += height
-    yield piece
+    if piece:
+        yield piece
 
 
 def _profile(facts: Facts, items: Sequence[Item], name: str, part: str) -> Figure:

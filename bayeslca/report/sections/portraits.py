@@ -2,48 +2,71 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from typing import Any
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from typing import Any, NamedTuple
 
 from bayeslca.report.facts import Facts
-from bayeslca.report.wording import listed_up_to, percent
+from bayeslca.report.wording import listed, listed_up_to, percent
+from bayeslca.responses.item import Item
 
 USUAL, SELDOM = 0.8, 0.2
-MOST_NAMED = 10
+FEW_ITEMS = 10
+"""Up to so many items, a portrait names them all."""
+MOST_NAMED = 4
 PRIOR_MARK = "†"
 """Put beside a number that rests mostly on the prior."""
 
 
 def portrait(facts: Facts, latent_class: str) -> str:
-    """Describe a class by its usual and its seldom answers, with their probabilities."""
-    cells = class_cells(facts, latent_class)
-    usual: dict[str, list[str]] = {}
-    seldom: dict[str, list[str]] = {}
-    between: list[str] = []
-    several: list[str] = []
-    for item in facts.posterior.model.items:
-        mark = PRIOR_MARK if (latent_class, item.name) in facts.ruled else ""
-        if item.n_categories > 2:
-            best = max(item.categories, key=lambda name: cells[(item.name, name)]["median"])
-            share = percent(cells[(item.name, best)]["median"])
-            several.append(f"{item.text}: most often “{best}” ({share}{mark})")
-            continue
-        yes = item.yes or item.categories[-1]
-        median = cells[(item.name, yes)]["median"]
-        text = f"{item.text} ({percent(median)}{mark})"
-        if USUAL > median > SELDOM:
-            between.append(text)
-        else:
-            (usual if median >= USUAL else seldom).setdefault(yes, []).append(text)
+    """Describe a class by its usual and its seldom answers, with their probabilities.
+
+    With many items only the clearest are named: the table has them all.
+    """
+    items = facts.posterior.model.items
+    most = len(items) if len(items) <= FEW_ITEMS else MOST_NAMED
+    named = [_named(facts, latent_class, item) for item in items]
     parts = [
-        *_sentences(f"usually ({percent(USUAL)} or more)", usual),
-        *_sentences(f"seldom ({percent(SELDOM)} or less)", seldom),
+        *_by_answer(f"usually ({percent(USUAL)} or more)", named, most, lambda p: p >= USUAL),
+        *_by_answer(f"seldom ({percent(SELDOM)} or less)", named, most, lambda p: p <= SELDOM),
     ]
-    if between:
-        parts.append(f"in between: {listed_up_to(between, MOST_NAMED)}.")
+    between = [one.text for one in named if one.answer and SELDOM < one.probability < USUAL]
+    if between and len(items) <= FEW_ITEMS:
+        parts.append(f"in between: {listed(between)}.")
+    several = [one.text for one in named if not one.answer]
     if several:
-        parts.append(f"{listed_up_to(several, MOST_NAMED)}.")
+        parts.append(f"{listed_up_to(several, most)}.")
     return " ".join(part[0].upper() + part[1:] for part in parts)
+
+
+class _Named(NamedTuple):
+    """An item as a portrait names it; ``answer`` is empty for items with many answers."""
+
+    answer: str
+    probability: float
+    text: str
+
+
+def _named(facts: Facts, latent_class: str, item: Item) -> _Named:
+    cells = class_cells(facts, latent_class)
+    mark = PRIOR_MARK if (latent_class, item.name) in facts.ruled else ""
+    if item.n_categories > 2:
+        best = max(item.categories, key=lambda name: cells[(item.name, name)]["median"])
+        share = float(cells[(item.name, best)]["median"])
+        return _Named("", share, f"{item.text}: most often “{best}” ({percent(share)}{mark})")
+    yes = item.yes or item.categories[-1]
+    share = float(cells[(item.name, yes)]["median"])
+    return _Named(yes, share, f"{item.text} ({percent(share)}{mark})")
+
+
+def _by_answer(
+    how: str, named: Sequence[_Named], most: int, holds: Callable[[float], bool]
+) -> Iterator[str]:
+    """Yield a sentence for each answer that so many give, the clearest items first."""
+    chosen = [one for one in named if one.answer and holds(one.probability)]
+    chosen.sort(key=lambda one: -abs(one.probability - 0.5))
+    for answer in dict.fromkeys(one.answer for one in chosen):
+        texts = [one.text for one in chosen if one.answer == answer]
+        yield f"{how} “{answer}”: {listed_up_to(texts, most)}."
 
 
 def class_cells(facts: Facts, latent_class: str) -> Mapping[tuple[str, str], Mapping[str, Any]]:
@@ -56,10 +79,3 @@ def class_cells(facts: Facts, latent_class: str) -> Mapping[tuple[str, str], Map
         (str(row["item"]), str(row["category"])): {str(k): v for k, v in row.items()}
         for row in frame.to_dict("records")
     }
-
-
-def _sentences(how: str, by_answer: Mapping[str, list[str]]) -> list[str]:
-    return [
-        f"{how} “{answer}”: {listed_up_to(texts, MOST_NAMED)}."
-        for answer, texts in by_answer.items()
-    ]

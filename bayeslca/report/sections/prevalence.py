@@ -62,7 +62,7 @@ def _in_words(facts: Facts) -> str:
 def _table(facts: Facts) -> PageTable:
     frame = facts.posterior.prevalence(interval=facts.content.interval)
     groups = facts.posterior.model.groups
-    units = facts.content.responses.units
+    units = facts.units
     rows: list[tuple[str, ...]] = []
     for name, overall in zip(facts.class_names, facts.overall, strict=True):
         for row in frame[frame["latent_class"] == name].to_dict("records"):

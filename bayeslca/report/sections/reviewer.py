@@ -263,7 +263,7 @@ def _cross_classified(facts: Facts) -> Answered:
 
 
 def _n_units(facts: Facts) -> int:
-    return facts.content.responses.units.n_units
+    return facts.units.n_units
 
 
 def _for_the_authors() -> Bullets:

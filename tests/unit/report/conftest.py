@@ -164,16 +164,6 @@ def make_items(n_items: int, **special: Item) -> tuple[Item, ...]:
     return (*items, *special.values())
 
 
-class StandInModel(LatentClassModel):
-    """The model, with what it says of itself made up."""
-
-    def describe(self, responses: Any = None) -> str:
-        return "The model in words."
-
-    def findings(self, responses: Any = None) -> tuple[Finding, ...]:
-        return ()
-
-
 def one_mode() -> StartingPoints:
     every = np.zeros(16, dtype=int)
     return StartingPoints(np.full(16, -420.0), every, 1, np.arange(4), (), -420.0)
@@ -191,7 +181,7 @@ def make_posterior(
 ) -> StandInPosterior:
     """Make a posterior around made-up parameters, with answers simulated from them."""
     rng = np.random.default_rng(seed)
-    model = StandInModel(items, classes, statements=statements, groups=groups)
+    model = LatentClassModel(items, classes, statements=statements, groups=groups)
     k, n_groups = model.n_classes, model.n_groups
     prevalence = rng.dirichlet(np.full(k, 6.0), size=n_groups)
     blocks = [rng.dirichlet(np.full(i.n_categories, 0.6)) for i in items for _ in range(k)]
