@@ -63,7 +63,7 @@ argument: [KEYWORD EQUALS] [MINUS] NUMBER
 
 PROBABILITY_OPEN.3: /P\s*\(/
 ABS_OPEN.3: /abs\s*\(/
-NUMBER.2: /(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?(?![\w.])/
+NUMBER.2: /(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?(?!\w|\.\w)/
 AND.1: /and\b/
 OVERALL.1: /overall(?![\w.\-])/
 IN.1: /in\b/

@@ -144,7 +144,7 @@ def _empty(text: str, position: int, expected: set[str]) -> Refusal | None:
 def _wrong_sign(text: str, position: int, expected: set[str]) -> Refusal | None:
     for start, length in ((position - 1, 2), (position, 2), (position, 1)):
         sign = text[max(start, 0) : start + length]
-        if sign in _WRONG_SIGNS:
+        if start >= 0 and sign in _WRONG_SIGNS:
             problem, remedy = _WRONG_SIGNS[sign]
             return Refusal(problem, start, _PUT_IN.get(remedy, remedy))
     return None
@@ -294,6 +294,9 @@ def _after_the_end(text: str, position: int, expected: set[str]) -> Refusal | No
     if sign == "~":
         msg = "'~' gives a prior to one probability, and stands alone"
         return Refusal(msg, position, f"Write {EXAMPLE} ~ Beta(9, 2) as a statement of its own.")
+    if "AND" not in expected and re.match(r"and\b", text[position:]):
+        msg = "a prior or a naming rule stands alone"
+        return Refusal(msg, position, "Give each as a statement of its own.")
     if "$END" in expected and re.match(r"\w", sign):
         msg = "the statement is complete before this"
         return Refusal(msg, position, "Put a sign between the two, or join statements by 'and'.")
