@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Any
 
 from bayeslca.exceptions import ResponsesError
+from bayeslca.responses.spelling import as_text
 
 
 @dataclass(frozen=True, slots=True)
@@ -66,6 +69,59 @@ class Item:
     def n_categories(self) -> int:
         """Number of possible answers."""
         return len(self.categories)
+
+
+@dataclass(frozen=True, slots=True)
+class ItemSpec:
+    """What the analyst says about an item before the answers are read.
+
+    Attributes
+    ----------
+    name : str
+        Column name.
+    categories : sequence of str or None
+        All possible answers in their order; None to take those found in the data. A list is a
+        promise: answers outside it are refused, and what it names is kept as an answer.
+    label : str
+        The item's text for the report; the file's own text when empty.
+    ordered : bool
+        True when the order of the categories has a meaning.
+    yes : str or None
+        The category that counts as yes.
+    merge : mapping of str to sequence of str
+        Spellings that are one answer: ``{"yes": ["Yes", "Y", "1"]}``.
+    no_answer : sequence of str
+        Values of this item that mean that there is no answer.
+    """
+
+    name: str
+    categories: Sequence[Any] | None = None
+    label: str = ""
+    ordered: bool = False
+    yes: Any = None
+    merge: Mapping[str, Sequence[Any]] = field(default_factory=dict)
+    no_answer: Sequence[Any] = ()
+
+    def __post_init__(self) -> None:
+        # Numbers and truth values are taken as they would be read from a file: 1, 1.0 -> "1".
+        if self.categories is not None:
+            object.__setattr__(self, "categories", self._texts("categories", self.categories))
+        object.__setattr__(self, "yes", None if self.yes is None else as_text(self.yes))
+        object.__setattr__(self, "no_answer", self._texts("no_answer", self.no_answer))
+        merge = {
+            str(as_text(kept)): self._texts("merge", spellings)
+            for kept, spellings in dict(self.merge).items()
+        }
+        object.__setattr__(self, "merge", merge)
+
+    def _texts(self, key: str, values: Sequence[Any]) -> tuple[str, ...]:
+        if isinstance(values, (str, bytes)):
+            msg = (
+                f"item '{self.name}': {key} is the single text {values!r}; give a list of values, "
+                f"such as [{values!r}]."
+            )
+            raise ResponsesError(msg)
+        return tuple("" if (text := as_text(value)) is None else text for value in values)
 
 
 @dataclass(frozen=True, slots=True)
