@@ -3,23 +3,22 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from pathlib import Path
 from typing import Any, TypeVar, cast
 
 import numba
 
-SETTINGS: dict[str, Any] = {"nogil": True, "error_model": "numpy", "boundscheck": False}
-
 Function = TypeVar("Function", bound=Callable[..., Any])
+
+SETTINGS: dict[str, Any] = {"nogil": True, "error_model": "numpy", "boundscheck": False}
+"""No lock held, so that chains run on threads. ``fastmath`` stays off: sums keep their order."""
+
+KERNEL_FILES = ("compiled", "layout", "split", "cells", "label_move", "gibbs")
 
 
 def compiled(function: Function) -> Function:
-    """Compile a function of arrays with numba: no lock held, cached on disk, typed for mypy.
-
-    Results do not depend on the machine's choice of fused operations more than NumPy's do:
-    ``fastmath`` stays off. numba's cache looks at a file's own time only, so a change in a file
-    of compiled functions that others call needs their caches removed too.
-    """
-    return cast(Function, numba.njit(cache=True, **SETTINGS)(function))
+    """Compile a function of arrays with numba and cache it on disk, typed for mypy."""
+    return _cached(function)
 
 
 def compiled_inline(function: Function) -> Function:
@@ -28,10 +27,27 @@ def compiled_inline(function: Function) -> Function:
     For functions that take a `Layout`: handing such a tuple over counts references to each of
     its arrays, which costs as much as two dozen random numbers.
     """
-    return cast(Function, numba.njit(cache=True, inline="always", **SETTINGS)(function))
+    return _cached(function, inline="always")
 
 
 def compiled_part(function: Function) -> Function:
     """Compile a function that only compiled functions call: no entry from Python is built."""
     decorate = numba.njit(no_cpython_wrapper=True, no_cfunc_wrapper=True, **SETTINGS)
     return cast(Function, decorate(function))
+
+
+def _cached(function: Function, **options: str) -> Function:
+    dispatcher = numba.njit(cache=True, **options, **SETTINGS)(function)
+    # numba renews a cached function when its own file changes, not when a file does whose
+    # functions it calls: have it look at all files of the kernel.
+    index: Any = getattr(getattr(dispatcher, "_cache", None), "_cache_file", None)
+    if hasattr(index, "_source_stamp"):
+        index._source_stamp = _stamp()
+    return cast(Function, dispatcher)
+
+
+def _stamp() -> tuple[tuple[float, int], ...]:
+    """Time and size of every file of the kernel."""
+    folder = Path(__file__).parent
+    states = [(folder / f"{name}.py").stat() for name in KERNEL_FILES]
+    return tuple((state.st_mtime, state.st_size) for state in states)
