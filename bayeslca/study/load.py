@@ -12,9 +12,12 @@ from typing import Any
 
 from pydantic import BaseModel, ValidationError
 
-from bayeslca.exceptions import StudyError, near_names
+from bayeslca.exceptions import StatementError, StudyError, near_names
 from bayeslca.model.latent_class_model import LatentClassModel
-from bayeslca.responses.responses import ItemSpec, Responses
+from bayeslca.model.resolve import read_statements
+from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.responses.item import ItemSpec
+from bayeslca.responses.responses import Responses
 from bayeslca.study.schema import NOT_YET, SourcedStatement, StudyFile
 
 Place = tuple[str | int, ...]
@@ -92,6 +95,7 @@ class Study:
         """The study's own model; None when the number of classes is left open."""
         classes = self.said.model.classes
         if classes is None:
+            self._refuse_open_statements()
             return None
         return LatentClassModel(
             self.responses.items,
@@ -101,10 +105,22 @@ class Study:
             statement_sources=self.statement_sources,
         )
 
+    def _refuse_open_statements(self) -> None:
+        """Statements about named classes need the classes."""
+        open_statements = [text for text in self.statements if text not in self.shared_statements]
+        if open_statements:
+            msg = (
+                f"{_where(self.path, self.text, ('model', 'statements'))}: {open_statements[0]!r} "
+                "cannot be read for classes that have no names, and [model] classes is left out. "
+                "Name the classes, or write statements about all classes: P(item=answer | .)."
+            )
+            raise StudyError(msg)
+
     @cached_property
     def shared_statements(self) -> tuple[str, ...]:
         """Statements that speak of all classes alike, and so hold for any number of classes."""
-        return tuple(text for text in self.statements if re.search(r"\|\s*\.|P\(\s*\.", text))
+        any_classes = Vocabulary(self.responses.items, ("1",), self.responses.groups, True)
+        return tuple(text for text in self.statements if _can_be_read(text, any_classes))
 
 
 def load_study(path: str | Path) -> Study:
@@ -133,9 +149,7 @@ def load_study(path: str | Path) -> Study:
         said = StudyFile.model_validate(content)
     except ValidationError as error:
         raise StudyError(_in_words(path, text, error)) from None
-    study = Study(path, text, said)
-    _refuse_open_statements(study)
-    return study
+    return Study(path, text, said)
 
 
 def _read_text(path: Path) -> str:
@@ -169,18 +183,12 @@ def _refuse_not_yet(path: Path, text: str, content: Mapping[str, Any]) -> None:
             raise StudyError(msg)
 
 
-def _refuse_open_statements(study: Study) -> None:
-    """Statements about named classes need the classes."""
-    if study.said.model.classes is not None:
-        return
-    open_statements = [text for text in study.statements if text not in study.shared_statements]
-    if open_statements:
-        msg = (
-            f"{_where(study.path, study.text, ('model', 'statements'))}: {open_statements[0]!r} "
-            "speaks of a class, but [model] classes is left out. Name the classes, or write "
-            "statements about all classes: P(item=answer | .)."
-        )
-        raise StudyError(msg)
+def _can_be_read(statement: str, vocabulary: Vocabulary) -> bool:
+    try:
+        read_statements((statement,), vocabulary)
+    except StatementError:
+        return False
+    return True
 
 
 def _in_words(path: Path, text: str, error: ValidationError) -> str:

@@ -1,0 +1,101 @@
+"""Checking a study without sampling: what was read, the model in words, what to know of it."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterable
+from pathlib import Path
+
+from bayeslca.findings import Finding
+from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.responses.responses import Responses
+from bayeslca.study.load import Study, load_study
+
+WIDTH = 79
+SWEEPS = 10_000
+"""Sweeps a chain usually takes before the stopping rule is met."""
+SECONDS_PER_SPLIT = 2.5e-8
+"""Rough time that one unit, class and item takes in a sweep, measured on a laptop core."""
+SECONDS_TO_START = 15
+"""Loading the libraries, summaries and the report."""
+
+
+def check_study(path: str | Path) -> str:
+    """Read all of a study and say what `run` would do; nothing is sampled or written.
+
+    Raises
+    ------
+    BayesLCAError
+        When the study, the answers or the model are wrong.
+    """
+    study = load_study(path)
+    responses = study.responses
+    model = study.model
+    checked = model or LatentClassModel(
+        responses.items, 2, statements=study.shared_statements, groups=responses.groups
+    )
+    parts = [
+        f"{study.said.study.title} ({study.path.name})",
+        "",
+        repr(responses),
+        "",
+        *_model_in_words(study, checked),
+        "",
+        *_findings([*responses.findings, *checked.findings(responses)]),
+        "",
+        *_plan(study, responses),
+    ]
+    return "\n".join(parts)
+
+
+def _model_in_words(study: Study, model: LatentClassModel) -> list[str]:
+    if study.model is None:
+        return [
+            *_wrapped(
+                "The number of classes is left open: the report shows every count that the data "
+                "support. With two classes the model would be:"
+            ),
+            "",
+            model.describe(study.responses),
+        ]
+    return [model.describe(study.responses)]
+
+
+def _findings(findings: Iterable[Finding]) -> list[str]:
+    lines = ["What to know before running"]
+    for finding in findings:
+        mark = {"note": "-", "warning": "!", "problem": "!!"}[finding.level]
+        lines += _wrapped(f"{mark} {finding.message} {finding.remedy}".rstrip(), indent=4)
+    if len(lines) == 1:
+        lines.append("- nothing was noticed")
+    return lines
+
+
+def _plan(study: Study, responses: Responses) -> list[str]:
+    counts = study.said.class_count.compare
+    lines = ["What `run` will do"]
+    if study.model is not None:
+        lines += _wrapped(f"- fit the study's model, {study.model.n_classes} classes", indent=4)
+    if counts:
+        listed = ", ".join(str(n) for n in counts)
+        lines += _wrapped(f"- compare models with {listed} unconstrained classes", indent=4)
+    lines += _wrapped(f"- {_expected_time(study, responses)}", indent=4)
+    return lines
+
+
+def _expected_time(study: Study, responses: Responses) -> str:
+    counts = list(study.said.class_count.compare)
+    if study.model is not None:
+        counts.append(study.model.n_classes)
+    size = responses.units.n_units * len(responses.items)
+    sweeps = SWEEPS * study.said.sampling.chains
+    seconds = SECONDS_TO_START + sum(size * k * sweeps * SECONDS_PER_SPLIT for k in counts)
+    if study.said.sampling.sampler == "nuts":
+        return "NUTS was asked for: expect minutes for each model"
+    if seconds < 60:
+        return "expected time: under a minute"
+    return f"expected time: about {round(seconds / 60)} minutes"
+
+
+def _wrapped(text: str, indent: int = 0) -> list[str]:
+    return textwrap.wrap(text, WIDTH, subsequent_indent=" " * indent) or [""]

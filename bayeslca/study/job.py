@@ -1,0 +1,270 @@
+"""The whole job: from a study file to a folder of results."""
+
+from __future__ import annotations
+
+import json
+import shutil
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+import bayeslca
+from bayeslca.report.content import ReportContent
+from bayeslca.study.changes import changes_since
+from bayeslca.study.load import Study, load_study
+from bayeslca.study.results import RECORD, Results, previous_results, written_aside
+from bayeslca.study.steps import OWN_FIT, Steps, count_fit, step_key
+
+if TYPE_CHECKING:
+    from bayeslca.assess.compare import Comparison
+    from bayeslca.posterior.posterior import Posterior
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """How a run ended.
+
+    Attributes
+    ----------
+    words : str
+        What was found and where the report is, for the terminal.
+    place : str
+        Where the report is.
+    trustworthy : bool
+        False when the fits that the answer rests on are not to be trusted.
+    """
+
+    words: str
+    place: str
+    trustworthy: bool
+
+
+def run_study(
+    path: str | Path, folder: str | Path, *, replace: bool = False, quiet: bool = False
+) -> Outcome:
+    """Do what a study file says and write the results.
+
+    Parameters
+    ----------
+    path : str or Path
+        The study file.
+    folder : str or Path
+        Where the results go; made if it is not there.
+    replace : bool
+        Renew results that stand there already. Fits whose data, model and sampling have not
+        changed are kept, and the report shows what moved.
+    quiet : bool
+        No progress on the terminal.
+
+    Raises
+    ------
+    BayesLCAError
+        When the study, the answers or the model are wrong, or the folder may not be written.
+    """
+    folder = Path(folder)
+    previous = previous_results(folder, replace=replace)
+    study = load_study(path)
+    steps = Steps(previous)
+    own = _own_posterior(study, steps, quiet=quiet)
+    comparison = _compared(study, steps, own, quiet=quiet)
+    rests_on, main, alternatives = _answer(study, own, comparison)
+    content = ReportContent(
+        responses=study.responses,
+        posterior=main,
+        title=study.said.study.title,
+        question=study.said.study.question,
+        chosen_because=study.said.model.chosen_because,
+        comparison=comparison,
+        study_row=_study_row(study, rests_on),
+        alternatives=alternatives,
+        diagnostic=study.said.study.diagnostic,
+        interval=study.said.report.interval,
+        show_cases=study.said.report.show_cases,
+        decisions=_decisions(study),
+        seed=study.said.sampling.seed,
+        command=f"bayeslca run {study.path.name} -o {folder.name}",
+        study_text=study.text,
+        changes=changes_since(previous, main, study.said.report.interval),
+        replaced=previous is not None,
+    )
+    with written_aside(folder) as aside:
+        headline = _write(aside, study, content, comparison, own, steps, rests_on)
+    trusted = _trusted(main, comparison, alternatives)
+    return _outcome(folder, headline, comparison, main, steps, trusted)
+
+
+def _own_posterior(study: Study, steps: Steps, *, quiet: bool) -> Posterior | None:
+    model = study.model
+    if model is None:
+        return None
+    sampling = _sampling(study)
+    seed = study.said.sampling.seed
+    kept = steps.take(OWN_FIT, step_key(study.responses, model, sampling, seed))
+    if kept is not None:
+        return kept
+    return model.sample(study.responses, seed=seed, progress=not quiet, **sampling)
+
+
+def _compared(
+    study: Study, steps: Steps, own: Posterior | None, *, quiet: bool
+) -> Comparison | None:
+    from bayeslca.assess.compare import class_count_model, compare_class_counts
+
+    counts = study.said.class_count.compare
+    if not counts:
+        return None
+    sampling = _sampling(study)
+    fitted = {}
+    for n_classes in counts:
+        model = class_count_model(study.responses, n_classes, statements=study.shared_statements)
+        key = step_key(study.responses, model, sampling, study.said.sampling.seed)
+        kept = steps.take(count_fit(n_classes), key)
+        if kept is not None:
+            fitted[n_classes] = kept
+    named = own if own is not None and not own.model.exploratory else None
+    return compare_class_counts(
+        study.responses,
+        counts,
+        statements=study.shared_statements,
+        seed=study.said.sampling.seed,
+        fitted=fitted,
+        own=named,
+        progress=not quiet,
+        **sampling,
+    )
+
+
+def _sampling(study: Study) -> dict[str, Any]:
+    said = study.said.sampling
+    options: dict[str, Any] = {
+        "sampler": said.sampler,
+        "chains": said.chains,
+        "draws": said.draws,
+        "ess": said.ess,
+        "r_hat": said.r_hat,
+    }
+    if said.max_sweeps is not None:
+        options["max_sweeps"] = said.max_sweeps
+    return options
+
+
+def _answer(
+    study: Study, own: Posterior | None, comparison: Comparison | None
+) -> tuple[str, Posterior, Mapping[str, Posterior]]:
+    """Say which fit the answer rests on, and what else the data support as well."""
+    if own is not None:
+        return OWN_FIT, own, {}
+    assert comparison is not None  # load_study refuses a study without classes and counts
+    tied = [int(row) for row in comparison.table.index[comparison.table["tied"]]]
+    alternatives = {
+        f"{n} classes" if n > 1 else "1 class": comparison.posteriors[n] for n in tied[1:]
+    }
+    return count_fit(tied[0]), comparison.posteriors[tied[0]], alternatives
+
+
+def _study_row(study: Study, rests_on: str) -> int | str | None:
+    if study.model is not None and not study.model.exploratory:
+        return "this study"
+    n_classes = (
+        study.model.n_classes
+        if study.model is not None
+        else int(Path(rests_on).stem.removeprefix("classes-"))
+    )
+    return n_classes if n_classes in study.said.class_count.compare else None
+
+
+def _decisions(study: Study) -> tuple[str, ...]:
+    return tuple(finding.message for finding in study.responses.findings)
+
+
+def _trusted(
+    main: Posterior, comparison: Comparison | None, alternatives: Mapping[str, Posterior]
+) -> bool:
+    if not main.diagnostics().trustworthy:
+        return False
+    if not all(one.diagnostics().trustworthy for one in alternatives.values()):
+        return False
+    if comparison is None:
+        return True
+    return bool(np.all(comparison.table.loc[comparison.table["tied"], "trustworthy"]))
+
+
+def _write(
+    folder: Path,
+    study: Study,
+    content: ReportContent,
+    comparison: Comparison | None,
+    own: Posterior | None,
+    steps: Steps,
+    rests_on: str,
+) -> str:
+    from bayeslca.report.write import write_report
+
+    written = write_report(content, folder)
+    content.posterior.membership(interval=content.interval).to_csv(
+        folder / "membership.csv", index=False
+    )
+    if own is not None:
+        _keep_fit(folder, OWN_FIT, own, steps)
+    if comparison is not None:
+        (folder / "fits").mkdir()
+        for n_classes in study.said.class_count.compare:
+            _keep_fit(folder, count_fit(n_classes), comparison.posteriors[n_classes], steps)
+    if own is None:
+        shutil.copyfile(folder / rests_on, folder / OWN_FIT)
+        steps.keys[OWN_FIT] = steps.keys[rests_on]
+    (folder / "study.toml").write_text(study.text, encoding="utf-8")
+    record = {
+        "bayeslca": bayeslca.__version__,
+        "study": study.path.name,
+        "seed": content.seed,
+        "data_hash": study.responses.data_hash,
+        "answer_rests_on": rests_on,
+        "headline": written.headline,
+        "fits": steps.keys,
+        "kept_from_the_run_before": steps.kept,
+    }
+    (folder / RECORD).write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
+    return written.headline
+
+
+def _keep_fit(folder: Path, file: str, posterior: Posterior, steps: Steps) -> None:
+    """Copy an unchanged fit byte for byte; save a new one."""
+    if file in steps.kept and steps.previous is not None:
+        shutil.copyfile(steps.previous.folder / file, folder / file)
+    else:
+        posterior.save(folder / file)
+
+
+def _outcome(
+    folder: Path,
+    headline: str,
+    comparison: Comparison | None,
+    main: Posterior,
+    steps: Steps,
+    trusted: bool,
+) -> Outcome:
+    place = str(folder / "report.html")
+    lines = [headline]
+    if comparison is not None:
+        lines.append(comparison.verdict)
+    lines.append(main.diagnostics().verdict)
+    if steps.kept:
+        n_kept, n_all = len(steps.kept), len(steps.keys)
+        lines.append(f"{n_kept} of {n_all} fits were unchanged and kept from the run before.")
+    if not trusted:
+        lines.append("Not to be trusted as it stands: the report says where and why.")
+    lines.append(f"Report: {place}")
+    return Outcome("\n".join(_wrapped(line) for line in lines), place, trusted)
+
+
+def _wrapped(line: str) -> str:
+    import textwrap
+
+    return textwrap.fill(line, width=79, break_long_words=False, break_on_hyphens=False)
+
+
+_ = Results
