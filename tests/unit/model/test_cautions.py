@@ -66,6 +66,40 @@ def test_missing_answers_do_not_count_against_a_prior():
     assert weights[2].expected == pytest.approx(30.0)
 
 
+def test_expected_answers_add_up_over_groups():
+    """By hand: 30 cases north with shares 3:1, 30 south with 1:1: 22.5 + 15 in class managed."""
+    groups = Groups("district", ("north", "south"))
+    model = LatentClassModel(
+        BINARY,
+        ("managed", "lapsed"),
+        ["P(managed, lapsed | district=north) ~ Dirichlet(3, 1)", PRIOR],
+        groups=groups,
+    )
+    weights = prior_weights(model, responses_of(BINARY, 60, groups=groups))
+    assert weights[0].expected == pytest.approx(37.5)
+    assert weights[1].expected == pytest.approx(22.5)
+
+
+class WithOneBlock(LatentClassModel):
+    """A model whose two classes share the block of the first item."""
+
+    @property
+    def table(self):
+        builder = TableBuilder([2] * 4, 2)
+        shared = builder.block((1.0, 1.0))
+        for j in range(4):
+            for k in range(2):
+                builder.set_item(0, j, k, shared if j == 0 else builder.block((1.0, 1.0)))
+        return builder.build()
+
+
+def test_a_shared_block_weighs_against_all_the_answers_it_serves():
+    weights = prior_weights(WithOneBlock(BINARY, 2), responses_of(BINARY, 60))
+    assert weights[0].classes == ("1", "2")
+    assert weights[0].expected == pytest.approx(60.0)
+    assert weights[1].expected == pytest.approx(30.0)
+
+
 def test_a_twenty_category_item_at_sixty_cases_is_all_prior():
     """Rule 30's own example: 20 pseudo-cases against 20 expected in each of three classes."""
     items = (*BINARY, KIND)
@@ -75,6 +109,14 @@ def test_a_twenty_category_item_at_sixty_cases_is_all_prior():
     assert heavy[0].about == ("kind", "1", "2", "3")
     assert heavy[0].value == pytest.approx(1.0)
     assert "counts for 20 cases, against about 20" in heavy[0].message
+    assert heavy[0].remedy.startswith("Merge rare categories")
+
+
+def test_a_heavy_stated_prior_has_a_remedy_of_its_own():
+    model = LatentClassModel(BINARY, ("managed", "lapsed"), [PRIOR])
+    heavy = [f for f in model.findings(responses_of(BINARY, 60)) if f.kind == "heavy_prior"]
+    assert [finding.about for finding in heavy] == [("fees", "managed")]
+    assert heavy[0].remedy.startswith("Say in the report")
 
 
 def test_four_binary_items_with_three_classes_are_pointed_out():
@@ -156,6 +198,16 @@ def test_the_description_says_what_is_assumed_and_what_it_weighs():
     assert "against about 39 expected answers (!)" in words
     assert "counts for 2 cases in the class, against about 39 expected answers." in words
     assert max(map(len, text.splitlines())) <= 80
+
+
+def test_only_what_treats_classes_differently_is_said_to_tell_them_apart():
+    rule = "lapsed is where P(fees=yes) is lowest"
+    alike = ["P(accounts=yes | .) ~ Beta(2, 2)", "P(managed, lapsed) ~ Dirichlet(2, 2)"]
+    text = LatentClassModel(BINARY, ("managed", "lapsed"), [rule, *alike]).describe()
+    told_apart = text[text.index("What tells them apart") : text.index("Items")]
+    assert rule in told_apart
+    assert not any(statement in told_apart for statement in alike)
+    assert all(statement in text for statement in alike)
 
 
 def test_the_defaults_are_said_in_numbers():

@@ -9,6 +9,7 @@ import pytest
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.position_names import block_names, element_names, prevalence_names
+from bayeslca.model.table_builder import TableBuilder
 from bayeslca.responses.item import Groups, Item
 
 FEES = Item("fees", ("no", "yes"), yes="yes")
@@ -54,9 +55,7 @@ def test_stated_priors_stand_in_the_table():
         ("managed", "lapsed"),
         [
             "P(fees=yes | managed) ~ Beta(9, 2)",
-            "P(meets=never, at_times, often | lapsed) ~ Dirichlet(4, 1, 2)".replace(
-                "at_times", "'at times'"
-            ),
+            "P(meets=never, 'at times', often | lapsed) ~ Dirichlet(4, 1, 2)",
             "P(managed, lapsed) ~ Dirichlet(3, 1)",
         ],
     )
@@ -174,6 +173,32 @@ def test_elements_blocks_and_prevalences_are_called_as_in_statements():
     assert block_names(model)[0] == "P(fees=no, yes | managed)"
     assert prevalence_names(model)[0][1] == "P(lapsed | district=north)"
     assert prevalence_names(LatentClassModel(ITEMS, 2)) == (("P(1)", "P(2)"),)
+
+
+class WithKnown(LatentClassModel):
+    """A model whose first class never meets; the rest of that item is shared out by a block."""
+
+    @property
+    def table(self):
+        builder = TableBuilder([2, 3], 1)
+        builder.set_item(0, 0, 0, builder.block((1.0, 1.0)))
+        builder.set_known(0, 1, 0, {0: 0.4}, builder.block((1.0, 1.0)))
+        builder.block((1.0, 1.0))
+        return builder.build()
+
+
+def test_elements_that_are_only_a_part_are_called_so():
+    model = WithKnown(ITEMS, 1)
+    assert element_names(model)[2:] == (
+        "part of P(meets='at times' | 1)",
+        "part of P(meets=often | 1)",
+        "element 4 (in no row)",
+        "element 5 (in no row)",
+    )
+    assert block_names(model)[1:] == (
+        "P(meets=never, 'at times', often | 1)",
+        "block 2 (in no row)",
+    )
 
 
 def test_names_of_parameters_can_be_read_back():
