@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
-from scipy.optimize import brentq
 from scipy.special import betainc, betaincc, betaincinv
 
 from bayeslca.exceptions import ModelError
@@ -108,6 +107,8 @@ def beta_from_most_likely(
     >>> round(a, 2), round(b, 2)
     (2.82, 2.49)
     """
+    from scipy.optimize import brentq  # slow to import, and seldom needed
+
     side, bound = _one_bound(above, below)
     _check(most_likely, side, bound, sure)
 
