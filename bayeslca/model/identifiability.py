@@ -184,7 +184,7 @@ def _message(
     if rank < n_free:
         counts = f"the model has {n_free} free parameters, and the answers determine {rank} "
         counts += "combinations of them"
-        why = f" (there are {n_cells} observable pattern probabilities)"
+        why = f" (there are {n_cells:,} observable pattern probabilities)"
         alike = _listed(not_identified)
         return (
             f"Not identified: {counts}{why}. The answers alone do not settle {alike}; what the "

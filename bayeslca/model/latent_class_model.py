@@ -7,6 +7,8 @@ from dataclasses import asdict, dataclass, field
 from functools import cached_property
 from typing import TYPE_CHECKING, Any, Literal
 
+import numpy as np
+
 from bayeslca._typing import Bools, Seed
 from bayeslca.exceptions import ModelError, near_names
 from bayeslca.findings import Finding
@@ -322,6 +324,8 @@ class LatentClassModel:
 
 
 def _checked_classes(classes: object) -> int | tuple[str, ...]:
+    if isinstance(classes, np.integer):
+        classes = int(classes)
     if isinstance(classes, bool) or not isinstance(classes, int | Sequence):
         msg = f"classes must be a number or a list of names; got {classes!r}."
         raise ModelError(msg)

@@ -33,6 +33,12 @@ def test_a_number_of_classes_makes_an_exploratory_model():
     assert model.symmetry.named_group.n_members == 6
 
 
+def test_a_number_from_numpy_is_a_number():
+    model = LatentClassModel(ITEMS, np.int64(2))
+    assert model == LatentClassModel(ITEMS, 2)
+    assert type(model.classes) is int
+
+
 def test_names_with_naming_rules_make_a_confirmatory_model():
     model = LatentClassModel(ITEMS, list(NAMES), RULES)
     assert not model.exploratory
