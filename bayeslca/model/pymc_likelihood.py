@@ -1,0 +1,158 @@
+"""The likelihood of a latent class model as a PyMC distribution, the class summed out.
+
+The observed variable holds the answers' codes (-1: no answer), one line for each unit. Its log
+density is the unit's count times log p(answers), so that the model's density is that of all
+cases; its random draws are the answers of ONE new case per unit, in a class of its own, with the
+unit's missing answers left out.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+
+from bayeslca._typing import Bools, Floats, Ints
+from bayeslca.model.table import Table
+from bayeslca.responses.units import MISSING
+
+SIGNATURE = "(k),(g,c,k),(),(),(k),(j)->(j)"
+"""Of one unit: prevalences, answers' probabilities, response group, count, extra log weight,
+which items were answered -> codes."""
+
+
+@dataclass(frozen=True, eq=False)
+class Answers:
+    """All answers of a table, end to end: those to single items, then the joint ones of pairs.
+
+    Attributes
+    ----------
+    table : Table
+    """
+
+    table: Table
+
+    @cached_property
+    def row(self) -> Ints:
+        """Row of each answer (G, C) in each response group."""
+        return np.concatenate([self.table.response_row, self.table.pair_row], axis=1)
+
+    @cached_property
+    def never(self) -> Bools:
+        """Answers (G, C, K) that have probability 0 whatever the blocks hold."""
+        n_cells = np.diff(self.table.cell_start).reshape(-1, self.table.n_classes)
+        return np.asarray((n_cells == 0)[self.row])
+
+    def given(self, codes: Any) -> Any:
+        """Return which answers (U, C) the codes (U, J) hold, as 0.0 and 1.0; symbolic.
+
+        A pair answered as a whole is one joint answer, and not two single ones.
+        """
+        import pytensor.tensor as pt
+
+        table = self.table
+        sizes = np.diff(table.item_start)
+        item = np.repeat(np.arange(table.n_items), sizes)
+        code = np.arange(item.size) - table.item_start[item]
+        single = pt.eq(codes[:, item], code).astype("float64")
+        if not table.pair_item.shape[0]:
+            return single
+        joint = []
+        keep = [pt.ones_like(single[:, 0])] * table.n_items
+        for first, second in table.pair_item.tolist():
+            one, two = (single[:, _columns(table, j)] for j in (first, second))
+            joint.append((one[:, :, None] * two[:, None, :]).reshape((codes.shape[0], -1)))
+            keep[first] = keep[second] = 1.0 - joint[-1].sum(axis=1)
+        kept = pt.stack(keep, axis=1)[:, item]
+        return pt.concatenate([single * kept, *joint], axis=1)
+
+
+def make_log_density(answers: Answers) -> Callable[..., Any]:
+    """Return the log density of the observed codes, a number for each unit.
+
+    Exact zeros never enter a log: such answers are counted apart, and a class in which a unit
+    gave one gets weight 0 by a constant.
+    """
+    never = answers.never
+    n_groups = never.shape[0]
+
+    def log_density(
+        codes: Any,
+        prevalence: Any,
+        probability: Any,
+        response_group: Any,
+        count: Any,
+        log_weight: Any,
+        answered: Any,
+    ) -> Any:
+        import pytensor.tensor as pt
+
+        probability = probability[(0,) * (probability.ndim - 3)]
+        log_probability = pt.log(pt.switch(never, 1.0, probability))
+        given = answers.given(codes)
+        log_unit: Any = 0.0
+        forbidden: Any = 0.0
+        for g in range(n_groups):
+            mine = 1.0 if n_groups == 1 else pt.eq(response_group, g)[:, None]
+            log_unit = log_unit + mine * pt.dot(given, log_probability[g])
+            if never.any():
+                forbidden = forbidden + mine * pt.dot(given, never[g].astype(np.float64))
+        joint = log_unit + pt.log(prevalence) + log_weight
+        if never.any():
+            joint = pt.switch(forbidden > 0.5, -np.inf, joint)
+        return count * pt.logsumexp(joint, axis=-1)
+
+    return log_density
+
+
+def make_random(answers: Answers) -> Callable[..., Ints]:
+    """Return the function that draws codes: one new case for each unit."""
+    table = answers.table
+
+    def random(
+        prevalence: Floats,
+        probability: Floats,
+        response_group: Ints,
+        count: Ints,
+        log_weight: Floats,
+        answered: Ints,
+        rng: np.random.Generator | None = None,
+        size: tuple[int, ...] | None = None,
+    ) -> Ints:
+        if rng is None:  # PyMC looks whether this can be done symbolically
+            msg = "codes are drawn by NumPy"
+            raise TypeError(msg)
+        shape = tuple(size) if size is not None else np.shape(answered)[:-1]
+        probability = probability[(0,) * (probability.ndim - 3)]
+        group = np.broadcast_to(response_group, shape)
+        weight = np.broadcast_to(prevalence * np.exp(log_weight), (*shape, table.n_classes))
+        latent_class = _draw_index(weight, rng)
+        codes = np.empty((*shape, table.n_items), dtype=np.int64)
+        in_pair = set(table.pair_item.ravel().tolist())
+        for j in range(table.n_items):
+            if j not in in_pair:
+                columns = probability[:, _columns(table, j), :]
+                codes[..., j] = _draw_index(columns[group, :, latent_class], rng)
+        n_single = int(table.item_start[-1])
+        for pair, (first, second) in enumerate(table.pair_item.tolist()):
+            at = slice(n_single + table.pair_start[pair], n_single + table.pair_start[pair + 1])
+            joint = _draw_index(probability[:, at, :][group, :, latent_class], rng)
+            n_second = table.item_start[second + 1] - table.item_start[second]
+            codes[..., first], codes[..., second] = np.divmod(joint, n_second)
+        return np.where(np.broadcast_to(answered, codes.shape) > 0, codes, MISSING)
+
+    return random
+
+
+def _columns(table: Table, item: int) -> slice:
+    return slice(int(table.item_start[item]), int(table.item_start[item + 1]))
+
+
+def _draw_index(weight: Floats, rng: np.random.Generator) -> Ints:
+    """Draw an index along the last axis, in proportion to the weights."""
+    cumulative = np.cumsum(weight, axis=-1)
+    point = rng.random(weight.shape[:-1]) * cumulative[..., -1]
+    return np.asarray((point[..., None] >= cumulative[..., :-1]).sum(axis=-1))

@@ -1,0 +1,261 @@
+"""A latent class model as an ordinary PyMC model that users can extend.
+
+Random variables: ``prevalence`` and the blocks of response probabilities (Beta where binary,
+Dirichlet where not). ``response_probability`` is what follows from them for every answer, and
+``responses`` is the observed variable, with the class summed out.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from bayeslca._typing import Floats, Ints
+from bayeslca.exceptions import ModelError
+from bayeslca.model.compile import compile_units
+from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
+from bayeslca.model.pymc_blocks import (
+    BlockVariable,
+    Names,
+    block_variables,
+    element_tensor,
+    row_tensor,
+)
+from bayeslca.model.pymc_likelihood import SIGNATURE, Answers, make_log_density, make_random
+from bayeslca.model.support import impossible_units
+from bayeslca.model.table import Table, UnitTable
+from bayeslca.responses.units import MISSING, Units
+
+if TYPE_CHECKING:
+    from bayeslca.model.latent_class_model import LatentClassModel
+    from bayeslca.responses.responses import Responses
+
+ATTRIBUTE = "bayeslca_parts"
+"""Attribute of the ``pm.Model`` that holds its `Parts`."""
+
+
+@dataclass(frozen=True, eq=False)
+class Parts:
+    """What stands behind a PyMC model: for samplers that read arrays, such as the Gibbs step.
+
+    Attributes
+    ----------
+    table : Table
+    units : UnitTable
+    source : PrevalenceSource
+    variables : tuple of BlockVariable
+    """
+
+    table: Table
+    units: UnitTable
+    source: PrevalenceSource
+    variables: tuple[BlockVariable, ...]
+
+    def elements(self, values: Any) -> Floats:
+        """Return elements (..., E) from values by variable name, with any leading axes."""
+        leading = ()
+        for variable in self.variables:
+            inner = variable.elements.ndim - variable.is_binary
+            leading = np.shape(values[variable.name])[: np.ndim(values[variable.name]) - inner]
+        out = np.ones((*leading, self.table.n_elements))
+        for variable in self.variables:
+            variable.put(np.asarray(values[variable.name]), out)
+        return out
+
+
+def build(
+    model: LatentClassModel,
+    responses: Responses,
+    *,
+    by_case: bool = False,
+    gibbs: bool = False,
+    concentration: Any = None,
+    into: Any = None,
+) -> Any:
+    """Return a latent class model as a ``pm.Model``.
+
+    Parameters
+    ----------
+    model : LatentClassModel
+    responses : Responses
+    by_case : bool
+        False: ``responses`` has a line for each distinct pattern of answers (dim ``unit``), its
+        log density counts all cases that gave it, and its pointwise log likelihood is that of
+        the pattern's cases together. True: a line for each case (dim ``case``), so that
+        ``pm.compute_log_likelihood`` is what leave-one-out measures of cases need, and
+        predictive draws are whole replicates of the data. Slower.
+    gibbs : bool
+        True leaves out the transforms to the real line, as ``GibbsStep`` needs.
+    concentration : tensor or array, optional
+        Dirichlet parameters (K,) or (group, K) of the prevalences in place of the model's own;
+        may depend on variables of your own, made in the model given as ``into``.
+    into : pm.Model, optional
+        Add to this model instead of a new one.
+
+    Returns
+    -------
+    pm.Model
+
+    Notes
+    -----
+    A posterior predictive draw of ``responses`` is one new case per line, whatever its count,
+    with the line's missing answers left out (code -1). By unit, weigh them by the data
+    ``count``, or use ``by_case=True``.
+    """
+    units = model.units(responses)
+    if by_case:
+        units = as_cases(units, responses.counts)
+    return build_from_table(
+        model.table,
+        model.prevalence_source,
+        units,
+        Names.of(model),
+        by_case=by_case,
+        gibbs=gibbs,
+        concentration=concentration,
+        into=into,
+    )
+
+
+def as_cases(units: Units, counts: Ints) -> Units:
+    """Return units that are single cases, in the order of the responses' rows."""
+    rows = np.repeat(np.arange(units.unit_of_row.size), counts)
+    unit = units.unit_of_row[rows]
+    unit = unit[unit >= 0]
+    return Units(
+        pattern=units.pattern[unit],
+        group=units.group[unit],
+        count=np.ones(unit.size, dtype=np.int64),
+        unit_of_row=np.arange(unit.size),
+    )
+
+
+def build_from_table(
+    table: Table,
+    source: PrevalenceSource,
+    units: Units,
+    names: Names,
+    *,
+    log_weight: Floats | None = None,
+    by_case: bool = False,
+    gibbs: bool = False,
+    concentration: Any = None,
+    into: Any = None,
+) -> Any:
+    """Return a compiled model as a ``pm.Model``; see `build`.
+
+    Parameters
+    ----------
+    log_weight : ndarray, shape (U, K), optional
+        Extra log weight of each unit in each class (verified class: 0 and -inf).
+
+    Raises
+    ------
+    ModelError
+        When probabilities are bounded or ordered, or a unit's answers are impossible.
+    """
+    import pymc as pm
+
+    if table.is_bounded:
+        msg = (
+            "the model bounds or orders probabilities (statements with <, >, <= or >=), which "
+            "cannot be written as a PyMC model yet. Leave these statements out."
+        )
+        raise ModelError(msg)
+    unit_table = compile_units(table, units, log_weight)
+    impossible = impossible_units(table, unit_table)
+    if impossible.size:
+        msg = (
+            f"{int(unit_table.count[impossible].sum())} cases gave answers that no class allows "
+            f"(first: codes {units.pattern[impossible[0]].tolist()}). Check these answers, or "
+            "loosen the probabilities that are fixed at 0 or 1."
+        )
+        raise ModelError(msg)
+    variables = block_variables(table, names)
+    options = {"default_transform": None} if gibbs else {}
+    with into or pm.Model() as pm_model:
+        coords = {"latent_class": names.latent_class, "response": names.response}
+        coords |= {"group": names.group} if names.group else {}
+        coords |= {"item": names.item, "case" if by_case else "unit": range(units.n_units)}
+        for variable in variables:
+            coords |= variable.coords
+        for dim, labels in coords.items():
+            pm_model.add_coord(dim, list(labels))
+        prevalence = _prevalence(source, names, concentration, options)
+        values = [variable.add(table.element_prior, **options) for variable in variables]
+        elements = element_tensor(table, list(zip(variables, values, strict=True)))
+        rows = row_tensor(table, elements)
+        _response_probability(table, rows)
+        _likelihood(table, units, unit_table, prevalence, rows, by_case=by_case)
+    setattr(pm_model, ATTRIBUTE, Parts(table, unit_table, source, variables))
+    return pm_model
+
+
+def _prevalence(
+    source: PrevalenceSource, names: Names, concentration: Any, options: dict[str, Any]
+) -> Any:
+    """Add the prevalences; return them with an axis for the prevalence rows."""
+    import pymc as pm
+    import pytensor.tensor as pt
+
+    dims = ("group", "latent_class") if names.group else ("latent_class",)
+    if isinstance(source, DirichletPrevalence) and source.n_classes > 1:
+        if concentration is None:
+            concentration = source.concentration if names.group else source.concentration[0]
+        shape = (source.n_rows, source.n_classes)[-len(dims) :]
+        a = pt.broadcast_to(concentration, shape)
+        prevalence = pm.Dirichlet("prevalence", a=a, dims=dims, **options)
+    else:
+        prevalence = source.to_pymc("prevalence", dims)
+    return prevalence if names.group else prevalence[None, :]
+
+
+def _response_probability(table: Table, rows: Any) -> None:
+    import pymc as pm
+
+    by_group = rows[table.response_row]  # (G, A, K)
+    if table.n_response_groups == 1:
+        pm.Deterministic("response_probability", by_group[0].T, dims=("latent_class", "response"))
+        return
+    pm.Deterministic(
+        "response_probability",
+        by_group.transpose(0, 2, 1),
+        dims=("response_group", "latent_class", "response"),
+    )
+
+
+def _likelihood(
+    table: Table,
+    units: Units,
+    unit_table: UnitTable,
+    prevalence: Any,
+    rows: Any,
+    *,
+    by_case: bool,
+) -> None:
+    """Add the observed variable ``responses``."""
+    import pymc as pm
+
+    line = "case" if by_case else "unit"
+    count = 1 if by_case else pm.Data("count", unit_table.count, dims=line)
+    one_row = table.n_prevalence_rows == 1
+    log_weight = unit_table.log_weight
+    answers = Answers(table)
+    pm.CustomDist(
+        "responses",
+        prevalence if one_row else prevalence[unit_table.prevalence_row],
+        rows[answers.row],
+        table.response_group[unit_table.prevalence_row],
+        count,
+        log_weight if log_weight.size else np.zeros((1, table.n_classes)),
+        (units.pattern != MISSING).astype(np.int64),
+        logp=make_log_density(answers),
+        random=make_random(answers),
+        signature=SIGNATURE,
+        dtype="int64",
+        class_name="LatentClassResponses",
+        observed=units.pattern.astype(np.int64),
+        dims=(line, "item"),
+    )
