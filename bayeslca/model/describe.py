@@ -70,10 +70,18 @@ def _classes(model: LatentClassModel) -> list[str]:
     out = _wrapped(f"The classes are {names}. What tells them apart:")
     for rule in model.naming_rules:
         out += _indented(f"{rule.text} (a naming rule){_source(model, rule.text)}")
+    left = [k for k in range(model.n_classes) if k not in _ruled(model)]
+    if model.naming_rules and len(left) == 1:
+        out += _indented(f"{model.class_names[left[0]]} is the class that is left")
     for prior in model.stated.priors:
         if _tells_apart(prior):
             out += _indented(f"{prior.text}{_source(model, prior.text)}")
     return out
+
+
+def _ruled(model: LatentClassModel) -> frozenset[int]:
+    """Return the classes that have a naming rule of their own."""
+    return frozenset(rule.latent_class for rule in model.naming_rules)
 
 
 def _tells_apart(prior: PrevalencePrior | ResponsePrior) -> bool:

@@ -210,6 +210,15 @@ def test_only_what_treats_classes_differently_is_said_to_tell_them_apart():
     assert all(statement in text for statement in alike)
 
 
+def test_the_class_that_naming_rules_leave_over_is_named():
+    names = ("managed", "informal", "lapsed")
+    rules = [
+        f"{name} is where P(fees=yes) is {extreme}"
+        for name, extreme in (("managed", "highest"), ("lapsed", "lowest"))
+    ]
+    assert "informal is the class that is left" in LatentClassModel(BINARY, names, rules).describe()
+
+
 def test_the_defaults_are_said_in_numbers():
     """By hand: the quantile q of Beta(1, 31) is 1 - (1 - q) ** (1 / 31)."""
     words = " ".join(LatentClassModel(BINARY, 2).describe(responses_of(BINARY, 60)).split())
