@@ -8,12 +8,12 @@ from __future__ import annotations
 import numpy as np
 
 from bayeslca._typing import Floats
-from bayeslca.sampling.compiled import compiled, compiled_part
+from bayeslca.sampling.compiled import compiled_part
 from bayeslca.sampling.layout import Layout, Workspace
 from bayeslca.sampling.split import split_count
 
 
-@compiled
+@compiled_part
 def general_rows(layout: Layout, work: Workspace, elements: Floats) -> None:
     """Set the probability of every row that is not one element alone."""
     n_classes = layout.direct_element.shape[1]
@@ -26,7 +26,7 @@ def general_rows(layout: Layout, work: Workspace, elements: Floats) -> None:
             work.row_probability[r, k] += _cell_probability(layout, c, elements)
 
 
-@compiled
+@compiled_part
 def count_general_rows(
     layout: Layout, work: Workspace, elements: Floats, rng: np.random.Generator
 ) -> None:

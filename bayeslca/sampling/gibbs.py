@@ -201,14 +201,28 @@ def run_sweeps(
                     rng,
                 )
             if step == thin - 1:
-                kept_elements[draw] = elements
-                kept_prevalence[draw] = prevalence
+                _keep(elements, prevalence, kept_elements, kept_prevalence, draw)
             log_likelihood = sweep(layout, work, concentration, elements, prevalence, rng)
             if math.isnan(log_likelihood):
                 return 1
         kept_log_likelihood[draw] = log_likelihood
         kept_swaps[draw] = swaps
     return 0
+
+
+@compiled_part
+def _keep(
+    elements: Floats,
+    prevalence: Floats,
+    kept_elements: Floats,
+    kept_prevalence: Floats,
+    draw: int,
+) -> None:
+    for e in range(elements.shape[0]):
+        kept_elements[draw, e] = elements[e]
+    for g in range(prevalence.shape[0]):
+        for k in range(prevalence.shape[1]):
+            kept_prevalence[draw, g, k] = prevalence[g, k]
 
 
 @compiled_part
@@ -313,7 +327,8 @@ def _split_units(
                 part_count[s, k] += numbers[k]
         if keep:
             unit_log_probability[u] = log_probability + (shift[u] if weighted else 0.0)
-            unit_count[u] = numbers
+            for k in range(n_classes):
+                unit_count[u, k] = numbers[k]
     return log_likelihood + math.log(running)
 
 
@@ -360,7 +375,8 @@ def _rows_from_parts(part_start: Ints, part_row: Ints, part_count: Ints, row_cou
 def _elements_from_rows(
     direct: Ints, prior: Floats, row_count: Ints, element_parameter: Floats
 ) -> None:
-    element_parameter[:] = prior
+    for e in range(prior.shape[0]):
+        element_parameter[e] = prior[e]
     for r in range(direct.shape[0]):
         for k in range(direct.shape[1]):
             if direct[r, k] >= 0:

@@ -11,11 +11,11 @@ import math
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.sampling.compiled import compiled
+from bayeslca.sampling.compiled import compiled_part
 from bayeslca.sampling.layout import Layout, Workspace
 
 
-@compiled
+@compiled_part
 def swap_labels(
     layout: Layout,
     work: Workspace,
@@ -64,6 +64,9 @@ def swap_labels(
                 )
     if math.log1p(-rng.random()) >= log_ratio:
         return 0
-    elements[:] = work.swap_elements
-    prevalence[:] = work.swap_prevalence
+    for e in range(elements.shape[0]):
+        elements[e] = work.swap_elements[e]
+    for g in range(prevalence.shape[0]):
+        for k in range(prevalence.shape[1]):
+            prevalence[g, k] = work.swap_prevalence[g, k]
     return 1

@@ -11,7 +11,7 @@ import math
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.sampling.compiled import compiled, compiled_part
+from bayeslca.sampling.compiled import compiled_part
 
 SMALLEST = 1e-300
 """No drawn probability is smaller: its logarithm stays finite."""
@@ -23,7 +23,7 @@ SMALL_PARAMETER = 0.1
 """Below it a gamma variate may underflow and is drawn in logs."""
 
 
-@compiled
+@compiled_part
 def split_count(
     count: int, weights: Floats, cumulative: Floats, numbers: Ints, rng: np.random.Generator
 ) -> None:
@@ -41,7 +41,8 @@ def split_count(
     rng : numpy.random.Generator
     """
     n = weights.shape[0]
-    numbers[:] = 0
+    for k in range(n):
+        numbers[k] = 0
     if count <= CASE_BY_CASE:
         for _ in range(count):
             numbers[pick(cumulative, rng)] += 1
@@ -70,7 +71,7 @@ def pick(cumulative: Floats, rng: np.random.Generator) -> int:
     return chosen
 
 
-@compiled
+@compiled_part
 def draw_shares(start: Ints, parameter: Floats, out: Floats, rng: np.random.Generator) -> None:
     """Draw probability vectors laid end to end, each from its Dirichlet, by way of gammas.
 

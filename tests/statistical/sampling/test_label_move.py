@@ -8,6 +8,7 @@ the likelihood of both is the same.
 
 from __future__ import annotations
 
+import numba
 import numpy as np
 import pytest
 
@@ -97,13 +98,17 @@ def _mass_with_a_move_that_believes(task, prior: np.ndarray) -> np.ndarray:
     from bayeslca.sampling.label_move import swap_labels
     from bayeslca.sampling.layout import workspace
 
+    @numba.njit
+    def move(*arguments):
+        return swap_labels(*arguments)
+
     rng = np.random.default_rng(SEED)
     work, wrong = workspace(task.layout), task.layout._replace(element_prior=prior)
     elements, prevalence = np.tile([0.2, 0.8, 0.8, 0.2], 5), np.array([[0.5, 0.5]])
     concentration = task.source.concentration
     out = np.empty((4000, 2))
     for i in range(len(out)):
-        swap_labels(
+        move(
             wrong,
             work,
             concentration,
