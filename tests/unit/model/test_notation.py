@@ -114,7 +114,9 @@ def test_probabilities_come_from_left_to_right():
 
 plain_names = st.from_regex(r"\w[\w.\-]{0,5}", fullmatch=True)
 odd_names = st.text(st.characters(exclude_categories=("Cs",)), min_size=1, max_size=8)
-reserved = st.sampled_from(["overall", "and", "in", "where", "P", "abs", "prevalence", "1", "1e5"])
+reserved = st.sampled_from(
+    ['it\'s "so"', "'\"", "overall", "and", "in", "where", "P", "abs", "prevalence", "1", "1e5"]
+)
 names = st.builds(Name, st.one_of(plain_names, odd_names, reserved))
 single = st.tuples(names)
 events = st.one_of(
