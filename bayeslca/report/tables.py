@@ -10,6 +10,7 @@ import numpy as np
 
 from bayeslca.report.columns import column
 from bayeslca.report.priors import priors_table
+from bayeslca.report.wording import level
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -64,7 +65,7 @@ def file_tables(content: ReportContent) -> tuple[FileTable, ...]:
             counts.rename_axis(counts.index.name or "model"),
         )
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
-    return (*tables, _columns_table(tables))
+    return (*tables, _columns_table(tables, interval))
 
 
 def _flat(frame: pd.DataFrame) -> pd.DataFrame:
@@ -74,7 +75,7 @@ def _flat(frame: pd.DataFrame) -> pd.DataFrame:
     return frame.reset_index()
 
 
-def _columns_table(tables: list[FileTable]) -> FileTable:
+def _columns_table(tables: list[FileTable], interval: float) -> FileTable:
     import pandas as pd
 
     rows: list[Mapping[str, str]] = []
@@ -86,7 +87,9 @@ def _columns_table(tables: list[FileTable]) -> FileTable:
                     "table": table.name,
                     "column": str(name),
                     "words": meaning.words,
-                    "meaning": meaning.gloss,
+                    "meaning": meaning.gloss.replace(
+                        "the interval", f"the {level(interval)} interval"
+                    ),
                 }
             )
     return FileTable("columns", "What every column of every table means", pd.DataFrame(rows))

@@ -16,7 +16,9 @@ if TYPE_CHECKING:
 WIDEST = 60
 
 
-def write_workbook(path: Path, tables: Sequence[FileTable], notes: Sequence[str]) -> None:
+def write_workbook(
+    path: Path, tables: Sequence[FileTable], notes: Sequence[str], *, warning: str = ""
+) -> None:
     """Write the tables as sheets; text from data stays text, whatever it begins with.
 
     Parameters
@@ -25,6 +27,8 @@ def write_workbook(path: Path, tables: Sequence[FileTable], notes: Sequence[str]
     tables : sequence of FileTable
     notes : sequence of str
         Lines for the first sheet: what this is, and whether it is to be trusted.
+    warning : str
+        Stands above every table when the numbers are not to be trusted.
     """
     from openpyxl import Workbook
 
@@ -37,25 +41,28 @@ def write_workbook(path: Path, tables: Sequence[FileTable], notes: Sequence[str]
         _append(first, [table.name, table.title])
     first.column_dimensions["A"].width = 30
     for table in tables:
-        _add_sheet(book.create_sheet(table.name[:31]), table)
+        _add_sheet(book.create_sheet(table.name[:31]), table, warning)
     book.save(path)
 
 
-def _add_sheet(sheet: Worksheet, table: FileTable) -> None:
+def _add_sheet(sheet: Worksheet, table: FileTable, warning: str) -> None:
     from openpyxl.styles import Font
 
     names = [str(name) for name in table.frame.columns]
+    if warning:
+        _append(sheet, [warning])
+    heads = 2 if warning else 1
     _append(sheet, [column(name).words for name in names])
     _append(sheet, names)
-    for cell in sheet[1]:
+    for cell in sheet[heads]:
         cell.font = Font(bold=True)
-    for cell in sheet[2]:
+    for cell in sheet[heads + 1]:
         cell.font = Font(italic=True, color="FF595959")
     for record in records(table.frame):
         _append(sheet, [record[name] for name in names])
-    sheet.freeze_panes = "A3"
+    sheet.freeze_panes = f"A{heads + 2}"
     for cells in sheet.columns:
-        longest = max(len(str(cell.value or "")) for cell in cells[:200])
+        longest = max(len(str(cell.value or "")) for cell in cells[heads - 1 : 200])
         sheet.column_dimensions[cells[0].column_letter].width = min(WIDEST, max(10, longest + 2))
 
 

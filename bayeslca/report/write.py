@@ -59,7 +59,8 @@ def write_report(content: ReportContent, folder: Path) -> WrittenReport:
     )
     tables = file_tables(content)
     workbook = folder / "tables.xlsx"
-    write_workbook(workbook, tables, _notes(facts))
+    warning = "" if trusted else "Not to be trusted yet: see the sheet read me."
+    write_workbook(workbook, tables, _notes(facts), warning=warning)
     _write_csv(
         content.posterior.membership(rows="patterns", interval=content.interval),
         folder / "membership_of_patterns.csv",

@@ -177,6 +177,9 @@ def test_an_untrusted_posterior_is_marked_before_anything_is_claimed(
     assert "R-hat is 1.31" in page.text
     assert "Two modes hold chains. Sample longer." in page.text
     assert "Do not use it yet" in page.text
+    n_tables = page.tags.count("caption")
+    assert n_tables > 5
+    assert page.text.count("(not to be trusted yet)") == n_tables
 
 
 def test_a_tied_count_that_is_not_to_be_trusted_is_said(

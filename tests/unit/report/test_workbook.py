@@ -50,6 +50,23 @@ def test_numbers_stay_numbers_and_missing_ones_are_empty(tmp_path: Path) -> None
     assert [cell.value for cell in sheet["B"][2:]] == [True, False, True]
 
 
+def test_a_warning_stands_above_every_table(content: ReportContent, tmp_path: Path) -> None:
+    tables = file_tables(content)
+    write_workbook(tmp_path / "t.xlsx", tables, [], warning="Not to be trusted yet")
+    book = openpyxl.load_workbook(tmp_path / "t.xlsx")
+    for table in tables:
+        sheet = book[table.name]
+        assert sheet["A1"].value == "Not to be trusted yet"
+        assert sheet["A3"].value == table.frame.columns[0]
+        assert sheet.freeze_panes == "A4"
+
+
+def test_the_level_of_the_interval_is_explained(content: ReportContent) -> None:
+    (columns,) = [table for table in file_tables(content) if table.name == "columns"]
+    lower = columns.frame.query("column == 'lower' and table == 'prevalence'")
+    assert "95 % interval" in lower["meaning"].iloc[0]
+
+
 def test_control_characters_do_not_break_the_file(tmp_path: Path) -> None:
     frame = pd.DataFrame({"item": ["a\x00b\x0bc"]})
     write_workbook(tmp_path / "t.xlsx", [FileTable("x", "", frame)], [])
