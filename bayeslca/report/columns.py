@@ -57,6 +57,7 @@ COLUMNS: dict[str, Column] = {
     "cases": Column("Cases", "number of cases", "count"),
     "count": Column("Cases", "number of cases", "count"),
     "share": Column("Share", "part of all, between 0 and 1", "share"),
+    "missing": Column("Missing", "cases without an answer to the item", "count"),
     **_STATISTICS,
     "prior": Column("Prior", "what was assumed before the answers", "text"),
     "prior_mean": Column("Prior mean", "expected before the answers", "share"),

@@ -22,6 +22,7 @@ from bayeslca.report.wording import (
     percent,
     sentence,
     significant,
+    whole,
 )
 
 ANCHOR, HEADING = "assumptions", "What was assumed"
@@ -31,6 +32,7 @@ def assumptions_section(facts: Facts) -> Section:
     """Return the section on the model and its priors."""
     model = facts.posterior.model
     blocks: list[Block] = [Paragraph(model_in_words(facts)), Paragraph(answers_in_words(facts))]
+    blocks.append(_answers_table(facts))
     blocks += _statements(facts)
     blocks += [
         Subheading("What the priors weigh"),
@@ -105,6 +107,28 @@ def weights_in_words(facts: Facts) -> str:
         f"of the result, most in {_item_text(facts, worst)} of {called(worst.latent_class)} "
         f"({percent(worst.share)})."
     )
+
+
+def _answers_table(facts: Facts) -> PageTable:
+    texts = {item.name: item.text for item in facts.posterior.model.items}
+    rows = tuple(
+        (
+            texts[str(row["item"])],
+            str(row["category"]),
+            whole(row["count"]),
+            percent(row["share"]),
+            whole(row["missing"]),
+        )
+        for row in facts.content.responses.summary().to_dict("records")
+    )
+    heads = (
+        Head("Item", "what was asked", numeric=False),
+        Head("Answer", "one of the possible answers", numeric=False),
+        Head("Cases", "that gave it"),
+        Head("Share", "of those that answered the item"),
+        Head("Missing", "cases without an answer to the item"),
+    )
+    return PageTable("What was answered", heads, rows, folded=True)
 
 
 def _noticed(facts: Facts) -> tuple[tuple[str, str], ...]:

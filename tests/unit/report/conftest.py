@@ -17,7 +17,7 @@ from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import membership, response_probability
 from bayeslca.report.content import ReportContent
 from bayeslca.responses.item import Groups, Item
-from bayeslca.responses.units import Units
+from bayeslca.responses.responses import Responses
 from bayeslca.sampling.draws import Draws
 from bayeslca.sampling.starting_points import StartingPoints
 
@@ -38,39 +38,9 @@ def summary(draws: np.ndarray, interval: float) -> dict[str, Any]:
 
 
 @dataclass
-class StandInResponses:
-    items: tuple[Item, ...]
-    units: Units
-    groups: Groups | None
-    case_ids: tuple[str, ...]
-    case_name: str | None = "committee"
-    findings: tuple[Finding, ...] = ()
-    source: str = "committees.csv"
-    data_hash: str = "0f" * 32
-    is_table_of_patterns: bool = False
-    n_set_aside: int = 0
-
-    @property
-    def n_cases(self) -> int:
-        return self.units.n_cases
-
-    @property
-    def n_rows(self) -> int:
-        return len(self.case_ids)
-
-    def summary(self) -> pd.DataFrame:
-        rows = []
-        for j, item in enumerate(self.items):
-            for c, category in enumerate(item.categories):
-                count = int(self.units.count[self.units.pattern[:, j] == c].sum())
-                rows.append({"item": item.name, "category": category, "count": count})
-        return pd.DataFrame(rows)
-
-
-@dataclass
 class StandInPosterior:
     model: LatentClassModel
-    responses: StandInResponses
+    responses: Responses
     draws: Draws
     trustworthy: bool = True
     verdict: str = "The chains agree (largest R-hat 1.003, smallest effective sample size 1,100)."
@@ -192,9 +162,6 @@ def make_posterior(
         axis=1,
     ).astype(np.int16)
     codes[rng.random(codes.shape) < 0.01] = -1
-    both = np.column_stack([group, codes])
-    distinct, unit_of_row, count = np.unique(both, axis=0, return_inverse=True, return_counts=True)
-    units = Units(distinct[:, 1:], distinct[:, 0], count, unit_of_row.ravel())
     size = (CHAINS, DRAWS)
     draws = Draws(
         elements=np.concatenate([rng.dirichlet(40 * b + 0.5, size=size) for b in blocks], axis=2),
@@ -208,7 +175,16 @@ def make_posterior(
         starts=one_mode(),
     )  # fmt: skip
     ids = tuple(f"WP{n + 1:03d}" for n in range(n_cases))
-    responses = StandInResponses(items, units, groups, ids)
+    responses = Responses(
+        items=items,
+        codes=codes,
+        counts=np.ones(n_cases, dtype=np.int64),
+        case_ids=ids,
+        case_name="committee",
+        groups=groups,
+        group_codes=group.astype(np.int32),
+        source="committees.csv",
+    )
     return StandInPosterior(model, responses, draws, **more)
 
 
