@@ -1,0 +1,282 @@
+"""The posterior: what was learnt from the answers, and every table of it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from datetime import UTC, datetime
+from functools import cached_property
+from pathlib import Path
+from typing import TYPE_CHECKING, Literal
+
+import numpy as np
+
+from bayeslca._typing import Floats
+from bayeslca.model.compile import compile_units
+from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.model.probabilities import log_unit_likelihood, response_probability
+from bayeslca.model.table import Table, UnitTable
+from bayeslca.posterior import membership as memberships
+from bayeslca.posterior import separation as separations
+from bayeslca.posterior import tables
+from bayeslca.posterior.summary import Quantities, summary_frame
+from bayeslca.posterior.versions import versions_now
+from bayeslca.responses.responses import Responses
+from bayeslca.responses.units import Units
+from bayeslca.sampling.draws import Draws
+from bayeslca.sampling.relabel import Relabelled
+
+if TYPE_CHECKING:
+    import pandas as pd
+    from xarray import DataTree
+
+    from bayeslca.assess.convergence import Diagnostics
+
+Rows = Literal["cases", "patterns"]
+
+
+def _now() -> str:
+    return datetime.now(UTC).isoformat(timespec="seconds")
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class Posterior:
+    """The posterior of a latent class model given responses.
+
+    Made by ``model.sample(responses)`` or ``Posterior.load(path)``. Tables are pandas frames;
+    those of quantities have the columns ``median, mean, sd, lower, upper, mcse, ess_bulk,
+    ess_tail, r_hat`` after their keys, and the level of the interval in
+    ``frame.attrs["interval"]``.
+
+    Attributes
+    ----------
+    model : LatentClassModel
+    responses : Responses
+    relabelled : Relabelled
+        The draws with classes that mean the same throughout, and how that was reached.
+    created_at : str
+        When it was sampled, ISO 8601, UTC.
+    versions : mapping of str to str
+        Versions of Python and of the packages that made it.
+    """
+
+    model: LatentClassModel
+    responses: Responses
+    relabelled: Relabelled
+    created_at: str = field(default_factory=_now)
+    versions: dict[str, str] = field(default_factory=versions_now)
+
+    @property
+    def draws(self) -> Draws:
+        """The relabelled draws."""
+        return self.relabelled.draws
+
+    @property
+    def table(self) -> Table:
+        """The model as arrays."""
+        return self.model.table
+
+    @cached_property
+    def units(self) -> Units:
+        """The distinct answers, as the model sees them."""
+        return self.model.units(self.responses)
+
+    @cached_property
+    def unit_table(self) -> UnitTable:
+        """The distinct answers as arrays; units in the order of ``units``."""
+        return compile_units(self.table, self.units)
+
+    @cached_property
+    def group_cases(self) -> Floats:
+        """Number of cases (with an answer) of each group, shape (groups,)."""
+        n_groups = self.table.n_prevalence_rows
+        counts = np.bincount(self.units.group, weights=self.units.count, minlength=n_groups)
+        return np.asarray(counts, dtype=np.float64)
+
+    @property
+    def prevalence_draws(self) -> Floats:
+        """Draws of the prevalences, shape (chain, draw, groups, K)."""
+        return self.draws.prevalence
+
+    @cached_property
+    def response_probability_draws(self) -> Floats:
+        """Draws of P(answer | class), shape (chain, draw, G, K, A)."""
+        return response_probability(self.table, self.draws.elements)
+
+    @cached_property
+    def log_likelihood_draws(self) -> Floats:
+        """Log p(answers) of one case of each unit, class summed out, (chain, draw, unit)."""
+        return log_unit_likelihood(
+            self.table, self.unit_table, self.draws.elements, self.draws.prevalence
+        )
+
+    def prevalence(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return how common each class is.
+
+        Returns
+        -------
+        DataFrame
+            A row per class with the key ``latent_class``; with groups, a row per ``group`` and
+            class, then rows of the group "overall" (weighted by group sizes). After the summary
+            come ``cases``, ``cases_lower`` and ``cases_upper``: median, lower and upper share
+            times the number of cases of the group that gave an answer.
+        """
+        return tables.prevalence_table(self, self._prevalence_quantities, interval)
+
+    def response_probabilities(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return what each class looks like.
+
+        Returns
+        -------
+        DataFrame
+            A row per class, item and category, with the keys ``latent_class``, ``item``,
+            ``category``; ``group`` before them where groups differ in response probabilities.
+        """
+        return tables.response_probability_table(
+            self, self._response_probability_quantities, interval
+        )
+
+    def membership(
+        self,
+        responses: Responses | None = None,
+        interval: float = 0.95,
+        rows: Rows = "cases",
+    ) -> pd.DataFrame:
+        """Return how probably each case is of each class, given its answers.
+
+        Parameters
+        ----------
+        responses : Responses, optional
+            New cases; those of the fit when left out.
+        interval : float
+        rows : {"cases", "patterns"}
+            A row per case (row of the responses), or per response pattern.
+
+        Returns
+        -------
+        DataFrame
+            Keys: ``case`` (and ``group``, where the model has groups), or the items' answers;
+            ``count`` where a row stands for several cases. Then ``modal_class``,
+            ``modal_probability``, and for each class ``probability_<class>`` with
+            ``lower_<class>`` and ``upper_<class>``. The probability is the posterior mean of
+            P(class | answers, parameters); the interval is of the same quantity, over the
+            uncertainty in the parameters: it is not an interval for the class of a case. Cases
+            without an answer get the prevalences of their group.
+        """
+        at = self.responses if responses is None else responses
+        return memberships.membership_table(self, at, interval, rows)
+
+    def assign(self, new_responses: Responses, interval: float = 0.95) -> pd.DataFrame:
+        """Return the membership of new cases; see :meth:`membership`.
+
+        Cases whose answers have probability 0 in every class get no membership: their row is
+        empty, a warning names them, and so does ``frame.attrs["impossible_cases"]``.
+        """
+        return self.membership(new_responses, interval)
+
+    def assignment_error(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return where the cases of each class end up when placed in their modal class.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``latent_class`` and ``assigned_class`` with ``share``, the posterior mean
+            of the share of the class's cases that are placed there (the shares of a class sum
+            to 1), and the summary of that share over draws.
+        """
+        keys = separations.assignment_keys(self.model.class_names)
+        frame = summary_frame(keys, self._assignment_quantities, interval)
+        frame.insert(2, "share", frame["mean"])
+        return frame
+
+    def separation(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return how well the classes are separated: relative entropy, found draw by draw.
+
+        Returns
+        -------
+        DataFrame
+            One row with the key ``quantity``; 1 when every case is placed surely, 0 when the
+            answers say nothing. ``note`` says why it is nan where it is.
+        """
+        return separations.separation_table(self._separation_quantities, interval)
+
+    def diagnostics(self) -> Diagnostics:
+        """Return whether the sampling is to be trusted: findings, a table, and a verdict."""
+        return self._diagnostics
+
+    @cached_property
+    def tree(self) -> DataTree:
+        """Everything as an xarray DataTree in ArviZ's schema; see `bayeslca.posterior.tree`."""
+        from bayeslca.posterior.tree import posterior_tree
+
+        return posterior_tree(self)
+
+    def to_arviz(self) -> DataTree:
+        """Return the tree with the group ``log_likelihood``, a column per case.
+
+        ArviZ's functions for leave-one-out and model comparison count its columns as cases.
+        """
+        from bayeslca.posterior.tree import with_case_log_likelihood
+
+        return with_case_log_likelihood(self)
+
+    def save(self, path: str | Path, replace: bool = False) -> None:
+        """Write everything into a NetCDF file.
+
+        Raises
+        ------
+        StorageError
+            When the file exists and ``replace`` is False, or cannot be written.
+        """
+        from bayeslca.posterior.storage import save
+
+        save(self, Path(path), replace=replace)
+
+    @classmethod
+    def load(cls, path: str | Path) -> Posterior:
+        """Read what :meth:`save` wrote.
+
+        Raises
+        ------
+        StorageError
+            When the file is missing, broken, from another program, or from a newer version.
+        """
+        from bayeslca.posterior.storage import load
+
+        return load(Path(path))
+
+    @cached_property
+    def _diagnostics(self) -> Diagnostics:
+        from bayeslca.assess.convergence import diagnose
+
+        return diagnose(self)
+
+    @cached_property
+    def _prevalence_quantities(self) -> Quantities:
+        return tables.prevalence_quantities(self)
+
+    @cached_property
+    def _response_probability_quantities(self) -> Quantities:
+        return tables.response_probability_quantities(self)
+
+    @cached_property
+    def _placement(self) -> separations.Placement:
+        return separations.placement(self)
+
+    @cached_property
+    def _assignment_quantities(self) -> Quantities:
+        shares = self._placement.shares
+        return Quantities(shares.reshape(*shares.shape[:2], -1))
+
+    @cached_property
+    def _separation_quantities(self) -> Quantities:
+        return Quantities(self._placement.separation[:, :, None])
+
+    def __repr__(self) -> str:
+        from bayeslca.posterior.show import as_terminal_text
+
+        return as_terminal_text(self)
+
+    def _repr_html_(self) -> str:
+        from bayeslca.posterior.show import as_html
+
+        return as_html(self)
