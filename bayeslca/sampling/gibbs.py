@@ -138,7 +138,10 @@ def draw_prevalence(
     for g in range(prevalence.shape[0]):
         for k in range(n_classes):
             work.class_parameter[g * n_classes + k] = concentration[g, k] + work.class_count[g, k]
-    draw_shares(layout.class_start, work.class_parameter, prevalence.reshape(-1), rng)
+    draw_shares(layout.class_start, work.class_parameter, work.class_share, rng)
+    for g in range(prevalence.shape[0]):
+        for k in range(n_classes):
+            prevalence[g, k] = work.class_share[g * n_classes + k]
 
 
 @compiled
@@ -274,6 +277,7 @@ def _split_units(
     n_chunks = unit_part.shape[1]
     weighted = extra.shape[0] > 0
     keep = unit_count.shape[0] > 0
+    case_by_case = 0 if keep else CASE_BY_CASE
     log_likelihood = 0.0
     running = 1.0
     class_count[:] = 0
@@ -304,7 +308,7 @@ def _split_units(
                 return math.nan
             total = _accumulate(weights, cumulative)
         cases = all_cases[u]
-        if cases <= CASE_BY_CASE and not keep:
+        if cases <= case_by_case:
             log_likelihood += cases * rescued
             for _ in range(cases):
                 running *= total

@@ -98,7 +98,7 @@ class Workspace(NamedTuple):
         Cases of each unit per class, after `allocate`; (0, K) when nobody asked for it.
     unit_log_probability : ndarray of float64, shape (U,) or (0,)
         log p(unit) with the class summed out, likewise on request.
-    class_parameter : ndarray of float64, shape (groups * K,)
+    class_parameter, class_share : ndarray of float64, shape (groups * K,)
     weights, cumulative : ndarray of float64, shape (K,)
     numbers : ndarray of int64, shape (K,)
     cells, cell_cumulative : ndarray of float64
@@ -116,6 +116,7 @@ class Workspace(NamedTuple):
     unit_count: Ints
     unit_log_probability: Floats
     class_parameter: Floats
+    class_share: Floats
     weights: Floats
     cumulative: Floats
     numbers: Ints
@@ -206,6 +207,7 @@ def workspace(layout: Layout, *, keep_units: bool = False) -> Workspace:
         unit_count=np.zeros((n_units, n_classes), dtype=np.int64),
         unit_log_probability=np.zeros(n_units),
         class_parameter=np.zeros(layout.groups * n_classes),
+        class_share=np.zeros(layout.groups * n_classes),
         weights=np.zeros(n_classes),
         cumulative=np.zeros(n_classes),
         numbers=np.zeros(n_classes, dtype=np.int64),
