@@ -81,15 +81,18 @@ def assemble(table: RawTable, roles: Roles) -> dict[str, Any]:
     problems = Problems(table.title)
     specs = [_spec(item, roles) for item in roles.items]
     _check_roles(table, roles, [spec.name for spec, _ in specs], problems)
-    problems.stop_if_any()
+    if not _other_roles(roles) <= set(table.column_names):
+        problems.stop_if_any()
+    specs = [known for known in specs if known[0].name in table.column_names]
     findings: list[Finding] = []
+    n_before = len(problems.messages)
     rows = _kept_rows(table, roles, problems, findings)
-    problems.stop_if_any()
+    if len(problems.messages) > n_before:
+        problems.stop_if_any()  # without the right rows, nothing more can be said
 
     weights: Ints = np.ones(rows.size, dtype=np.int64)
     if roles.counts is not None:
         rows, weights = read_counts(table, roles.counts, rows, problems, findings)
-        problems.stop_if_any()
     case_ids = None
     if roles.case is not None:
         case_ids = read_case_ids(table, roles.case, rows, problems)
@@ -124,6 +127,10 @@ def _spec(item: Any, roles: Roles) -> tuple[ItemSpec, Item | None]:
         spec = ItemSpec(item.name)
     elif isinstance(item, ItemSpec):
         spec = item
+        if item.fitted:
+            known = Item(
+                item.name, tuple(item.categories or ()), item.label, item.ordered, item.yes
+            )
     elif isinstance(item, str):
         spec = ItemSpec(item)
     else:
@@ -172,8 +179,15 @@ def _check_roles(table: RawTable, roles: Roles, item_names: list[str], problems:
             problems.add(f"keep_only: {table.no_column(str(name))}")
 
 
+def _other_roles(roles: Roles) -> set[str]:
+    """Return the columns without which no row can be read."""
+    named = {roles.case, roles.group_name, roles.counts, *roles.keep_only}
+    return {name for name in named if name is not None}
+
+
 def _kept_rows(table: RawTable, roles: Roles, problems: Problems, findings: list[Finding]) -> Ints:
     """Return the positions of the rows that keep_only keeps."""
+    n_before = len(problems.messages)
     kept = np.ones(table.n_rows, dtype=np.bool_)
     for name, wanted in roles.keep_only.items():
         if isinstance(wanted, (str, bytes)) or not isinstance(wanted, Sequence):
@@ -181,7 +195,7 @@ def _kept_rows(table: RawTable, roles: Roles, problems: Problems, findings: list
         column = table.column(name)
         kept &= _holds(column, wanted, problems)
     rows: Ints = np.flatnonzero(kept)
-    if not rows.size and not problems.messages:
+    if not rows.size and len(problems.messages) == n_before:
         said = "; ".join(f"{name}: {list(values)}" for name, values in roles.keep_only.items())
         problems.add(f"keep_only ({said}) keeps no row. Check the values and their combination.")
     if rows.size < table.n_rows:
@@ -228,6 +242,7 @@ def _items(
     # Column by column in memory: that is how they are written here and read when collapsed.
     codes = np.empty((rows.size, len(specs)), dtype=np.int16, order="F")
     everything = rows.size == table.n_rows
+    inferred: list[Item] = []
     for j, (spec, known) in enumerate(specs):
         column = table.column(spec.name)
         reader = ItemColumn(
@@ -244,7 +259,29 @@ def _items(
         if read is not None:
             items.append(read[0])
             codes[:, j] = read[1]
+            if reader.inferred_yes:
+                inferred.append(read[0])
+    findings.extend(_yes_findings(inferred))
     return items, codes
+
+
+def _yes_findings(items: list[Item]) -> list[Finding]:
+    """Return one finding for each pair of answers of which one was taken for yes."""
+    by_pair: dict[tuple[str, ...], list[str]] = {}
+    for item in items:
+        other = next(name for name in item.categories if name != item.yes)
+        by_pair.setdefault((other, str(item.yes)), []).append(item.name)
+    return [
+        Finding(
+            "yes_inferred",
+            "note",
+            f"{yes!r} counts as yes where the two answers are {other!r} and {yes!r}: "
+            f"{', '.join(names)}.",
+            "Give yes for an item to say otherwise.",
+            tuple(names),
+        )
+        for (other, yes), names in by_pair.items()
+    ]
 
 
 def set_aside_finding(codes: Ints, counts: Ints) -> Finding | None:

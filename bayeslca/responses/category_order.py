@@ -138,8 +138,33 @@ def infer_yes(categories: Sequence[str]) -> str | None:
     return None
 
 
-SYNONYMS = (
+_SYNONYMS = (
     ("yes", ("yes", "y", "1", "true", "t", "x", "oui", "si", "ja", "sim")),
     ("no", ("no", "n", "0", "false", "f", "non", "nein", "nao")),
 )
 """Spellings that usually mean yes and no; proposed to the analyst, never merged unasked."""
+
+
+def same_meaning(names: Sequence[str]) -> dict[str, tuple[str, ...]]:
+    """Return answers that probably mean the same, in a column about yes and no.
+
+    Parameters
+    ----------
+    names : sequence of str
+        Distinct answers; the first of several that mean the same is the one kept.
+
+    Examples
+    --------
+    >>> same_meaning(["yes", "no", "Y"]), same_meaning(["yes", "no"])
+    ({'yes': ('Y',)}, {})
+    """
+    fold = {name: folded(name) for name in names}
+    known = {word for _, words in _SYNONYMS for word in words}
+    if len(names) < 3 or not all(word in known for word in fold.values()):
+        return {}
+    found = {}
+    for _, words in _SYNONYMS:
+        members = [name for name in names if fold[name] in words]
+        if len(members) > 1:
+            found[members[0]] = tuple(members[1:])
+    return found

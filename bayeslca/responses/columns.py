@@ -7,11 +7,11 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Literal
 
-from bayeslca.responses.category_order import SYNONYMS, infer_yes, order_categories
+from bayeslca.responses.category_order import infer_yes, order_categories, same_meaning
 from bayeslca.responses.item_column import MOST_CATEGORIES, MOST_NUMBERS
 from bayeslca.responses.no_answers import undeclared_no_answers
 from bayeslca.responses.raw_table import RawColumn, RawTable
-from bayeslca.responses.spelling import folded, number_of, spelling_variants
+from bayeslca.responses.spelling import number_of, spelling_variants
 
 ColumnKind = Literal[
     "item", "id", "group", "count", "free_text", "number", "date", "constant", "empty",
@@ -153,6 +153,8 @@ def _few_values(
     if column.type == "date":
         return "date", "holds dates"
     all_different = n_values == n_rows and n_rows > 5
+    if _wordy(proposal.categories):
+        return "free_text", f"{n} different texts, most of them sentences"
     if all_different and (column.type != "number" or _ID_NAME.search(column.name)):
         return "id", "every row has a value of its own"
     whole = numbers and all((number_of(c) or 0) % 1 == 0 for c in proposal.categories)
@@ -162,7 +164,7 @@ def _few_values(
         n > MOST_NUMBERS or not whole or (n > _MOST_LIKELY_ITEM and n_answers < 10 * n)
     ):
         return "number", f"{n} different numbers: probably a measurement"
-    if _wordy(proposal.categories) or (not numbers and n > 5 and n > 0.5 * n_answers):
+    if not numbers and n > 5 and n > 0.5 * n_answers:
         return "free_text", f"{n} different texts in {n_answers} rows: probably free text"
     if n > _MOST_LIKELY_ITEM and not column.labels:
         return "too_many_categories", f"{n} different values are many for an item"
@@ -175,7 +177,7 @@ def _few_values(
 
 def _wordy(names: tuple[str, ...]) -> bool:
     """Tell whether most values are sentences."""
-    return len(names) > 3 and sum(len(name.split()) >= 5 for name in names) > 0.5 * len(names)
+    return len(names) > 3 and sum(len(name.split()) >= 4 for name in names) > 0.5 * len(names)
 
 
 def _many_values(
@@ -187,6 +189,8 @@ def _many_values(
     numbers = [number_of(value) for value in counts]
     is_number = all(number is not None for number in numbers)
     whole = is_number and all((number or 0) % 1 == 0 for number in numbers)
+    if not is_number and _wordy(tuple(counts)):
+        return "free_text", f"{n:,} different texts, most of them sentences"
     if n == n_rows and (not is_number or (whole and _looks_counted(column))):
         return "id", f"all {n:,} rows have a value of their own"
     if is_number:
@@ -231,25 +235,13 @@ def _propose_merges(answers: Mapping[str, int]) -> dict[str, tuple[str, ...]]:
         for name in same:
             if name != kept:
                 together.pop(name)
-    fold = {kept: folded(kept) for kept in together}
-    synonyms = {name for _, words in SYNONYMS for name in words}
-    # Only where the column is about yes and no altogether, in more than one way.
-    if len(together) > 2 and all(text in synonyms for text in fold.values()):
-        for _, words in SYNONYMS:
-            members = [kept for kept in together if fold[kept] in words]
-            if len(members) > 1:
-                longest = max(members, key=lambda name: (answers_of(together[name], answers), name))
-                together[longest] = [spelling for m in members for spelling in together[m]]
-                for name in members:
-                    if name != longest:
-                        together.pop(name)
+    by_frequency = sorted(together, key=lambda kept: -sum(answers[n] for n in together[kept]))
+    for kept, others in same_meaning(by_frequency).items():
+        together[kept] = [spelling for n in (kept, *others) for spelling in together[n]]
+        for name in others:
+            together.pop(name)
     return {
         kept: tuple(name for name in spellings if name != kept)
         for kept, spellings in together.items()
         if len(spellings) > 1
     }
-
-
-def answers_of(spellings: list[str], answers: Mapping[str, int]) -> int:
-    """Return how many rows hold one of the spellings."""
-    return sum(answers[name] for name in spellings)

@@ -92,6 +92,9 @@ class ItemSpec:
         Spellings that are one answer: ``{"yes": ["Yes", "Y", "1"]}``.
     no_answer : sequence of str
         Values of this item that mean that there is no answer.
+    fitted : bool
+        True for new cases of a fitted model: ``categories`` are the model's, and it is no error
+        that some of them, or all, do not occur.
     """
 
     name: str
@@ -101,8 +104,12 @@ class ItemSpec:
     yes: Any = None
     merge: Mapping[str, Sequence[Any]] = field(default_factory=dict)
     no_answer: Sequence[Any] = ()
+    fitted: bool = False
 
     def __post_init__(self) -> None:
+        if self.fitted and self.categories is None:
+            msg = f"item '{self.name}': fitted=True needs the fitted model's categories. Give them."
+            raise ResponsesError(msg)
         # Numbers and truth values are taken as they would be read from a file: 1, 1.0 -> "1".
         if self.categories is not None:
             object.__setattr__(self, "categories", self._texts("categories", self.categories))

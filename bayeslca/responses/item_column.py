@@ -8,14 +8,14 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from bayeslca._typing import Ints
-from bayeslca.exceptions import near_names
+from bayeslca.exceptions import ResponsesError, near_names
 from bayeslca.findings import Finding
-from bayeslca.responses.category_order import infer_yes, order_categories
+from bayeslca.responses.category_order import infer_yes, order_categories, same_meaning
 from bayeslca.responses.item import Item, ItemSpec
-from bayeslca.responses.no_answers import undeclared_no_answers
+from bayeslca.responses.no_answers import says_no_answer, undeclared_no_answers
 from bayeslca.responses.problems import Problems, listed_with_counts
 from bayeslca.responses.raw_table import RawColumn, RawTable
-from bayeslca.responses.spelling import find_value, spelling_variants
+from bayeslca.responses.spelling import find_value, number_of, spelling_variants
 from bayeslca.responses.units import MISSING
 
 MOST_CATEGORIES = 64
@@ -43,6 +43,8 @@ class ItemColumn:
         The item of a fitted model that the column must agree with.
     problems : Problems
     findings : list of Finding
+    inferred_yes : bool
+        True once the answer that counts as yes was taken from the answers themselves.
     """
 
     table: RawTable
@@ -53,6 +55,7 @@ class ItemColumn:
     known: Item | None
     problems: Problems
     findings: list[Finding] = field(default_factory=list)
+    inferred_yes: bool = False
 
     def read(self) -> tuple[Item, Ints] | None:
         """Return the item and its codes, shape (kept row,); None after a problem."""
@@ -86,12 +89,12 @@ class ItemColumn:
         counts = self.column.counts()
         n = len(counts)
         if n > MOST_CATEGORIES:
-            what = "an id, a measurement or free text"
+            what = "a measurement" if all(map(_is_number, counts)) else "an id or free text"
             shown = ", ".join(map(repr, list(counts)[:3]))
             self._problem(
                 f"has {n:,} different values (such as {shown}); an item has "
                 f"at most {MOST_CATEGORIES} categories, so this is probably {what}. Take "
-                "it off the items; an id is given as case=."
+                "it off the items (an id is given as case=), or group it into fewer categories."
             )
             return True
         if (
@@ -113,14 +116,13 @@ class ItemColumn:
         for wanted in self.spec.no_answer:
             for value in find_value(wanted, named):
                 named.pop(value)
-        merged = self._merge(named)
-        if merged is None:
+        taken = self._merges(named)
+        if taken is None or not self._labels_distinct(named, taken):
             return None
-        return merged if self._labels_distinct(merged) else None
+        return named | taken
 
-    def _merge(self, named: dict[str, str]) -> dict[str, str] | None:
-        """Replace spellings by the answer they are merged into."""
-        merged = dict(named)
+    def _merges(self, named: dict[str, str]) -> dict[str, str] | None:
+        """Return the answer that each merged value goes into."""
         taken: dict[str, str] = {}
         for kept, spellings in self.spec.merge.items():
             into: dict[str, int] = {}
@@ -135,7 +137,6 @@ class ItemColumn:
                     taken[value] = kept
                     if named[value] != kept:
                         into[named[value]] = into.get(named[value], 0) + self._n(value)
-                    merged[value] = kept
             if into:
                 self._note(
                     "merged_answers",
@@ -143,14 +144,14 @@ class ItemColumn:
                     "merge says.",
                     value=float(sum(into.values())),
                 )
-        return merged
+        return taken
 
-    def _labels_distinct(self, answers: Mapping[str, str]) -> bool:
+    def _labels_distinct(self, named: Mapping[str, str], taken: Mapping[str, str]) -> bool:
         by_name: dict[str, list[str]] = {}
-        for value, name in answers.items():
-            by_name.setdefault(name, []).append(value)
-        merged = set(self.spec.merge)
-        double = {n: v for n, v in by_name.items() if len(v) > 1 and n not in merged}
+        for value, name in named.items():
+            if value not in taken:
+                by_name.setdefault(name, []).append(value)
+        double = {name: values for name, values in by_name.items() if len(values) > 1}
         for name, values in double.items():
             codes = ", ".join(repr(value) for value in values)
             self._problem(
@@ -184,7 +185,8 @@ class ItemColumn:
         if not counts:
             self._problem("has no answer in any row. Take it off the items.")
             return None
-        if self._variants(counts) or self._undeclared(name_of, counts):
+        asked = (self._variants(counts), self._undeclared(name_of, counts))
+        if any(asked):
             return None
         if len(counts) == 1:
             only, n = next(iter(counts.items()))
@@ -268,8 +270,29 @@ class ItemColumn:
                 f"({', '.join(order.categories)}); nothing in the data says another.",
                 "Give categories in the order you want.",
             )
-        unused = [n for n in in_data if n not in counts and n in labels.values()]
-        if unused and self.column.labels:
+        same = same_meaning(list(counts))
+        if same:
+            words = "; ".join(f"{', '.join(others)} and {kept}" for kept, others in same.items())
+            self.findings.append(
+                Finding(
+                    "answers_of_one_meaning",
+                    "warning",
+                    f"Item {self.spec.name!r}: some categories look like one answer in other "
+                    f"words ({words}).",
+                    "If they are, name them in merge.",
+                    (self.spec.name,),
+                )
+            )
+        present = self.column.counts()
+        unused = [
+            label
+            for code, label in labels.items()
+            if code not in present
+            and label not in counts
+            and code not in self.column.declared_missing
+            and not says_no_answer(label)
+        ]
+        if unused:
             self._note(
                 "labelled_answers_not_chosen",
                 f"Item {self.spec.name!r}: nobody chose {', '.join(map(repr, unused))}, which the "
@@ -279,19 +302,10 @@ class ItemColumn:
         return self._checked_item(order.categories, ordered)
 
     def _checked_item(self, categories: tuple[str, ...], ordered: bool) -> Item | None:
-        from bayeslca.exceptions import ResponsesError
-
         yes = self.spec.yes
         if yes is None:
             yes = infer_yes(categories)
-            if yes is not None:
-                other = next(name for name in categories if name != yes)
-                self._note(
-                    "yes_inferred",
-                    f"Item {self.spec.name!r}: {yes!r} counts as yes, because the two answers are "
-                    f"{other!r} and {yes!r}.",
-                    "Give yes to say otherwise.",
-                )
+            self.inferred_yes = yes is not None
         try:
             return Item(
                 self.spec.name, categories, self.spec.label or self.column.label, ordered, yes
@@ -319,7 +333,7 @@ class ItemColumn:
         if not suspects:
             return False
         found = {name: counts[name] for name in suspects}
-        kept = [name for name in counts if name not in suspects]
+        kept = order_categories([name for name in counts if name not in suspects]).categories
         named = ", ".join(repr(name) for name in suspects)
         self._problem(
             f"{listed_with_counts(found)} in {self._place(suspects, name_of)} "
@@ -358,8 +372,6 @@ class ItemColumn:
 
 
 def _is_number(text: str) -> bool:
-    from bayeslca.responses.spelling import number_of
-
     return number_of(text) is not None
 
 

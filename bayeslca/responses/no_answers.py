@@ -68,10 +68,17 @@ def codes_for_no_answer(values: Iterable[str]) -> tuple[str, ...]:
     --------
     >>> codes_for_no_answer(["1", "2", "9"]), codes_for_no_answer(["7", "8", "9", "10"])
     (('9',), ())
+    >>> codes_for_no_answer(["no", "yes", "99"])
+    ('99',)
     """
+    values = list(values)
     numbers = {value: number for value in values if (number := number_of(value)) is not None}
     candidates = {*_SMALL, *_LARGE, *_NEGATIVE, *_NEGATIVE_LONG}
     rest = [number for number in numbers.values() if number not in candidates]
+    words = [value for value in values if value not in numbers]
+    if not rest and words:
+        # Codes for 'no answer' among words; "1 to 6", "7", "8" are no such words.
+        return () if any(re.search(r"\d", word) for word in words) else tuple(numbers)
     if not rest:
         rest = [min((n for n in numbers.values() if n >= 0), default=0.0)]
         rest = [] if rest[0] in (*_SMALL, *_LARGE) else rest
@@ -102,6 +109,6 @@ def undeclared_no_answers(names: dict[str, str]) -> tuple[str, ...]:
         The name of each code; a code without a label is its own name.
     """
     by_text = {name for name in names.values() if says_no_answer(name)}
-    unlabelled = [code for code, name in names.items() if code == name]
-    by_code = set(codes_for_no_answer(unlabelled))
+    # A label says what its code means; a code without one is judged beside all others.
+    by_code = {code for code in codes_for_no_answer(names) if names[code] == code}
     return tuple(dict.fromkeys(n for n in names.values() if n in by_text or n in by_code))

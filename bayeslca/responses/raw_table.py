@@ -129,6 +129,13 @@ class RawTable:
             except ResponsesError as error:
                 msg = f"{self.title}: column {name!r}: {error}"
                 raise ResponsesError(msg) from None
+            except Exception as error:  # whatever the library trips over
+                reason = " ".join(str(error).split())[:200] or type(error).__name__
+                msg = (
+                    f"{self.title}: column {name!r}: cannot be taken in ({reason}). Turn it into "
+                    "text or numbers first."
+                )
+                raise ResponsesError(msg) from error
         return self._loaded[name]
 
     def no_column(self, name: str) -> str:

@@ -292,7 +292,8 @@ class Responses:
         kept = [
             finding
             for finding in self.findings
-            if finding.kind != "cases_set_aside" and not gone & set(finding.about)
+            if finding.kind != "cases_set_aside"
+            and (not finding.about or set(finding.about) - gone)
         ]
         aside = set_aside_finding(codes, self.counts)
         return replace(

@@ -34,6 +34,7 @@ def read_counts(
     column = keep_rows(table.column(name), rows)
     numbers = [number_of(value) for value in column.values]
     where = f"counts column {name!r}"
+    n_before = len(problems.messages)
 
     def refuse(wrong: Any, what: str, remedy: str) -> None:
         if not wrong.any():
@@ -60,7 +61,7 @@ def read_counts(
         "number of cases.",
     )
     refuse(value > _MOST_CASES, "a count beyond all measure", "Check the column.")
-    if problems.messages:
+    if len(problems.messages) > n_before:
         return rows, np.ones(rows.size, dtype=np.int64)
     counts = value.astype(np.int64)
     standing = counts > 0

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 import unicodedata
 from collections.abc import Iterable, Mapping
@@ -29,7 +30,7 @@ def as_text(value: Any) -> str | None:
 
     if isinstance(value, str):
         return value if value.strip() else None
-    if value is None or value != value:  # NaN and NaT differ from themselves
+    if value is None or type(value).__name__ in ("NAType", "NaTType"):
         return None
     if isinstance(value, bool) or type(value).__name__ in ("bool", "bool_"):
         return str(bool(value))
@@ -42,8 +43,6 @@ def as_text(value: Any) -> str | None:
         return value.date().isoformat() if midnight else value.isoformat(sep=" ")
     if isinstance(value, (datetime.date, datetime.time, datetime.timedelta)):
         return str(value)
-    if type(value).__name__ in ("NAType", "NaTType"):
-        return None
     if isinstance(value, bytes):
         return _bytes_text(value)
     msg = (
@@ -53,11 +52,13 @@ def as_text(value: Any) -> str | None:
     raise ResponsesError(msg)
 
 
-def _number_text(value: Any) -> str:
+def _number_text(value: Any) -> str | None:
+    if math.isnan(value):
+        return None
     try:
         if value == int(value):
             return str(int(value))
-    except (OverflowError, ValueError):  # infinite, or a signalling decimal
+    except OverflowError:  # infinite
         pass
     text = str(value)
     if "." in text and "e" not in text.lower():

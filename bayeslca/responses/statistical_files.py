@@ -11,7 +11,7 @@ import numpy as np
 from bayeslca._typing import Bools
 from bayeslca.responses.encode import encode_arrow, encode_values
 from bayeslca.responses.raw_table import RawColumn, RawTable
-from bayeslca.responses.spelling import as_text
+from bayeslca.responses.spelling import as_text, number_of
 
 _PADDING = 1e-9
 
@@ -78,11 +78,19 @@ def _with_labels(
         _without(column, missing),
         column.values,
         column.type,
-        labels={code: label for code, label in labels.items() if code not in declared},
-        order=tuple(labels),
+        labels=labels,
+        order=_in_order(labels),
         label=text,
         declared_missing=declared,
     )
+
+
+def _in_order(labels: Mapping[str, str]) -> tuple[str, ...]:
+    """Return the labelled codes as numbers count, where all are numbers; else as they stand."""
+    numbers = {code: number_of(code) for code in labels}
+    if any(number is None for number in numbers.values()):
+        return tuple(labels)
+    return tuple(sorted(labels, key=lambda code: numbers[code] or 0.0))
 
 
 def _declared(value: str, ranges: Sequence[Mapping[str, Any]]) -> bool:

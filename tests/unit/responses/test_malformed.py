@@ -1,0 +1,387 @@
+"""Every malformed input gives one error that says what, where and what to do."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+import pytest
+
+from bayeslca.exceptions import ResponsesError
+from bayeslca.responses.item import Groups, Item, ItemSpec
+from bayeslca.responses.responses import Responses
+
+YES_NO = ["yes", "no", "yes", "no", "no", "yes"]
+FEES = Item("fees", ("no", "yes"))
+
+
+def _frame(**columns: Any) -> pd.DataFrame:
+    return pd.DataFrame({"fees": YES_NO, "meets": YES_NO[::-1], **columns})
+
+
+FRAMES: dict[str, tuple[Callable[[], Any], dict[str, Any], list[str]]] = {
+    "no items": (
+        _frame,
+        {},
+        ["items is not given", "look like items: ['fees', 'meets']"],
+    ),
+    "items a text": (_frame, {"items": "fees"}, ["items='fees'", "give a list"]),
+    "items a number": (_frame, {"items": [3]}, ["items holds 3", "name columns"]),
+    "unknown column": (
+        _frame,
+        {"items": ["feees", "meets"]},
+        ["no column 'feees'", "near names: 'fees'"],
+    ),
+    "unknown column, none near": (
+        _frame,
+        {"items": ["qqq", "meets"]},
+        ["no column 'qqq'", "The columns are 'fees', 'meets'"],
+    ),
+    "two roles": (
+        lambda: _frame(committee=list("abcdef")),
+        {"items": ["fees", "meets"], "case": "fees"},
+        ["column 'fees'", "as items and as case", "one role"],
+    ),
+    "item twice": (_frame, {"items": ["fees", "fees"]}, ["'fees' stands twice in items"]),
+    "header twice": (
+        lambda: pd.DataFrame([["yes", "no"]], columns=["fees", "fees"]),
+        {"items": ["fees"]},
+        ["'fees'", "more than once", "Rename"],
+    ),
+    "one category": (
+        lambda: _frame(fenced=["yes"] * 6),
+        {"items": ["fees", "fenced"]},
+        ["item 'fenced'", "one category, 'yes' (6 cases)", "Take it off"],
+    ),
+    "no answer at all": (
+        lambda: _frame(fenced=[None] * 6),
+        {"items": ["fees", "fenced"]},
+        ["item 'fenced'", "no answer in any row"],
+    ),
+    "more than 64 categories": (
+        lambda: pd.DataFrame({"name": [f"WP-{i}" for i in range(70)]}),
+        {"items": ["name"]},
+        ["item 'name'", "70 different values", "at most 64", "case="],
+    ),
+    "a measurement": (
+        lambda: pd.DataFrame({"depth": [i * 1.5 for i in range(30)]}),
+        {"items": ["depth"]},
+        ["item 'depth'", "30 different numbers", "measurement", "group it"],
+    ),
+    "dates": (
+        lambda: pd.DataFrame({"day": pd.date_range("2025-01-01", periods=5)}),
+        {"items": ["day"]},
+        ["item 'day'", "dates (2025-01-01", "Take it off"],
+    ),
+    "case": (
+        lambda: _frame(fenced=["yes", "Yes", "no", "yes", "no", None]),
+        {"items": ["fenced"]},
+        ["'yes' (2), 'Yes' (1)", "case, spaces, accents", "merge = {'yes': ['Yes']}"],
+    ),
+    "spaces": (
+        lambda: _frame(fenced=["yes", "yes ", "no", "yes", "no", None]),
+        {"items": ["fenced"]},
+        ["'yes' (2), 'yes ' (1)", "merge = {'yes': ['yes ']}"],
+    ),
+    "accents": (
+        lambda: _frame(fenced=["sí", "si", "no", "sí", "no", None]),
+        {"items": ["fenced"]},
+        ["'sí' (2), 'si' (1)", "merge"],
+    ),
+    "number format": (
+        lambda: _frame(fenced=["1", "1.0", "0", "1", "01", "1,0"]),
+        {"items": ["fenced"]},
+        ["'1' (2), '1.0' (1), '01' (1), '1,0' (1)", "number format", "merge"],
+    ),
+    "don't know": (
+        lambda: _frame(fenced=["yes", "Don’t know", "no", "yes", "no", "no"]),
+        {"items": ["fenced"]},
+        ["item 'fenced'", "(1) in row 2", "no_answer = [", "categories = ['no', 'yes',"],
+    ),
+    "99": (
+        lambda: _frame(fenced=[1, 0, 99, 1, 0, 99]),
+        {"items": ["fenced"]},
+        ["'99' (2) in rows 3, 6", "no_answer = ['99']", "categories = ['0', '1', '99']"],
+    ),
+    "-9": (
+        lambda: _frame(fenced=[1, 0, -9, 1, 0, 1]),
+        {"items": ["fenced"]},
+        ["'-9' (1) in row 3", "no_answer"],
+    ),
+    "a dot": (
+        lambda: _frame(fenced=["yes", ".", "no", "yes", "no", "?"]),
+        {"items": ["fenced"]},
+        ["'.' (1), '?' (1) in rows 2, 6", "look like no answer"],
+    ),
+    "not among the categories": (
+        lambda: _frame(fenced=["yes", "maybe", "no", "yes", "no", "maybe"]),
+        {"items": [ItemSpec("fenced", categories=["no", "yes"])]},
+        ["'maybe' (2) in rows 2, 6", "categories 'no', 'yes'", "no_answer"],
+    ),
+    "new category for a fitted model": (
+        lambda: _frame(fees=["yes", "no", "yes", "often", "no", "no"]),
+        {"items": [FEES]},
+        ["'often' (1) in row 4", "The model was fitted"],
+    ),
+    "ordered without an order": (
+        lambda: _frame(wear=["worn", "new", "rusty", "worn", "new", "rusty"]),
+        {"items": [ItemSpec("wear", ordered=True)]},
+        ["item 'wear'", "marked as ordered", "categories"],
+    ),
+    "yes is no category": (
+        _frame,
+        {"items": [ItemSpec("fees", yes="always")]},
+        ["item 'fees'", "'always'", "Set yes"],
+    ),
+    "categories twice": (
+        _frame,
+        {"items": [ItemSpec("fees", categories=["no", "yes", "no"])]},
+        ["item 'fees'", "'no' more than once"],
+    ),
+    "merged twice": (
+        lambda: _frame(fenced=["y", "yes", "no", "n", "no", "no"]),
+        {"items": [ItemSpec("fenced", merge={"yes": ["y", "n"], "no": ["n"]})]},
+        ["merge puts 'n' into 'yes' and into 'no'"],
+    ),
+    "no_answer a text": (
+        _frame,
+        {"items": ["fees"], "no_answer": "NA"},
+        ["no_answer='NA'", "list of values"],
+    ),
+    "missing id": (
+        lambda: _frame(committee=["a", None, "c", "d", "e", "f"]),
+        {"items": ["fees"], "case": "committee"},
+        ["case column 'committee'", "no id in row 2"],
+    ),
+    "id twice": (
+        lambda: _frame(committee=["a", "b", "a", "d", "e", "f"]),
+        {"items": ["fees"], "case": "committee"},
+        ["case column 'committee'", "'a' in rows 1, 3", "keep_only"],
+    ),
+    "missing group": (
+        lambda: _frame(district=["north", None, "south", "", "north", "south"]),
+        {"items": ["fees"], "group": "district"},
+        ["group column 'district'", "no group in rows 2, 4", "keep_only"],
+    ),
+    "group spelled twice": (
+        lambda: _frame(district=["north", "North", "south", "south", "north", "south"]),
+        {"items": ["fees"], "group": "district"},
+        ["group column 'district'", "'north', 'North' differ only"],
+    ),
+    "group unknown to the model": (
+        lambda: _frame(district=["north", "sooth", "south", "south", "north", "south"]),
+        {"items": ["fees"], "group": Groups("district", ("north", "south"))},
+        ["'sooth' in row 2", "near names: 'south'"],
+    ),
+    "group is an id": (
+        lambda: pd.DataFrame({"fees": ["no", "yes"] * 10, "who": [f"c{i}" for i in range(20)]}),
+        {"items": ["fees"], "group": "who"},
+        ["group column 'who'", "probably an id", "case="],
+    ),
+    "negative count": (
+        lambda: _frame(n=[1, 2, -3, 4, 5, 6]),
+        {"items": ["fees"], "counts": "n"},
+        ["counts column 'n'", "negative count ('-3') in row 3"],
+    ),
+    "fractional count": (
+        lambda: _frame(n=[1.5, 2, 3, 4, 5, 6]),
+        {"items": ["fees"], "counts": "n"},
+        ["'1.5'", "row 1", "Is this a sampling weight?"],
+    ),
+    "missing count": (
+        lambda: _frame(n=[1, None, 3, 4, 5, 6]),
+        {"items": ["fees"], "counts": "n"},
+        ["no count in row 2", "Fill it in"],
+    ),
+    "count in words": (
+        lambda: _frame(n=["1", "two", "3", "4", "5", "6"]),
+        {"items": ["fees"], "counts": "n"},
+        ["not a number ('two') in row 2"],
+    ),
+    "counts all nought": (
+        lambda: _frame(n=[0] * 6),
+        {"items": ["fees"], "counts": "n"},
+        ["all counts are 0"],
+    ),
+    "endless count": (
+        lambda: _frame(n=[1e15, 2, 3, 4, 5, 6]),
+        {"items": ["fees"], "counts": "n"},
+        ["beyond all measure", "row 1"],
+    ),
+    "weight": (_frame, {"items": ["fees"], "weight": "w"}, ["weight='w'", "sampling weights"]),
+    "cluster": (_frame, {"items": ["fees"], "cluster": "v"}, ["cluster='v'", "not supported"]),
+    "stratum": (_frame, {"items": ["fees"], "stratum": "s"}, ["stratum='s'", "not supported"]),
+    "keep_only unknown column": (
+        _frame,
+        {"items": ["fees"], "keep_only": {"yaer": ["2025"]}},
+        ["keep_only", "no column 'yaer'"],
+    ),
+    "keep_only unknown value": (
+        lambda: _frame(year=[2024, 2025] * 3),
+        {"items": ["fees"], "keep_only": {"year": [2026]}},
+        ["column 'year' has no value '2026'", "It has '2024', '2025'"],
+    ),
+    "keep_only keeps nothing": (
+        lambda: _frame(year=[2024, 2025] * 3, half=["a", "b"] * 3),
+        {"items": ["fees"], "keep_only": {"year": [2024], "half": ["b"]}},
+        ["keeps no row", "year: [2024]"],
+    ),
+    "no rows": (lambda: _frame().iloc[:0], {"items": ["fees"]}, ["no rows of answers"]),
+    "not a frame": (lambda: {"fees": YES_NO}, {"items": ["fees"]}, ["dict", "pandas, polars"]),
+    "lists in cells": (
+        lambda: _frame(fenced=[["a"], ["b"], ["a"], ["b"], ["a"], ["a"]]),
+        {"items": ["fenced"]},
+        ["column 'fenced'", "type list", "Turn it into"],
+    ),
+    "periods in cells": (
+        lambda: _frame(fenced=pd.period_range("2025-01", periods=6, freq="M")),
+        {"items": ["fenced"]},
+        ["column 'fenced'", "Period"],
+    ),
+}
+
+
+@pytest.mark.parametrize("name", FRAMES)
+def test_malformed_frame(name: str) -> None:
+    make, roles, parts = FRAMES[name]
+    with pytest.raises(ResponsesError) as caught:
+        Responses.from_frame(make(), **roles)
+    for part in parts:
+        assert part in str(caught.value)
+
+
+FILES: dict[str, tuple[str, bytes, dict[str, Any], list[str]]] = {
+    "empty": ("a.csv", b"", {}, ["a.csv", "empty (0 bytes)"]),
+    "blank": ("a.csv", b"\n \n", {}, ["a.csv", "the file is empty"]),
+    "header only": ("a.csv", b"fees,meets\n", {}, ["a.csv", "no rows of answers"]),
+    "ragged": (
+        "a.csv",
+        b"fees,meets\nyes,no\nyes\nno,no\nno,yes,yes\n",
+        {},
+        ["a.csv", "2 columns (separated by comma)", "line 3 has 1, line 5 has 3", "quotes"],
+    ),
+    "ragged by semicolon": (
+        "a.csv",
+        b"fees;meets\nyes;no\nyes;1;2\nno;no\n",
+        {},
+        ["separated by semicolon", "line 3 has 3"],
+    ),
+    "wrong encoding": (
+        "a.csv",
+        "fees,meets\nyes,no\nsí,no\n".encode("latin-1"),
+        {},
+        ["a.csv, line 3", "b'\\xed'", "not UTF-8", "encoding='cp1252'", "'sí,no'"],
+    ),
+    "wrong encoding given": (
+        "a.csv",
+        "fees,meets\nsí,no\n".encode(),
+        {"encoding": "ascii"},
+        ["a.csv, line 2", "not ascii text"],
+    ),
+    "unknown encoding": (
+        "a.csv",
+        b"fees\nyes\n",
+        {"encoding": "utf9"},
+        ["unknown encoding 'utf9'"],
+    ),
+    "utf-16": ("a.csv", "fees\nyes\nno\n".encode("utf-16"), {}, ["UTF-16", "encoding='utf-16'"]),
+    "zero bytes": ("a.csv", b"fees\nyes\0\nno\n", {}, ["a.csv, line 2", "zero byte"]),
+    "open quote": (
+        "a.csv",
+        b'fees,meets\nyes,"no\nyes,no\nno,yes\n',
+        {},
+        ["a.csv, line 2", "quote"],
+    ),
+    "header row too low": (
+        "a.csv",
+        b"fees\nyes\nno\n",
+        {"header_row": 9},
+        ["header_row is 9", "3 lines"],
+    ),
+    "header row 0": ("a.csv", b"fees\nyes\nno\n", {"header_row": 0}, ["header_row is 0"]),
+    "no column names": ("a.csv", b",\nyes,no\n", {}, ["a.csv, line 1", "no column names"]),
+    "columns twice": (
+        "a.csv",
+        b"fees,meets,fees\nyes,no,no\n",
+        {},
+        ["a.csv", "'fees' in columns 1, 3"],
+    ),
+    "separator too long": ("a.csv", b"fees\nyes\n", {"separator": "::"}, ["one character"]),
+    "sheet of a text file": ("a.csv", b"fees\nyes\n", {"sheet": "x"}, ["sheet does not apply"]),
+    "workbook named csv": ("a.csv", b"PK\x03\x04rest", {}, ["is not a text file", ".xlsx"]),
+    "not a workbook": ("a.xlsx", b"fees\nyes\n", {}, ["a.xlsx", "not an Excel workbook"]),
+    "damaged parquet": ("a.parquet", b"PAR1 nonsense", {}, ["a.parquet", "cannot be read"]),
+    "damaged sav": ("a.sav", b"nonsense", {}, ["a.sav", "cannot be read", "damaged"]),
+    "damaged dta": ("a.dta", b"nonsense", {}, ["a.dta", "cannot be read"]),
+    "damaged sas": ("a.sas7bdat", b"nonsense", {}, ["a.sas7bdat", "cannot be read"]),
+    "damaged xpt": ("a.xpt", b"nonsense", {}, ["a.xpt", "cannot be read"]),
+    "old workbook": ("a.xls", b"nonsense", {}, ["'.xls' are not read", "save it as .xlsx"]),
+    "unknown ending": ("a.qqq", b"nonsense", {}, ["'.qqq' are not read", ".csv"]),
+    "encoding of parquet": ("a.parquet", b"x", {"encoding": "utf-8"}, ["encoding does not apply"]),
+    "variants with lines": (
+        "a.csv",
+        b"fees\nyes\nno\n\n99\n99\n",
+        {},
+        ["item 'fees'", "'99' (2) in lines 5, 6"],
+    ),
+}
+
+
+@pytest.mark.parametrize("name", FILES)
+def test_malformed_file(name: str, tmp_path: Path) -> None:
+    file, content, how, parts = FILES[name]
+    (tmp_path / file).write_bytes(content)
+    with pytest.raises(ResponsesError) as caught:
+        Responses.read(tmp_path / file, items=["fees"], **how)
+    for part in parts:
+        assert part in str(caught.value)
+    assert str(tmp_path) not in str(caught.value)
+
+
+def test_missing_file_folder_and_sheets(tmp_path: Path) -> None:
+    (tmp_path / "committees.csv").write_text("fees\nyes\nno\n")
+    with pytest.raises(ResponsesError, match=r"no such file \(near names: 'committees.csv'\)"):
+        Responses.read(tmp_path / "comittees.csv", items=["fees"])
+    with pytest.raises(ResponsesError, match="is a folder"):
+        Responses.read(tmp_path, items=["fees"])
+    with pd.ExcelWriter(tmp_path / "two.xlsx") as book:
+        _frame().to_excel(book, sheet_name="answers", index=False)
+        _frame().to_excel(book, sheet_name="notes", index=False)
+    with pytest.raises(ResponsesError, match=r"has 2 sheets \('answers', 'notes'\)"):
+        Responses.read(tmp_path / "two.xlsx", items=["fees"])
+    with pytest.raises(ResponsesError, match=r"no sheet 'answer' \(near names: 'answers'\)"):
+        Responses.read(tmp_path / "two.xlsx", items=["fees"], sheet="answer")
+    with pytest.raises(ResponsesError, match="no sheet 3"):
+        Responses.read(tmp_path / "two.xlsx", items=["fees"], sheet=3)
+    with pytest.raises(ResponsesError, match="no column names in row 40"):
+        Responses.read(tmp_path / "two.xlsx", items=["fees"], sheet=1, header_row=40)
+
+
+def test_all_problems_at_once() -> None:
+    frame = _frame(fenced=["yes"] * 6, mechanic=[1, 0, 99, 1, 0, 1], committee=list("aacdef"))
+    with pytest.raises(ResponsesError) as caught:
+        Responses.from_frame(frame, items=["fenced", "mechanic", "fes"], case="committee")
+    text = str(caught.value)
+    assert text.startswith("the data frame: 4 problems")
+    for part in ("'fes'", "'a' in rows 1, 2", "item 'fenced'", "item 'mechanic'"):
+        assert part in text
+
+
+def test_first_five_rows_are_named() -> None:
+    frame = pd.DataFrame({"fees": ["yes", "no", *["refused"] * 9]})
+    with pytest.raises(ResponsesError, match="rows 3, 4, 5, 6, 7 and 4 more"):
+        Responses.from_frame(frame, items=["fees"])
+
+
+def test_two_codes_with_one_label(tmp_path: Path) -> None:
+    import pyreadstat
+
+    frame = pd.DataFrame({"fees": [1.0, 2.0, 3.0, 1.0]})
+    labels = {"fees": {1.0: "no", 2.0: "yes", 3.0: "yes"}}
+    pyreadstat.write_sav(frame, tmp_path / "a.sav", variable_value_labels=labels)
+    with pytest.raises(ResponsesError, match=r"codes '2', '3' have the same name 'yes'"):
+        Responses.read(tmp_path / "a.sav", items=["fees"])
+    settled = Responses.read(tmp_path / "a.sav", items=["fees"], merge={"yes": ["2", "3"]})
+    assert settled.codes[:, 0].tolist() == [0, 1, 1, 0]
