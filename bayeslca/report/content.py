@@ -67,7 +67,7 @@ class ReportContent:
     study_text : str
         The study file's text, so that the page can be reproduced from itself; empty when none.
     versions : mapping of str to str
-        Versions of the software; filled in by ``write_report`` when empty.
+        Versions of the software; those that the posterior was made with when empty.
     changes : tuple of Change
         What moved since the last run; shown when ``replaced`` is True.
     replaced : bool

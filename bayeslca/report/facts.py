@@ -6,8 +6,6 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING
 
-import numpy as np
-
 from bayeslca.report.content import ReportContent
 from bayeslca.report.placement import Placement, placement
 from bayeslca.report.priors import ruled_by_prior
@@ -67,10 +65,10 @@ class Facts:
         """Cases with at least one answer, which is what all shares are of."""
         return self.units.n_cases
 
-    @cached_property
+    @property
     def units(self) -> Units:
         """The distinct answers, as the model sees them."""
-        return self.posterior.model.units(self.content.responses)
+        return self.posterior.units
 
     @cached_property
     def diagnostics(self) -> Diagnostics:
@@ -143,15 +141,11 @@ class Facts:
 
 def overall_shares(posterior: Posterior, interval: float) -> tuple[Share, ...]:
     """Return the share of each class among all cases, groups weighted by their sizes."""
-    units = posterior.model.units(posterior.responses)
-    draws = np.asarray(posterior.prevalence_draws)
-    sizes = np.bincount(units.group, weights=units.count, minlength=draws.shape[2])
-    shares = np.einsum("cdgk,g->cdk", draws, sizes / sizes.sum()).reshape(-1, draws.shape[3])
-    tail = (1 - interval) / 2
-    lower, median, upper = np.quantile(shares, [tail, 0.5, 1 - tail], axis=0)
+    names = posterior.model.class_names
+    rows = posterior.prevalence(interval=interval).tail(len(names))  # the overall ones come last
     return tuple(
-        Share(name, float(median[k]), float(lower[k]), float(upper[k]))
-        for k, name in enumerate(posterior.model.class_names)
+        Share(name, row["median"], row["lower"], row["upper"])
+        for name, row in zip(names, rows.to_dict("records"), strict=True)
     )
 
 

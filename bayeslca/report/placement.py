@@ -8,13 +8,9 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.model.probabilities import membership
 
 if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
-
-MOST_DRAWS = 1000
-"""Draws used for the average membership; more would not show in a figure."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -59,16 +55,11 @@ class Placement:
 
 def placement(posterior: Posterior) -> Placement:
     """Return how surely each unit is placed: the posterior mean of its membership."""
-    draws = posterior.draws
-    flat = draws.elements.reshape(-1, draws.elements.shape[-1])
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
-    step = max(1, flat.shape[0] // MOST_DRAWS)
-    mean = membership(posterior.table, posterior.unit_table, flat[::step], prevalence[::step]).mean(
-        axis=0
-    )
+    table = posterior.membership(rows="patterns")
+    names = list(posterior.model.class_names)
     return Placement(
-        highest=mean.max(axis=1),
-        modal=mean.argmax(axis=1),
-        count=np.asarray(posterior.unit_table.count),
-        n_classes=posterior.model.n_classes,
+        highest=table["modal_probability"].to_numpy(dtype=np.float64),
+        modal=table["modal_class"].map(names.index).to_numpy(dtype=np.int64),
+        count=table["count"].to_numpy(dtype=np.int64),
+        n_classes=len(names),
     )

@@ -58,7 +58,7 @@ class PriorWeight:
 def prior_weights(posterior: Posterior) -> tuple[PriorWeight, ...]:
     """Return what the prior of each item in each class weighs against the answers."""
     model = posterior.model
-    units = model.units(posterior.responses)
+    units = posterior.units
     share = np.asarray(posterior.prevalence_draws).mean(axis=(0, 1))
     weights: list[PriorWeight] = []
     for j, item in enumerate(model.items):
@@ -106,7 +106,7 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
     import pandas as pd
 
     model = posterior.model
-    units = model.units(posterior.responses)
+    units = posterior.units
     rows: list[dict[str, object]] = []
     for g, concentration in enumerate(model.prevalence_source.concentration):
         cases = float(units.count[units.group == g].sum())

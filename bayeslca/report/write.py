@@ -47,7 +47,7 @@ def write_report(content: ReportContent, folder: Path) -> WrittenReport:
         Where everything stands, and the sentence that answers the question.
     """
     facts = Facts(content)
-    versions = content.versions or software_versions(content.posterior.draws.sampler)
+    versions = content.versions or software_versions(content.posterior)
     sections = report_sections(facts, versions)
     trusted = is_to_be_trusted(facts)
     folder.mkdir(parents=True, exist_ok=True)

@@ -51,7 +51,7 @@ def limits_section(facts: Facts) -> Section:
 
 def _diagnostic() -> tuple[str, str]:
     return (
-        "Not for decisions on a single patient or animal",
+        "Not for decisions on a single patient or animal.",
         "The figures here describe tests and populations under a model without a perfect "
         "reference. Local rules and licensed practice come first.",
     )
@@ -60,7 +60,7 @@ def _diagnostic() -> tuple[str, str]:
 def _size(facts: Facts) -> tuple[str, str]:
     widest = max(facts.overall, key=lambda share: share.upper - share.lower)
     return (
-        f"{counted(facts.n_cases, 'case')} leave much open",
+        f"{counted(facts.n_cases, 'case')} leave much open:",
         f"the {level(facts.content.interval)} interval of the share of {called(widest.name)} runs "
         f"from {percent_value(widest.lower)} to {percent_value(widest.upper)} %.",
     )
@@ -70,7 +70,7 @@ def _placement(facts: Facts) -> tuple[str, str]:
     placed = facts.placement
     unsure = placed.n_cases - placed.n_at_least(0.8)
     return (
-        "Membership is uncertain",
+        "Membership is uncertain:",
         f"for {whole(unsure)} of {counted(placed.n_cases, 'case')} the most probable class has a "
         "probability below 80 %. Do not treat it as data.",
     )
@@ -81,7 +81,10 @@ def _small_or_ruled(facts: Facts) -> list[tuple[str, str]]:
     few = [called(s.name) for s in facts.overall if s.median * facts.n_cases < FEW]
     if few:
         entries.append(
-            (f"Few cases are expected in {listed(few)}", "what is said of so small a class is thin")
+            (
+                f"Few cases are expected in {listed(few)}:",
+                "what is said of so small a class is thin.",
+            )
         )
     if facts.ruled:
         entries.append(

@@ -150,8 +150,8 @@ def _where(facts: Facts) -> str:
 def _cases_table(facts: Facts) -> PageTable:
     frame = facts.posterior.membership(interval=facts.content.interval)
     rows = tuple(
-        (str(row["case"]), *(percent(row[name]) for name in facts.class_names))
-        for row in frame.reset_index().to_dict("records")
+        (str(row["case"]), *(percent(row[f"probability_{name}"]) for name in facts.class_names))
+        for row in frame.to_dict("records")
     )
     heads = (
         Head("Case", "its name in the data", numeric=False),

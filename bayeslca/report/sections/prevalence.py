@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
-from bayeslca.report.facts import Facts, Share, shares_in_words
+from bayeslca.report.facts import Facts, shares_in_words
 from bayeslca.report.figures import draw
 from bayeslca.report.plots import plot_prevalence
 from bayeslca.report.wording import (
@@ -11,6 +11,7 @@ from bayeslca.report.wording import (
     counted,
     level,
     listed,
+    percent_interval,
     sentence,
     whole,
 )
@@ -27,7 +28,7 @@ def prevalence_section(facts: Facts) -> Section:
         return Section(ANCHOR, HEADING, (Paragraph(text),))
     interval = facts.content.interval
     groups = facts.posterior.model.groups
-    n_rows = len(facts.class_names) * (len(groups.levels) if groups else 1)
+    n_rows = len(facts.class_names) * (len(groups.levels) + 1 if groups else 1)
     figure = draw(
         "prevalence",
         lambda drawing: plot_prevalence(facts.posterior, interval=interval, ax=drawing.subplots()),
@@ -62,30 +63,17 @@ def _in_words(facts: Facts) -> str:
 def _table(facts: Facts) -> PageTable:
     frame = facts.posterior.prevalence(interval=facts.content.interval)
     groups = facts.posterior.model.groups
-    units = facts.units
-    rows: list[tuple[str, ...]] = []
-    for name, overall in zip(facts.class_names, facts.overall, strict=True):
+    rows = []
+    for name in facts.class_names:
         for row in frame[frame["latent_class"] == name].to_dict("records"):
-            size, where = facts.n_cases, []
-            if groups:
-                where = [str(row["group"])]
-                at = groups.levels.index(row["group"])
-                size = int(units.count[units.group == at].sum())
-            share = Share(name, row["median"], row["lower"], row["upper"])
-            rows.append(_row(share, where, size))
-        if groups:
-            rows.append(_row(overall, ["overall"], facts.n_cases))
+            share = percent_interval(row["median"], row["lower"], row["upper"])
+            low, high = whole(row["cases_lower"]), whole(row["cases_upper"])
+            where = [str(row["group"])] if groups else []
+            rows.append((called(name), *where, share, f"{whole(row['cases'])} ({low} to {high})"))
     heads = (
         Head("Class", "the class that the row is about", numeric=False),
         *([Head("Group", "the group of cases", numeric=False)] if groups else []),
         Head("Share", f"of the cases, median ({level(facts.content.interval)} interval)"),
-        Head("In cases", "the share times the cases observed"),
-        Head("Of", "cases observed with at least one answer"),
+        Head("In cases", "the share times the cases that gave an answer"),
     )
     return PageTable("The share of the cases in each class", heads, tuple(rows))
-
-
-def _row(share: Share, where: list[str], size: int) -> tuple[str, ...]:
-    low, high = whole(share.lower * size), whole(share.upper * size)
-    cases = f"{whole(share.median * size)} ({low} to {high})"
-    return (called(share.name), *where, share.text, cases, whole(size))

@@ -2,30 +2,29 @@
 
 from __future__ import annotations
 
-import platform
 from collections.abc import Mapping
-from importlib.metadata import PackageNotFoundError, version
+from typing import TYPE_CHECKING
 
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Section, Verbatim
 from bayeslca.report.facts import Facts
 from bayeslca.report.wording import counted
 
+if TYPE_CHECKING:
+    from bayeslca.posterior.posterior import Posterior
+
 ANCHOR, HEADING = "reproduce", "How to reproduce"
 
-_USED = ("numpy", "scipy", "pandas", "numba", "xarray", "arviz-stats", "matplotlib")
-_USED_BY_NUTS = ("pymc", "pytensor", "nutpie")
+NUTS_ONLY = ("pymc", "nutpie")
 
 
-def software_versions(sampler: str = "gibbs") -> Mapping[str, str]:
-    """Return the versions of Python, of bayeslca and of what it computes with."""
-    names = ["bayeslca", *_USED, *(_USED_BY_NUTS if sampler == "nuts" else ())]
-    versions = {"Python": platform.python_version()}
-    for name in names:
-        try:
-            versions[name] = version(name)
-        except PackageNotFoundError:
-            continue
-    return versions
+def software_versions(posterior: Posterior) -> Mapping[str, str]:
+    """Return the versions of what made a posterior, leaving out what it did not use."""
+    unused = () if posterior.draws.sampler == "nuts" else NUTS_ONLY
+    return {
+        "Python" if name == "python" else name: version
+        for name, version in posterior.versions.items()
+        if name not in unused
+    }
 
 
 def reproduce_section(facts: Facts, versions: Mapping[str, str]) -> Section:
