@@ -155,7 +155,9 @@ def _with_probabilities(
     possible = ~np.isnan(found.mean).any(axis=1)
     modal = np.where(possible, np.nan_to_num(found.mean, nan=-1.0).argmax(axis=1), 0)
     columns: dict[str, Any] = {
-        "modal_class": np.where(possible, names[modal], None),
+        "modal_class": [
+            name if known else None for name, known in zip(names[modal], possible, strict=True)
+        ],
         "modal_probability": found.mean[np.arange(len(modal)), modal],
     }
     for k, name in enumerate(class_names):

@@ -1,0 +1,139 @@
+"""Fitting: compile, draw, relabel, wrap."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import replace
+from typing import Literal
+
+import numpy as np
+
+from bayeslca._typing import Floats
+from bayeslca.exceptions import SamplingError, near_names
+from bayeslca.model.compile import compile_units
+from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.model.table import UnitTable
+from bayeslca.posterior.class_state import class_state
+from bayeslca.posterior.posterior import Posterior
+from bayeslca.responses.responses import Responses
+from bayeslca.sampling.draws import Draws
+from bayeslca.sampling.relabel import relabel
+from bayeslca.sampling.run import MAX_SWEEPS, draw_posterior
+
+SAMPLERS = ("auto", "gibbs", "nuts")
+
+
+def fit(
+    model: LatentClassModel,
+    responses: Responses,
+    *,
+    seed: int | None = None,
+    sampler: Literal["auto", "gibbs", "nuts"] = "auto",
+    chains: int = 4,
+    draws: int = 1000,
+    ess: float = 1000.0,
+    r_hat: float = 1.01,
+    max_sweeps: int = MAX_SWEEPS,
+    threads: int | None = None,
+    progress: bool | Callable[..., None] = True,
+) -> Posterior:
+    """Sample the posterior of a model given responses.
+
+    Parameters
+    ----------
+    model : LatentClassModel
+    responses : Responses
+        With the model's items, and its groups where it has groups.
+    seed : int, optional
+        Makes the draws the same every time, whatever the number of threads.
+    sampler : {"auto", "gibbs", "nuts"}
+        "auto" takes Gibbs, which has an exact step for every part of this version's models.
+    chains, draws : int
+        Number of chains, and of draws that are kept of each.
+    ess, r_hat : float
+        Gibbs goes on until label-free and reported quantities reach both. Quantities of classes
+        that are empty or not told apart do not hold it.
+    max_sweeps : int
+        Sweeps per chain at most; when they are used up, ``posterior.draws.limit_reached`` says so.
+    threads : int, optional
+    progress : bool or callable
+        True shows a bar on a terminal.
+
+    Raises
+    ------
+    ModelError
+        When the responses are not the model's, or no class allows an answer that was given.
+    SamplingError
+        When sampling cannot start, or an option is not known.
+    """
+    if sampler not in SAMPLERS:
+        msg = (
+            f"there is no sampler {sampler!r}{near_names(sampler, SAMPLERS)}. "
+            f"Take one of {', '.join(SAMPLERS)}."
+        )
+        raise SamplingError(msg)
+    units = compile_units(model.table, model.units(responses))
+    seen = _as_the_model_sees(model, responses)
+    if sampler == "nuts":
+        from bayeslca.sampling.nuts import draw_with_nuts
+
+        drawn = draw_with_nuts(
+            model, seen, seed=seed, chains=chains, draws=draws, progress=progress
+        )
+    else:
+        drawn = draw_posterior(
+            model,
+            seen,
+            seed=seed,
+            chains=chains,
+            draws=draws,
+            ess=ess,
+            r_hat=r_hat,
+            max_sweeps=max_sweeps,
+            threads=threads,
+            progress=progress,
+            watch=lambda so_far: reported_quantities(model, units, so_far),
+        )
+    return Posterior(model, responses, relabel(model, units, drawn))
+
+
+def reported_quantities(
+    model: LatentClassModel, units: UnitTable, draws: Draws
+) -> dict[str, Floats]:
+    """Return the draws (chain, draw) of reported quantities, relabelled, for the stopping rule.
+
+    Quantities of classes that are empty or not told apart are left out, as are response
+    probabilities of an item's first answer: they are 1 minus the others.
+    """
+    named = relabel(model, units, draws).draws
+    unsteady = class_state(model.table, units, named).unsteady
+    out: dict[str, Floats] = {}
+    steady = [k for k in range(model.n_classes) if k not in unsteady]
+    for g in range(named.prevalence.shape[2]):
+        for k in steady:
+            out[f"prevalence of {model.class_names[k]} in group {g + 1}"] = named.prevalence[
+                :, :, g, k
+            ]
+    for element in _elements_of(model, steady):
+        out[f"element {element + 1}"] = named.elements[:, :, element]
+    return out
+
+
+def _elements_of(model: LatentClassModel, classes: list[int]) -> list[int]:
+    """Return the elements that classes use, without the first of each block."""
+    table = model.table
+    used = {
+        element
+        for row in range(table.n_rows)
+        for k in classes
+        for _, elements in table.cells(row, k)
+        for element in elements
+    }
+    return sorted(used - set(table.block_start[:-1].tolist()))
+
+
+def _as_the_model_sees(model: LatentClassModel, responses: Responses) -> Responses:
+    """Leave out the groups that the model does not have."""
+    if model.groups is not None or responses.groups is None:
+        return responses
+    return replace(responses, groups=None, group_codes=np.zeros(responses.n_rows, dtype=np.int32))
