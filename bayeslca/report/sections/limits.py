@@ -83,7 +83,7 @@ def _small_or_ruled(facts: Facts) -> list[tuple[str, str]]:
         entries.append(
             (
                 f"Few cases are expected in {listed(few)}:",
-                "what is said of so small a class is thin.",
+                "what is said of so small a class rests on little.",
             )
         )
     if facts.ruled:

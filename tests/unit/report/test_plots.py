@@ -68,7 +68,8 @@ def test_ordered_answers_stand_in_their_order(mixed: Any) -> None:
 def test_prevalence_has_a_row_for_each_class_and_group(mixed: Any) -> None:
     ax = plots.plot_prevalence(mixed, ax=axes())
     labels = [label.get_text() for label in ax.get_yticklabels()]
-    assert labels == ["class 1, north", "class 1, south", "class 2, north", "class 2, south"]
+    levels = ("north", "south", "overall")
+    assert labels == [f"class {k}, {level}" for k in (1, 2) for level in levels]
 
 
 def test_membership_counts_every_case_once(small: Any) -> None:
