@@ -1,4 +1,4 @@
-"""Drafting a study file: what it proposes can be read, and nothing from the data leaks into TOML."""
+"""Drafting a study file: what it proposes can be read; text from the data stays text."""
 
 from __future__ import annotations
 
