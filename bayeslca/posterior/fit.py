@@ -33,7 +33,7 @@ def fit(
     draws: int = 1000,
     ess: float = 1000.0,
     r_hat: float = 1.01,
-    max_sweeps: int = MAX_SWEEPS,
+    max_sweeps: int | None = None,
     threads: int | None = None,
     progress: bool | Callable[..., None] = True,
 ) -> Posterior:
@@ -53,8 +53,9 @@ def fit(
     ess, r_hat : float
         Gibbs goes on until label-free and reported quantities reach both. Quantities of classes
         that are empty or not told apart do not hold it.
-    max_sweeps : int
-        Sweeps per chain at most; when they are used up, ``posterior.draws.limit_reached`` says so.
+    max_sweeps : int, optional
+        Sweeps (or iterations) per chain at most: 400,000 of Gibbs, 20,000 of NUTS, when not
+        given. When they are used up, ``posterior.draws.limit_reached`` says so.
     threads : int, optional
     progress : bool or callable
         True shows a bar on a terminal.
@@ -75,10 +76,19 @@ def fit(
     units = compile_units(model.table, model.units(responses))
     seen = _as_the_model_sees(model, responses)
     if sampler == "nuts":
-        from bayeslca.sampling.nuts import draw_with_nuts
+        from bayeslca.sampling.nuts import MAX_ITERATIONS, draw_with_nuts
 
         drawn = draw_with_nuts(
-            model, seen, seed=seed, chains=chains, draws=draws, progress=progress
+            model,
+            seen,
+            seed=seed,
+            chains=chains,
+            draws=draws,
+            ess=ess,
+            r_hat=r_hat,
+            max_sweeps=max_sweeps or MAX_ITERATIONS,
+            threads=threads,
+            progress=progress is True,
         )
     else:
         drawn = draw_posterior(
@@ -89,7 +99,7 @@ def fit(
             draws=draws,
             ess=ess,
             r_hat=r_hat,
-            max_sweeps=max_sweeps,
+            max_sweeps=max_sweeps or MAX_SWEEPS,
             threads=threads,
             progress=progress,
             watch=lambda so_far: reported_quantities(model, units, so_far),

@@ -88,7 +88,7 @@ def membership_table(
         raise BayesLCAError(msg)
     units = posterior.model.units(responses)
     found = unit_membership(posterior, compile_units(posterior.table, units), interval)
-    impossible = np.isnan(found.mean).any(axis=1)
+    impossible = np.asarray(np.isnan(found.mean).any(axis=1))
     if rows == "patterns":
         frame = _pattern_keys(posterior, units)
     else:
@@ -152,7 +152,7 @@ def _with_probabilities(
     import pandas as pd
 
     names = np.asarray(class_names, dtype=object)
-    possible = ~np.isnan(found.mean).any(axis=1)
+    possible = np.asarray(~np.isnan(found.mean).any(axis=1))
     modal = np.where(possible, np.nan_to_num(found.mean, nan=-1.0).argmax(axis=1), 0)
     columns: dict[str, Any] = {
         "modal_class": [
