@@ -35,7 +35,7 @@ def commands() -> None:
       bayeslca check study.toml                    the model in words, warnings
       bayeslca run study.toml -o results           the whole job, with a report
       bayeslca assign results new.csv -o out.csv   membership of new cases
-    """
+    """  # noqa: D301 - click keeps lines as they are after a real backspace
 
 
 @commands.command()
