@@ -302,7 +302,7 @@ def _split_units(
                     weights[k] += log_extra[u, k] - shift[u]
             for h in range(n_chunks):
                 s = unit_part[u, h]
-                _add_logs(part_row[part_start[s] : part_start[s + 1]], row_probability, weights)
+                _add_logs(part_row, part_start[s], part_start[s + 1], row_probability, weights)
             rescued = _out_of_logs(weights)
             if rescued == -math.inf:
                 return math.nan
@@ -347,10 +347,12 @@ def _accumulate(weights: Floats, cumulative: Floats) -> float:
 
 
 @compiled_part
-def _add_logs(rows: Ints, row_probability: Floats, weights: Floats) -> None:
-    for r in rows:
+def _add_logs(
+    part_row: Ints, first: int, last: int, row_probability: Floats, weights: Floats
+) -> None:
+    for i in range(first, last):
         for k in range(weights.shape[0]):
-            weights[k] += math.log(row_probability[r, k])
+            weights[k] += math.log(row_probability[part_row[i], k])
 
 
 @compiled_part

@@ -1,27 +1,39 @@
-"""Which answers a model allows at all, whatever its parameters."""
+"""Answers that cannot be sampled from: none at all, or some that no class allows."""
 
 from __future__ import annotations
 
 import numpy as np
 
-from bayeslca._typing import Bools, Ints
-from bayeslca.model.probabilities import row_probability
+from bayeslca.exceptions import ModelError
+from bayeslca.model.support import impossible_units
 from bayeslca.model.table import Table, UnitTable
+from bayeslca.responses.responses import Responses
+
+MOST_NAMED = 5
 
 
-def impossible_units(table: Table, units: UnitTable) -> Ints:
-    """Return the units that have probability 0 in every class.
+def refuse_impossible(table: Table, units: UnitTable, responses: Responses | UnitTable) -> None:
+    """Refuse empty data, and name the cases whose answers no class allows.
 
-    Impossible is a property of whole patterns: one class may forbid one answer, another class
-    another, and a unit may have both.
+    Raises
+    ------
+    ModelError
     """
-    allowed = row_probability(table, np.ones(table.n_elements)) > 0.0
-    n_units = units.count.size
-    forbids = ~allowed[units.row]
-    unit_of_entry = np.repeat(np.arange(n_units), np.diff(units.row_start))
-    may_be: Bools = np.ones((n_units, table.n_classes), dtype=np.bool_)
-    for k in range(table.n_classes):
-        may_be[unit_of_entry[forbids[:, k]], k] = False
-    if units.log_weight.size:
-        may_be &= units.log_weight > -np.inf
-    return np.flatnonzero(~may_be.any(axis=1))
+    if not units.count.size or int(units.count.sum()) == 0:
+        msg = "there are no answers to sample from: no case answered a single item."
+        raise ModelError(msg)
+    offenders = impossible_units(table, units)
+    if not offenders.size:
+        return
+    names = [f"unit {u + 1}" for u in offenders]
+    if isinstance(responses, Responses):
+        rows = np.flatnonzero(np.isin(responses.units.unit_of_row, offenders))
+        names = [f"'{responses.row_names[r]}'" for r in rows]
+    more = ", ..." if len(names) > MOST_NAMED else ""
+    n_cases = int(units.count[offenders].sum())
+    msg = (
+        f"{n_cases} {'case' if n_cases == 1 else 'cases'} gave answers that no class allows: "
+        f"{', '.join(names[:MOST_NAMED])}{more}. Check these answers, or loosen the "
+        "probabilities that are fixed at 0 or 1."
+    )
+    raise ModelError(msg)

@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, TypeAlias
 import numpy as np
 
 from bayeslca._typing import Floats, Seed
-from bayeslca.exceptions import ModelError, SamplingError
+from bayeslca.exceptions import SamplingError
 from bayeslca.model.compile import compile_units
 from bayeslca.model.prevalence import PrevalenceSource
 from bayeslca.model.prior_density import log_prior
@@ -24,7 +24,7 @@ from bayeslca.model.table import Table, UnitTable
 from bayeslca.responses.responses import Responses
 from bayeslca.sampling.chain import Chain, Kept, Task, make_task, stacked, thinned
 from bayeslca.sampling.draws import Draws
-from bayeslca.sampling.possible import impossible_units
+from bayeslca.sampling.possible import refuse_impossible
 from bayeslca.sampling.progress import Meter, Show, shown
 from bayeslca.sampling.starting_points import StartingPoints, find_starting_points
 from bayeslca.sampling.stopping import StoppingRule, judge, label_free, watched_units
@@ -98,7 +98,7 @@ def draw_posterior(
     if isinstance(responses, Responses):
         units = compile_units(model.table, responses.units)
     assert isinstance(units, UnitTable)
-    _refuse_impossible(model.table, units, responses)
+    refuse_impossible(model.table, units, responses)
     return sample_table(
         model.table,
         units,
@@ -135,7 +135,7 @@ def sample_table(
     """Draw from the posterior of a compiled model; see `draw_posterior`."""
     begin = time.perf_counter()
     _check_sizes(chains, draws, ess, max_sweeps)
-    _refuse_impossible(table, units, units)
+    refuse_impossible(table, units, units)
     task = make_task(table, units, source, labels)
     threads = threads or default_threads()
     stop = threading.Event()
@@ -290,24 +290,3 @@ def _check_sizes(chains: int, draws: int, ess: float, max_sweeps: int) -> None:
             f"kept draws. Set it to {WARMUP + draws * FIRST_THIN} or more."
         )
         raise SamplingError(msg)
-
-
-def _refuse_impossible(table: Table, units: UnitTable, responses: Responses | UnitTable) -> None:
-    """Refuse empty data, and name the rows whose answers no class allows."""
-    if not units.count.size or int(units.count.sum()) == 0:
-        msg = "there are no answers to sample from: no case answered a single item."
-        raise ModelError(msg)
-    offenders = impossible_units(table, units)
-    if not offenders.size:
-        return
-    names = [f"unit {u + 1}" for u in offenders[:5]]
-    if isinstance(responses, Responses):
-        rows = np.flatnonzero(np.isin(responses.units.unit_of_row, offenders))
-        names = [f"'{responses.row_names[r]}'" for r in rows[:5]]
-    n_cases = int(units.count[offenders].sum())
-    msg = (
-        f"{n_cases} cases gave answers that no class allows, so the model is certainly wrong "
-        f"for them: {', '.join(names)}{', ...' if n_cases > len(names) else ''}. Check these "
-        "answers, or loosen the probabilities that are fixed at 0 or 1."
-    )
-    raise ModelError(msg)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import threading
 import time
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -214,3 +215,30 @@ def test_what_has_no_exact_step_is_refused():
 
     with pytest.raises(SamplingError, match="prevalences come from Other"):
         make_task(table, units, Other(), labels)
+
+
+def test_cases_with_impossible_answers_are_named_as_in_the_responses():
+    import pandas as pd
+
+    from bayeslca.responses.responses import Responses
+    from bayeslca.sampling.run import draw_posterior
+
+    builder = TableBuilder([2, 2], 2, (0,))
+    for k in range(2):
+        builder.set_known(0, k, k, {1: 0.0})
+        builder.set_item(0, 1 - k, k, builder.block([1.0, 1.0]))
+    frame = pd.DataFrame(
+        {
+            "place": ["east", "west", "north"],
+            "one": ["no", "yes", "yes"],
+            "two": ["no", "yes", "no"],
+        }
+    )
+    responses = Responses.from_frame(frame, items=["one", "two"], case="place")
+    model = SimpleNamespace(
+        table=builder.build(),
+        prevalence_source=DirichletPrevalence(np.ones((1, 2))),
+        symmetry=None,
+    )
+    with pytest.raises(ModelError, match=r"1 case gave answers that no class allows.*'west'"):
+        draw_posterior(model, responses, seed=1, progress=False)
