@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from bayeslca.assess.comparison_words import OWN
 from bayeslca.report.axes import LABEL_WIDTH, legend_above, new_axes, percent_axis, quiet
 from bayeslca.report.ordered_plot import chosen_items, plot_ordered_item
 from bayeslca.report.palette import (
@@ -188,7 +189,7 @@ def row_name(name: object) -> str:
     text = str(name)
     if text.isdigit():
         return f"{text} class" if text == "1" else f"{text} classes"
-    return "this study's model" if text == "this study" else text
+    return "the study's own model" if name == OWN else text
 
 
 def plot_membership(posterior: Posterior, *, ax: Axes | None = None) -> Axes:

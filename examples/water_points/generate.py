@@ -20,11 +20,11 @@ SHARE_MISSING = 0.015
 
 PRACTICES = ("fees", "accounts", "spare_parts", "mechanic", "fenced", "meets", "tests_water")
 KINDS = ("managed", "informal", "lapsed")
-SHARE = {"managed": 0.42, "informal": 0.33, "lapsed": 0.25}
+SHARE = {"managed": 0.40, "informal": 0.34, "lapsed": 0.26}
 YES = {
-    "managed": (0.92, 0.86, 0.72, 0.88, 0.80, 0.95, 0.38),
-    "informal": (0.55, 0.10, 0.28, 0.60, 0.50, 0.78, 0.04),
-    "lapsed": (0.06, 0.03, 0.05, 0.14, 0.24, 0.10, 0.01),
+    "managed": (0.95, 0.90, 0.78, 0.90, 0.84, 0.96, 0.55),
+    "informal": (0.72, 0.07, 0.14, 0.78, 0.38, 0.90, 0.04),
+    "lapsed": (0.07, 0.03, 0.05, 0.10, 0.18, 0.08, 0.01),
 }
 """The chance that a committee of each kind has each practice."""
 

@@ -71,8 +71,9 @@ def _outside_tie(facts: Facts) -> str:
     table = comparison.table
     best = table.index[table["elpd_diff"].abs().argmin()]
     behind = table.loc[row]
+    mine = counted(len(facts.class_names), "class", "classes")
     return (
-        f"the study's own model ({row_name(row)}) predicts new cases worse than the best of those "
+        f"the study's own model ({mine}) predicts new cases worse than the best of those "
         f"compared ({row_name(best)}), by {decimal(abs(behind['elpd_diff']))} with a standard "
         f"error of {decimal(behind['elpd_diff_se'])}; under it, "
     )
