@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Literal
 
 import numpy as np
@@ -53,6 +54,10 @@ class RawColumn:
 
     def counts(self) -> dict[str, int]:
         """Return how many rows hold each value that occurs, in the order of ``values``."""
+        return dict(self._counts)
+
+    @cached_property
+    def _counts(self) -> dict[str, int]:
         found = np.bincount(self.codes[self.codes >= 0], minlength=len(self.values))
         return {value: int(n) for value, n in zip(self.values, found, strict=True) if n}
 

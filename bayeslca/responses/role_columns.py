@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from typing import Any
 
@@ -19,6 +20,7 @@ from bayeslca.responses.raw_table import RawTable
 from bayeslca.responses.spelling import find_value, number_of, spelling_variants
 
 _MOST_CASES = 10**12
+_GROUPED = re.compile(r"[+-]?\d{1,3}([.,]\d{3})+")
 
 
 def read_counts(
@@ -32,6 +34,8 @@ def read_counts(
         Rows with a count of nought are left out.
     """
     column = keep_rows(table.column(name), rows)
+    # "1,000" and "1.000" in a text are a thousand or one: not for us to say.
+    unclear = column.type == "text" and [bool(_GROUPED.fullmatch(v)) for v in column.values]
     numbers = [number_of(value) for value in column.values]
     where = f"counts column {name!r}"
     n_before = len(problems.messages)
@@ -48,6 +52,12 @@ def read_counts(
         )
 
     # One entry per distinct value, and a last one that answers code -1 (empty).
+    if unclear:
+        refuse(
+            np.array([*unclear, False])[column.codes],
+            "a number with three digits after a comma or point",
+            "Write whole numbers without separators.",
+        )
     as_number = np.array([*(np.nan if n is None else n for n in numbers), 0.0])
     empty = column.codes < 0
     value = as_number[column.codes]

@@ -11,7 +11,8 @@ from typing import Any
 from bayeslca.exceptions import ResponsesError
 
 _NUMBER = re.compile(r"[+-]?(\d+([.,]\d*)?|[.,]\d+)([eE][+-]?\d+)?")
-_WHOLE_WITH_POINT = re.compile(r"[+-]?\d+\.0*")
+_WHOLE_WITH_POINT = re.compile(r"[+-]?\d+\.0{0,2}")
+# Three noughts may be thousands: "1.000" stays as it is written.
 
 
 def as_text(value: Any) -> str | None:
@@ -116,7 +117,7 @@ def folded(text: str) -> str:
     bare = "".join(bare.casefold().split())
     number = number_of(bare)
     if number is None or number in (float("inf"), float("-inf")):
-        return bare or text
+        return bare or "".join(text.split())
     return as_text(number + 0.0) or bare  # + 0.0: minus nought is nought
 
 

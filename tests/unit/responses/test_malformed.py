@@ -200,6 +200,11 @@ FRAMES: dict[str, tuple[Callable[[], Any], dict[str, Any], list[str]]] = {
         {"items": ["fees"], "counts": "n"},
         ["not a number ('two') in row 2"],
     ),
+    "count with thousands": (
+        lambda: _frame(n=["1,000", "2", "3.000", "4", "5", "6"]),
+        {"items": ["fees"], "counts": "n"},
+        ["three digits after a comma", "('1,000', '3.000') in rows 1, 3", "without separators"],
+    ),
     "counts all nought": (
         lambda: _frame(n=[0] * 6),
         {"items": ["fees"], "counts": "n"},
