@@ -7,7 +7,8 @@ Dirichlet where not). ``response_probability`` is what follows from them for eve
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -46,19 +47,46 @@ class Parts:
     units : UnitTable
     source : PrevalenceSource
     variables : tuple of BlockVariable
+    by_group : bool
+        Whether ``prevalence`` has an axis for groups.
     """
 
     table: Table
     units: UnitTable
     source: PrevalenceSource
     variables: tuple[BlockVariable, ...]
+    by_group: bool
 
-    def elements(self, values: Any) -> Floats:
-        """Return elements (..., E) from values by variable name, with any leading axes."""
-        leading = ()
-        for variable in self.variables:
-            inner = variable.elements.ndim - variable.is_binary
-            leading = np.shape(values[variable.name])[: np.ndim(values[variable.name]) - inner]
+    @classmethod
+    def of(cls, pm_model: Any) -> Parts:
+        """Return the parts of a PyMC model, with the counts that its data hold now.
+
+        Raises
+        ------
+        ModelError
+            When the model was not made by ``to_pymc``.
+        """
+        parts: Parts | None = getattr(pm_model, ATTRIBUTE, None)
+        if parts is None:
+            msg = (
+                "this PyMC model was not made by to_pymc (or is a changed copy of one that was). "
+                "Make it with LatentClassModel.to_pymc, adding to a model of yours with into=."
+            )
+            raise ModelError(msg)
+        if "count" not in pm_model.named_vars:
+            return parts
+        count = np.asarray(pm_model["count"].get_value(), dtype=np.int64)
+        return replace(parts, units=replace(parts.units, count=count))
+
+    def values(self, elements: Floats, prevalence: Floats) -> dict[str, Floats]:
+        """Return the value of each random variable for elements (E,) and prevalence (rows, K)."""
+        out = {variable.name: variable.value(elements) for variable in self.variables}
+        if self.table.n_classes > 1:
+            out["prevalence"] = prevalence if self.by_group else prevalence[0]
+        return out
+
+    def elements(self, values: Mapping[str, Floats], leading: tuple[int, ...] = ()) -> Floats:
+        """Return elements (*leading, E) from values by variable name."""
         out = np.ones((*leading, self.table.n_elements))
         for variable in self.variables:
             variable.put(np.asarray(values[variable.name]), out)
@@ -176,11 +204,11 @@ def build_from_table(
     variables = block_variables(table, names)
     options = {"default_transform": None} if gibbs else {}
     with into or pm.Model() as pm_model:
-        coords = {"latent_class": names.latent_class, "response": names.response}
+        coords: dict[str, Any] = {"latent_class": names.latent_class, "response": names.response}
         coords |= {"group": names.group} if names.group else {}
         coords |= {"item": names.item, "case" if by_case else "unit": range(units.n_units)}
         for variable in variables:
-            coords |= variable.coords
+            coords.update(variable.coords)
         for dim, labels in coords.items():
             pm_model.add_coord(dim, list(labels))
         prevalence = _prevalence(source, names, concentration, options)
@@ -189,7 +217,8 @@ def build_from_table(
         rows = row_tensor(table, elements)
         _response_probability(table, rows)
         _likelihood(table, units, unit_table, prevalence, rows, by_case=by_case)
-    setattr(pm_model, ATTRIBUTE, Parts(table, unit_table, source, variables))
+    parts = Parts(table, unit_table, source, variables, bool(names.group))
+    setattr(pm_model, ATTRIBUTE, parts)
     return pm_model
 
 
