@@ -51,10 +51,13 @@ class Meter:
     ----------
     show : callable
     rule : StoppingRule
+    most : float
+        Sweeps after which sampling ends in any case, all chains together.
     """
 
-    def __init__(self, show: Show, rule: StoppingRule) -> None:
+    def __init__(self, show: Show, rule: StoppingRule, most: float = math.inf) -> None:
         self._show = show
+        self._most = most
         self._rule = rule
         self._start = time.perf_counter()
         self._sweeps: list[int] = []
@@ -88,7 +91,8 @@ class Meter:
         if self._last is not None and self._last.meets(self._rule):
             return 0.0
         needed = sweeps * self._rule.ess / ess if ess > 0.0 else math.inf
-        return seconds * (max(needed, self._planned) / max(sweeps, 1) - 1.0)
+        end = min(max(needed, self._planned), self._most)
+        return seconds * max(end / max(sweeps, 1) - 1.0, 0.0)
 
 
 @contextmanager
@@ -119,7 +123,7 @@ def _bar() -> Iterator[Show]:
         transient=True,
     )
     with bar:
-        task = bar.add_task("sampling", total=None, text="starting points")
+        task = bar.add_task("sampling", total=None, text="looking for starting points")
 
         def show(progress: Progress) -> None:
             total = progress.planned or None

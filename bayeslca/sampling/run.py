@@ -140,19 +140,20 @@ def sample_table(
     threads = threads or default_threads()
     stop = threading.Event()
     sequence = seed_sequence(seed)
-    points, begun = find_starting_points(
-        task, sequence.spawn(1)[0], chains=chains, threads=threads, stop=stop
-    )
-    # The chains go on from where the short runs ended, with generators of their own: two
-    # chains may go on from one short run.
-    running = [
-        Chain(task, one.elements, one.prevalence, np.random.default_rng(child))
-        for one, child in zip(begun, sequence.spawn(chains), strict=True)
-    ]
     rule = StoppingRule(ess, r_hat)
     with shown(progress) as show:
+        points, begun = find_starting_points(
+            task, sequence.spawn(1)[0], chains=chains, threads=threads, stop=stop
+        )
+        # The chains go on from where the short runs ended, with generators of their own: two
+        # chains may go on from one short run.
+        running = [
+            Chain(task, one.elements, one.prevalence, np.random.default_rng(child))
+            for one, child in zip(begun, sequence.spawn(chains), strict=True)
+        ]
+        meter = Meter(show, rule, most=max_sweeps * chains)
         rounds = _Rounds(
-            task, running, points, rule, draws, max_sweeps, threads, stop, Meter(show, rule), watch
+            task, running, points, rule, draws, max_sweeps, threads, stop, meter, watch
         )
         found = rounds.until_done()
     if not found.limit_reached:

@@ -30,6 +30,14 @@ def test_the_meter_counts_and_estimates_what_is_left():
     assert told[-1].seconds_left == 0.0
 
 
+def test_no_more_is_left_than_the_limit_allows():
+    told: list[Progress] = []
+    meter = Meter(told.append, StoppingRule(1000, 1.01), most=6000)
+    meter.add(3000)
+    meter.judged(Convergence(1.0, "x", 1.5, "y"))
+    assert told[-1].seconds_left == pytest.approx(told[-1].seconds, rel=0.01)
+
+
 def test_nothing_is_shown_without_a_terminal(capsys):
     for wish in (True, False):
         with shown(wish) as show:
