@@ -85,6 +85,7 @@ COLUMNS: dict[str, Column] = {
         "number",
     ),
     "elpd_se": Column("± of accuracy", "standard error of the predictive accuracy", "number"),
+    "elpd_mcse": Column("Simulation error", "Monte Carlo error of the accuracy", "number"),
     "elpd_diff": Column("Behind the best", "difference in accuracy from the best model", "number"),
     "elpd_diff_se": Column("± of difference", "standard error of the difference", "number"),
     "p_loo": Column("Effective parameters", "flexibility that the answers used up", "number"),
@@ -94,8 +95,13 @@ COLUMNS: dict[str, Column] = {
     "waic": Column(
         "WAIC", "accuracy by the widely applicable criterion, on the same scale", "number"
     ),
+    "waic_se": Column("± of WAIC", "standard error of WAIC", "number"),
+    "p_waic": Column("Effective parameters (WAIC)", "flexibility used up, by WAIC", "number"),
     "weight": Column("Weight", "share in the best mixture of predictions (stacking)", "share"),
     "smallest_class": Column("Smallest class", "prevalence of the smallest class", "share"),
+    "smallest_lower": Column("Smallest from", "lower end of its 95 % interval", "share"),
+    "smallest_upper": Column("Smallest to", "upper end of its 95 % interval", "share"),
+    "smallest_cases": Column("Smallest in cases", "the smallest class, in cases", "number"),
     "separation": Column(
         "Separation", "relative entropy: 1 when every case is placed surely, 0 by chance", "number"
     ),

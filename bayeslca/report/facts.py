@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cached_property
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from bayeslca.report.content import ReportContent
 from bayeslca.report.placement import Placement, placement
@@ -127,16 +128,21 @@ class Facts:
         """Models that predict as well as the best, within their errors."""
         if self.content.comparison is None:
             return ()
-        table = self.content.comparison.table
-        return tuple(table.index[table["tied"].astype(bool)])
+        return self.content.comparison.tied
+
+    @property
+    def own_row(self) -> Mapping[str, Any] | None:
+        """The row of the comparison that is the answer's own model; None where there is none."""
+        comparison, name = self.content.comparison, self.content.study_row
+        if comparison is None or name not in comparison.table.index:
+            return None
+        (row,) = comparison.table[comparison.table.index == name].to_dict("records")
+        return {str(column): value for column, value in row.items()}
 
     @property
     def outside_tie(self) -> bool:
         """True when the answer's own model predicts worse than the best by more than a tie."""
-        comparison, row = self.content.comparison, self.content.study_row
-        if comparison is None or row not in comparison.table.index:
-            return False
-        return not bool(comparison.table.loc[row, "tied"])
+        return self.own_row is not None and not self.own_row["tied"]
 
 
 def overall_shares(posterior: Posterior, interval: float) -> tuple[Share, ...]:

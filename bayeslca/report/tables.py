@@ -59,10 +59,9 @@ def file_tables(content: ReportContent) -> tuple[FileTable, ...]:
         "diagnostics": ("How the sampling went", posterior.diagnostics().table),
     }
     if content.comparison is not None:
-        counts = content.comparison.table
         named["class_counts"] = (
             "How well models with different numbers of classes predict",
-            counts.rename_axis(counts.index.name or "model"),
+            content.comparison.table,
         )
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))

@@ -65,17 +65,15 @@ def is_to_be_trusted(facts: Facts) -> bool:
 
 
 def _outside_tie(facts: Facts) -> str:
-    comparison, row = facts.content.comparison, facts.content.study_row
+    comparison, row = facts.content.comparison, facts.own_row
     if comparison is None or row is None or not facts.outside_tie:
         return ""
-    table = comparison.table
-    best = table.index[table["elpd_diff"].abs().argmin()]
-    behind = table.loc[row]
     mine = counted(len(facts.class_names), "class", "classes")
+    best = row_name(comparison.best)
+    behind, error = decimal(abs(row["elpd_diff"])), decimal(row["elpd_diff_se"])
     return (
         f"the study's own model ({mine}) predicts new cases worse than the best of those "
-        f"compared ({row_name(best)}), by {decimal(abs(behind['elpd_diff']))} with a standard "
-        f"error of {decimal(behind['elpd_diff_se'])}; under it, "
+        f"compared ({best}), by {behind} with a standard error of {error}; under it, "
     )
 
 

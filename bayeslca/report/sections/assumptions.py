@@ -93,17 +93,17 @@ def answers_in_words(facts: Facts) -> str:
 
 def weights_in_words(facts: Facts) -> str:
     """Return how heavy the priors are, and where they matter."""
-    heavy = [weight for weight in prior_weights(facts.posterior) if weight.share > HEAVY]
+    heavy = [weight for weight in prior_weights(facts.posterior) if weight.share >= HEAVY]
     text = (
         "A prior counts as if so many cases of the class had been seen before; its share is that "
         "number over itself plus the cases expected in the class. Priors pull probabilities near "
         "0 or 100 % a little inward."
     )
     if not heavy:
-        return f"{text} No prior makes up more than {percent(HEAVY)} of any result."
+        return f"{text} No prior makes up as much as {percent(HEAVY)} of any result."
     worst = max(heavy, key=lambda weight: weight.share)
     return (
-        f"{text} In {counted(len(heavy), 'place')} the prior makes up more than {percent(HEAVY)} "
+        f"{text} In {counted(len(heavy), 'place')} the prior makes up {percent(HEAVY)} or more "
         f"of the result, most in {_item_text(facts, worst)} of {called(worst.latent_class)} "
         f"({percent(worst.share)})."
     )
@@ -148,7 +148,7 @@ def _statements(facts: Facts) -> list[Block]:
     if not model.statements:
         return [Paragraph("The study states nothing beyond this: all priors are the defaults.")]
     rows = tuple(
-        (statement, model.statement_sources.get(statement, "not given"))
+        (statement, _source(model.statement_sources.get(statement), is_prior="~" in statement))
         for statement in model.statements
     )
     heads = (
@@ -156,6 +156,12 @@ def _statements(facts: Facts) -> list[Block]:
         Head("Source", "where it comes from, as the study says", numeric=False),
     )
     return [PageTable("What the study states", heads, rows)]
+
+
+def _source(source: str | None, *, is_prior: bool) -> str:
+    if source is not None:
+        return source
+    return "not given" if is_prior else "needs none: it names a class"
 
 
 def _weights_table(facts: Facts) -> PageTable:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
+from bayeslca.report.blocks import Block, Bullets, Head, PageTable, Paragraph, Picture, Section
 from bayeslca.report.facts import Facts
 from bayeslca.report.figures import draw
 from bayeslca.report.plots import plot_class_counts, row_name
@@ -15,12 +15,9 @@ from bayeslca.report.wording import (
     listed,
     percent,
     sentence,
-    whole,
 )
 
 ANCHOR, HEADING = "class-counts", "How many classes the data support"
-SMALL = 100
-"""With fewer cases the standard error of a difference is known to be too small."""
 
 
 def class_counts_section(facts: Facts) -> Section:
@@ -40,14 +37,15 @@ def class_counts_section(facts: Facts) -> Section:
         ),
         alt=sentence(comparison.verdict),
     )
+    noticed = tuple((sentence(one.message), sentence(one.remedy)) for one in comparison.findings)
     blocks: list[Block] = [
         Paragraph(_in_words(facts)),
+        *([Bullets(noticed)] if noticed else []),
         Picture(figure),
         _table(facts),
         Paragraph(
             "Predictive accuracy is of a case's answers with its class summed out, left out one "
             "case at a time. Differences below 4, or within two standard errors, are called ties."
-            + _small(facts)
         ),
     ]
     return Section(ANCHOR, HEADING, tuple(blocks))
@@ -70,19 +68,7 @@ def _in_words(facts: Facts) -> str:
         text += (
             " The study's own model lies outside the tie: the data alone would not have led to it."
         )
-    if facts.untrusted_ties:
-        names = listed([row_name(name) for name in facts.untrusted_ties])
-        text += f" The sampling of {names} is not to be trusted, so its row may change."
     return text
-
-
-def _small(facts: Facts) -> str:
-    if facts.n_cases >= SMALL:
-        return ""
-    return (
-        f" With only {whole(facts.n_cases)} cases the standard errors are known to be too small "
-        "(Sivula et al. 2020): read every difference as less sure than it looks."
-    )
 
 
 def _table(facts: Facts) -> PageTable:
@@ -107,14 +93,8 @@ def _table(facts: Facts) -> PageTable:
         Head("Separation", "1: every case placed surely; 0: by chance"),
         Head("Sampling", "is it to be trusted", numeric=False),
     )
-    notes = ["Square brackets: the model the answer rests on."]
-    unreliable = int(comparison.table["pareto_k_high"].fillna(0).max())
-    if unreliable:
-        notes.append(
-            f"For up to {whole(unreliable)} cases the leave-one-out figure is not reliable "
-            "(Pareto k too high); the column pareto_k_high in the files says for which model."
-        )
-    return PageTable("Models with different numbers of classes", heads, rows, tuple(notes))
+    notes = ("Square brackets: the model the answer rests on.",)
+    return PageTable("Models with different numbers of classes", heads, rows, notes)
 
 
 def _row(facts: Facts, name: object, row: dict[Any, Any]) -> tuple[str, ...]:

@@ -115,13 +115,12 @@ def _why_this_number(facts: Facts) -> Answered:
         says.append(sentence(content.chosen_because))
     if content.comparison is not None:
         says.append(sentence(content.comparison.verdict))
-        row = content.study_row
-        if row in content.comparison.table.index:
-            mine = content.comparison.table.loc[row]
+        row = facts.own_row
+        if row is not None:
             says.append(
-                f"The model the answer rests on ({row_name(row)}) lies "
-                f"{decimal(abs(mine['elpd_diff']))} behind the best, with a standard error of "
-                f"{decimal(mine['elpd_diff_se'])}."
+                f"The model the answer rests on ({row_name(content.study_row)}) lies "
+                f"{decimal(abs(row['elpd_diff']))} behind the best, with a standard error of "
+                f"{decimal(row['elpd_diff_se'])}."
             )
     if not says:
         return Answered(question, NOT_DONE, done=False)

@@ -9,6 +9,9 @@ import numpy as np
 import pandas as pd
 import pytest
 
+from bayeslca.assess.comparison import Comparison
+from bayeslca.assess.comparison_words import verdict_in_words
+from bayeslca.findings import Finding
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.report.content import ReportContent
@@ -97,20 +100,24 @@ def make_posterior(
     return told_of_sampling(Posterior(model, responses, Relabelled(draws, same)), **more)
 
 
-def make_comparison(counts: range = range(1, 7), best: int = 2) -> Any:
+def make_comparison(
+    counts: range = range(1, 7), best: int = 2, findings: tuple[Finding, ...] = ()
+) -> Comparison:
+    """Make a comparison in which models predict worse the further they are from the best."""
     rows = []
     for n in counts:
         behind = -1.7 * abs(n - best) ** 1.5
         rows.append(
-            {"elpd": -430 + behind, "elpd_se": 12.0, "elpd_diff": behind,
-             "elpd_diff_se": 0.0 if n == best else 2.5, "waic": -431 + behind, "p_loo": 3.0 * n,
-             "pareto_k_high": 0, "weight": 1.0 if n == best else 0.0, "smallest_class": 1 / n / 1.3,
-             "separation": np.nan if n == 1 else 0.85, "trustworthy": True,
-             "tied": behind > -4}
+            {"elpd": -430 + behind, "elpd_se": 12.0, "elpd_mcse": 0.1, "p_loo": 3.0 * n,
+             "elpd_diff": behind, "elpd_diff_se": 0.0 if n == best else 2.5, "tied": behind > -4,
+             "weight": 1.0 if n == best else 0.0, "pareto_k_high": 0, "waic": -431 + behind,
+             "waic_se": 12.0, "p_waic": 3.0 * n, "smallest_class": 1 / n / 1.3,
+             "smallest_lower": 0.5 / n, "smallest_upper": 0.9 / n, "smallest_cases": 90 / n,
+             "separation": np.nan if n == 1 else 0.85, "trustworthy": True}
         )  # fmt: skip
-    frame = pd.DataFrame(rows, index=pd.Index(list(counts), name="classes"))
-    verdict = "1 to 3 classes predict equally well within their errors: a tie."
-    return SimpleNamespace(table=frame, verdict=verdict, posteriors={})
+    table = pd.DataFrame(rows, index=pd.Index(list(counts), name="classes"))
+    verdict = verdict_in_words(table, best)
+    return Comparison(table, {}, {}, {}, verdict, findings, best)
 
 
 @pytest.fixture(scope="session")

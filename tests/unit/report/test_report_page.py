@@ -293,9 +293,10 @@ def test_other_counts_in_the_tie_are_shown(made: Any, page_of: PageOf) -> None:
     assert "With three classes, the data are predicted as well" in page.text
 
 
-def test_fewer_than_100_cases_are_cautioned(made: Any, page_of: PageOf) -> None:
-    page = page_of(made.content(made.posterior(made.items(4), 2, n_cases=60)))
-    assert "With only 60 cases the standard errors are known to be too small" in page.text
+def test_findings_of_the_comparison_are_said(small: Any, made: Any, page_of: PageOf) -> None:
+    finding = Finding("few", "warning", "the standard errors are too small", "read on")
+    page = page_of(made.content(small, comparison=made.comparison(findings=(finding,))))
+    assert "The standard errors are too small. Read on." in page.text
 
 
 def test_results_that_rest_on_the_prior_are_marked(made: Any, page_of: PageOf) -> None:
