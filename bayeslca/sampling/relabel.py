@@ -210,7 +210,9 @@ def stephens(table: Table, unit_table: UnitTable, draws: _Flat, group: Permutati
     reference = fit_reference(np.concatenate(fitted, axis=2), unit_table, group)
     out = np.empty((draws.n_draws, group.n_groups, group.n_classes), dtype=np.int64)
     for piece, shares in _memberships(table, unit_table, draws.elements, draws.prevalence):
-        out[piece] = best_members(_costs(shares, reference, unit_table, group.n_groups), group)
+        out[piece] = best_members(
+            matching_costs(shares, reference, unit_table, group.n_groups), group
+        )
     return out
 
 
@@ -245,7 +247,7 @@ def fit_reference(shares: Floats, unit_table: UnitTable, group: PermutationGroup
     reference = shares[:, :, 0].T
     before = None
     for _ in range(MOST_ROUNDS):
-        found = best_members(_costs(shares, reference, unit_table, group.n_groups), group)
+        found = best_members(matching_costs(shares, reference, unit_table, group.n_groups), group)
         if before is not None and np.array_equal(found, before):
             break
         before = found
@@ -254,7 +256,9 @@ def fit_reference(shares: Floats, unit_table: UnitTable, group: PermutationGroup
     return reference
 
 
-def _costs(shares: Floats, reference: Floats, unit_table: UnitTable, n_groups: int) -> Floats:
+def matching_costs(
+    shares: Floats, reference: Floats, unit_table: UnitTable, n_groups: int
+) -> Floats:
     """Return the cost (S, group, old class, new class) of making an old class a new one.
 
     Minus the sum over cases of P(old class | answers) log reference(new class); what Stephens'
