@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -47,7 +48,7 @@ class Units:
 
 
 _DENSE = 1 << 22
-"""Numbers of possible patterns up to which each gets a counter of its own."""
+"""Numbers of possible units up to which each gets a counter of its own."""
 _RADIX_LIMIT = 1 << 62
 
 
@@ -55,9 +56,8 @@ def collapse(codes: Ints, group_codes: Ints, counts: Ints, n_categories: tuple[i
     """Count the distinct combinations of group and response pattern.
 
     Each row becomes one whole number whose digits are its group and its answers (in base number of
-    categories + 1); wide tables are folded into ranks whenever the number would grow too large.
-    Units stand in the order of group, then answers of the first item, and so on, missing first:
-    whatever the order of the rows.
+    categories + 1). Units stand in the order of group, then answers of the first item, and so on,
+    missing first: whatever the order of the rows.
 
     Parameters
     ----------
@@ -67,48 +67,80 @@ def collapse(codes: Ints, group_codes: Ints, counts: Ints, n_categories: tuple[i
     n_categories : tuple of int
         Number of categories of each item.
     """
-    n_rows = codes.shape[0]
-    key = group_codes.astype(np.int64)
-    size = int(group_codes.max(initial=0)) + 1
+    n_groups = int(group_codes.max(initial=0)) + 1
+    n_patterns = math.prod(n + 1 for n in n_categories)
+    if n_groups * n_patterns <= _DENSE:
+        return _by_counters(codes, group_codes, counts, n_categories, n_groups, n_patterns)
+    return _by_sorting(codes, group_codes, counts, n_categories, n_groups)
+
+
+def _by_counters(
+    codes: Ints,
+    group_codes: Ints,
+    counts: Ints,
+    n_categories: tuple[int, ...],
+    n_groups: int,
+    n_patterns: int,
+) -> Units:
+    """Count with one counter per possible unit."""
+    key = group_codes.astype(np.int32)
+    for j, n in enumerate(n_categories):
+        key *= n + 1
+        key += codes[:, j]
+        key += 1
+    n_rows = np.bincount(key, minlength=n_groups * n_patterns)
+    n_rows[::n_patterns] = 0  # nothing answered: every digit but the group's is nought
+    found = np.flatnonzero(n_rows)
+    unit_of_key = np.full(n_rows.size, -1, dtype=np.int64)
+    unit_of_key[found] = np.arange(found.size)
+    unit_of_row = unit_of_key[key]
+    pattern = np.empty((found.size, len(n_categories)), dtype=np.int16)
+    rest = found
+    for j in reversed(range(len(n_categories))):
+        rest, digit = np.divmod(rest, n_categories[j] + 1)
+        pattern[:, j] = digit - 1
+    if _all_one(counts):
+        count = n_rows[found].astype(np.int64)
+    else:
+        count = _sums(unit_of_row, counts, found.size)
+    return Units(pattern, rest.astype(np.int32), count, unit_of_row)
+
+
+def _by_sorting(
+    codes: Ints,
+    group_codes: Ints,
+    counts: Ints,
+    n_categories: tuple[int, ...],
+    n_groups: int,
+) -> Units:
+    """Count by sorting; wide tables are folded into ranks when numbers would grow too large."""
+    answered = np.flatnonzero((codes != MISSING).any(axis=1))
+    key: Ints = group_codes[answered].astype(np.int64)
+    size = n_groups
     for j, n in enumerate(n_categories):
         if size > _RADIX_LIMIT // (n + 1):
             distinct, key = np.unique(key, return_inverse=True)
             size = distinct.size
-        key *= n + 1
-        key += codes[:, j]
-        key += 1
+        key = key * (n + 1) + codes[answered, j] + 1
         size *= n + 1
-    answered = (codes != MISSING).any(axis=1) if (codes == MISSING).any() else None
-    unit_of_key: Ints
-    if size <= max(_DENSE, n_rows):
-        unit_of_key = np.full(size, -1, dtype=np.int64)
-        seen = np.zeros(size, dtype=np.bool_)
-        seen[key if answered is None else key[answered]] = True
-        n_units = int(np.count_nonzero(seen))
-        unit_of_key[seen] = np.arange(n_units)
-        unit_of_row = unit_of_key[key]
-    else:
-        _, unit_of_row = np.unique(key if answered is None else key[answered], return_inverse=True)
-        n_units = int(unit_of_row.max(initial=-1)) + 1
-        if answered is not None:
-            among_answered, unit_of_row = unit_of_row, np.full(n_rows, -1, dtype=np.int64)
-            unit_of_row[answered] = among_answered
-    inside = unit_of_row >= 0
-    everyone = bool(inside.all())
-    units = unit_of_row if everyone else unit_of_row[inside]
-    first = np.empty(n_units, dtype=np.int64)
-    first[units] = np.arange(n_rows) if everyone else np.flatnonzero(inside)
+    _, first, unit = np.unique(key, return_index=True, return_inverse=True)
+    unit_of_row = np.full(len(codes), -1, dtype=np.int64)
+    unit_of_row[answered] = unit
+    rows = answered[first]
     return Units(
-        pattern=np.ascontiguousarray(codes[first], dtype=np.int16),
-        group=group_codes[first].astype(np.int32),
-        count=_count(units, counts if everyone else counts[inside], n_units),
-        unit_of_row=unit_of_row,
+        np.ascontiguousarray(codes[rows], dtype=np.int16),
+        group_codes[rows].astype(np.int32),
+        _sums(unit_of_row, counts, first.size),
+        unit_of_row,
     )
 
 
-def _count(units: Ints, counts: Ints, n_units: int) -> Ints:
-    if counts.size and counts.min() == counts.max() == 1:
-        return np.bincount(units, minlength=n_units).astype(np.int64)
-    total = np.zeros(n_units, dtype=np.int64)  # whole numbers throughout: sums stay exact
-    np.add.at(total, units, counts)
-    return total
+def _all_one(counts: Ints) -> bool:
+    return bool(counts.size) and int(counts.min()) == int(counts.max()) == 1
+
+
+def _sums(unit_of_row: Ints, counts: Ints, n_units: int) -> Ints:
+    """Add up the counts of each unit's rows, in whole numbers: sums stay exact."""
+    total = np.zeros(n_units + 1, dtype=np.int64)  # the last entry takes rows without a unit
+    np.add.at(total, unit_of_row, counts)
+    return total[:-1]
