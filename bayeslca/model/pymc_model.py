@@ -207,6 +207,8 @@ def build_from_table(
         coords: dict[str, Any] = {"latent_class": names.latent_class, "response": names.response}
         coords |= {"group": names.group} if names.group else {}
         coords |= {"item": names.item, "case" if by_case else "unit": range(units.n_units)}
+        if table.n_response_groups > 1:
+            coords["response_group"] = range(table.n_response_groups)
         for variable in variables:
             coords.update(variable.coords)
         for dim, labels in coords.items():
