@@ -162,7 +162,7 @@ def relative_efficiency(*quantities: Floats) -> float:
             for values in quantities
         ]
     together = np.concatenate(sizes)
-    return float(together.mean() / (n_chains * n_draws))
+    return float(np.nanmean(together) / (n_chains * n_draws))  # nan: no two draws differ
 
 
 def difference(one: PointwiseElpd, other: PointwiseElpd) -> tuple[float, float]:

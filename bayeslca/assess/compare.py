@@ -1,0 +1,248 @@
+"""Comparing class counts and models: which are fitted, and with which seeds."""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any, TypeAlias
+
+import numpy as np
+
+from bayeslca._typing import Seed
+from bayeslca.assess.comparison import Comparison, comparison_of
+from bayeslca.assess.comparison_words import OWN, Name
+from bayeslca.exceptions import ModelError
+from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.posterior.posterior import Posterior
+from bayeslca.responses.responses import Responses
+
+if TYPE_CHECKING:
+    from bayeslca.sampling.progress import Progress
+
+__all__ = ["Comparison", "FitProgress", "class_count_model", "compare", "compare_class_counts"]
+
+
+@dataclass(frozen=True, slots=True)
+class FitProgress:
+    """How far the fits of a comparison have come.
+
+    Attributes
+    ----------
+    name : int or str
+        The row that is being fitted.
+    fit, fits : int
+        Which fit it is, and of how many.
+    sampling : Progress
+    """
+
+    name: Name
+    fit: int
+    fits: int
+    sampling: Progress
+
+
+Show: TypeAlias = Callable[[FitProgress], None]
+
+
+def class_count_model(
+    responses: Responses, n_classes: int, *, statements: Sequence[str] = (), groups: bool = True
+) -> LatentClassModel:
+    """Return the model of a number of classes that a comparison of class counts fits.
+
+    Parameters
+    ----------
+    responses : Responses
+    n_classes : int
+    statements : sequence of str
+        What is stated of all classes alike, such as ``"P(fees=yes | .) ~ Beta(2, 2)"``.
+    groups : bool
+        Whether groups that the responses have get prevalences of their own.
+    """
+    return LatentClassModel(
+        responses.items,
+        n_classes,
+        statements=tuple(statements),
+        groups=responses.groups if groups else None,
+    )
+
+
+def compare_class_counts(
+    responses: Responses,
+    counts: Iterable[int],
+    *,
+    statements: Sequence[str] = (),
+    groups: bool = True,
+    seed: Seed = None,
+    fitted: Mapping[int, Posterior] | None = None,
+    own: LatentClassModel | Posterior | None = None,
+    progress: bool | Show = True,
+    **sampling: Any,
+) -> Comparison:
+    """Compare models with different numbers of classes, under one prior.
+
+    Parameters
+    ----------
+    responses : Responses
+    counts : iterable of int
+        The numbers of classes, such as ``range(1, 7)``.
+    statements : sequence of str
+        Stated of all classes alike, in every model.
+    groups : bool
+        Whether groups that the responses have get prevalences of their own.
+    seed : int, numpy.random.Generator, numpy.random.SeedSequence or None
+        Each count has a stream of its own, so that its row does not depend on the others.
+    fitted : mapping from int to Posterior, optional
+        Fits that need not be done again.
+    own : LatentClassModel or Posterior, optional
+        The study's own model; it gets the row "this study".
+    progress : bool or callable
+        True shows a bar per fit on a terminal; a callable is given a `FitProgress`.
+    **sampling
+        Options of ``model.sample``: chains, draws, ess, r_hat, max_sweeps, sampler, threads.
+    """
+    wanted = _checked_counts(counts)
+    entries: dict[Name, LatentClassModel | Posterior] = {}
+    for n in wanted:
+        model = class_count_model(responses, n, statements=statements, groups=groups)
+        entries[n] = (fitted or {}).get(n, model)
+    if own is not None:
+        entries[OWN] = own
+    return _compared(entries, responses, "classes", seed, progress, sampling)
+
+
+def compare(
+    models: Mapping[str, LatentClassModel | Posterior],
+    responses: Responses | None = None,
+    *,
+    seed: Seed = None,
+    progress: bool | Show = True,
+    **sampling: Any,
+) -> Comparison:
+    """Compare models of the same answers by how well they predict them.
+
+    Parameters
+    ----------
+    models : mapping from str to LatentClassModel or Posterior
+        Models are sampled on ``responses``; posteriors are taken as they are.
+    responses : Responses, optional
+        Needed when a model is not fitted yet.
+    seed, progress, **sampling
+        As in `compare_class_counts`.
+
+    Raises
+    ------
+    ModelError
+        When nothing is given, or posteriors are of different items, cases or groups.
+    """
+    if not models:
+        msg = "there is nothing to compare. Give a mapping of names to models or posteriors."
+        raise ModelError(msg)
+    for name, entry in models.items():
+        if not isinstance(entry, LatentClassModel | Posterior):
+            msg = (
+                f"{name!r} is {type(entry).__name__}, not a LatentClassModel or a Posterior. "
+                "Give a mapping of names to these."
+            )
+            raise ModelError(msg)
+        if responses is None and isinstance(entry, LatentClassModel):
+            msg = (
+                f"{name!r} is a model that is not fitted yet, and there are no responses to fit "
+                "it to. Give responses=..., or a posterior."
+            )
+            raise ModelError(msg)
+    entries: dict[Name, LatentClassModel | Posterior] = {n: entry for n, entry in models.items()}
+    return _compared(entries, responses, "model", seed, progress, sampling)
+
+
+def _compared(
+    entries: Mapping[Name, LatentClassModel | Posterior],
+    responses: Responses | None,
+    index: str,
+    seed: Seed,
+    progress: bool | Show,
+    sampling: Mapping[str, Any],
+) -> Comparison:
+    given = {name: e.responses for name, e in entries.items() if isinstance(e, Posterior)}
+    _refuse_different_answers(given, responses)
+    return comparison_of(_fitted(entries, responses, seed, progress, sampling), index)
+
+
+def _fitted(
+    entries: Mapping[Name, LatentClassModel | Posterior],
+    responses: Responses | None,
+    seed: Seed,
+    progress: bool | Show,
+    sampling: Mapping[str, Any],
+) -> dict[Name, Posterior]:
+    """Sample what is not fitted yet, each with a seed of its own."""
+    entropy = _entropy(seed)
+    to_fit = [name for name, entry in entries.items() if isinstance(entry, LatentClassModel)]
+    posteriors: dict[Name, Posterior] = {}
+    for name, entry in entries.items():
+        if isinstance(entry, Posterior):
+            posteriors[name] = entry
+            continue
+        assert responses is not None  # refused before
+        show: Any = progress
+        if callable(progress):
+            show = _one_fit(progress, name, to_fit.index(name) + 1, len(to_fit))
+        posteriors[name] = entry.sample(
+            responses, seed=seed_of_row(entropy, name), progress=show, **sampling
+        )
+    return posteriors
+
+
+def seed_of_row(entropy: int | Sequence[int], name: Name) -> int:
+    """Return the seed of one row: it depends on the whole's seed and the row's name alone."""
+    key = name
+    if not isinstance(key, int):
+        key = int.from_bytes(hashlib.sha256(str(name).encode()).digest()[:4], "little") + 2**31
+    child = np.random.SeedSequence(entropy, spawn_key=(key,))
+    return int(child.generate_state(1, np.uint64)[0] >> np.uint64(1))
+
+
+def _entropy(seed: Seed) -> int | Sequence[int]:
+    if isinstance(seed, np.random.Generator):
+        return [int(part) for part in seed.integers(2**63, size=4)]
+    sequence = seed if isinstance(seed, np.random.SeedSequence) else np.random.SeedSequence(seed)
+    return [int(part) for part in sequence.generate_state(4)]
+
+
+def _one_fit(show: Show, name: Name, fit: int, fits: int) -> Callable[[Progress], None]:
+    return lambda sampling: show(FitProgress(name, fit, fits, sampling))
+
+
+def _checked_counts(counts: Iterable[int]) -> list[int]:
+    given = [counts] if isinstance(counts, int) else list(counts)  # one count is a list of one
+    wanted = [n.item() if isinstance(n, np.integer) else n for n in given]
+    wrong = [n for n in wanted if isinstance(n, bool) or not isinstance(n, int) or n < 1]
+    if wrong or not wanted:
+        shown = repr(wrong[0]) if wrong else "no number"
+        msg = f"{shown} given as a number of classes. Give whole numbers from 1, as range(1, 7)."
+        raise ModelError(msg)
+    return sorted(set(wanted))
+
+
+def _refuse_different_answers(given: Mapping[Name, Responses], responses: Responses | None) -> None:
+    """Refuse posteriors of other cases, items or groups than the rest."""
+    known: dict[Name, Responses] = {} if responses is None else {"responses": responses}
+    known.update(given)
+    if len(known) < 2:
+        return
+    (first, reference), *rest = known.items()
+    for name, other in rest:
+        if other.data_hash == reference.data_hash:
+            continue
+        what = "the same items have different answers"
+        if other.items != reference.items:
+            what = "the items differ"
+        elif other.groups != reference.groups:
+            what = "the groups differ"
+        elif other.n_cases != reference.n_cases:
+            what = f"{other.n_cases} cases against {reference.n_cases}"
+        msg = (
+            f"{name!r} cannot be compared with {first!r}: {what}. Accuracy is of the same answers "
+            "of the same cases; fit all models to one set of responses."
+        )
+        raise ModelError(msg)

@@ -1,0 +1,253 @@
+"""A comparison: models by how well they predict the answers of cases."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca._typing import Ints
+from bayeslca.assess.comparison_words import (
+    Name,
+    comparison_html,
+    comparison_text,
+    row_in_words,
+    verdict_in_words,
+)
+from bayeslca.assess.information_criteria import (
+    PointwiseElpd,
+    difference,
+    psis_loo,
+    relative_efficiency,
+    waic,
+)
+from bayeslca.assess.stacking import stacking_weights
+from bayeslca.findings import Finding
+from bayeslca.posterior.posterior import Posterior
+from bayeslca.posterior.tables import OVERALL
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+TIE = 4.0
+"""A smaller difference in elpd is a tie, whatever its standard error (Sivula et al. 2020)."""
+TIE_ERRORS = 2.0
+"""So is one within so many standard errors."""
+FEW_CASES = 100
+"""With fewer the standard error of a difference is known to be too small (same source)."""
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class Comparison:
+    """Models compared by how well they predict the answers of cases.
+
+    Attributes
+    ----------
+    table : DataFrame
+        A row per model, in the order given; the index is the number of classes or the name.
+
+        ========================== ====================================================
+        elpd, elpd_se, elpd_mcse   leave-one-out accuracy, its error over cases, and its
+                                   Monte Carlo error
+        p_loo                      effective number of parameters
+        elpd_diff, elpd_diff_se    difference from the best (0 or less) and its error
+        tied                       True within 4, or within two errors, of the best
+        weight                     stacking weight; they sum to 1
+        pareto_k_high              cases whose leave-one-out figure is not reliable
+        waic, waic_se, p_waic      the widely applicable criterion, on the elpd scale
+        smallest_class             median prevalence of the smallest class
+        smallest_lower, _upper     its 95 % interval
+        smallest_cases             the median times the number of cases
+        separation                 relative entropy (median); nan with one class
+        trustworthy                whether the sampling is to be trusted
+        ========================== ====================================================
+    posteriors : dict
+        Each row's posterior.
+    loo, waic : dict of PointwiseElpd
+        Each row's accuracy by unit of the responses.
+    verdict : str
+        What the comparison says, in words. Never a choice: a tie is called a tie.
+    findings : tuple of Finding
+    best : int or str
+        The row with the highest ``elpd``.
+    """
+
+    table: pd.DataFrame
+    posteriors: dict[Name, Posterior]
+    loo: dict[Name, PointwiseElpd]
+    waic: dict[Name, PointwiseElpd]
+    verdict: str
+    findings: tuple[Finding, ...]
+    best: Name
+
+    @property
+    def tied(self) -> tuple[Name, ...]:
+        """The rows that the answers do not tell from the best, itself among them."""
+        return tuple(self.table.index[self.table["tied"]])
+
+    def __repr__(self) -> str:
+        return comparison_text(self.table, self.verdict, [f.message for f in self.findings])
+
+    def _repr_html_(self) -> str:
+        return comparison_html(self.table, self.verdict, [f.message for f in self.findings])
+
+
+def comparison_of(posteriors: dict[Name, Posterior], index: str) -> Comparison:
+    """Compare fitted models of the same answers.
+
+    Parameters
+    ----------
+    posteriors : dict from int or str to Posterior
+    index : str
+        What the rows' names are: "classes" or "model".
+    """
+    loo, widely = {}, {}
+    for name, posterior in posteriors.items():
+        loo[name], widely[name] = _criteria(posterior)
+    best = max(loo, key=lambda name: loo[name].elpd)
+    table = _table(posteriors, loo, widely, best, index)
+    return Comparison(
+        table=table,
+        posteriors=posteriors,
+        loo=loo,
+        waic=widely,
+        verdict=verdict_in_words(table, best),
+        findings=_findings(table, loo[best].n_cases),
+        best=best,
+    )
+
+
+def _criteria(posterior: Posterior) -> tuple[PointwiseElpd, PointwiseElpd]:
+    """Return leave-one-out and WAIC by unit of the responses (groups told apart)."""
+    values, counts = posterior.log_likelihood_draws, posterior.unit_table.count
+    efficiency = relative_efficiency(
+        posterior.prevalence_draws, posterior.response_probability_draws
+    )
+    of_unit = _model_unit(posterior)
+    fine = posterior.responses.units.count
+    loo = psis_loo(values, counts, relative_efficiency=efficiency)
+    return _by_fine_unit(loo, of_unit, fine), _by_fine_unit(waic(values, counts), of_unit, fine)
+
+
+def _model_unit(posterior: Posterior) -> Ints:
+    """Return, for each unit of the responses, the unit that the model sees.
+
+    A model without groups pools those of all groups.
+    """
+    fine, seen = posterior.responses.units, posterior.units
+    inside = np.flatnonzero(fine.unit_of_row >= 0)
+    units, first = np.unique(fine.unit_of_row[inside], return_index=True)
+    of_unit = np.empty(fine.n_units, dtype=np.int64)
+    of_unit[units] = seen.unit_of_row[inside[first]]
+    return of_unit
+
+
+def _by_fine_unit(one: PointwiseElpd, of_unit: Ints, counts: Ints) -> PointwiseElpd:
+    k = one.pareto_k
+    return replace(
+        one,
+        pointwise=one.pointwise[of_unit],
+        p_pointwise=one.p_pointwise[of_unit],
+        counts=counts,
+        pareto_k=None if k is None else k[of_unit],
+    )
+
+
+def _table(
+    posteriors: Mapping[Name, Posterior],
+    loo: Mapping[Name, PointwiseElpd],
+    widely: Mapping[Name, PointwiseElpd],
+    best: Name,
+    index: str,
+) -> pd.DataFrame:
+    import pandas as pd
+
+    pointwise = np.stack([one.pointwise for one in loo.values()])
+    weights = stacking_weights(pointwise, loo[best].counts)
+    rows = []
+    for (name, posterior), weight in zip(posteriors.items(), weights, strict=True):
+        gap, error = difference(loo[name], loo[best])
+        tied = name == best or abs(gap) < TIE or abs(gap) <= TIE_ERRORS * error
+        rows.append(
+            {
+                "elpd": loo[name].elpd,
+                "elpd_se": loo[name].se,
+                "elpd_mcse": loo[name].mcse,
+                "p_loo": loo[name].p,
+                "elpd_diff": gap,
+                "elpd_diff_se": 0.0 if name == best else error,
+                "tied": tied,
+                "weight": float(weight),
+                "pareto_k_high": loo[name].n_unreliable,
+                "waic": widely[name].elpd,
+                "waic_se": widely[name].se,
+                "p_waic": widely[name].p,
+                **_smallest_class(posterior),
+                "separation": float(posterior.separation()["median"].iloc[0]),
+                "trustworthy": posterior.diagnostics().trustworthy,
+            }
+        )
+    names = pd.Index(list(posteriors), name=index)
+    return pd.DataFrame(rows, index=names)
+
+
+def _smallest_class(posterior: Posterior) -> dict[str, float]:
+    frame = posterior.prevalence()
+    if "group" in frame:
+        frame = frame[frame["group"] == OVERALL]
+    row = frame.iloc[int(np.argmin(frame["median"]))]
+    return {
+        "smallest_class": float(row["median"]),
+        "smallest_lower": float(row["lower"]),
+        "smallest_upper": float(row["upper"]),
+        "smallest_cases": float(row["median"]) * float(posterior.group_cases.sum()),
+    }
+
+
+def _findings(table: pd.DataFrame, n_cases: int) -> tuple[Finding, ...]:
+    found = []
+    untrusted = [name for name in table.index if not table.loc[name, "trustworthy"]]
+    if untrusted:
+        listed = ", ".join(row_in_words(name) for name in untrusted)
+        decides = any(bool(table.loc[name, "tied"]) for name in untrusted)
+        found.append(
+            Finding(
+                kind="row_not_trusted",
+                level="problem" if decides else "warning",
+                message=f"The sampling of {listed} is not to be trusted, so that row may change.",
+                remedy="See posteriors[...].diagnostics() of that row; sample longer.",
+                about=tuple(str(name) for name in untrusted),
+            )
+        )
+    unreliable = {n: int(k) for n, k in zip(table.index, table["pareto_k_high"], strict=True) if k}
+    if unreliable:
+        listed = ", ".join(f"{n} of {row_in_words(name)}" for name, n in unreliable.items())
+        found.append(
+            Finding(
+                kind="pareto_k_high",
+                level="warning",
+                message=(
+                    f"The leave-one-out figures of some cases are not reliable: {listed} "
+                    "(Pareto k too high)."
+                ),
+                remedy="Take differences of the size of those cases' figures as not known.",
+                about=tuple(str(name) for name in unreliable),
+                value=float(max(unreliable.values())),
+            )
+        )
+    if n_cases < FEW_CASES and len(table) > 1:
+        found.append(
+            Finding(
+                kind="few_cases_for_standard_errors",
+                level="warning",
+                message=(
+                    f"With {n_cases} cases the standard errors of differences are known to be "
+                    "too small (Sivula et al. 2020)."
+                ),
+                remedy="Read every difference as less sure than it looks.",
+                value=float(n_cases),
+            )
+        )
+    return tuple(found)
