@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -51,10 +51,27 @@ class Roles:
     no_answer: Sequence[Any] = ()
     merge: Mapping[str, Sequence[Any]] = field(default_factory=dict)
 
+    def __post_init__(self) -> None:
+        for key, values in (("items", self.items), ("no_answer", self.no_answer)):
+            _refuse_single(key, values)
+        for key, mapping in (("keep_only", self.keep_only), ("merge", self.merge)):
+            if not isinstance(mapping, Mapping):
+                msg = f"{key}={mapping!r} is no mapping; write {{name: [values]}}."
+                raise ResponsesError(msg)
+        for kept, spellings in self.merge.items():
+            _refuse_single(f"merge, {kept!r}", spellings)
+
     @property
     def group_name(self) -> str | None:
         """Name of the group column."""
         return self.group.name if isinstance(self.group, Groups) else self.group
+
+
+def _refuse_single(key: str, values: object) -> None:
+    """Refuse one value where a list of values belongs."""
+    if isinstance(values, (str, bytes)) or not isinstance(values, Collection):
+        msg = f"{key}={values!r} is not a list of values; write [{values!r}]."
+        raise ResponsesError(msg)
 
 
 def refuse_not_yet(given: Mapping[str, object]) -> None:
@@ -190,7 +207,7 @@ def _kept_rows(table: RawTable, roles: Roles, problems: Problems, findings: list
     n_before = len(problems.messages)
     kept = np.ones(table.n_rows, dtype=np.bool_)
     for name, wanted in roles.keep_only.items():
-        if isinstance(wanted, (str, bytes)) or not isinstance(wanted, Sequence):
+        if isinstance(wanted, (str, bytes)) or not isinstance(wanted, Collection):
             wanted = [wanted]
         column = table.column(name)
         kept &= _holds(column, wanted, problems)
@@ -212,7 +229,7 @@ def _kept_rows(table: RawTable, roles: Roles, problems: Problems, findings: list
     return rows
 
 
-def _holds(column: RawColumn, wanted: Sequence[Any], problems: Problems) -> Any:
+def _holds(column: RawColumn, wanted: Collection[Any], problems: Problems) -> Any:
     names = {value: column.labels.get(value, value) for value in column.values}
     chosen = np.zeros(len(column.values) + 1, dtype=np.bool_)
     for value in wanted:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -107,6 +107,9 @@ class ItemSpec:
     fitted: bool = False
 
     def __post_init__(self) -> None:
+        if not isinstance(self.name, str) or not self.name:
+            msg = f"an item's name is {self.name!r}; give the name of its column as text."
+            raise ResponsesError(msg)
         if self.fitted and self.categories is None:
             msg = f"item '{self.name}': fitted=True needs the fitted model's categories. Give them."
             raise ResponsesError(msg)
@@ -115,18 +118,21 @@ class ItemSpec:
             object.__setattr__(self, "categories", self._texts("categories", self.categories))
         object.__setattr__(self, "yes", None if self.yes is None else as_text(self.yes))
         object.__setattr__(self, "no_answer", self._texts("no_answer", self.no_answer))
+        if not isinstance(self.merge, Mapping):
+            msg = (
+                f"item '{self.name}': merge={self.merge!r} is no mapping; write "
+                "{answer: [spellings]}."
+            )
+            raise ResponsesError(msg)
         merge = {
             str(as_text(kept)): self._texts("merge", spellings)
-            for kept, spellings in dict(self.merge).items()
+            for kept, spellings in self.merge.items()
         }
         object.__setattr__(self, "merge", merge)
 
     def _texts(self, key: str, values: Sequence[Any]) -> tuple[str, ...]:
-        if isinstance(values, (str, bytes)):
-            msg = (
-                f"item '{self.name}': {key} is the single text {values!r}; give a list of values, "
-                f"such as [{values!r}]."
-            )
+        if isinstance(values, (str, bytes)) or not isinstance(values, Collection):
+            msg = f"item '{self.name}': {key}={values!r} is not a list; write [{values!r}]."
             raise ResponsesError(msg)
         return tuple("" if (text := as_text(value)) is None else text for value in values)
 

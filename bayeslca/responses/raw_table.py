@@ -150,6 +150,8 @@ class RawTable:
             return f"there is no column {name!r}{near}."
         shown = ", ".join(repr(other) for other in self.column_names[:12])
         more = ", ..." if len(self.column_names) > 12 else ""
+        if len(self.column_names) == 1 and set(self.column_names[0]) & set(",;\t|"):
+            shown += " (one column: is the separator right?)"
         return f"there is no column {name!r}. The columns are {shown}{more}."
 
     def place(self, rows: Sequence[int] | Ints) -> str:

@@ -55,6 +55,9 @@ def read_table(
     ResponsesError
         When the file is missing, of an unknown type, damaged, empty or ragged.
     """
+    if not isinstance(path, (str, Path)):
+        msg = f"{path!r} is no path of a file. Give it as text."
+        raise ResponsesError(msg)
     path = Path(path)
     ending = path.suffix.lower()
     _check_path(path, ending)
@@ -139,9 +142,14 @@ def _check_keys(
     if wrong:
         msg = f"{path.name}: {', '.join(wrong)} does not apply to a {ending} file. Take it out."
         raise ResponsesError(msg)
+    if encoding is not None and not isinstance(encoding, str):
+        msg = f"{path.name}: encoding is {encoding!r}; give its name, such as 'cp1252'."
+        raise ResponsesError(msg)
     if isinstance(header_row, bool) or not isinstance(header_row, int) or header_row < 1:
         msg = f"{path.name}: header_row is {header_row!r}; rows are counted from 1. Give 1 or more."
         raise ResponsesError(msg)
-    if separator is not None and len(separator) != 1:
+    if separator is not None and (
+        not isinstance(separator, str) or len(separator) != 1 or separator in '"\r\n'
+    ):
         msg = f"{path.name}: separator is {separator!r}; it is one character, such as ';'."
         raise ResponsesError(msg)

@@ -200,14 +200,7 @@ class Responses:
         no_answer: Sequence[Any],
         merge: Mapping[str, Sequence[Any]],
     ) -> Responses:
-        if isinstance(items, (str, ItemSpec, Item)):
-            msg = f"items={items!r} is one item; give a list of the item columns."
-            raise ResponsesError(msg)
-        for key, values in (("no_answer", no_answer), *merge.items()):
-            if isinstance(values, str):
-                msg = f"{key}={values!r} is one text; give a list of values, [{values!r}]."
-                raise ResponsesError(msg)
-        if not items:
+        if items is None or (isinstance(items, Sequence) and len(items) == 0):
             from bayeslca.responses.columns import columns_like_items
 
             others = {case, counts, group.name if isinstance(group, Groups) else group}
@@ -215,7 +208,7 @@ class Responses:
             hint = f"These columns look like items: {likely}." if likely else "No column looks so."
             msg = f"{table.title}: items is not given; say which columns are items. {hint}"
             raise ResponsesError(msg)
-        roles = Roles(tuple(items), case, group, counts, keep_only, no_answer, merge)
+        roles = Roles(items, case, group, counts, keep_only, no_answer, merge)
         return cls(**assemble(table, roles))
 
     @property

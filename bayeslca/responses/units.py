@@ -95,10 +95,11 @@ def _by_counters(
     unit_of_key[found] = np.arange(found.size)
     unit_of_row = unit_of_key[key]
     pattern = np.empty((found.size, len(n_categories)), dtype=np.int16)
-    rest = found
+    rest: Ints = found
     for j in reversed(range(len(n_categories))):
         rest, digit = np.divmod(rest, n_categories[j] + 1)
         pattern[:, j] = digit - 1
+    count: Ints
     if _all_one(counts):
         count = n_rows[found].astype(np.int64)
     else:

@@ -27,7 +27,7 @@ FRAMES: dict[str, tuple[Callable[[], Any], dict[str, Any], list[str]]] = {
         {},
         ["items is not given", "look like items: ['fees', 'meets']"],
     ),
-    "items a text": (_frame, {"items": "fees"}, ["items='fees'", "give a list"]),
+    "items a text": (_frame, {"items": "fees"}, ["items='fees' is not a list", "write ['fees']"]),
     "items a number": (_frame, {"items": [3]}, ["items holds 3", "name columns"]),
     "unknown column": (
         _frame,
@@ -148,8 +148,26 @@ FRAMES: dict[str, tuple[Callable[[], Any], dict[str, Any], list[str]]] = {
     "no_answer a text": (
         _frame,
         {"items": ["fees"], "no_answer": "NA"},
-        ["no_answer='NA'", "list of values"],
+        ["no_answer='NA' is not a list", "write ['NA']"],
     ),
+    "items one number": (_frame, {"items": 5}, ["items=5 is not a list"]),
+    "no_answer a number": (
+        _frame,
+        {"items": ["fees"], "no_answer": 99},
+        ["no_answer=99 is not a list", "write [99]"],
+    ),
+    "merge a list": (_frame, {"items": ["fees"], "merge": ["x"]}, ["merge=['x'] is no mapping"]),
+    "merge into a number": (
+        _frame,
+        {"items": ["fees"], "merge": {"yes": 1}},
+        ["merge, 'yes'=1 is not a list"],
+    ),
+    "keep_only a list": (
+        _frame,
+        {"items": ["fees"], "keep_only": ["x"]},
+        ["keep_only=['x'] is no mapping"],
+    ),
+    "case a number": (_frame, {"items": ["fees"], "case": 3}, ["case=3 is no column name"]),
     "missing id": (
         lambda: _frame(committee=["a", None, "c", "d", "e", "f"]),
         {"items": ["fees"], "case": "committee"},
@@ -314,6 +332,16 @@ FILES: dict[str, tuple[str, bytes, dict[str, Any], list[str]]] = {
         ["a.csv", "'fees' in columns 1, 3"],
     ),
     "separator too long": ("a.csv", b"fees\nyes\n", {"separator": "::"}, ["one character"]),
+    "separator a quote": ("a.csv", b"fees\nyes\n", {"separator": '"'}, ["one character"]),
+    "separator a number": ("a.csv", b"fees\nyes\n", {"separator": 3}, ["separator is 3"]),
+    "encoding a number": ("a.csv", b"fees\nyes\n", {"encoding": 3}, ["encoding is 3"]),
+    "encoding of another kind": ("a.csv", b"fees\n", {"encoding": "rot13"}, ["encoding 'rot13'"]),
+    "another separator": (
+        "a.csv",
+        b"fees|meets\nyes|no\n",
+        {},
+        ["no column 'fees'", "'fees|meets' (one column: is the separator right?)"],
+    ),
     "sheet of a text file": ("a.csv", b"fees\nyes\n", {"sheet": "x"}, ["sheet does not apply"]),
     "workbook named csv": ("a.csv", b"PK\x03\x04rest", {}, ["is not a text file", ".xlsx"]),
     "not a workbook": ("a.xlsx", b"fees\nyes\n", {}, ["a.xlsx", "not an Excel workbook"]),
@@ -390,3 +418,20 @@ def test_two_codes_with_one_label(tmp_path: Path) -> None:
         Responses.read(tmp_path / "a.sav", items=["fees"])
     settled = Responses.read(tmp_path / "a.sav", items=["fees"], merge={"yes": ["2", "3"]})
     assert settled.codes[:, 0].tolist() == [0, 1, 1, 0]
+
+
+@pytest.mark.parametrize(
+    ("arguments", "part"),
+    [
+        ({"name": "fees", "categories": "yes"}, r"categories='yes' is not a list"),
+        ({"name": "fees", "categories": 5}, r"categories=5 is not a list"),
+        ({"name": "fees", "merge": ["x"]}, r"merge=\['x'\] is no mapping"),
+        ({"name": "fees", "merge": {"yes": "Y"}}, r"merge='Y' is not a list"),
+        ({"name": "fees", "no_answer": 9}, r"no_answer=9 is not a list"),
+        ({"name": "fees", "fitted": True}, r"needs the fitted model's categories"),
+        ({"name": 3}, r"an item's name is 3"),
+    ],
+)
+def test_malformed_spec(arguments: dict[str, Any], part: str) -> None:
+    with pytest.raises(ResponsesError, match=part):
+        ItemSpec(**arguments)
