@@ -23,7 +23,7 @@ from bayeslca.report.palette import (
 )
 from bayeslca.report.placement import placement
 from bayeslca.report.sampling_plots import plot_ranks, plot_traces
-from bayeslca.report.wording import called, level
+from bayeslca.report.wording import called, decimal, level
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -164,18 +164,20 @@ def plot_class_counts(
     """
     table = comparison.table
     ax = ax if ax is not None else new_axes(7.0, 1.3 + 0.34 * len(table))
+    furthest = -_far_behind(table)
     for at, (name, row) in enumerate(table.iterrows()):
-        tied = bool(row["tied"])
+        if row["elpd_diff"] < furthest:
+            ax.plot(furthest, at, "<", markersize=7, color=INK, markerfacecolor="white")
+            _beside(ax, f"{decimal(-row['elpd_diff'])} behind", (furthest, at), (8, -3))
+            continue
         ax.errorbar(
             row["elpd_diff"], at, xerr=2 * row["elpd_diff_se"],
             fmt="s" if name == study_row else "o", markersize=7, color=INK,
-            markerfacecolor=class_colour(0) if tied else "white", capsize=3,
+            markerfacecolor=class_colour(0) if bool(row["tied"]) else "white", capsize=3,
         )  # fmt: skip
         if not bool(row["trustworthy"]):
-            ax.annotate(
-                "not to be trusted", (row["elpd_diff"], at), xytext=(0, 7),
-                textcoords="offset points", fontsize=8, ha="center",
-            )  # fmt: skip
+            _beside(ax, "not to be trusted", (row["elpd_diff"], at), (-40, 7))
+    ax.set_xlim(left=furthest * 1.05)
     ax.axvline(0, color=INK, linewidth=0.8, linestyle=":")
     ax.set_yticks(range(len(table)), [plain(row_name(name), LABEL_WIDTH) for name in table.index])
     ax.set_ylim(len(table) - 0.5, -0.5)
@@ -190,6 +192,17 @@ def row_name(name: object) -> str:
     if text.isdigit():
         return f"{text} class" if text == "1" else f"{text} classes"
     return "the study's own model" if name == OWN else text
+
+
+def _far_behind(table: pd.DataFrame) -> float:
+    """Return how far behind a model may be shown to scale: others get an arrow and a number."""
+    reach = table["elpd_diff"].abs() + 2 * table["elpd_diff_se"]
+    far = 4 * max(4.0, float(reach[table["tied"].astype(bool)].max()))
+    return min(far, float(reach.max()))
+
+
+def _beside(ax: Axes, text: str, point: tuple[float, float], offset: tuple[int, int]) -> None:
+    ax.annotate(text, point, xytext=offset, textcoords="offset points", fontsize=8.5)
 
 
 def plot_membership(posterior: Posterior, *, ax: Axes | None = None) -> Axes:

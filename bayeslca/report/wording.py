@@ -46,7 +46,7 @@ def percent_value(share: float) -> str:
         return "below 0.1"
     if 99.95 < value < 100:
         return "above 99.9"
-    if 0 < value < 0.995 or 99.005 < value < 100:
+    if 0 < value < 0.95 or 99.05 < value < 100:
         return f"{value:.1f}"
     return f"{value:.0f}"
 

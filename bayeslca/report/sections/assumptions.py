@@ -42,7 +42,10 @@ def assumptions_section(facts: Facts) -> Section:
     ]
     noticed = _noticed(facts)
     if noticed:
-        blocks += [Subheading("What was noticed and decided on reading"), Bullets(noticed)]
+        blocks += [
+            Subheading("What was decided on reading, and noticed before sampling"),
+            Bullets(noticed),
+        ]
     return Section(ANCHOR, HEADING, tuple(blocks))
 
 

@@ -97,6 +97,7 @@ def _sampling(facts: Facts) -> str:
         )
     table = diagnostics.table
     if {"r_hat", "ess_bulk", "ess_tail"} <= set(table.columns):
+        table = table[table["note"] == ""]  # constants and empty classes do not count
         worst = table["r_hat"].max()
         fewest = min(table["ess_bulk"].min(), table["ess_tail"].min())
         text += (

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
+from typing import Any
 
 from bayeslca.report.blocks import Block, Bullets, Head, PageTable, Paragraph, Picture, Section
 from bayeslca.report.facts import Facts
@@ -107,18 +109,9 @@ def _figure(facts: Facts) -> Figure:
 def _table(facts: Facts) -> PageTable:
     frame = facts.diagnostics.table
     numbers = [name for name in ("r_hat", "ess_bulk", "ess_tail", "mcse") if name in frame]
-    flat = frame.reset_index() if frame.index.name is not None else frame
-    keys = [
-        str(name)
-        for name in flat.columns
-        if name not in numbers and flat[name].map(lambda value: isinstance(value, str)).all()
-    ]
     rows = tuple(
-        (
-            ", ".join(str(row[key]) for key in keys if row[key]),
-            *(_number(name, float(row[name])) for name in numbers),
-        )
-        for row in flat.to_dict("records")
+        (_quantity(row), *(_number(name, float(row[name])) for name in numbers))
+        for row in frame.to_dict("records")
     )
     glosses = {
         "r_hat": Head("R-hat", "1 when chains agree; above 1.01 they do not"),
@@ -131,6 +124,14 @@ def _table(facts: Facts) -> PageTable:
         *(glosses[name] for name in numbers),
     )
     return PageTable("The sampling in numbers", heads, rows, folded=len(rows) > 10)
+
+
+def _quantity(row: Mapping[Any, Any]) -> str:
+    """Return what a row is about: ``response probability: managed, fees, yes (constant)``."""
+    keys = [row.get(key, "") for key in ("group", "latent_class", "item", "category")]
+    where = ", ".join(str(key) for key in keys if key)
+    note = row.get("note", "")
+    return f"{row['quantity']}{': ' if where else ''}{where}{f' ({note})' if note else ''}"
 
 
 def _number(name: str, value: float) -> str:

@@ -27,8 +27,8 @@ CHAINS, DRAWS = 4, 100
 def told_of_sampling(posterior: Posterior, **told: Any) -> Posterior:
     """Give a posterior a made-up verdict in place of the one that its draws would get."""
     rows = [
-        {"quantity": f"prevalence of {name}", "mcse": 0.001, "ess_bulk": 1200.0,
-         "ess_tail": 1100.0, "r_hat": 1.001}
+        {"quantity": "prevalence", "latent_class": name, "note": "", "mcse": 0.001,
+         "ess_bulk": 1200.0, "ess_tail": 1100.0, "r_hat": 1.001}
         for name in posterior.model.class_names
     ]  # fmt: skip
     verdict = "The chains agree (largest R-hat 1.003, smallest effective sample size 1,100)."

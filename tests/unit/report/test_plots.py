@@ -78,6 +78,14 @@ def test_membership_counts_every_case_once(small: Any) -> None:
     assert sum(counts) == small.responses.n_cases
 
 
+def test_a_model_far_behind_is_an_arrow_with_its_number(made: Any) -> None:
+    comparison = made.comparison()
+    comparison.table.loc[1, ["elpd_diff", "elpd_diff_se", "tied"]] = [-122.7, 15.6, False]
+    ax = plots.plot_class_counts(comparison, ax=axes())
+    assert [note.get_text() for note in ax.texts] == ["122.7 behind"]
+    assert ax.get_xlim()[0] > -60
+
+
 def test_ranks_of_chains_that_differ_leave_the_band(made: Any) -> None:
     posterior = made.posterior(made.items(3), 2)
     posterior.draws.log_likelihood[0] -= 1000  # the first chain is always the lowest
