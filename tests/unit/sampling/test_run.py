@@ -45,7 +45,7 @@ def problem(n_classes: int = 2, n_cases: int = 80, groups: int = 2):
 
 def test_a_seed_gives_the_same_draws_whatever_the_threads():
     runs = [
-        sample_table(*problem(), seed=7, threads=threads, draws=300, ess=400)
+        sample_table(*problem(), seed=7, threads=threads, draws=300, ess=400, r_hat=1.05)
         for threads in (1, 2, 4)
     ]
     for other in runs[1:]:
@@ -53,19 +53,19 @@ def test_a_seed_gives_the_same_draws_whatever_the_threads():
             assert np.array_equal(getattr(runs[0], name), getattr(other, name))
         assert other.sweeps == runs[0].sweeps
         assert np.array_equal(other.starts.kept, runs[0].starts.kept)
-    another = sample_table(*problem(), seed=8, threads=2, draws=300, ess=400)
+    another = sample_table(*problem(), seed=8, threads=2, draws=300, ess=400, r_hat=1.05)
     assert not np.array_equal(another.elements, runs[0].elements)
 
 
 def test_chains_differ_from_one_another():
-    draws = sample_table(*problem(), seed=7, draws=100, ess=50)
+    draws = sample_table(*problem(), seed=7, draws=100, ess=50, r_hat=1.1)
     last = draws.log_likelihood[:, -1]
     assert np.unique(last).size == draws.n_chains
 
 
 def test_log_likelihood_and_prior_belong_to_their_draws():
     table, units, source, labels = problem()
-    draws = sample_table(table, units, source, labels, seed=7, draws=60, ess=50)
+    draws = sample_table(table, units, source, labels, seed=7, draws=60, ess=50, r_hat=1.1)
     each = log_unit_likelihood(table, units, draws.elements, draws.prevalence)
     assert draws.log_likelihood == pytest.approx(each @ units.count, rel=1e-10)
     expected = log_prior(table, source, draws.elements, draws.prevalence)
@@ -151,7 +151,7 @@ def test_a_generator_and_a_sequence_serve_as_seeds():
     assert np.array_equal(first, seed_sequence(np.random.default_rng(1)).generate_state(2))
     sequence = np.random.SeedSequence(5)
     assert seed_sequence(sequence).entropy == 5
-    draws = sample_table(*problem(), seed=np.random.default_rng(1), draws=50, ess=20)
+    draws = sample_table(*problem(), seed=np.random.default_rng(1), draws=50, ess=20, r_hat=1.1)
     assert draws.seed is None
 
 
@@ -204,7 +204,10 @@ def test_answers_that_no_class_allows_are_refused_by_name():
     allowed = compile_units(
         table, Units(pattern[[0, 2]], units.group[:2], units.count[:2], np.arange(2)), verified[:2]
     )
-    assert sample_table(table, allowed, source, None, seed=1, draws=50, ess=20).n_draws == 50
+    assert (
+        sample_table(table, allowed, source, None, seed=1, draws=50, ess=20, r_hat=1.1).n_draws
+        == 50
+    )
 
 
 def test_what_has_no_exact_step_is_refused():
