@@ -70,11 +70,10 @@ def diagnostics_table(posterior: Posterior, state: ClassState) -> pd.DataFrame:
     parts.append(posterior.response_probabilities().assign(quantity="response probability"))
     for part in parts:
         part.attrs.clear()  # pandas compares the attributes of what it joins
-    frame = pd.concat(parts, ignore_index=True).reindex(columns=[*KEYS, *NUMBERS])
-    frame["note"] = _notes(frame, posterior.model.class_names, state)
-    keys = list(KEYS)
-    frame[keys] = frame[keys].fillna("").astype(str)
-    return frame
+        for key in set(KEYS) - set(part.columns):
+            part[key] = ""
+        part["note"] = _notes(part, posterior.model.class_names, state)
+    return pd.concat(parts, ignore_index=True)[[*KEYS, *NUMBERS]]
 
 
 def worst_of(table: pd.DataFrame) -> Worst:
@@ -126,8 +125,9 @@ def _notes(frame: pd.DataFrame, class_names: tuple[str, ...], state: ClassState)
     empty = {class_names[k] for k in state.empty}
     twins = {class_names[k] for pair in state.twins for k in pair}
     notes = []
-    for name, sd in zip(frame["latent_class"], frame["sd"], strict=True):
-        if not sd > 0.0:
+    rows = zip(frame["latent_class"], frame["lower"], frame["upper"], strict=True)
+    for name, lower, upper in rows:
+        if lower == upper:  # rounding leaves a constant a tiny sd, but its quantiles are exact
             notes.append(CONSTANT)
         else:
             notes.append(EMPTY if name in empty else TWIN if name in twins else "")
