@@ -172,7 +172,8 @@ def _few_values(
         return "group", f"{n} values in a column named like a grouping of cases"
     if column.labels:
         return "item", f"{n} answers with labels"
-    return "item", f"{n} different answers"
+    spelled = f" (of {n_values} different values)" if n < n_values else ""
+    return "item", f"{n} different answers{spelled}"
 
 
 def _wordy(names: tuple[str, ...]) -> bool:

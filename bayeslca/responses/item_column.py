@@ -191,8 +191,9 @@ class ItemColumn:
         if len(counts) == 1:
             only, n = next(iter(counts.items()))
             self._problem(
-                f"has one category, {only!r} ({n:,} case{'s' * (n != 1)}), so it cannot tell cases apart. Take it "
-                "off the items, or give all its possible answers as categories."
+                f"has one category, {only!r} ({n:,} case{'s' * (n != 1)}), so it cannot "
+                "tell cases apart. Take it off the items, or give all its possible answers as "
+                "categories."
             )
             return None
         if self.column.type != "text" or all(map(_is_number, counts)):

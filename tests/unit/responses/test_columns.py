@@ -76,6 +76,7 @@ def test_proposals(reports: dict[str, ColumnReport]) -> None:
     fees = reports["fees"]
     assert fees.merge == {"yes": ("Yes", "Y"), "no": ("No ",)}
     assert fees.no_answer == ("don't know",)
+    assert fees.reason == "2 different answers (of 6 different values)"
     assert (fees.categories, fees.yes, fees.order_rule) == (("no", "yes"), "yes", "known pair")
     assert fees.n_missing + sum(fees.values.values()) == 118
     assert reports["meets"].no_answer == ("99",)
