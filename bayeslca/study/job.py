@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import shutil
+import textwrap
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -15,7 +16,7 @@ import bayeslca
 from bayeslca.report.content import ReportContent
 from bayeslca.study.changes import changes_since
 from bayeslca.study.load import Study, load_study
-from bayeslca.study.results import RECORD, Results, previous_results, written_aside
+from bayeslca.study.results import RECORD, previous_results, written_aside
 from bayeslca.study.steps import OWN_FIT, Steps, count_fit, step_key
 
 if TYPE_CHECKING:
@@ -262,9 +263,4 @@ def _outcome(
 
 
 def _wrapped(line: str) -> str:
-    import textwrap
-
     return textwrap.fill(line, width=79, break_long_words=False, break_on_hyphens=False)
-
-
-_ = Results

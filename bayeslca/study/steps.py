@@ -5,8 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass, field
-from pathlib import Path
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 import bayeslca
@@ -33,13 +32,16 @@ def step_key(
     """Digest of all that a fit rests on: data, model, sampling, seed and version."""
     content = {
         "data": responses.data_hash,
-        "cases": responses.row_names_hash,
+        "cases": _digest("\0".join(responses.row_names)),
         "model": model.to_dict(),
         "sampling": dict(sampling),
         "seed": seed,
         "version": bayeslca.__version__,
     }
-    text = json.dumps(content, sort_keys=True, default=str)
+    return _digest(json.dumps(content, sort_keys=True, default=str))
+
+
+def _digest(text: str) -> str:
     return hashlib.sha256(text.encode()).hexdigest()
 
 
@@ -73,6 +75,3 @@ class Steps:
             return None  # damaged since: fitted again
         self.kept.append(file)
         return posterior
-
-
-_ = (asdict, Path)
