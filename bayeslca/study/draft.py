@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import os
 import textwrap
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from pathlib import Path
 
 from bayeslca.exceptions import StudyError
@@ -62,7 +62,7 @@ def write_draft(
 
 
 def _study_text(
-    path: Path, file: str, reports: Sequence[ColumnReport], reading: dict[str, object]
+    path: Path, file: str, reports: Sequence[ColumnReport], reading: Mapping[str, object]
 ) -> str:
     lines = [
         f"# A first study file for {path.name}, to be edited: lines that begin with # do nothing.",
@@ -101,7 +101,7 @@ _OPEN_MODEL = (
 )
 
 
-def _answers(file: str, reports: Sequence[ColumnReport], reading: dict[str, object]) -> list[str]:
+def _answers(file: str, reports: Sequence[ColumnReport], reading: Mapping[str, object]) -> list[str]:
     lines = ["[answers]", f"file = {_quoted(file)}"]
     lines += [f"{key} = {_value(value)}" for key, value in reading.items() if value is not None]
     lines += _role("case", [r for r in reports if r.kind == "id"], active=True)
