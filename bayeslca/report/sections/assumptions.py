@@ -77,9 +77,8 @@ def answers_in_words(facts: Facts) -> str:
     n_answers = facts.n_cases * len(responses.items)
     if facts.n_missing:
         text = (
-            f"Of {counted(n_answers, 'answer')} of {counted(facts.n_cases, 'case')}, "
-            f"{counted(facts.n_missing, 'answer')} "
-            f"({percent(facts.n_missing / n_answers)}) "
+            f"Of {whole(n_answers)} possible answers of {counted(facts.n_cases, 'case')}, "
+            f"{whole(facts.n_missing)} ({percent(facts.n_missing / n_answers)}) "
             f"{'is' if facts.n_missing == 1 else 'are'} missing. Every case counts with the "
             "answers it gave: whether an answer is missing may depend on the answers that are "
             "there, but not on the missing one itself (missing at random)."

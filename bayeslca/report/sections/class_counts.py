@@ -33,8 +33,8 @@ def class_counts_section(facts: Facts) -> Section:
         size=(7.0, 1.2 + 0.34 * len(table)),
         caption=(
             "How far each model predicts behind the best, with two standard errors of the "
-            "difference. Filled: tied with the best. Square: the model the answer rests on. An arrow "
-            "stands for a model too far behind to be shown to scale."
+            "difference. Filled: tied with the best. Square: the model the answer rests on. An "
+            "arrow stands for a model too far behind to be shown to scale."
         ),
         alt=sentence(comparison.verdict),
     )

@@ -90,7 +90,7 @@ def _sampling(facts: Facts) -> str:
         f"away and {counted(draws.n_draws, 'draw')} per chain were kept. "
         f"{starts_in_words(facts)}"
     )
-    if len(facts.class_names) > 1:
+    if facts.posterior.model.exploratory and len(facts.class_names) > 1:
         text += (
             " The classes were matched across draws by their membership probabilities "
             "(Stephens 2000)."

@@ -116,7 +116,7 @@ def _why_this_number(facts: Facts) -> Answered:
     if content.comparison is not None:
         says.append(sentence(content.comparison.verdict))
         row = facts.own_row
-        if row is not None:
+        if row is not None and row["elpd_diff"] < 0:
             says.append(
                 f"The model the answer rests on ({row_name(content.study_row)}) lies "
                 f"{decimal(abs(row['elpd_diff']))} behind the best, with a standard error of "

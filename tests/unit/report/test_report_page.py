@@ -315,6 +315,16 @@ def test_cases_are_shown_when_asked_for(small: Any, made: Any, page_of: PageOf) 
     assert "WP001" in page.text
 
 
+def test_stephens_is_cited_only_where_labels_were_matched_by_his_criterion(
+    content: ReportContent, made: Any
+) -> None:
+    named = methods_paragraph(Facts(content), {})
+    numbered = methods_paragraph(Facts(made.content(made.posterior(made.items(3), 2))), {})
+    assert "Stephens" not in named
+    assert "Classes were named by rule: managed is where" in named
+    assert "(Stephens 2000)" in numbered
+
+
 def test_methods_paragraph_cites_what_it_uses(content: ReportContent) -> None:
     text = methods_paragraph(Facts(content), {"bayeslca": "0.1.0", "Python": "3.11"})
     for short in re.findall(r"\(([A-Z][^()]*? \d{4})\)", text):
