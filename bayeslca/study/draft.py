@@ -101,7 +101,9 @@ _OPEN_MODEL = (
 )
 
 
-def _answers(file: str, reports: Sequence[ColumnReport], reading: Mapping[str, object]) -> list[str]:
+def _answers(
+    file: str, reports: Sequence[ColumnReport], reading: Mapping[str, object]
+) -> list[str]:
     lines = ["[answers]", f"file = {_quoted(file)}"]
     lines += [f"{key} = {_value(value)}" for key, value in reading.items() if value is not None]
     lines += _role("case", [r for r in reports if r.kind == "id"], active=True)
