@@ -75,16 +75,17 @@ def load(path: Path) -> Posterior:
         msg = f"{path}: there is no such file. Save one with posterior.save."
         raise StorageError(msg)
     try:
-        tree = xarray.load_datatree(path, engine="h5netcdf")
+        file = xarray.open_datatree(path, engine="h5netcdf")
     except Exception as error:  # whatever a damaged file makes the readers raise
         msg = f"{path} is not a NetCDF file, or it is damaged. Sample again and save anew."
         raise StorageError(msg) from error
-    _check_origin(tree, path)
-    try:
-        return _posterior(tree)
-    except (BayesLCAError, KeyError, ValueError, TypeError, IndexError) as error:
-        msg = f"{path} lacks a part of a posterior ({error}). Sample again and save anew."
-        raise StorageError(msg) from error
+    with file as tree:
+        _check_origin(tree, path)
+        try:
+            return _posterior(tree)
+        except (BayesLCAError, LookupError, OSError, TypeError, ValueError) as error:
+            msg = f"{path} lacks a part of a posterior ({error}). Sample again and save anew."
+            raise StorageError(msg) from error
 
 
 def _check_origin(tree: DataTree, path: Path) -> None:
