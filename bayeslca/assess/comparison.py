@@ -119,6 +119,11 @@ def comparison_of(posteriors: dict[Name, Posterior], index: str) -> Comparison:
     )
 
 
+def is_tie(gap: float, error: float) -> bool:
+    """Return whether a difference in elpd is too small to tell: below 4, or within two errors."""
+    return abs(gap) < TIE or abs(gap) <= TIE_ERRORS * error
+
+
 def _criteria(posterior: Posterior) -> tuple[PointwiseElpd, PointwiseElpd]:
     """Return leave-one-out and WAIC by unit of the responses (groups told apart)."""
     values, counts = posterior.log_likelihood_draws, posterior.unit_table.count
@@ -169,8 +174,7 @@ def _table(
     rows = []
     for (name, posterior), weight in zip(posteriors.items(), weights, strict=True):
         gap, error = difference(loo[name], loo[best])
-        tied = name == best or abs(gap) < TIE or abs(gap) <= TIE_ERRORS * error
-        rows.append(
+                rows.append(
             {
                 "elpd": loo[name].elpd,
                 "elpd_se": loo[name].se,
@@ -178,7 +182,7 @@ def _table(
                 "p_loo": loo[name].p,
                 "elpd_diff": gap,
                 "elpd_diff_se": 0.0 if name == best else error,
-                "tied": tied,
+                "tied": name == best or is_tie(gap, error),
                 "weight": float(weight),
                 "pareto_k_high": loo[name].n_unreliable,
                 "waic": widely[name].elpd,

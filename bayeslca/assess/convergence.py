@@ -78,7 +78,7 @@ def diagnose(posterior: Posterior) -> Diagnostics:
     state = class_state(posterior.table, posterior.unit_table, posterior.draws)
     table = diagnostics_table(posterior, state)
     agreement = chain_agreement(posterior)
-    worst = worst_of(table)
+    worst = worst_of(table, posterior.draws.n_chains)
     found = [
         *_about_chains(posterior, table, agreement),
         *_about_starts(posterior),
@@ -99,7 +99,7 @@ def _about_chains(
     """Yield what the chains themselves show."""
     draws = posterior.draws
     late = not_met(table, draws.n_chains)
-    worst = worst_of(table)
+    worst = worst_of(table, posterior.draws.n_chains)
     apart = worst.r_hat > APART and agreement.divergence > SAME_MEMBERSHIP
     if apart:
         yield Finding(
@@ -153,8 +153,8 @@ def _about_chains(
     if draws.n_chains == 1:
         yield Finding(
             kind="one_chain",
-            level="warning",
-            message="with a single chain, chains in different modes cannot be seen",
+            level="problem",
+            message="with a single chain there is no R-hat, and different modes cannot be seen",
             remedy="Sample with chains=4.",
             value=1.0,
         )

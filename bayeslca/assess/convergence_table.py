@@ -76,12 +76,12 @@ def diagnostics_table(posterior: Posterior, state: ClassState) -> pd.DataFrame:
     return pd.concat(parts, ignore_index=True)[[*KEYS, *NUMBERS]]
 
 
-def worst_of(table: pd.DataFrame) -> Worst:
+def worst_of(table: pd.DataFrame, n_chains: int) -> Worst:
     """Return the worst R-hat and effective sample size of the rows that count."""
     rows = table[table["note"] == ""]
     if not len(rows):
         return Worst(1.0, "", math.inf, "", 0)
-    r_hat, ess = _r_hat(rows), _ess(rows)
+    r_hat, ess = _r_hat(rows, n_chains), _ess(rows)
     names = names_of(rows)
     high, low = int(np.argmax(r_hat)), int(np.argmin(ess))
     return Worst(float(r_hat[high]), names[high], float(ess[low]), names[low], len(rows))
@@ -90,7 +90,7 @@ def worst_of(table: pd.DataFrame) -> Worst:
 def not_met(table: pd.DataFrame, n_chains: int) -> list[str]:
     """Return the quantities that count and have not converged."""
     rows = table[table["note"] == ""]
-    late = (_r_hat(rows) > AGREE) | (_ess(rows) < ENOUGH * n_chains)
+    late = (_r_hat(rows, n_chains) > AGREE) | (_ess(rows) < ENOUGH * n_chains)
     return [name for name, is_late in zip(names_of(rows), late, strict=True) if is_late]
 
 
@@ -109,10 +109,13 @@ def _name(row: Iterable[str]) -> str:
     return quantity
 
 
-def _r_hat(rows: pd.DataFrame) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
-    """R-hat; chains that stand still at different values have none and count as infinite."""
+def _r_hat(rows: pd.DataFrame, n_chains: int) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
+    """R-hat; chains that stand still at different values have none and count as infinite.
+
+    A single chain has none either; it gets a finding of its own.
+    """
     values = rows["r_hat"].to_numpy(dtype=np.float64)
-    return np.where(np.isnan(values), np.inf, values)
+    return np.where(np.isnan(values), np.inf if n_chains > 1 else 1.0, values)
 
 
 def _ess(rows: pd.DataFrame) -> np.ndarray[tuple[int], np.dtype[np.float64]]:

@@ -61,7 +61,7 @@ def chain_agreement(posterior: Posterior) -> ChainAgreement:
 
 
 def largest_r_hat(values: Floats) -> float:
-    """Return the largest R-hat of draws (chain, draw, ...); 1 when all are constant.
+    """Return the largest R-hat of draws (chain, draw, ...); 1 for constants and single chains.
 
     Infinite where chains stand still at different values.
     """
@@ -69,7 +69,7 @@ def largest_r_hat(values: Floats) -> float:
 
     flat = values.reshape(*values.shape[:2], -1)
     moving = np.flatnonzero(np.ptp(flat, axis=(0, 1)) > 0.0)
-    if not moving.size:
+    if not moving.size or values.shape[0] == 1:
         return 1.0
     with np.errstate(invalid="ignore", divide="ignore"):
         found = np.array(

@@ -307,7 +307,8 @@ def test_modes_far_below_are_dropped_and_said() -> None:
 def test_a_single_chain_cannot_show_modes() -> None:
     found = diagnose(Maker(chains=1, length=CHAINS * DRAWS).posterior())
     assert kinds(found) == {"one_chain"}
-    assert found.trustworthy
+    assert not found.trustworthy
+    assert found.verdict.startswith("Not to be trusted: with a single chain there is no R-hat")
 
 
 def test_a_model_that_the_answers_cannot_determine_is_said() -> None:
