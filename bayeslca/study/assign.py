@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import textwrap
 from pathlib import Path
 
+from bayeslca.model.describe import counted
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.item import Item, ItemSpec
 from bayeslca.responses.responses import Responses
@@ -42,9 +44,9 @@ def assign_new_cases(
     sure = int((table["modal_probability"] >= 0.9).sum())
     return "\n".join(
         [
-            f"Wrote {output}: {len(table):,} cases.",
-            f"{sure:,} are placed in one class with a probability of at least 90 %.",
-            CAUTION,
+            f"Wrote {output}: {counted(len(table), 'case', 'cases')}.",
+            f"Placed in one class with a probability of at least 90 %: {sure:,}.",
+            textwrap.fill(CAUTION, 79),
         ]
     )
 
