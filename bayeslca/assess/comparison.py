@@ -174,7 +174,7 @@ def _table(
     rows = []
     for (name, posterior), weight in zip(posteriors.items(), weights, strict=True):
         gap, error = difference(loo[name], loo[best])
-                rows.append(
+        rows.append(
             {
                 "elpd": loo[name].elpd,
                 "elpd_se": loo[name].se,
