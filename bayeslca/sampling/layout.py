@@ -27,7 +27,6 @@ class Layout(NamedTuple):
     ----------
     block_start, element_prior, direct_element, cell_start, cell_constant, cell_element_start, \
     cell_element : see `bayeslca.model.table.Table`
-    element_lower, element_upper, order_above, order_below : see `Table`
     general : ndarray of int64, shape (n, 2)
         (row, class) of every row that is not one element alone.
     part_start : ndarray of int64, shape (S + 1,)
@@ -53,10 +52,6 @@ class Layout(NamedTuple):
 
     block_start: Ints
     element_prior: Floats
-    element_lower: Floats
-    element_upper: Floats
-    order_above: Ints
-    order_below: Ints
     direct_element: Ints
     cell_start: Ints
     cell_constant: Floats
@@ -160,10 +155,6 @@ def arrange(table: Table, units: UnitTable, groups: int) -> Layout:
     return Layout(
         block_start=_integers(table.block_start),
         element_prior=np.ascontiguousarray(table.element_prior, dtype=np.float64),
-        element_lower=np.ascontiguousarray(table.element_lower, dtype=np.float64),
-        element_upper=np.ascontiguousarray(table.element_upper, dtype=np.float64),
-        order_above=_integers(table.order_above),
-        order_below=_integers(table.order_below),
         direct_element=_integers(table.direct_element),
         cell_start=_integers(table.cell_start),
         cell_constant=np.ascontiguousarray(table.cell_constant, dtype=np.float64),
