@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from itertools import product
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
+from bayeslca.model.places import Place, ResponseVector
 from bayeslca.model.table import Table, UnitTable
 from bayeslca.model.table_builder import TableBuilder
 from bayeslca.responses.units import MISSING, Units
@@ -16,17 +18,30 @@ if TYPE_CHECKING:
 
 
 def compile_table(model: LatentClassModel) -> Table:
-    """Compile a model: a block of its own for each item and class, with its stated prior.
+    """Compile a model: rows of every response group, item and class, made of blocks.
 
-    Prevalences have a row per group; the groups share the response probabilities.
+    What nothing is stated about has a block of its own. Groups share the rows of items that are
+    not free by group.
     """
-    n_groups = len(model.groups.levels) if model.groups else 1
+    assumed = model.response_assumptions
     builder = TableBuilder(
-        [item.n_categories for item in model.items], model.n_classes, (0,) * n_groups
+        [item.n_categories for item in model.items],
+        model.n_classes,
+        range(model.n_groups) if model.free_items else (0,) * model.n_groups,
     )
-    for j in range(len(model.items)):
-        for k in range(model.n_classes):
-            builder.set_item(0, j, k, builder.block(model.priors.response[0][j][k]))
+    for block in assumed.tied.blocks:
+        builder.block(block)
+    for g, j, k in product(
+        range(model.n_response_groups), range(len(model.items)), range(model.n_classes)
+    ):
+        vector = ResponseVector(g if j in model.free_items else 0, j, k)
+        for category in range(model.items[j].n_categories):
+            form = assumed.tied.forms[Place(vector, category)]
+            builder.set_row(g, j, category, k, [(form.constant, form.elements)])
+    for bound in assumed.bounds.bounds:
+        builder.bound(bound.element, bound.lower, bound.upper)
+    for order in dict.fromkeys((order.above, order.below) for order in assumed.bounds.orders):
+        builder.order(*order)
     return builder.build()
 
 

@@ -13,11 +13,16 @@ from bayeslca._typing import Bools, Seed
 from bayeslca.exceptions import ModelError, near_names
 from bayeslca.findings import Finding
 from bayeslca.model.agreement import check_agreement
+from bayeslca.model.assumptions import Assumptions, prevalence_source, response_assumptions
+from bayeslca.model.bounds_probability import LogProbability, log_bounds_probability
 from bayeslca.model.cautions import model_findings
 from bayeslca.model.compile import compile_table, pool_groups
+from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
+from bayeslca.model.constraints import read_links
 from bayeslca.model.describe import describe
 from bayeslca.model.identifiability import Identifiability, identifiability
 from bayeslca.model.naming import classes_named
+from bayeslca.model.places import Link
 from bayeslca.model.position_names import element_names, prevalence_names
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.priors import PriorTable, prior_table
@@ -47,13 +52,15 @@ class LatentClassModel:
         A number of classes (exploratory: they are called "1", "2", ... by falling prevalence)
         or their names (confirmatory: something stated must tell them apart).
     statements : tuple of str
-        Priors and naming rules, such as ``"P(fees=yes | managed) ~ Beta(9, 2)"`` and
-        ``"managed is where P(fees=yes) is highest"``. What is not stated is uniform.
+        Priors, constraints and naming rules, such as ``"P(fees=yes | managed) ~ Beta(9, 2)"``,
+        ``"P(fees=yes | managed) > P(fees=yes | lapsed)"`` and ``"managed is where P(fees=yes) is
+        highest"``. What is not stated is uniform and free.
     groups : Groups, optional
-        Groups of cases with prevalences of their own, usually ``responses.groups``. The groups
-        share the response probabilities.
+        Groups of cases with prevalences of their own, usually ``responses.groups``.
     statement_sources : mapping from str to str
         Where a statement comes from, for the report.
+    free_by_group : bool or tuple of str
+        Items whose response probabilities differ by group; True: all, False: none.
 
     Raises
     ------
@@ -74,6 +81,7 @@ class LatentClassModel:
     statements: tuple[str, ...] = ()
     groups: Groups | None = None
     statement_sources: Mapping[str, str] = field(default_factory=dict, hash=False)
+    free_by_group: bool | tuple[str, ...] = False
 
     def __post_init__(self) -> None:
         # Lists are welcome where tuples are kept; a frozen dataclass is set through object.
@@ -84,6 +92,7 @@ class LatentClassModel:
         keep(self, "statement_sources", dict(self.statement_sources))
         _check_items(self.items)
         _check_sources(self.statement_sources, self.statements)
+        keep(self, "free_by_group", _checked_free(self.free_by_group, self.items, self.groups))
         self._refuse_classes_not_told_apart()
 
     @property
@@ -109,6 +118,18 @@ class LatentClassModel:
         return len(self.groups.levels) if self.groups else 1
 
     @cached_property
+    def free_items(self) -> frozenset[int]:
+        """Items whose response probabilities differ by group."""
+        if isinstance(self.free_by_group, bool):
+            return frozenset(range(len(self.items)) if self.free_by_group else ())
+        return frozenset(j for j, i in enumerate(self.items) if i.name in self.free_by_group)
+
+    @property
+    def n_response_groups(self) -> int:
+        """Number of response groups: 1 where all groups share their response probabilities."""
+        return self.n_groups if self.free_items else 1
+
+    @cached_property
     def vocabulary(self) -> Vocabulary:
         """The names that statements about this model may use."""
         return Vocabulary(self.items, self.class_names, self.groups, self.exploratory)
@@ -121,7 +142,30 @@ class LatentClassModel:
     @cached_property
     def priors(self) -> PriorTable:
         """The Dirichlet parameters of all prevalences and response probabilities."""
-        return prior_table(self.stated.priors, self.vocabulary)
+        return prior_table(self.stated.priors, self.vocabulary, free_items=self.free_items)
+
+    @cached_property
+    def links(self) -> tuple[Link, ...]:
+        """The comparisons of single probabilities that the constraints make."""
+        return read_links(self.stated.constraints, self.vocabulary, self.free_items)
+
+    @cached_property
+    def response_assumptions(self) -> Assumptions:
+        """What the response probabilities are made of."""
+        return response_assumptions(self)
+
+    @cached_property
+    def log_bounds_probability(self) -> LogProbability:
+        """Log prior probability of all bounds and orders, with its Monte Carlo error.
+
+        The constrained prior is the stated one, cut off at the bounds and divided by this.
+        """
+        parts = [log_bounds_probability(self.table)]
+        if isinstance(self.prevalence_source, ConstrainedPrevalence):
+            parts.append(log_bounds_probability(self.prevalence_source.blocks))
+        return LogProbability(
+            sum(part.value for part in parts), sum(part.mcse**2 for part in parts) ** 0.5
+        )
 
     @property
     def naming_rules(self) -> tuple[ResolvedNamingRule, ...]:
@@ -129,9 +173,9 @@ class LatentClassModel:
         return self.stated.naming_rules
 
     @cached_property
-    def prevalence_source(self) -> DirichletPrevalence:
+    def prevalence_source(self) -> DirichletPrevalence | ConstrainedPrevalence:
         """The prior of the prevalences."""
-        return DirichletPrevalence(self.priors.prevalence)
+        return prevalence_source(self)
 
     @cached_property
     def table(self) -> Table:
@@ -277,6 +321,9 @@ class LatentClassModel:
             if self.groups is None
             else {"name": self.groups.name, "levels": list(self.groups.levels)},
             "statement_sources": dict(self.statement_sources),
+            "free_by_group": self.free_by_group
+            if isinstance(self.free_by_group, bool)
+            else list(self.free_by_group),
         }
 
     @classmethod
@@ -292,6 +339,7 @@ class LatentClassModel:
             statements=values["statements"],
             groups=groups and Groups(groups["name"], tuple(groups["levels"])),
             statement_sources=values["statement_sources"],
+            free_by_group=values.get("free_by_group", False),
         )
 
     def __repr__(self) -> str:
@@ -301,12 +349,14 @@ class LatentClassModel:
             parts.append(f"statements={list(self.statements)}")
         if self.groups:
             parts.append(f"groups={self.groups.name}: {', '.join(self.groups.levels)}")
+        if self.free_by_group:
+            parts.append(f"free_by_group={self.free_by_group}")
         return f"LatentClassModel({', '.join(parts)})"
 
     def _refuse_classes_not_told_apart(self) -> None:
         """Refuse names that nothing stated gives a meaning; also reads all statements."""
         if self.exploratory:
-            _ = self.priors
+            _ = self.table, self.prevalence_source
             return
         mixed = self.symmetry.named_group.mixed_classes()
         if not mixed:
@@ -368,6 +418,33 @@ def _check_items(items: tuple[Item, ...]) -> None:
         msg = "the model has no items. Give at least one, usually responses.items."
         raise ModelError(msg)
     _refuse_repeated([item.name for item in items], "item")
+
+
+def _checked_free(
+    free: object, items: Sequence[Item], groups: Groups | None
+) -> bool | tuple[str, ...]:
+    if free is False or free in ((), []):
+        return False
+    if groups is None:
+        msg = (
+            f"free_by_group is {free!r}, but the model has no groups. Give groups, usually "
+            "responses.groups."
+        )
+        raise ModelError(msg)
+    if free is True:
+        return True
+    names = [item.name for item in items]
+    if isinstance(free, str) or not isinstance(free, Sequence):
+        msg = f"free_by_group must be True, False or a list of items; got {free!r}."
+        raise ModelError(msg)
+    for name in free:
+        if name not in names:
+            msg = (
+                f"free_by_group names '{name}', which is no item{near_names(str(name), names)}. "
+                f"The items are {', '.join(names)}."
+            )
+            raise ModelError(msg)
+    return tuple(name for name in names if name in free)
 
 
 def _check_sources(sources: Mapping[str, str], statements: Sequence[str]) -> None:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 from typing import TypeVar
 
@@ -45,6 +45,7 @@ def prior_table(
     priors: Sequence[PrevalencePrior | ResponsePrior],
     vocabulary: Vocabulary,
     default: float = 1.0,
+    free_items: Collection[int] = (),
 ) -> PriorTable:
     """Fill a table with the stated priors, and with a default where nothing was stated.
 
@@ -54,25 +55,29 @@ def prior_table(
     vocabulary : Vocabulary
     default : float
         Dirichlet parameter of every class and category without a stated prior; 1 is uniform.
+    free_items : collection of int
+        Items whose response probabilities are free by group.
 
     Raises
     ------
     StatementError
-        When two statements give one position different priors, or a statement gives groups
-        response probabilities of their own.
+        When two statements give one position different priors, or a statement gives a group a
+        prior on an item that all groups share.
     """
+    response_groups = range(vocabulary.n_groups if free_items else 1)
     prevalence: dict[int, PrevalencePrior] = {}
-    response: dict[tuple[int, int], ResponsePrior] = {}
+    response: dict[tuple[int, int, int], ResponsePrior] = {}
     for prior in priors:
         if isinstance(prior, PrevalencePrior):
             groups = range(vocabulary.n_groups) if prior.group is None else (prior.group,)
             for g in groups:
                 _put(prevalence, g, prior)
         else:
-            _refuse_group(prior, vocabulary)
+            _refuse_group(prior, vocabulary, free_items)
             every = range(vocabulary.n_classes)
-            for k in every if prior.latent_class is None else (prior.latent_class,):
-                _put(response, (prior.item, k), prior)
+            for g in _groups_of(prior, response_groups):
+                for k in every if prior.latent_class is None else (prior.latent_class,):
+                    _put(response, (g, prior.item, k), prior)
 
     def parameters(prior: PrevalencePrior | ResponsePrior | None, n: int) -> Floats:
         return np.full(n, default) if prior is None else np.asarray(prior.concentration, float)
@@ -84,20 +89,27 @@ def prior_table(
     items = range(len(vocabulary.items))
     return PriorTable(
         prevalence=np.stack([parameters(prevalence.get(g), len(classes)) for g in groups]),
-        response=(
+        response=tuple(
             tuple(
                 tuple(
-                    parameters(response.get((j, k)), vocabulary.items[j].n_categories)
+                    parameters(response.get((g, j, k)), vocabulary.items[j].n_categories)
                     for k in classes
                 )
                 for j in items
-            ),
+            )
+            for g in response_groups
         ),
         prevalence_origin=tuple(origin(prevalence.get(g)) for g in groups),
-        response_origin=(
-            tuple(tuple(origin(response.get((j, k))) for k in classes) for j in items),
+        response_origin=tuple(
+            tuple(tuple(origin(response.get((g, j, k))) for k in classes) for j in items)
+            for g in response_groups
         ),
     )
+
+
+def _groups_of(prior: ResponsePrior, response_groups: range) -> Sequence[int]:
+    """Return the response groups that a prior stands on; a shared item's are all alike."""
+    return response_groups if prior.group is None else (prior.group,)
 
 
 def _put(stated: dict[_Key, _Stated], position: _Key, prior: _Stated) -> None:
@@ -112,13 +124,19 @@ def _put(stated: dict[_Key, _Stated], position: _Key, prior: _Stated) -> None:
         raise StatementError(msg, statement=prior.text, position=0, remedy=remedy)
 
 
-def _refuse_group(prior: ResponsePrior, vocabulary: Vocabulary) -> None:
-    if prior.group is None or vocabulary.groups is None:
+def _refuse_group(
+    prior: ResponsePrior, vocabulary: Vocabulary, free_items: Collection[int]
+) -> None:
+    if prior.group is None or vocabulary.groups is None or prior.item in free_items:
         return
+    name = vocabulary.items[prior.item].name
     msg = (
-        "the groups share their response probabilities, so one group cannot have a prior of its "
-        "own; response probabilities by group come in the next version"
+        f"all groups share the response probabilities of '{name}', so one group cannot have a "
+        "prior of its own"
     )
     level = vocabulary.groups.levels[prior.group]
-    remedy = f"Leave out {vocabulary.groups.name}={level}."
+    remedy = (
+        f"Leave out {vocabulary.groups.name}={level}, or let the item differ: "
+        f"free_by_group=['{name}']."
+    )
     raise StatementError(msg, statement=prior.text, position=0, remedy=remedy)

@@ -160,10 +160,12 @@ class ModelStatements:
     priors : tuple of PrevalencePrior or ResponsePrior
     naming_rules : tuple of ResolvedNamingRule
         In the order of the statements, which is the order they are applied in.
+    constraints : tuple of ResolvedRelations
     """
 
     priors: tuple[PrevalencePrior | ResponsePrior, ...] = ()
     naming_rules: tuple[ResolvedNamingRule, ...] = ()
+    constraints: tuple[ResolvedRelations, ...] = ()
 
 
 def read_statements(texts: Sequence[str], vocabulary: Vocabulary) -> ModelStatements:
@@ -176,6 +178,7 @@ def read_statements(texts: Sequence[str], vocabulary: Vocabulary) -> ModelStatem
     """
     priors: list[PrevalencePrior | ResponsePrior] = []
     rules: list[ResolvedNamingRule] = []
+    constraints: list[ResolvedRelations] = []
     for text in texts:
         resolved = resolve(text, vocabulary)
         match resolved:
@@ -184,13 +187,13 @@ def read_statements(texts: Sequence[str], vocabulary: Vocabulary) -> ModelStatem
             case ResolvedNamingRule():
                 rules.append(resolved)
             case ResolvedRelations():
-                refuse_until_next_version(resolved)
+                constraints.append(resolved)
             case ResolvedQuantity():
                 msg = "a model assumes statements; this computes something"
                 remedy = "Give it a comparison or a prior, or ask for it as a quantity."
                 raise statement_error(Refusal(msg, resolved.expression.position, remedy), text)
     check_naming_rules(rules, vocabulary)
-    return ModelStatements(tuple(priors), tuple(rules))
+    return ModelStatements(tuple(priors), tuple(rules), tuple(constraints))
 
 
 def refuse_until_next_version(resolved: ResolvedRelations | ResolvedQuantity) -> NoReturn:

@@ -11,9 +11,9 @@ import numpy as np
 from bayeslca._typing import Bools, Floats, Ints, Seed
 from bayeslca.exceptions import ModelError
 from bayeslca.model.prevalence import PrevalenceSource
-from bayeslca.model.prior_density import inside_bounds
 from bayeslca.model.probabilities import draw_elements, response_probability, row_probability
 from bayeslca.model.table import Table
+from bayeslca.model.truncated_prior import draw_inside
 from bayeslca.responses.responses import Responses
 from bayeslca.responses.units import MISSING
 
@@ -21,9 +21,6 @@ if TYPE_CHECKING:
     from bayeslca.model.latent_class_model import LatentClassModel
 
 Entry = TypeVar("Entry")
-
-MOST_TRIES = 100_000
-"""Draws of the prior that are tried until one keeps the bounds."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -105,22 +102,10 @@ def simulate(
 
 
 def draw_parameters(table: Table, source: PrevalenceSource, rng: np.random.Generator) -> Parameters:
-    """Draw all parameters from the prior, bounds kept.
-
-    Raises
-    ------
-    ModelError
-        When no draw in 100,000 kept the bounds.
-    """
-    for _ in range(MOST_TRIES):
-        elements = draw_elements(table, rng)
-        if not table.is_bounded or inside_bounds(table, elements):
-            return Parameters(elements, source.simulate(rng))
-    msg = (
-        f"none of {MOST_TRIES:,} draws of the prior keeps the model's bounds. "
-        "State priors that agree with the bounds, or give parameters to simulate from."
-    )
-    raise ModelError(msg)
+    """Draw all parameters from the prior, bounds kept."""
+    if table.is_bounded:
+        return Parameters(draw_inside(table, 1, rng)[0], source.simulate(rng))
+    return Parameters(draw_elements(table, rng), source.simulate(rng))
 
 
 def draw_classes(prevalence: Floats, group: Ints, rng: np.random.Generator) -> Ints:

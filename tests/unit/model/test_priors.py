@@ -94,6 +94,8 @@ def test_saying_the_same_twice_is_allowed():
 
 
 def test_shared_response_probabilities_have_no_prior_by_group():
-    with pytest.raises(StatementError, match="share their response probabilities") as caught:
+    with pytest.raises(StatementError, match="share the response probabilities") as caught:
         table("P(fees=yes | managed, district=north) ~ Beta(9, 2)")
-    assert caught.value.remedy == "Leave out district=north."
+    assert caught.value.remedy == (
+        "Leave out district=north, or let the item differ: free_by_group=['fees']."
+    )

@@ -117,9 +117,9 @@ def test_priors_and_naming_rules_of_a_model_are_sorted_apart():
 
 
 @pytest.mark.parametrize("text", ["P(managed) > 0.2", "P(fees | lapsed) = 0 and P(managed) > 0.2"])
-def test_constraints_are_left_for_the_next_version(text):
-    with pytest.raises(StatementError, match="next version"):
-        read_statements([text], NAMED)
+def test_constraints_of_a_model_are_sorted_apart(text):
+    found = read_statements([text, "P(fees | lapsed) ~ Beta(1, 9)"], NAMED)
+    assert [relations.text for relations in found.constraints] == [text]
 
 
 def test_a_quantity_is_no_assumption():
@@ -127,7 +127,7 @@ def test_a_quantity_is_no_assumption():
         read_statements(["P(managed)"], NAMED)
 
 
-def test_a_wrong_name_is_told_before_the_version():
+def test_a_wrong_name_in_a_constraint_is_told():
     with pytest.raises(StatementError, match="near names: 'managed'"):
         read_statements(["P(manged) > 0.2"], NAMED)
 
