@@ -5,7 +5,7 @@ back to elements; the log likelihood of the parameters falls out on the way), `d
 `draw_prevalence`. Pure functions of arrays and an explicit generator. Numba code: import inside
 functions.
 
-A sweep costs less than twice its random numbers because units share parts (see
+A sweep costs about twice its random numbers because units share parts (see
 `bayeslca.sampling.layout`) and because weights are products, not sums of logs; a unit whose
 product falls below 1e-100 is done again in logs.
 """
