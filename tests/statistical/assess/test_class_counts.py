@@ -37,14 +37,11 @@ def test_sampling_of_every_count_is_to_be_trusted(name: str) -> None:
     assert (found.table["elpd_mcse"] < 0.25).all()
 
 
-@pytest.mark.parametrize("name", TABLES)
-@pytest.mark.parametrize("classes", [1, 2])
+@pytest.mark.parametrize(("name", "classes"), [(TABLES[0], 1), (TABLES[1], 1), (TABLES[1], 2)])
 def test_accuracy_is_the_exact_leave_one_out(name: str, classes: int) -> None:
     tables = tomllib.loads((REFERENCES / "references.toml").read_text(encoding="utf-8"))["table"]
     parts = next(t for t in tables if t.get("file") == f"{name}.csv")["computed_loo"]
-    exact = next((p["elpd_loo"] for p in parts if p["classes"] == classes), None)
-    if exact is None:
-        pytest.skip("no exact figure")
+    exact = next(part["elpd_loo"] for part in parts if part["classes"] == classes)
     row = comparison(name).table.loc[classes]
     assert abs(row["elpd"] - exact) < 4 * row["elpd_mcse"] + 0.0001
 
