@@ -108,6 +108,8 @@ def _how_sure(facts: Facts) -> list[str]:
     content, n_classes = facts.content, len(facts.class_names)
     chosen = counted_in_words(n_classes, "class", "classes")
     because = f", because {content.chosen_because.rstrip('.')}" if content.chosen_because else ""
+    if content.alternatives and not because:
+        because = ", the smallest number within the tie"
     says = [sentence(f"the answer is for {chosen}{because}")]
     if content.comparison is not None:
         says.append(sentence(content.comparison.verdict))

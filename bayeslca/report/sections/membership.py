@@ -70,10 +70,14 @@ def _in_words(facts: Facts) -> str:
         ]
     )
     text = (
-        f"Of {total}, {whole(sure)} have a most probable class of 90 % or more, and {whole(unsure)}"
-        f" one of less than 60 %; the average is {percent(placed.mean_highest)}. "
+        f"Of {total}, {_count(sure)} have a most probable class of 90 % or more, and "
+        f"{_count(unsure)} one below 60 %; the average is {percent(placed.mean_highest)}. "
     )
     return text + f"By most probable class, there are {most}."
+
+
+def _count(number: int) -> str:
+    return whole(number) if number else "none"
 
 
 def _placed_table(facts: Facts) -> PageTable:

@@ -290,7 +290,14 @@ def test_other_counts_in_the_tie_are_shown(made: Any, page_of: PageOf) -> None:
     other = made.posterior(made.items(5), 3)
     page = page_of(made.content(posterior, alternatives={"3 classes": other}))
     assert "The same answers with 3 classes" in page.text
+    assert "three kinds were expected" in page.text
     assert "With three classes, the data are predicted as well" in page.text
+
+
+def test_an_open_number_of_classes_is_explained(made: Any, page_of: PageOf) -> None:
+    posterior, other = made.posterior(made.items(5), 2), made.posterior(made.items(5), 3)
+    page = page_of(made.content(posterior, chosen_because="", alternatives={"3 classes": other}))
+    assert "The answer is for two classes, the smallest number within the tie." in page.text
 
 
 def test_findings_of_the_comparison_are_said(small: Any, made: Any, page_of: PageOf) -> None:
