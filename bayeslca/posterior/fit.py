@@ -17,7 +17,7 @@ from bayeslca.posterior.class_state import class_state
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses
 from bayeslca.sampling.draws import Draws
-from bayeslca.sampling.relabel import relabel
+from bayeslca.sampling.relabel import Relabelled, relabel
 from bayeslca.sampling.run import MAX_SWEEPS, draw_posterior
 
 SAMPLERS = ("auto", "gibbs", "nuts")
@@ -75,6 +75,7 @@ def fit(
         raise SamplingError(msg)
     units = compile_units(model.table, model.units(responses))
     seen = _as_the_model_sees(model, responses)
+    watch = _Watch(model, units)
     if sampler == "nuts":
         from bayeslca.sampling.nuts import MAX_ITERATIONS, draw_with_nuts
 
@@ -102,20 +103,40 @@ def fit(
             max_sweeps=max_sweeps or MAX_SWEEPS,
             threads=threads,
             progress=progress,
-            watch=lambda so_far: reported_quantities(model, units, so_far),
+            watch=watch,
         )
-    return Posterior(model, responses, relabel(model, units, drawn))
+    return Posterior(model, responses, watch.relabelled(drawn))
+
+
+class _Watch:
+    """Relabels the draws of each round for the stopping rule; those of the last are kept."""
+
+    def __init__(self, model: LatentClassModel, units: UnitTable) -> None:
+        self.model, self.units = model, units
+        self.sampled: Floats | None = None
+        self.last: Relabelled | None = None
+
+    def __call__(self, so_far: Draws) -> dict[str, Floats]:
+        self.sampled, self.last = so_far.elements, relabel(self.model, self.units, so_far)
+        return reported_quantities(self.model, self.units, self.last.draws)
+
+    def relabelled(self, drawn: Draws) -> Relabelled:
+        """Return the relabelled draws: those of the last round where these are the same."""
+        last, sampled = self.last, self.sampled
+        if last is None or sampled is None or not np.array_equal(sampled, drawn.elements):
+            return relabel(self.model, self.units, drawn)
+        named = replace(drawn, elements=last.draws.elements, prevalence=last.draws.prevalence)
+        return replace(last, draws=named)
 
 
 def reported_quantities(
-    model: LatentClassModel, units: UnitTable, draws: Draws
+    model: LatentClassModel, units: UnitTable, named: Draws
 ) -> dict[str, Floats]:
-    """Return the draws (chain, draw) of reported quantities, relabelled, for the stopping rule.
+    """Return the relabelled draws (chain, draw) of reported quantities, for the stopping rule.
 
     Quantities of classes that are empty or not told apart are left out, as are response
     probabilities of an item's first answer: they are 1 minus the others.
     """
-    named = relabel(model, units, draws).draws
     unsteady = class_state(model.table, units, named).unsteady
     out: dict[str, Floats] = {}
     steady = [k for k in range(model.n_classes) if k not in unsteady]

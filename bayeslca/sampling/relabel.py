@@ -265,10 +265,9 @@ def matching_costs(
     divergence adds to it is the same for every permutation.
     """
     weights = -unit_table.count[:, None] * np.log(np.maximum(reference, FLOOR))  # (U, K)
-    costs = [
-        np.einsum("lus,uk->slk", shares[:, mine], weights[mine], optimize=True)
-        for mine in (unit_table.prevalence_row == g for g in range(n_groups))
-    ]
+    groups = (unit_table.prevalence_row == g for g in range(n_groups))
+    within = [(shares, weights)] if n_groups == 1 else [(shares[:, g], weights[g]) for g in groups]
+    costs = [np.matmul(weight.T, share).transpose(2, 0, 1) for share, weight in within]
     return np.stack(costs, axis=1)
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import dataclasses
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -82,3 +84,18 @@ def test_nuts_is_handed_what_was_asked_for(
     assert found.prevalence_draws.shape == posterior.prevalence_draws.shape
     assert (asked["seed"], asked["chains"], asked["draws"]) == (5, 2, 70)
     assert asked["max_sweeps"] == 20_000
+
+
+def test_what_was_relabelled_for_the_stopping_rule_is_the_result(posterior: Posterior) -> None:
+    watch = fits._Watch(posterior.model, posterior.unit_table)
+    back = np.argsort(posterior.relabelled.permutations, axis=-1)
+    sampled = dataclasses.replace(
+        posterior.draws, prevalence=np.take_along_axis(posterior.prevalence_draws, back, axis=-1)
+    )
+    fresh = watch.relabelled(sampled)
+    watch(sampled)
+    kept = watch.relabelled(sampled)
+    np.testing.assert_array_equal(kept.draws.elements, fresh.draws.elements)
+    np.testing.assert_array_equal(kept.draws.prevalence, fresh.draws.prevalence)
+    moved = dataclasses.replace(sampled, elements=sampled.elements[:, ::-1])
+    assert not np.array_equal(watch.relabelled(moved).draws.elements, kept.draws.elements)
