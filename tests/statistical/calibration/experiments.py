@@ -120,7 +120,7 @@ def front_door(experiment: Experiment, data: Data, seed: np.random.SeedSequence)
 
 
 def quantities(experiment: Experiment, data: Data, draws: Parameters) -> dict[str, np.ndarray]:
-    """Return what is ranked, (S,) each; none changes with the labels unless the model is labelled."""
+    """Return what is ranked, (S,) each; label-free unless the model is labelled."""
     table, (elements, prevalence) = experiment.table, (draws.elements, draws.prevalence)
     units, unit_table = units_of(experiment, data)
     log_likelihood = log_unit_likelihood(table, unit_table, elements, prevalence)

@@ -1,0 +1,44 @@
+"""The calibration experiments of tests/statistical with many more replicates.
+
+Measured on two cores: see the durations that pytest prints; meant to stay below four minutes.
+"""
+
+from __future__ import annotations
+
+import pytest
+from experiments import (
+    Experiment,
+    exploratory,
+    front_door,
+    many_categories_some_missing,
+    named_nearly_alike,
+    named_two_groups,
+    p_values,
+    rich,
+    smallest,
+    two_groups,
+)
+
+SEED = 20261207
+REPLICATES = 300
+LEVEL = 1e-3
+EXPERIMENTS = {
+    "two classes": exploratory(2),
+    "three classes": exploratory(3, 40),
+    "many categories, some missing": many_categories_some_missing(),
+    "two groups": two_groups(),
+    "named, two groups": named_two_groups(),
+    "named, nearly alike": named_nearly_alike(),
+    "shared blocks, a constant, a pair, verified cases": rich(),
+}
+
+
+@pytest.mark.parametrize("experiment", EXPERIMENTS.values(), ids=EXPERIMENTS)
+def test_ranks_are_uniform_in_many_replicates(experiment: Experiment) -> None:
+    found = p_values(experiment, SEED, REPLICATES)
+    assert smallest(found) > LEVEL, found
+
+
+def test_chains_that_the_stopping_rule_ends_are_calibrated() -> None:
+    found = p_values(named_two_groups(), SEED, REPLICATES, front_door)
+    assert smallest(found) > LEVEL, found
