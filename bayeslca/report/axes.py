@@ -11,7 +11,7 @@ from bayeslca.report.palette import FAINT
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-LABEL_WIDTH = 30
+LABEL_WIDTH = 26
 """Characters on a line of a label."""
 
 
@@ -37,7 +37,7 @@ def legend_above(ax: Axes, entries: int) -> None:
     """Put the legend above the axes, in rows that are read from left to right."""
     handles, labels = ax.get_legend_handles_labels()
     longest = max((len(label) for label in labels), default=1)
-    columns = max(1, min(entries, 75 // (longest + 5)))
+    columns = max(1, min(entries, 58 // (longest + 5)))
     by_column = [at for first in range(columns) for at in range(first, entries, columns)]
     ax.legend(
         [handles[at] for at in by_column], [labels[at] for at in by_column], loc="lower left",

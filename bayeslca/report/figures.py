@@ -21,6 +21,7 @@ STYLE: dict[str, object] = {
     "xtick.labelsize": 9,
     "ytick.labelsize": 9.5,
     "axes.edgecolor": "#555555",
+    "axes.facecolor": "none",
     "text.usetex": False,
     "svg.fonttype": "none",
     "figure.dpi": 100,
@@ -28,6 +29,10 @@ STYLE: dict[str, object] = {
     "hatch.linewidth": 0.8,
 }
 """The figures' style, used in a context of its own: no global setting is touched."""
+
+
+WIDTH = 5.6
+"""Inches: narrow enough to be read on a telephone, where a wide figure would have to be moved."""
 
 
 @dataclass(frozen=True)
@@ -83,8 +88,10 @@ def draw(
         drawing = Drawing(figsize=size, layout="constrained")
         FigureCanvasAgg(drawing)
         plot(drawing)
-        drawing.savefig(svg, format="svg", metadata={"Date": None, "Creator": None})
-        drawing.savefig(png, format="png", dpi=300, metadata={"Software": None})
+        # See-through on the page, so that the shadow shows where a figure can be moved sideways
+        kept_out: dict[str, None] = {"Date": None, "Creator": None}
+        drawing.savefig(svg, format="svg", facecolor="none", metadata=kept_out)
+        drawing.savefig(png, format="png", dpi=300, facecolor="white", metadata={"Software": None})
     markup = inline_svg(svg.getvalue(), prefix=name, alt=alt)
     return Figure(name, caption, alt, markup, svg.getvalue(), png.getvalue())
 
@@ -130,7 +137,7 @@ def inline_svg(svg: bytes, *, prefix: str, alt: str) -> str:
         {
             "role": "img",
             "aria-label": alt,
-            "style": f"max-width: {width * 4 / 3:.0f}px",
+            "style": f"max-width: {1.2 * width * 4 / 3:.0f}px",
             "stroke-linejoin": "round",
         }
     )

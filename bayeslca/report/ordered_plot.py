@@ -70,7 +70,7 @@ def plot_ordered_item(
         _border_intervals(ax, draws[:, k], k, interval)
     ax.set_yticks(range(len(names)), [plain(called(name), LABEL_WIDTH) for name in names])
     ax.set_ylim(len(names) - 0.5, -0.5)
-    percent_axis(ax, f"Share of the class; borders with {level(interval)} interval")
+    percent_axis(ax, f"Share of the class (borders: {level(interval)} interval)")
     legend_above(ax, count)
     return ax
 

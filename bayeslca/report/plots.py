@@ -97,7 +97,7 @@ def plot_profile(
         _points(ax, cells, places, k, label=plain(called(name), LABEL_WIDTH, 1))
     ax.set_yticks(range(len(rows)), [_row_label(item, category) for item, category in rows])
     ax.set_ylim(len(rows) - 0.5, -0.5)
-    percent_axis(ax, f"Probability of the answer given the class, with {level(interval)} interval")
+    percent_axis(ax, f"Probability given the class ({level(interval)} interval)")
     legend_above(ax, len(names))
     return ax
 
@@ -142,7 +142,7 @@ def plot_prevalence(
             labels.append(called(name) if group is None else f"{called(name)}, {group}")
     ax.set_yticks(range(len(labels)), [plain(text, LABEL_WIDTH) for text in labels])
     ax.set_ylim(len(labels) - 0.5, -0.5)
-    percent_axis(ax, f"Share of the cases, with {level(interval)} interval")
+    percent_axis(ax, f"Share of the cases ({level(interval)} interval)")
     return ax
 
 
@@ -181,7 +181,7 @@ def plot_class_counts(
     ax.axvline(0, color=INK, linewidth=0.8, linestyle=":")
     ax.set_yticks(range(len(table)), [plain(row_name(name), LABEL_WIDTH) for name in table.index])
     ax.set_ylim(len(table) - 0.5, -0.5)
-    ax.set_xlabel("Difference in predictive accuracy from the best (elpd), ± 2 standard errors")
+    ax.set_xlabel("Predictive accuracy less the best (± 2 errors)")
     quiet(ax)
     return ax
 

@@ -6,7 +6,7 @@ from typing import Any
 
 from bayeslca.report.blocks import Block, Bullets, Head, PageTable, Paragraph, Picture, Section
 from bayeslca.report.facts import Facts
-from bayeslca.report.figures import draw
+from bayeslca.report.figures import WIDTH, draw
 from bayeslca.report.plots import plot_class_counts, row_name
 from bayeslca.report.wording import (
     NOTHING,
@@ -30,7 +30,7 @@ def class_counts_section(facts: Facts) -> Section:
     figure = draw(
         "class-counts",
         lambda drawing: plot_class_counts(comparison, study_row=study_row, ax=drawing.subplots()),
-        size=(7.0, 1.2 + 0.34 * len(table)),
+        size=(WIDTH, 1.2 + 0.34 * len(table)),
         caption=(
             "How far each model predicts behind the best, with two standard errors of the "
             "difference. Filled: tied with the best. Square: the model the answer rests on. An "

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section, Subheading
 from bayeslca.report.facts import Facts, overall_shares, shares_in_words
-from bayeslca.report.figures import Figure, draw
+from bayeslca.report.figures import WIDTH, Figure, draw
 from bayeslca.report.plots import plot_ordered_item, plot_profile, profile_rows, row_height
 from bayeslca.report.sections.portraits import PRIOR_MARK, portrait
 from bayeslca.report.wording import (
@@ -139,7 +139,7 @@ def _profile(facts: Facts, items: Sequence[Item], name: str, part: str) -> Figur
         lambda drawing: plot_profile(
             facts.posterior, items=chosen, interval=interval, ax=drawing.subplots()
         ),
-        size=(7.0, height),
+        size=(WIDTH, height),
         caption=(
             f"The probability of each answer in each class{part}: a marker at the median, a line "
             f"over the {level(interval)} interval. Each class has a colour and a marker of its own."
@@ -156,7 +156,7 @@ def _stacked(facts: Facts, item: Item, name: str) -> Figure:
         lambda drawing: plot_ordered_item(
             facts.posterior, item.name, interval=interval, ax=drawing.subplots()
         ),
-        size=(7.0, 1.8 + 0.46 * n_classes),
+        size=(WIDTH, 1.8 + 0.46 * n_classes),
         caption=(
             f"{item.text}: a bar for each class, its answers in their order, with their mean "
             f"probabilities in per cent. The thin lines are {level(interval)} intervals of the "

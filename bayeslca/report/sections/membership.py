@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
 from bayeslca.report.facts import Facts
-from bayeslca.report.figures import draw
+from bayeslca.report.figures import WIDTH, draw
 from bayeslca.report.plots import plot_membership
 from bayeslca.report.wording import (
     called,
@@ -28,7 +28,7 @@ def membership_section(facts: Facts) -> Section:
     figure = draw(
         "membership",
         lambda drawing: plot_membership(facts.posterior, ax=drawing.subplots()),
-        size=(7.0, 1.0 + 0.7 * len(facts.class_names)),
+        size=(WIDTH, 1.0 + 0.7 * len(facts.class_names)),
         caption=(
             "How many cases are placed how surely, by their most probable class: the further to "
             "the right, the surer. The bars of each class have a height of their own."

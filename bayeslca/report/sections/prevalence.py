@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
 from bayeslca.report.facts import Facts, shares_in_words
-from bayeslca.report.figures import draw
+from bayeslca.report.figures import WIDTH, draw
 from bayeslca.report.plots import plot_prevalence
 from bayeslca.report.wording import (
     called,
@@ -32,7 +32,7 @@ def prevalence_section(facts: Facts) -> Section:
     figure = draw(
         "prevalence",
         lambda drawing: plot_prevalence(facts.posterior, interval=interval, ax=drawing.subplots()),
-        size=(7.0, 1.0 + 0.36 * n_rows),
+        size=(WIDTH, 1.0 + 0.36 * n_rows),
         caption=(
             f"The share of the cases in each class{' by group' if groups else ''}: a marker at the "
             f"median, a line over the {level(interval)} interval."

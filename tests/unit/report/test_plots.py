@@ -186,7 +186,7 @@ def test_page_wide_style_is_taken_out_of_a_figure() -> None:
     assert "style>" not in markup
     assert 'id="p-a"' in markup
     assert 'aria-label="words"' in markup
-    assert "max-width: 96px" in markup
+    assert "max-width: 115px" in markup
 
 
 def test_sixteen_classes_keep_signs_of_their_own() -> None:
