@@ -264,7 +264,7 @@ def rich() -> Experiment:
     builder.set_item(0, 3, 1, tied[::-1])
     table = builder.build()
     answered = np.ones((20, 4), dtype=bool)
-    answered[:5, 2], answered[4:9, 3], answered[9:12, 1] = False, False, False
+    answered[:7, 2], answered[7:14, 3], answered[12:16, 1] = False, False, False
     return Experiment(
         table=table,
         source=DirichletPrevalence(np.array([[1.0, 1.5]])),
