@@ -5,8 +5,8 @@ from __future__ import annotations
 import textwrap
 from pathlib import Path
 
-from bayeslca.model.describe import counted
 from bayeslca.posterior.posterior import Posterior
+from bayeslca.report.wording import counted
 from bayeslca.responses.item import Item, ItemSpec
 from bayeslca.responses.responses import Responses
 from bayeslca.study.load import Study, load_study
@@ -44,7 +44,7 @@ def assign_new_cases(
     sure = int((table["modal_probability"] >= 0.9).sum())
     return "\n".join(
         [
-            f"Wrote {output}: {counted(len(table), 'case', 'cases')}.",
+            f"Wrote {output}: {counted(len(table), 'case')}.",
             f"Placed in one class with a probability of at least 90 %: {sure:,}.",
             textwrap.fill(CAUTION, 79),
         ]
