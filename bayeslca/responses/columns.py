@@ -11,7 +11,7 @@ from bayeslca.responses.category_order import infer_yes, order_categories, same_
 from bayeslca.responses.item_column import MOST_CATEGORIES, MOST_NUMBERS
 from bayeslca.responses.no_answers import undeclared_no_answers
 from bayeslca.responses.raw_table import RawColumn, RawTable
-from bayeslca.responses.spelling import number_of, spelling_variants
+from bayeslca.responses.spelling import cleanest, number_of, spelling_variants
 
 ColumnKind = Literal[
     "item", "id", "group", "count", "free_text", "number", "date", "constant", "empty",
@@ -231,7 +231,7 @@ def _propose_merges(answers: Mapping[str, int]) -> dict[str, tuple[str, ...]]:
     """Propose one answer for spellings that differ little, and for the words of yes and no."""
     together: dict[str, list[str]] = {name: [name] for name in answers}
     for same in spelling_variants(answers):
-        kept = max(same, key=lambda name: answers[name])
+        kept = cleanest(same, answers)
         together[kept] = sorted(same, key=lambda name: -answers[name])
         for name in same:
             if name != kept:

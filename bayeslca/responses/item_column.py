@@ -15,7 +15,13 @@ from bayeslca.responses.item import Item, ItemSpec
 from bayeslca.responses.no_answers import says_no_answer, undeclared_no_answers
 from bayeslca.responses.problems import Problems, listed_with_counts
 from bayeslca.responses.raw_table import RawColumn, RawTable
-from bayeslca.responses.spelling import find_value, number_of, spelling_variants
+from bayeslca.responses.spelling import (
+    cleanest,
+    find_value,
+    merge_remedy,
+    number_of,
+    spelling_variants,
+)
 from bayeslca.responses.units import MISSING
 
 MOST_CATEGORIES = 64
@@ -156,7 +162,7 @@ class ItemColumn:
             codes = ", ".join(repr(value) for value in values)
             self._problem(
                 f"the codes {codes} have the same name {name!r}. If they are one answer, say so: "
-                f"merge = {{{name!r}: [{codes}]}}; else give them labels of their own in the file."
+                f"{merge_remedy(name, values)}; else give them labels of their own in the file."
             )
         return not double
 
@@ -319,12 +325,12 @@ class ItemColumn:
         """Ask about answers that differ only in spelling."""
         found = [same for same in spelling_variants(counts) if not set(same) <= set(expected)]
         for same in found:
-            kept = next((n for n in same if n in expected), max(same, key=lambda n: counts[n]))
+            kept = next((n for n in same if n in expected), cleanest(same, counts))
             others = [name for name in same if name != kept]
             spelled = {n: counts[n] for n in sorted(same, key=lambda n: -counts[n])}
             self._problem(
                 f"{listed_with_counts(spelled)} differ only in case, spaces, accents or number "
-                f"format. If they are one answer, say so: merge = {{{kept!r}: {others!r}}}."
+                f"format. If they are one answer, say so: {merge_remedy(kept, others)}."
             )
         return bool(found)
 

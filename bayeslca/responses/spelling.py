@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import math
 import re
 import unicodedata
@@ -127,6 +128,25 @@ def spelling_variants(names: Iterable[str]) -> list[tuple[str, ...]]:
     for name in names:
         together.setdefault(folded(name), []).append(name)
     return [tuple(same) for same in together.values() if len(same) > 1]
+
+
+def cleanest(same: Iterable[str], counts: Mapping[str, int]) -> str:
+    """Return the spelling to keep: without odd spaces, in small letters, then the commonest.
+
+    Small letters go before frequency so that all items of a file end up with the same words.
+    """
+    return max(
+        same, key=lambda name: (name == " ".join(name.split()), name.islower(), counts[name])
+    )
+
+
+def merge_remedy(kept: str, others: Iterable[str]) -> str:
+    """Return the ``merge`` that makes one answer of several, as a study file writes it."""
+    return f"merge = {{ {_quoted(kept)} = [{', '.join(map(_quoted, others))}] }}"
+
+
+def _quoted(text: str) -> str:
+    return json.dumps(text, ensure_ascii=False)
 
 
 def find_value(wanted: str, values: Mapping[str, str]) -> list[str]:

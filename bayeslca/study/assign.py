@@ -78,4 +78,5 @@ def _spec(study: Study, item: Item) -> ItemSpec:
         yes=item.yes,
         merge=dict(said.merge) if said else {},
         no_answer=tuple(said.no_answer) if said else (),
+        fitted=True,
     )

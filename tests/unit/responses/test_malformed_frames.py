@@ -77,12 +77,12 @@ FRAMES: dict[str, tuple[Callable[[], Any], dict[str, Any], list[str]]] = {
     "case": (
         lambda: _frame(fenced=["yes", "Yes", "no", "yes", "no", None]),
         {"items": ["fenced"]},
-        ["'yes' (2), 'Yes' (1)", "case, spaces, accents", "merge = {'yes': ['Yes']}"],
+        ["'yes' (2), 'Yes' (1)", "case, spaces, accents", 'merge = { "yes" = ["Yes"] }'],
     ),
     "spaces": (
         lambda: _frame(fenced=["yes", "yes ", "no", "yes", "no", None]),
         {"items": ["fenced"]},
-        ["'yes' (2), 'yes ' (1)", "merge = {'yes': ['yes ']}"],
+        ["'yes' (2), 'yes ' (1)", 'merge = { "yes" = ["yes "] }'],
     ),
     "accents": (
         lambda: _frame(fenced=["sí", "si", "no", "sí", "no", None]),
