@@ -262,3 +262,19 @@ def test_impossible_answers_and_bounds_are_refused():
 def test_a_foreign_model_is_refused():
     with pytest.raises(ModelError, match="not made by to_pymc"):
         Parts.of(pm.Model())
+
+
+def test_variables_stand_in_their_named_places():
+    """The value at (class, "fees=yes") is that response probability of that class; no others."""
+    table, source, units, names, _ = plain(3)
+    parts = Parts.of(build_from_table(table, source, units, names, gibbs=True))
+    elements, prevalence = points(table, source, 1)[0]
+    values = parts.values(elements, prevalence)
+    by_name = dict(zip(names.response, response_probability(table, elements)[0].T, strict=True))
+    binary = {variable.name: variable for variable in parts.variables}["binary_probability"]
+    for i, response in enumerate(binary.coords["binary_response"]):
+        np.testing.assert_array_equal(values["binary_probability"][:, i], by_name[response])
+    assert list(binary.coords["binary_response"]) == ["fees=yes", "fenced=yes"]
+    for c, category in enumerate(TRUST.categories):
+        found = values["probability_of_3"][:, 0, c]
+        np.testing.assert_array_equal(found, by_name[f"trust={category}"])
