@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Literal, NoReturn
+from typing import Literal
 
 from bayeslca.model.naming import check_naming_rules
 from bayeslca.model.notation import parse, statement_error
@@ -194,15 +194,3 @@ def read_statements(texts: Sequence[str], vocabulary: Vocabulary) -> ModelStatem
                 raise statement_error(Refusal(msg, resolved.expression.position, remedy), text)
     check_naming_rules(rules, vocabulary)
     return ModelStatements(tuple(priors), tuple(rules), tuple(constraints))
-
-
-def refuse_until_next_version(resolved: ResolvedRelations | ResolvedQuantity) -> NoReturn:
-    """Refuse what can be read but is not put to work yet: the one place to lift it."""
-    if isinstance(resolved, ResolvedRelations):
-        msg = "constraints and hypotheses can be read, but not used yet (in the next version)"
-        position = resolved.relations[0].position
-    else:
-        msg = "quantities can be read, but not computed yet (in the next version)"
-        position = resolved.expression.position
-    remedy = "Until then use priors (P(fees=yes | managed) ~ Beta(9, 2)) and naming rules."
-    raise statement_error(Refusal(msg, position, remedy), resolved.text)
