@@ -36,8 +36,18 @@ GROUP = "bayeslca"
 _STATISTICS = ("lp", "log_likelihood", "log_prior")
 
 
-def save(posterior: Posterior, path: Path, *, replace: bool) -> None:
+def save(posterior: Posterior, path: Path, *, replace: bool, per_unit: bool = True) -> None:
     """Write a posterior aside and put it in place whole.
+
+    Parameters
+    ----------
+    posterior : Posterior
+    path : Path
+    replace : bool
+        Overwrite a file that exists.
+    per_unit : bool
+        Write the log likelihood per unit too. It is most of the file where units are many, and
+        a loaded posterior computes it anew.
 
     Raises
     ------
@@ -52,7 +62,7 @@ def save(posterior: Posterior, path: Path, *, replace: bool) -> None:
         raise StorageError(msg)
     aside = path.with_name(f".{path.name}.{uuid4().hex[:8]}.partial")
     try:
-        _file_tree(posterior).to_netcdf(aside, engine="h5netcdf")
+        _file_tree(posterior, per_unit=per_unit).to_netcdf(aside, engine="h5netcdf")
         os.replace(aside, path)
     except OSError as error:
         msg = f"{path} cannot be written: {error}."
@@ -101,10 +111,12 @@ def _check_origin(tree: DataTree, path: Path) -> None:
         raise StorageError(msg)
 
 
-def _file_tree(posterior: Posterior) -> DataTree:
+def _file_tree(posterior: Posterior, *, per_unit: bool) -> DataTree:
     from xarray import DataTree
 
     tree = posterior.tree.copy()
+    if not per_unit:
+        del tree["unit_log_likelihood"]
     tree[GROUP] = DataTree(_own_group(posterior))
     return tree
 

@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 import bayeslca
+from bayeslca.posterior.storage import save
 from bayeslca.report.content import ReportContent
 from bayeslca.study.changes import changes_since
 from bayeslca.study.load import Study, load_study
@@ -237,7 +238,7 @@ def _keep_fit(folder: Path, file: str, posterior: Posterior, steps: Steps) -> No
     if file in steps.kept and steps.previous is not None:
         shutil.copyfile(steps.previous.folder / file, folder / file)
     else:
-        posterior.save(folder / file)
+        save(posterior, folder / file, replace=False, per_unit=file == OWN_FIT)
 
 
 def _outcome(

@@ -48,6 +48,14 @@ def test_a_round_trip_changes_nothing(
     assert repr(saved) == repr(loaded)
 
 
+def test_the_log_likelihood_per_unit_can_be_left_out(posterior: Posterior, tmp_path: Path) -> None:
+    storage.save(posterior, tmp_path / "small.nc", replace=False, per_unit=False)
+    with xr.open_datatree(tmp_path / "small.nc", engine="h5netcdf") as file:
+        assert "unit_log_likelihood" not in file.children
+    xr.testing.assert_identical(posterior.tree, Posterior.load(tmp_path / "small.nc").tree)
+    assert "unit_log_likelihood" in posterior.tree.children
+
+
 def test_a_loaded_posterior_assigns_new_cases(grouped: Posterior, tmp_path: Path) -> None:
     grouped.save(tmp_path / "fit.nc")
     loaded = Posterior.load(tmp_path / "fit.nc")
