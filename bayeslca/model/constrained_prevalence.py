@@ -144,6 +144,10 @@ class ConstrainedPrevalence:
             and (moved == orders)
         )
 
+    def keeps_ties(self, permutation: Ints) -> bool:
+        """Tell whether a permutation (row, K) keeps known and equal prevalences."""
+        return self.element_map(permutation) is not None
+
     def element_map(self, permutation: Ints) -> Ints | None:
         """Return where each element comes from; None when known or equal ones would change."""
         element = np.take_along_axis(self.element, np.asarray(permutation), axis=1)
@@ -154,6 +158,11 @@ class ConstrainedPrevalence:
         mapped[self.element[self.element >= 0]] = element[self.element >= 0]
         same = np.append(mapped, -1)[self.element]
         return mapped if np.array_equal(same, element) else None
+
+    def scatter(self, rng: np.random.Generator) -> Floats:
+        """Draw prevalences (row, K) evenly over what the constraints allow."""
+        even = np.ones_like(self.blocks.element_prior)
+        return self.prevalence(draw_inside(self.blocks.with_prior(even), 1, rng)[0])
 
     def to_pymc(self, name: str, dims: tuple[str, ...]) -> Any:
         """Refuse: constrained prevalences are not written as a PyMC model yet."""

@@ -80,6 +80,15 @@ class DirichletPrevalence:
         """Number of latent classes."""
         return int(self.concentration.shape[1])
 
+    @property
+    def density_parameter(self) -> Floats:
+        """Parameters (row, K) whose product of powers is the density: the concentration."""
+        return self.concentration
+
+    def keeps_ties(self, permutation: Ints) -> bool:
+        """Tell whether a permutation (row, K) keeps known and equal prevalences: none are."""
+        return True
+
     def draw(self, rng: np.random.Generator, class_counts: Floats) -> Floats:
         """Draw prevalences (row, K) given the cases in each class (row, K)."""
         return np.stack([rng.dirichlet(a) for a in self.concentration + class_counts])
@@ -87,6 +96,10 @@ class DirichletPrevalence:
     def simulate(self, rng: np.random.Generator) -> Floats:
         """Draw prevalences (row, K) from the prior."""
         return self.draw(rng, np.zeros_like(self.concentration))
+
+    def scatter(self, rng: np.random.Generator) -> Floats:
+        """Draw prevalences (row, K) evenly over all possible ones."""
+        return rng.dirichlet(np.ones(self.n_classes), size=self.n_rows)
 
     def log_density(self, prevalence: Floats) -> Floats:
         """Return the normalised log prior density (...) of prevalences (..., row, K)."""

@@ -12,9 +12,11 @@ import numpy as np
 
 from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import SamplingError
+from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.symmetry import Symmetry, element_map
 from bayeslca.model.table import Table, UnitTable
+from bayeslca.sampling.bounds_layout import Bounded, Shares, bounded, shares
 from bayeslca.sampling.layout import Layout, arrange, workspace
 
 if TYPE_CHECKING:
@@ -39,8 +41,12 @@ class Task:
     ----------
     table : Table
     units : UnitTable
-    source : DirichletPrevalence
+    source : DirichletPrevalence or ConstrainedPrevalence
     layout : Layout
+    bounds : Bounded
+        Bounds and orders of the table's elements.
+    shares : Shares
+        Constrained prevalences; of none where they are not.
     permutations : ndarray of int64, shape (M, groups, K)
         Permutation moves to propose; none when labels only differ where the prior does not.
     element_maps : ndarray of int64, shape (M, E)
@@ -48,10 +54,17 @@ class Task:
 
     table: Table
     units: UnitTable
-    source: DirichletPrevalence
+    source: DirichletPrevalence | ConstrainedPrevalence
     layout: Layout
+    bounds: Bounded
+    shares: Shares
     permutations: Ints
     element_maps: Ints
+
+    @property
+    def is_bounded(self) -> bool:
+        """True when probabilities are bounded or ordered, or prevalences constrained."""
+        return bool(self.bounds.block.shape[0] or self.shares.element.shape[0])
 
 
 @dataclass(frozen=True, eq=False)
@@ -108,27 +121,24 @@ def make_task(
     SamplingError
         Where the Gibbs sampler has no exact step.
     """
-    if not isinstance(source, DirichletPrevalence):
+    if not isinstance(source, DirichletPrevalence | ConstrainedPrevalence):
         msg = (
             f"prevalences come from {type(source).__name__}, for which the Gibbs sampler has no "
             "exact step. Use sampler='nuts'."
         )
         raise SamplingError(msg)
-    if table.is_bounded:
-        msg = (
-            "the model bounds or orders probabilities (statements with <, >, <= or >=), which "
-            "the Gibbs sampler does not draw yet. Leave these statements out."
-        )
-        raise SamplingError(msg)
     permutations = np.zeros((0, table.n_prevalence_rows, table.n_classes), dtype=np.int64)
     if labels is not None and labels.table_group.n_members > labels.prior_group.n_members:
-        permutations = np.ascontiguousarray(labels.table_group.proposals, dtype=np.int64)
+        proposals = np.ascontiguousarray(labels.table_group.proposals, dtype=np.int64)
+        permutations = proposals[[source.keeps_ties(move) for move in proposals]]
     maps = [element_map(table, permutation) for permutation in permutations]
     return Task(
         table=table,
         units=units,
         source=source,
         layout=arrange(table, units, source.n_rows),
+        bounds=bounded(table),
+        shares=shares(source, table.n_classes),
         permutations=permutations,
         element_maps=np.asarray(maps, dtype=np.int64).reshape(-1, table.n_elements),
     )
@@ -203,10 +213,8 @@ class Chain:
         from bayeslca.sampling.gibbs import run_sweeps
 
         task = self.task
-        failed = run_sweeps(
-            task.layout,
-            self._work,
-            task.source.concentration,
+        rest = (
+            task.source.density_parameter,
             task.permutations,
             task.element_maps,
             MOVES_EVERY,
@@ -220,6 +228,15 @@ class Chain:
             kept.swaps,
             self.rng,
         )
+        if task.is_bounded:
+            from bayeslca.sampling.bounded_gibbs import run_bounded_sweeps, scratch
+
+            room = scratch(task.layout, task.shares)
+            failed = run_bounded_sweeps(
+                task.layout, self._work, task.bounds, task.shares, room, *rest
+            )
+        else:
+            failed = run_sweeps(task.layout, self._work, *rest)
         self.sweeps += kept.log_likelihood.size * thin
         if failed:
             msg = "some answers have probability 0 in every class; check the fixed probabilities."

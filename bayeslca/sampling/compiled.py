@@ -13,7 +13,18 @@ Function = TypeVar("Function", bound=Callable[..., Any])
 SETTINGS: dict[str, Any] = {"nogil": True, "error_model": "numpy", "boundscheck": False}
 """No lock held, so that chains run on threads. ``fastmath`` stays off: sums keep their order."""
 
-KERNEL_FILES = ("compiled", "layout", "split", "cells", "label_move", "gibbs")
+KERNEL_FILES = (
+    "compiled",
+    "layout",
+    "bounds_layout",
+    "split",
+    "truncated",
+    "bounded_blocks",
+    "cells",
+    "label_move",
+    "gibbs",
+    "bounded_gibbs",
+)
 
 
 def compiled(function: Function) -> Function:

@@ -204,7 +204,7 @@ def run_sweeps(
                     rng,
                 )
             if step == thin - 1:
-                _keep(elements, prevalence, kept_elements, kept_prevalence, draw)
+                keep_state(elements, prevalence, kept_elements, kept_prevalence, draw)
             log_likelihood = sweep(layout, work, concentration, elements, prevalence, rng)
             if math.isnan(log_likelihood):
                 return 1
@@ -214,13 +214,14 @@ def run_sweeps(
 
 
 @compiled_part
-def _keep(
+def keep_state(
     elements: Floats,
     prevalence: Floats,
     kept_elements: Floats,
     kept_prevalence: Floats,
     draw: int,
 ) -> None:
+    """Copy a state to a place in the arrays of kept draws."""
     for e in range(elements.shape[0]):
         kept_elements[draw, e] = elements[e]
     for g in range(prevalence.shape[0]):

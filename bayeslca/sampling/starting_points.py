@@ -13,8 +13,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
+from bayeslca.model.blocks import BlockArrays
 from bayeslca.model.prior_density import log_prior
-from bayeslca.model.probabilities import draw_elements, log_unit_likelihood
+from bayeslca.model.probabilities import log_unit_likelihood
+from bayeslca.model.truncated_prior import draw_inside
 from bayeslca.sampling.threads import on_threads
 
 if TYPE_CHECKING:
@@ -212,15 +214,11 @@ def _scattered(task: Task, rng: np.random.Generator, *, flat: bool) -> Chain:
     """Begin at a draw from the prior, or from flat Dirichlets where priors may hold runs close."""
     from bayeslca.sampling.chain import Chain
 
-    elements = draw_elements(task.table, rng)
-    prevalence = task.source.simulate(rng)
+    blocks = BlockArrays.of(task.table)
     if flat:
-        gammas = rng.standard_exponential(task.table.n_elements)
-        starts = task.table.block_start
-        if task.table.n_blocks:
-            sums = np.add.reduceat(gammas, starts[:-1])
-            elements = gammas / np.repeat(sums, np.diff(starts))
-        prevalence = rng.dirichlet(np.ones(task.source.n_classes), size=task.source.n_rows)
+        blocks = blocks.with_prior(np.ones(task.table.n_elements))
+    elements = draw_inside(blocks, 1, rng)[0]
+    prevalence = task.source.scatter(rng) if flat else task.source.simulate(rng)
     return Chain(task, elements, np.maximum(prevalence, 1e-300), rng)
 
 
