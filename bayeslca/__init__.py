@@ -7,8 +7,10 @@ from typing import Any
 
 _HOME = {
     "Comparison": "bayeslca.assess.compare",
+    "GibbsStep": "bayeslca.sampling.pymc_step",
     "Groups": "bayeslca.responses.item",
     "Item": "bayeslca.responses.item",
+    "ItemSpec": "bayeslca.responses.item",
     "LatentClassModel": "bayeslca.model.latent_class_model",
     "Posterior": "bayeslca.posterior.posterior",
     "Responses": "bayeslca.responses.responses",
@@ -19,8 +21,10 @@ _HOME = {
 
 __all__ = [
     "Comparison",
+    "GibbsStep",
     "Groups",
     "Item",
+    "ItemSpec",
     "LatentClassModel",
     "Posterior",
     "Responses",

@@ -84,6 +84,7 @@ def diagnose(posterior: Posterior) -> Diagnostics:
         *_about_starts(posterior),
         *_about_classes(posterior, state),
         *posterior.relabelled.findings,
+        *_about_nuts(posterior),
         *_about_the_model(posterior, state),
     ]
     order = {"problem": 0, "warning": 1, "note": 2}
@@ -182,6 +183,15 @@ def _about_nuts(posterior: Posterior) -> Iterator[Finding]:
             ),
             remedy="Use sampler='gibbs', which does.",
         )
+
+
+def _about_nuts(posterior: Posterior) -> tuple[Finding, ...]:
+    """Return what NUTS, which lacks the permutation move, cannot show."""
+    if posterior.draws.sampler != "nuts":
+        return ()
+    from bayeslca.sampling.nuts import nuts_findings
+
+    return nuts_findings(posterior.model.symmetry)
 
 
 def _about_starts(posterior: Posterior) -> Iterator[Finding]:

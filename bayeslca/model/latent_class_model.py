@@ -305,11 +305,40 @@ class LatentClassModel:
             **options,
         )
 
-    def to_pymc(self, responses: Responses) -> Any:
-        """Return the model as an ordinary ``pymc.Model``, to be extended or sampled."""
+    def to_pymc(
+        self,
+        responses: Responses,
+        *,
+        by_case: bool = False,
+        gibbs: bool = False,
+        concentration: Any = None,
+        into: Any = None,
+    ) -> Any:
+        """Return the model as an ordinary ``pymc.Model``, to be extended or sampled.
+
+        Parameters
+        ----------
+        responses : Responses
+        by_case : bool
+            A line per case rather than per distinct pattern of answers: what pointwise log
+            likelihoods and predictive draws of cases need. Slower.
+        gibbs : bool
+            Leave out the transforms to the real line, as ``GibbsStep`` needs.
+        concentration : tensor or array, optional
+            Dirichlet parameters of the prevalences in place of the model's own.
+        into : pymc.Model, optional
+            Add to this model instead of a new one.
+        """
         from bayeslca.model.pymc_model import build
 
-        return build(self, responses)
+        return build(
+            self,
+            responses,
+            by_case=by_case,
+            gibbs=gibbs,
+            concentration=concentration,
+            into=into,
+        )
 
     def to_dict(self) -> dict[str, Any]:
         """Return the model as plain values, for saving."""

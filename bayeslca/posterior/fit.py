@@ -36,6 +36,8 @@ def fit(
     max_sweeps: int | None = None,
     threads: int | None = None,
     progress: bool | Callable[..., None] = True,
+    nuts_backend: Literal["auto", "pymc", "nutpie"] = "auto",
+    target_accept: float = 0.9,
 ) -> Posterior:
     """Sample the posterior of a model given responses.
 
@@ -59,6 +61,10 @@ def fit(
     threads : int, optional
     progress : bool or callable
         True shows a bar on a terminal.
+    nuts_backend : {"auto", "pymc", "nutpie"}
+        What runs NUTS; "auto" takes nutpie where it is installed.
+    target_accept : float
+        Acceptance probability that NUTS adapts its steps to.
 
     Raises
     ------
@@ -90,6 +96,8 @@ def fit(
             max_sweeps=max_sweeps or MAX_ITERATIONS,
             threads=threads,
             progress=progress is True,
+            nuts_backend=nuts_backend,
+            target_accept=target_accept,
         )
     else:
         drawn = draw_posterior(
