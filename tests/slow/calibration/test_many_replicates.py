@@ -5,11 +5,16 @@ Measured on two cores: see the durations that pytest prints; meant to stay below
 
 from __future__ import annotations
 
+from dataclasses import replace
+
+import numpy as np
 import pytest
 from experiments import (
+    Data,
     Experiment,
     exploratory,
     front_door,
+    gibbs,
     many_categories_some_missing,
     named_nearly_alike,
     named_two_groups,
@@ -18,6 +23,9 @@ from experiments import (
     smallest,
     two_groups,
 )
+
+from bayeslca.model.simulate import Parameters
+from bayeslca.responses.units import MISSING
 
 SEED = 20261207
 REPLICATES = 300
@@ -37,6 +45,21 @@ EXPERIMENTS = {
 def test_ranks_are_uniform_in_many_replicates(experiment: Experiment) -> None:
     found = p_values(experiment, SEED, REPLICATES)
     assert smallest(found) > LEVEL, found
+
+
+def half_of_a_pair_left_out(
+    experiment: Experiment, data: Data, seed: np.random.SeedSequence
+) -> Parameters:
+    """Drop an answer whose partner is missing."""
+    codes = data.codes.copy()
+    half = (codes[:, 2:] == MISSING).any(axis=1)
+    codes[half, 2:] = MISSING
+    return gibbs(experiment, replace(data, codes=codes), seed)
+
+
+def test_an_engine_that_leaves_out_half_answered_pairs_is_rejected() -> None:
+    found = p_values(rich(), SEED, REPLICATES, half_of_a_pair_left_out)
+    assert smallest(found) < LEVEL, found
 
 
 def test_chains_that_the_stopping_rule_ends_are_calibrated() -> None:
