@@ -144,7 +144,7 @@ def _heavy_priors(model: LatentClassModel, responses: Responses) -> Iterable[Fin
             level="warning",
             message=(
                 f"The prior on '{', '.join(items)}' in {_classes(classes)} counts for "
-                f"{heaviest.weight:g} cases, against about {heaviest.expected:.0f} expected "
+                f"{heaviest.weight:.3g} cases, against about {heaviest.expected:.0f} expected "
                 f"answers (more than {HEAVY:.0%})."
             ),
             remedy=(

@@ -112,7 +112,7 @@ def _prevalences(model: LatentClassModel, n_cases: int | None) -> list[str]:
         where = f"In {level}: " if model.groups and not alike else ""
         against = "" if n_cases is None or model.groups else f", against {n_cases:,} observed"
         each = f"In each {model.groups.name}: " if model.groups and alike else ""
-        weight = counted(float(a.sum()), "case", "cases")
+        weight = counted(round(float(a.sum()), 1), "case", "cases")
         text = f"{where}{each}{_dirichlet(a)}{_origin(model, origin)}; counts for {weight}"
         out += _indented(f"{text}{against}.")
     if model.groups:
@@ -135,7 +135,7 @@ def _response_priors(model: LatentClassModel, weights: Sequence[PriorWeight]) ->
     for origin in dict.fromkeys(weight.origin for weight in weights):
         if origin != DEFAULT:
             stated = [weight for weight in weights if weight.origin == origin]
-            counts = f"counts for {counted(stated[0].weight, 'case', 'cases')} in the class"
+            counts = f"counts for {counted(round(stated[0].weight, 1), 'case', 'cases')} in the class"
             out += _indented(f"{origin}{_source(model, origin)}; {counts}{_against(stated)}.")
     if any(weight.heavy for weight in weights):
         out += _indented(
