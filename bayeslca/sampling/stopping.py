@@ -85,7 +85,8 @@ def judge(quantities: Mapping[str, Floats]) -> Convergence:
         with np.errstate(invalid="ignore", divide="ignore"):  # chains that never move: nan
             bulk = float(array_stats.ess(values, method="bulk"))
             tail = float(array_stats.ess(values, method="tail", prob=TAIL))
-            r_hat = float(array_stats.rhat(values))
+            # A single chain has no R-hat; the diagnostics say so, and it must not run for ever.
+        r_hat = float(array_stats.rhat(values)) if len(values) > 1 else 1.0
         ess = min(bulk, tail) if math.isfinite(bulk) and math.isfinite(tail) else 0.0
         if ess < worst_ess:
             worst_ess, ess_of = ess, name

@@ -81,3 +81,10 @@ def test_some_units_keep_their_rows():
     assert chosen.log_weight.shape == (0, 3)
     with pytest.raises(IndexError):
         some_units(units([5]), np.array([3]))
+
+
+def test_a_single_chain_is_judged_by_its_effective_size():
+    draws = np.random.default_rng(5).normal(size=(1, 2000))
+    convergence = judge({"x": draws})
+    assert convergence.r_hat == 1.0
+    assert convergence.meets(StoppingRule(ess=1000.0))
