@@ -84,7 +84,6 @@ def diagnose(posterior: Posterior) -> Diagnostics:
         *_about_starts(posterior),
         *_about_classes(posterior, state),
         *posterior.relabelled.findings,
-        *_about_nuts(posterior),
         *_about_the_model(posterior, state),
     ]
     order = {"problem": 0, "warning": 1, "note": 2}
@@ -173,25 +172,10 @@ def _about_nuts(posterior: Posterior) -> Iterator[Finding]:
             remedy="Use sampler='gibbs' where it can be used, or a higher target_accept.",
             value=float(diverging),
         )
-    if draws.sampler == "nuts" and not posterior.model.symmetry.table_group.is_identity:
-        yield Finding(
-            kind="nuts_keeps_labels",
-            level="note",
-            message=(
-                "NUTS does not move between labellings of the classes, so their weights are not "
-                "known from these chains"
-            ),
-            remedy="Use sampler='gibbs', which does.",
-        )
+    if draws.sampler == "nuts":
+        from bayeslca.sampling.nuts import nuts_findings
 
-
-def _about_nuts(posterior: Posterior) -> tuple[Finding, ...]:
-    """Return what NUTS, which lacks the permutation move, cannot show."""
-    if posterior.draws.sampler != "nuts":
-        return ()
-    from bayeslca.sampling.nuts import nuts_findings
-
-    return nuts_findings(posterior.model.symmetry)
+        yield from nuts_findings(posterior.model.symmetry)
 
 
 def _about_starts(posterior: Posterior) -> Iterator[Finding]:

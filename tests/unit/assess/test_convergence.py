@@ -241,11 +241,18 @@ def test_divergences_of_nuts_are_a_problem() -> None:
     diverging = np.zeros((CHAINS, DRAWS))
     fine = Maker(more={"sampler": "nuts", "statistics": {"diverging": diverging}})
     assert diagnose(fine.posterior()).trustworthy
-    assert kinds(diagnose(fine.posterior())) == {"nuts_keeps_labels"}
+    assert kinds(diagnose(fine.posterior())) == set()
     diverging[1, 7:10] = 1
     found = diagnose(fine.posterior())
     assert not found.trustworthy
     assert "3 of 1,600 NUTS draws diverged" in found.verdict
+
+
+def test_nuts_cannot_weigh_labellings_that_only_priors_tell_apart() -> None:
+    nuts = {"sampler": "nuts", "statistics": {"diverging": np.zeros((CHAINS, DRAWS))}}
+    named = Maker(classes=("high", "low"), statements=NAMED, more=nuts)
+    assert "labellings_not_visited" in kinds(diagnose(named.posterior()))
+    assert "labellings_not_visited" not in kinds(diagnose(Maker(more=nuts).posterior()))
 
 
 def test_the_limit_is_a_warning_where_everything_has_converged() -> None:
