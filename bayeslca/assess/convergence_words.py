@@ -41,7 +41,7 @@ def convergence_text(verdict: str, findings: Sequence[Finding]) -> str:
 
     lines = [fill(verdict, 79)]
     for finding in findings:
-        text = f"{finding.level}: {finding.message}. {finding.remedy}".rstrip(". ") + "."
+        text = f"{finding.level}: {_sentence(finding.message)} {finding.remedy}".rstrip()
         lines.append(fill(text, 79, initial_indent="- ", subsequent_indent="  "))
     return "\n".join(lines)
 

@@ -144,8 +144,8 @@ def _heavy_priors(model: LatentClassModel, responses: Responses) -> Iterable[Fin
             level="warning",
             message=(
                 f"The prior on '{', '.join(items)}' in {_classes(classes)} counts for "
-                f"{heaviest.weight:.3g} cases, against about {heaviest.expected:.0f} expected "
-                f"answers (more than {HEAVY:.0%})."
+                f"{round(heaviest.weight, 1):,g} cases, against about {heaviest.expected:.0f} "
+                f"expected answers (more than {HEAVY:.0%})."
             ),
             remedy=(
                 "Merge rare categories, or say in the report that this rests on the prior."
