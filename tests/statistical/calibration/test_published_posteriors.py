@@ -70,8 +70,8 @@ def sampled(name: str, n_classes: int) -> Draws:
         model,
         compile_units(model.table, units(name)),
         seed=SEED + n_classes,
-        draws=2000,
-        ess=2000,
+        draws=5000,
+        ess=10_000,
         progress=False,
     )
 
@@ -99,7 +99,7 @@ def test_posterior_moments_and_quantiles_are_those_computed_elsewhere(name: str)
     assert {part["quantity"] for part in expected} == set(drawn)
     for part in expected:
         x = drawn[part["quantity"]]
-        assert array_stats.ess(x, method="mean") > 1500, part["quantity"]
+        assert array_stats.ess(x, method="mean") > 5000, part["quantity"]
         square = (x - x.mean()) ** 2
         # The Monte Carlo error of the sd, by that of the mean square deviation.
         mcse_sd = array_stats.mcse(square, method="mean") / (2 * x.std())
@@ -150,9 +150,9 @@ def best_fit(name: str, n_classes: int, starts: int = 12, steps: int = 3000):
     """Climb from the best of some posterior draws spread over all chains."""
     draws = sampled(name, n_classes)
     pattern, count = units(name).pattern, units(name).count
-    spread = draws.log_likelihood[:, 9::10].ravel()
-    flat = draws.elements[:, 9::10].reshape(spread.size, -1, n_classes, 2)[..., 1]
-    prevalence = draws.prevalence[:, 9::10].reshape(spread.size, n_classes)
+    spread = draws.log_likelihood[:, 24::25].ravel()
+    flat = draws.elements[:, 24::25].reshape(spread.size, -1, n_classes, 2)[..., 1]
+    prevalence = draws.prevalence[:, 24::25].reshape(spread.size, n_classes)
     best = np.argsort(-spread)[:starts]
     fits = [climb(pattern, count, prevalence[s], flat[s], steps) for s in best]
     return max(fits, key=lambda fit: fit[0])
