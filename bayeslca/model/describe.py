@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Iterable, Sequence
+from math import exp
 from typing import TYPE_CHECKING
 
 from scipy.special import betaincinv
 
+from bayeslca.model.constraint_words import in_words
 from bayeslca.model.identifiability import count_free
 from bayeslca.model.prior_weights import HEAVY, PriorWeight, prior_weights
 from bayeslca.model.priors import DEFAULT
@@ -45,6 +47,7 @@ def describe(model: LatentClassModel, responses: Responses | None = None) -> str
         "What each class answers",
         *_response_priors(model, weights),
         "",
+        *_constraints(model),
         "What the defaults mean",
         *_defaults(model.n_classes, n_cases),
     ]
@@ -76,7 +79,28 @@ def _classes(model: LatentClassModel) -> list[str]:
     for prior in model.stated.priors:
         if _tells_apart(prior):
             out += _indented(f"{prior.text}{_source(model, prior.text)}")
+    for constraint in model.stated.constraints:
+        if any(getattr(t, "latent_class", None) is not None for t in constraint.terms.values()):
+            out += _indented(f"{constraint.text}{_source(model, constraint.text)}")
     return out
+
+
+def _constraints(model: LatentClassModel) -> list[str]:
+    """Say in words what is held to be equal, known, bounded or ordered."""
+    if not model.stated.constraints:
+        return []
+    out = ["What is held to be equal, known or ordered"]
+    for constraint in model.stated.constraints:
+        words = in_words(constraint, model.vocabulary)
+        out += _indented(f"{constraint.text}: {words}{_source(model, constraint.text)}.")
+    probability = model.log_bounds_probability
+    if probability.value < 0.0:
+        out += _indented(
+            "The priors above are cut off at these bounds, which have a probability of "
+            f"{exp(probability.value):.3g} under them: within the bounds they favour other values "
+            "than they would alone."
+        )
+    return [*out, ""]
 
 
 def _ruled(model: LatentClassModel) -> frozenset[int]:
@@ -115,8 +139,12 @@ def _prevalences(model: LatentClassModel, n_cases: int | None) -> list[str]:
         weight = counted(round(float(a.sum()), 1), "case", "cases")
         text = f"{where}{each}{_dirichlet(a)}{_origin(model, origin)}; counts for {weight}"
         out += _indented(f"{text}{against}.")
-    if model.groups:
+    if model.groups and not model.free_items:
         out += _indented("Response probabilities are the same in all groups.")
+    elif model.groups:
+        free = [model.items[j].name for j in sorted(model.free_items)]
+        rest = "" if len(free) == len(model.items) else "; those of the others are the same in all"
+        out += _indented(f"Groups differ in the response probabilities of {_listed(free)}{rest}.")
     return out
 
 
@@ -124,18 +152,26 @@ def _response_priors(model: LatentClassModel, weights: Sequence[PriorWeight]) ->
     out: list[str] = []
     defaults = [weight for weight in weights if weight.origin == DEFAULT]
     where = "every class" if len(defaults) == len(weights) else "classes without a stated prior"
-    for size in sorted({len(weight.concentration) for weight in defaults}):
-        of_size = [weight for weight in defaults if len(weight.concentration) == size]
+    for concentration in sorted({w.concentration for w in defaults if not w.shared}):
+        size = len(concentration)
+        of_size = [w for w in defaults if w.concentration == concentration and not w.shared]
         items = dict.fromkeys(name for weight in of_size for name in weight.items)
         out += _indented(
             f"{_listed(items)}: {_dirichlet(of_size[0].concentration)} on the {size} answers in "
             f"{where}, the default (uniform); counts for {counted(size, 'case', 'cases')} in the "
             f"class{_against(of_size)}."
         )
+    for shared in (weight for weight in defaults if weight.shared):
+        out += _indented(
+            f"{shared.block} and what is equal to it, or left beside it: "
+            f"{_dirichlet(shared.concentration)}, which follows from the defaults; counts "
+            f"for {counted(shared.weight, 'case', 'cases')}{_against([shared])}."
+        )
     for origin in dict.fromkeys(weight.origin for weight in weights):
         if origin != DEFAULT:
             stated = [weight for weight in weights if weight.origin == origin]
-            counts = f"counts for {counted(round(stated[0].weight, 1), 'case', 'cases')} in the class"
+            weight = round(stated[0].weight, 1)
+            counts = f"counts for {counted(weight, 'case', 'cases')} in the class"
             out += _indented(f"{origin}{_source(model, origin)}; {counts}{_against(stated)}.")
     if any(weight.heavy for weight in weights):
         out += _indented(

@@ -38,6 +38,8 @@ class PriorWeight:
         Their sum: as many cases as the prior counts for.
     expected : float or None
         Answers expected to bear on the block under the prior prevalences; None without responses.
+    shared : bool
+        True where a statement made the block: it stands in several places, or in a part of one.
     """
 
     block: str
@@ -47,6 +49,7 @@ class PriorWeight:
     origin: str
     weight: float
     expected: float | None
+    shared: bool = False
 
     @property
     def share(self) -> float | None:
@@ -87,12 +90,19 @@ def prior_weights(
                 items=tuple(dict.fromkeys(model.items[j].name for _, j, _ in at)),
                 classes=tuple(dict.fromkeys(model.class_names[k] for _, _, k in at)),
                 concentration=concentration,
-                origin=model.response_prior_origin(*at[0]) if at else DEFAULT,
+                origin=_origin(model, at),
+                shared=bool(model.response_assumptions.tied.reasons[b]),
                 weight=sum(concentration),
                 expected=expected,
             )
         )
     return tuple(out)
+
+
+def _origin(model: LatentClassModel, at: list[tuple[int, int, int]]) -> str:
+    """Return the statement that gave a block its prior: the first of the places it stands in."""
+    origins = [model.response_prior_origin(*place) for place in at]
+    return next((origin for origin in origins if origin != DEFAULT), DEFAULT)
 
 
 def _places(model: LatentClassModel) -> list[list[tuple[int, int, int]]]:
