@@ -12,7 +12,7 @@ their folders).
 - ``text`` blocks are what the block before them prints.
 
 In what is shown, ``...`` stands for anything. Whole numbers must be exact; numbers with a point
-come from sampling, and may differ by 0.03 or 3 %. Blocks that cannot run say why:
+come from sampling, and may differ by 2 in the last digit or by 3 %. Blocks that cannot run say why:
 ``<!-- not run: reason -->``.
 """
 
@@ -97,7 +97,8 @@ def is_close(said: str, found: str) -> bool:
     if "." not in said:
         return said == found
     a, b = (float(text.replace(",", "")) for text in (said, found))
-    return abs(a - b) <= max(0.03, 0.03 * abs(a))
+    last_digit = 10.0 ** -len(said.partition(".")[2])
+    return abs(a - b) <= max(2.01 * last_digit, 0.03 * abs(a))
 
 
 def run_console(block: Block, where: str) -> None:
@@ -133,6 +134,8 @@ def run_toml(block: Block) -> None:
     if named:
         path = Path(named[1])
         path.write_text(block.text, encoding="utf-8")
+        if block.said.startswith("wrong on purpose"):
+            return
         study = load_study(path)
         assert study.responses.n_cases
         assert study.model is None or study.model.n_classes
