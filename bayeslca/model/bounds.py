@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from itertools import accumulate
+from itertools import accumulate, pairwise
 
 import numpy as np
 
@@ -72,8 +72,11 @@ def element_bounds(tied: Tied, links: Sequence[Link]) -> Bounds:
             continue  # equal and >=: true
         elif one.constant == two.constant:
             orders.append(ElementOrder(one.elements[0], two.elements[0], link.text))
+        elif _are_the_block(one, two, tied):  # c x > d (1 - x)
+            lower = two.constant / (one.constant + two.constant)
+            bounds.append(ElementBound(one.elements[0], lower, 1.0, link.text))
         else:
-            reason = "known values leave its two answers different shares of 1"
+            reason = "known or equal values leave its two answers different shares of 1"
             raise ModelError(_not_exact(link, reason))
     found = Bounds(tuple(bounds), tuple(orders))
     _refuse_no_room(tied, found)
@@ -116,6 +119,15 @@ def _refuse_no_room(tied: Tied, found: Bounds) -> None:
     texts = guilty_statements(stated, feasible)
     msg = f"{contradiction(texts)} Where only one value is left, write it with '='."
     raise ModelError(msg)
+
+
+def _are_the_block(one: Form, two: Form, tied: Tied) -> bool:
+    """Whether two elements are all of a block."""
+    first = min(one.elements[0], two.elements[0])
+    starts = [0, *accumulate(map(len, tied.blocks))]
+    return abs(one.elements[0] - two.elements[0]) == 1 and any(
+        (a, b) == (first, first + 2) for a, b in pairwise(starts)
+    )
 
 
 def _form(side: Side, forms: Mapping[Place, Form]) -> Form:

@@ -1,8 +1,8 @@
 """How probable the bounds are under the prior: what the constrained prior is divided by.
 
 Exact where it is simple (a Beta between constants; exchangeable probabilities in a partial
-order), else by drawing, step by step where the bounds are improbable. Drawn values come with
-their Monte Carlo error and are the same every time.
+order; a chain or tree of Betas, by quadrature), else by drawing, step by step where the bounds
+are improbable. Drawn values come with their Monte Carlo error and are the same every time.
 """
 
 from __future__ import annotations
@@ -30,6 +30,8 @@ LEAST_KEPT = 1_000
 MOST_ORDERED = 14
 """Partial orders of more elements are not counted exactly."""
 WALKERS, SWEEPS = 100, 100
+GRID = 20_000
+"""Cells of the grid on which trees of Betas are integrated: errors of about 1e-7."""
 SEED = 20261201
 
 
@@ -59,9 +61,10 @@ def log_bounds_probability(blocks: Blocks) -> LogProbability:
 
 
 def _of_component(blocks: Blocks, component: Component) -> LogProbability:
-    for exact in (_one_beta(blocks, component), _exchangeable(blocks, component)):
-        if exact is not None:
-            return LogProbability(float(np.log(exact)))
+    for exact in (_exchangeable, _tree):
+        share = exact(blocks, component)
+        if share is not None and share > 0.0:
+            return LogProbability(float(np.log(share)))
     rng = np.random.default_rng(SEED)
     n_kept = int(keeps(blocks, component, draw_component(blocks, component, DRAWS, rng)).sum())
     if n_kept < LEAST_KEPT:
@@ -70,22 +73,95 @@ def _of_component(blocks: Blocks, component: Component) -> LogProbability:
     return LogProbability(float(np.log(share)), float(np.sqrt((1 - share) / n_kept)))
 
 
-def _one_beta(blocks: Blocks, component: Component) -> float | None:
-    """Return the probability of one element (of any block) between constants."""
-    if len(component.blocks) > 1 or _orders_of(blocks, component):
+@dataclass(frozen=True, slots=True)
+class _Coordinate:
+    """The one element of a block that matters: a Beta between constants."""
+
+    a: float
+    b: float
+    lower: float
+    upper: float
+
+
+def _coordinate(
+    blocks: Blocks, first: int, last: int, orders: list[tuple[int, int]]
+) -> tuple[int, _Coordinate] | None:
+    """Return the one bounded element of a block; None where there are several.
+
+    Bounds on the other of two elements, and an order of the two, are bounds on the one.
+    """
+    bounded = (np.flatnonzero(constrained_elements(blocks)[first:last]) + first).tolist()
+    outside = {e for order in orders if not set(order) <= {first, last - 1} for e in order}
+    used = [e for e in bounded if e in outside]
+    if len(bounded) > 1 and (last - first > 2 or len(used) > 1):
         return None
-    first, last = component.blocks[0]
-    bounded = np.flatnonzero(constrained_elements(blocks)[first:last]) + first
-    if bounded.size != 1 and last - first > 2:
-        return None
-    # Bounds on the second of two elements are bounds on the first, turned round.
-    e = int(bounded[0])
+    e = used[0] if used else bounded[0]
     a = float(blocks.element_prior[e])
     b = float(blocks.element_prior[first:last].sum()) - a
-    low, high = float(blocks.element_lower[e]), float(blocks.element_upper[e])
-    for other in bounded[1:]:
-        low = max(low, 1.0 - float(blocks.element_upper[other]))
-        high = min(high, 1.0 - float(blocks.element_lower[other]))
+    lower, upper = float(blocks.element_lower[e]), float(blocks.element_upper[e])
+    for other in set(bounded) - {e}:
+        lower = max(lower, 1.0 - float(blocks.element_upper[other]))
+        upper = min(upper, 1.0 - float(blocks.element_lower[other]))
+    for above, below in orders:
+        if {above, below} == {first, last - 1}:
+            lower = max(lower, 0.5) if above == e else lower
+            upper = min(upper, 0.5) if below == e else upper
+    return e, _Coordinate(a, b, lower, upper)
+
+
+def _tree(blocks: Blocks, component: Component) -> float | None:
+    """Return the probability of independent Betas in an order that is a tree.
+
+    Each element lies below one other at the most (or above one other at the most, turned
+    round); the probability is worked out from the leaves up, on a grid.
+    """
+    orders = _orders_of(blocks, component)
+    found = [_coordinate(blocks, first, last, orders) for first, last in component.blocks]
+    if any(one is None for one in found):
+        return None
+    at = dict(one for one in found if one is not None)
+    links = [(above, below) for above, below in orders if above in at and below in at]
+    if len(links) < sum(1 for order in orders if not _within(component, order)):
+        return None
+    lowers = [below for _, below in links]
+    if len(set(lowers)) == len(lowers):
+        return _mass(at, links)
+    uppers = [above for above, _ in links]
+    if len(set(uppers)) == len(uppers):
+        turned = {e: _Coordinate(c.b, c.a, 1 - c.upper, 1 - c.lower) for e, c in at.items()}
+        return _mass(turned, [(below, above) for above, below in links])
+    return None
+
+
+def _within(component: Component, order: tuple[int, int]) -> bool:
+    return any(first <= min(order) and max(order) < last for first, last in component.blocks)
+
+
+def _mass(at: dict[int, _Coordinate], links: list[tuple[int, int]]) -> float | None:
+    """Return the probability of a tree: every element lies below one other at the most."""
+    tops = [e for e in at if e not in {below for _, below in links}]
+    if len(tops) != 1:
+        return None
+    if not links:
+        return _between(at[tops[0]])
+    grid = np.linspace(0.0, 1.0, GRID + 1)
+
+    def up_to(e: int) -> Floats:
+        """Probability that an element and all under it lie below each end of the grid's cells."""
+        coordinate = at[e]
+        ends = np.clip(grid, coordinate.lower, coordinate.upper)
+        masses = np.diff(betainc(coordinate.a, coordinate.b, ends))
+        for above, below in links:
+            if above == e:
+                total = up_to(below)
+                masses = masses * (total[1:] + total[:-1]) / 2
+        return np.concatenate([[0.0], np.cumsum(masses)])
+
+    return float(up_to(tops[0])[-1])
+
+
+def _between(coordinate: _Coordinate) -> float:
+    a, b, low, high = coordinate.a, coordinate.b, coordinate.lower, coordinate.upper
     if betainc(a, b, low) > 0.5:
         return float(betaincc(a, b, low) - betaincc(a, b, high))
     return float(betainc(a, b, high) - betainc(a, b, low))

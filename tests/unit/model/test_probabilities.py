@@ -175,8 +175,8 @@ def test_the_prior_is_nought_outside_bounds_and_orders():
     assert inside_bounds(table, elements).tolist() == [True, False, False]
     source = DirichletPrevalence(np.ones((1, 3)))
     found = log_prior(table, source, elements, np.full((3, 1, 3), 1 / 3))
-    # Their probability is (1 - 0.5 ** 3) / 6; 4 standard errors of its estimate are allowed for.
-    np.testing.assert_allclose(found[0], np.log(2.0 * 48 / 7), atol=0.031)
+    # The bounds have the probability (1 - 0.5 ** 3) / 6.
+    np.testing.assert_allclose(found[0], np.log(2.0 * 48 / 7), atol=1e-6)
     assert found[1:].tolist() == [-np.inf, -np.inf]
 
 
