@@ -19,7 +19,7 @@ from rank_uniformity import p_value
 
 from bayeslca.model.compile import compile_units, split_units, verified_log_weight
 from bayeslca.model.latent_class_model import LatentClassModel
-from bayeslca.model.prevalence import DirichletPrevalence
+from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.probabilities import log_unit_likelihood, membership
 from bayeslca.model.simulate import Parameters, draw_answers, draw_classes, draw_parameters
 from bayeslca.model.symmetry import symmetry
@@ -43,7 +43,7 @@ class Experiment:
     """A model and the design of its data."""
 
     table: Table
-    source: DirichletPrevalence
+    source: PrevalenceSource
     group: np.ndarray  # (case,)
     answered: np.ndarray  # (case, item), bool
     verified: np.ndarray  # (case,), bool: the class is known
@@ -247,6 +247,24 @@ def named_nearly_alike() -> Experiment:
         yes_no(10), ("managed", "informal"), statements=("P(item_1=yes | managed) ~ Beta(3, 1)",)
     )
     return of_model(model, [80], labelled=True)
+
+
+def bounded() -> Experiment:
+    """Three named classes told apart by orders; bounds, an equality, ordered prevalences."""
+    model = LatentClassModel(
+        (*yes_no(3), Item("often", ("never", "some", "always"))),
+        ("managed", "informal", "lapsed"),
+        statements=(
+            "P(item_1=yes | managed) > P(item_1=yes | informal) > P(item_1=yes | lapsed)",
+            "P(item_2=yes | managed) > 0.4",
+            "P(item_2=yes | lapsed) < 0.7",
+            "P(item_3=yes | managed) = P(item_3=yes | informal)",
+            "P(often=always | managed) > 0.2",
+            "P(often=never | lapsed) > P(often=never | informal)",
+            "P(managed) < P(informal)",
+        ),
+    )
+    return of_model(model, [25], labelled=True)
 
 
 def rich() -> Experiment:

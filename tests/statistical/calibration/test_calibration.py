@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 from experiments import (
     Experiment,
+    bounded,
     exploratory,
     many_categories_some_missing,
     named_nearly_alike,
@@ -36,6 +37,7 @@ LEVEL = 1e-3
         pytest.param(named_two_groups(), id="named, two groups"),
         pytest.param(named_nearly_alike(), id="named, nearly alike"),
         pytest.param(rich(), id="shared blocks, a constant, a pair, verified cases"),
+        pytest.param(bounded(), id="bounds, orders, an equality"),
     ],
 )
 def test_ranks_are_uniform(experiment: Experiment) -> None:

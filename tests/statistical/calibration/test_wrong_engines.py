@@ -15,6 +15,7 @@ from experiments import (
     Data,
     Engine,
     Experiment,
+    bounded,
     exploratory,
     gibbs,
     many_categories_some_missing,
@@ -72,6 +73,12 @@ def one_prevalence_row(experiment, data, seed):
     return gibbs(experiment, replace(data, group=np.zeros_like(data.group)), seed)
 
 
+def bounds_forgotten(experiment, data, seed):
+    size = experiment.table.n_elements
+    table = replace(experiment.table, element_lower=np.zeros(size), element_upper=np.ones(size))
+    return gibbs(replace(experiment, table=table), data, seed)
+
+
 def labels_move_without_the_prior_ratio(experiment, data, seed):
     draws = gibbs(experiment, data, seed)
     members = symmetry(experiment.table, experiment.source).table_group.proposals
@@ -111,6 +118,7 @@ def prior_alone(experiment, data, seed):
             missing_is_the_first_category, many_categories_some_missing(), id="missing is an answer"
         ),
         pytest.param(one_prevalence_row, two_groups(), id="one prevalence row"),
+        pytest.param(bounds_forgotten, bounded(), id="bounds forgotten"),
         pytest.param(
             labels_move_without_the_prior_ratio, named_two_groups(), id="move without prior ratio"
         ),
