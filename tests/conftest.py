@@ -2,10 +2,18 @@
 
 from __future__ import annotations
 
+import os
 from pathlib import Path
 
 import numpy as np
 import pytest
+from hypothesis import settings
+
+# The same examples on every run and machine: a red suite means a change, not luck. To search
+# further, run with HYPOTHESIS_PROFILE=search.
+settings.register_profile("suite", derandomize=True, deadline=None)
+settings.register_profile("search", max_examples=2000, deadline=None)
+settings.load_profile(os.environ.get("HYPOTHESIS_PROFILE", "suite"))
 
 
 @pytest.fixture
