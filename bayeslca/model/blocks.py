@@ -75,6 +75,20 @@ class BlockArrays:
             blocks.order_below,
         )
 
+    @classmethod
+    def without_bounds(cls, blocks: Blocks, prior: float) -> BlockArrays:
+        """Return the blocks with one Dirichlet parameter throughout and no bounds."""
+        n_elements = blocks.element_prior.size
+        none = np.zeros(0, dtype=np.int64)
+        return cls(
+            blocks.block_start,
+            np.full(n_elements, prior),
+            np.zeros(n_elements),
+            np.ones(n_elements),
+            none,
+            none,
+        )
+
     def with_prior(self, prior: Floats) -> BlockArrays:
         """Return the same blocks with other Dirichlet parameters."""
         return replace(self, element_prior=prior)

@@ -98,7 +98,10 @@ def _not_identified(model: LatentClassModel, responses: Responses) -> Iterable[F
 
 
 def _few_cases(model: LatentClassModel, responses: Responses) -> Iterable[Finding]:
-    n_free, n_cases = count_free(model.table), model.units(responses).n_cases
+    n_free, n_cases = (
+        count_free(model.table, model.prevalence_source),
+        model.units(responses).n_cases,
+    )
     if n_cases < CASES_PER_PARAMETER * n_free:
         yield Finding(
             kind="few_cases",

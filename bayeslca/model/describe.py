@@ -57,7 +57,9 @@ def describe(model: LatentClassModel, responses: Responses | None = None) -> str
 def _heading(model: LatentClassModel) -> str:
     classes = counted(model.n_classes, "class", "classes")
     items = counted(len(model.items), "item", "items")
-    free = counted(count_free(model.table), "free parameter", "free parameters")
+    free = counted(
+        count_free(model.table, model.prevalence_source), "free parameter", "free parameters"
+    )
     return f"A latent class model with {classes}, {items} and {free}"
 
 

@@ -14,9 +14,13 @@ from math import sqrt
 import numpy as np
 
 from bayeslca._typing import Bools, Floats
+from bayeslca.model.blocks import BlockArrays
+from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.pattern_derivatives import free_directions, n_other_cells, scaled_derivatives
+from bayeslca.model.prevalence import PrevalenceSource
 from bayeslca.model.simulate import Parameters
 from bayeslca.model.table import Table
+from bayeslca.model.truncated_prior import draw_inside
 from bayeslca.responses.units import MISSING, Units
 
 RELATIVE_ZERO = 1e-9
@@ -69,6 +73,7 @@ def identifiability(
     units: Units | None = None,
     seed: int = 0,
     estimate: Parameters | None = None,
+    source: PrevalenceSource | None = None,
 ) -> Identifiability:
     """Check the rank of the model at random points and at an estimate.
 
@@ -83,16 +88,18 @@ def identifiability(
         For the random points.
     estimate : Parameters, optional
         A posterior mean; needs ``units``.
+    source : PrevalenceSource, optional
+        Needed where prevalences are known or equal.
     """
     rng = np.random.default_rng(seed)
     masks = _observed_masks(table, units)
     n_cells = sum(n_other_cells(table, mask) for group in masks for mask in group)
-    free = free_directions(table)
-    free_names = _free_names(table, names)
+    free = free_directions(table, source)
+    free_names = _free_names(free, names)
     n_free = free.shape[1]
     best: tuple[int, Floats] = (-1, np.zeros((0, n_free)))
     for _ in range(N_POINTS):
-        point = _interior_point(table, rng)
+        point = _interior_point(table, source, rng)
         values, vectors = _decomposed(scaled_derivatives(table, masks, point, free, rng), n_free)
         rank = int(np.sum(values > RELATIVE_ZERO * values.max(initial=0.0)))
         if rank > best[0]:
@@ -121,9 +128,9 @@ def identifiability(
     )
 
 
-def count_free(table: Table) -> int:
+def count_free(table: Table, source: PrevalenceSource | None = None) -> int:
     """Count the free parameters: known ones left out, shared ones once."""
-    return int(free_directions(table).shape[1])
+    return int(free_directions(table, source).shape[1])
 
 
 def _observed_masks(table: Table, units: Units | None) -> list[list[Bools]]:
@@ -142,18 +149,22 @@ def _observed_masks(table: Table, units: Units | None) -> list[list[Bools]]:
 
 
 def _free_names(
-    table: Table, names: tuple[Sequence[str], Sequence[Sequence[str]]]
+    directions: Floats, names: tuple[Sequence[str], Sequence[Sequence[str]]]
 ) -> tuple[str, ...]:
     everything = [*names[0], *(name for group in names[1] for name in group)]
-    directions = free_directions(table)
     return tuple(everything[int(np.argmax(column))] for column in directions.T)
 
 
-def _interior_point(table: Table, rng: np.random.Generator) -> Parameters:
+def _interior_point(
+    table: Table, source: PrevalenceSource | None, rng: np.random.Generator
+) -> Parameters:
     """Draw a point away from the edges; the rank is the same at almost all of them."""
     elements = np.ones(table.n_elements)
     for start, end in zip(table.block_start[:-1], table.block_start[1:], strict=True):
         elements[start:end] = rng.dirichlet(np.full(end - start, 3.0))
+    if isinstance(source, ConstrainedPrevalence):
+        free = BlockArrays.without_bounds(source.blocks, prior=5.0)
+        return Parameters(elements, source.prevalence(draw_inside(free, 1, rng)[0]))
     shares = rng.dirichlet(np.full(table.n_classes, 5.0), size=table.n_prevalence_rows)
     return Parameters(elements, shares)
 

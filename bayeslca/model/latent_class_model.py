@@ -238,6 +238,7 @@ class LatentClassModel:
             units=None if responses is None else self.units(responses),
             seed=seed,
             estimate=estimate,
+            source=self.prevalence_source,
         )
 
     def simulate(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from itertools import combinations, product
+from itertools import combinations, pairwise, product
 from math import prod
 
 import numpy as np
@@ -11,6 +11,8 @@ from scipy.linalg import qr
 
 from bayeslca._typing import Bools, Floats, Ints
 from bayeslca.model.compile import compile_units
+from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
+from bayeslca.model.prevalence import PrevalenceSource
 from bayeslca.model.probabilities import row_probability
 from bayeslca.model.simulate import Parameters, draw_answers, draw_classes
 from bayeslca.model.table import Table
@@ -22,11 +24,12 @@ MOST_TRIPLES = 20_000
 """At the most this many cells of three-way margins are checked."""
 
 
-def free_directions(table: Table) -> Floats:
+def free_directions(table: Table, source: PrevalenceSource | None = None) -> Floats:
     """Return the directions (E + groups * K, free) in which parameters can move.
 
     Within each block all elements but the first are free (the first takes up the difference),
-    within each group all prevalences but the last. Blocks that no row uses are left out.
+    within each group all prevalences but the last. Blocks that no row uses are left out. Known
+    prevalences do not move, and equal ones move together, where the ``source`` says so.
     """
     n_elements, n_classes = table.n_elements, table.n_classes
     size = n_elements + table.n_prevalence_rows * n_classes
@@ -35,13 +38,30 @@ def free_directions(table: Table) -> Floats:
     for start, end in zip(table.block_start[:-1], table.block_start[1:], strict=True):
         if used[start:end].any():
             columns += [(e, int(start)) for e in range(int(start) + 1, int(end))]
-    for g in range(table.n_prevalence_rows):
+    constrained = isinstance(source, ConstrainedPrevalence)
+    for g in range(0 if constrained else table.n_prevalence_rows):
         last = n_elements + (g + 1) * n_classes - 1
         columns += [(last - n_classes + 1 + k, last) for k in range(n_classes - 1)]
     out = np.zeros((size, len(columns)))
     for at, (free, reference) in enumerate(columns):
         out[free, at], out[reference, at] = 1.0, -1.0
+    if isinstance(source, ConstrainedPrevalence):
+        moves = np.zeros((size, source.n_free))
+        moves[n_elements:] = _prevalence_directions(source)
+        out = np.hstack([out, moves])
     return out
+
+
+def _prevalence_directions(source: ConstrainedPrevalence) -> Floats:
+    """Return the directions (groups * K, free) in which constrained prevalences can move."""
+    start, element = source.blocks.block_start.tolist(), source.element.ravel()
+    share = source.share.ravel()
+    columns = [
+        np.where(element == e, share, 0.0) - np.where(element == first, share, 0.0)
+        for first, last in pairwise(start)
+        for e in range(first + 1, last)
+    ]
+    return np.array(columns).reshape(-1, element.size).T
 
 
 def n_other_cells(table: Table, mask: Bools) -> int:

@@ -285,3 +285,23 @@ def test_renaming_classes_and_items_changes_nothing(orders, renamed, swap):
         )
 
     assert outcome(lambda name: name) == outcome(lambda name: new.get(name, name))
+
+
+@pytest.mark.parametrize(
+    ("texts", "fewer"),
+    [
+        ((), 0),
+        (("P(managed) = 0.2",), 1),
+        (("P(managed) = P(lapsed)",), 1),
+        (("P(managed) = 0.2", "P(lapsed) = 0.3"), 2),
+        (("P(managed) > P(lapsed)", "P(fees | managed) > P(fees | lapsed)"), 0),
+        (("P(meets | .) = P(fees | .)",), 3),
+        (("P(type=a | managed) = P(fees | managed)", "P(type=b | lapsed) = 0"), 2),
+    ],
+)
+def test_free_parameters_count_known_ones_out_and_shared_ones_once(texts, fewer):
+    free = model().identifiability().n_free
+    found = model(*texts).identifiability()
+    assert found.n_free == free - fewer
+    assert found.identified
+    assert f"{free - fewer} free parameters" in model(*texts).describe()
