@@ -43,6 +43,7 @@ NUMBER = r"[+-]?(?:\d[\d,]*)(?:\.\d+)?"
 FENCE = re.compile(
     r"(?:<!-- (?P<said>[^\n]*?) -->\n+)?```(?P<kind>\w*)\n(?P<text>.*?)^```$", re.M | re.S
 )
+TEST_NAME = re.compile(r"`(tests/[\w/]+\.py)(?:::(\w+))?`")
 LINK = re.compile(r"\]\((?!https?:|#)([^)#\s]+)")
 
 
@@ -171,7 +172,11 @@ def run_page(page: Path) -> Iterator[str]:
 @pytest.mark.parametrize(
     "page",
     [
-        pytest.param(page, id=page.name, marks=[pytest.mark.pymc] * (page.name in NEED_PYMC))
+        pytest.param(
+            page,
+            id=page.relative_to(ROOT).as_posix(),
+            marks=[pytest.mark.pymc] * (page.name in NEED_PYMC),
+        )
         for page in PAGES
     ],
 )
@@ -184,7 +189,7 @@ def test_blocks_run(page: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch)
         pass
 
 
-@pytest.mark.parametrize("page", PAGES, ids=lambda page: page.name)
+@pytest.mark.parametrize("page", PAGES, ids=lambda page: page.relative_to(ROOT).as_posix())
 def test_links_lead_somewhere(page: Path) -> None:
     gone = [
         link
@@ -192,6 +197,45 @@ def test_links_lead_somewhere(page: Path) -> None:
         if not (page.parent / link).exists()
     ]
     assert not gone
+
+
+def test_tests_that_are_named_exist() -> None:
+    named = TEST_NAME.findall((ROOT / "docs" / "validation.md").read_text(encoding="utf-8"))
+    assert len(named) > 30
+    for file, name in named:
+        assert f"def {name}" in (ROOT / file).read_text(encoding="utf-8"), f"{file}::{name}"
+
+
+def test_every_key_of_a_study_file_is_explained() -> None:
+    text = (ROOT / "docs" / "study-file.md").read_text(encoding="utf-8")
+    keys = {"label", "categories", "ordered", "yes", "merge", "no_answer"}  # of an item
+    for section, field in StudyFile.model_fields.items():
+        kept = getattr(field.annotation, "model_fields", None)
+        if kept is not None:
+            assert f"`[{section}]`" in text
+            keys |= set(kept)
+    assert [key for key in sorted(keys) if f"`{key}`" not in text] == []
+
+
+def test_every_finding_about_model_and_sampling_is_explained() -> None:
+    text = "".join(page.read_text(encoding="utf-8") for page in PAGES)
+    sources = [*(ROOT / "bayeslca").rglob("*.py")]
+    rooms = ("assess", "model", "sampling")
+    kinds = {
+        kind
+        for source in sources
+        if source.parent.name in rooms
+        for kind in re.findall(r'\bkind="(\w+)",\n\s+level=', source.read_text(encoding="utf-8"))
+    }
+    assert len(kinds) > 15
+    assert [kind for kind in sorted(kinds) if f"`{kind}`" not in text] == []
+
+
+def test_every_section_of_the_report_is_explained() -> None:
+    text = (ROOT / "docs" / "report.md").read_text(encoding="utf-8")
+    for source in (ROOT / "bayeslca" / "report" / "sections").glob("*.py"):
+        for heading in re.findall(r'HEADING = "[^"]*", "([^"]*)"', source.read_text("utf-8")):
+            assert f"| {heading} |" in text, source.name
 
 
 def test_most_blocks_run_and_reasons_are_given() -> None:
