@@ -17,6 +17,7 @@ from bayeslca.posterior.storage import save
 from bayeslca.report.content import ReportContent
 from bayeslca.study.changes import changes_since
 from bayeslca.study.load import Study, load_study
+from bayeslca.study.progress import JobProgress, job_progress
 from bayeslca.study.results import RECORD, previous_results, written_aside
 from bayeslca.study.steps import OWN_FIT, Steps, count_fit, step_key
 
@@ -70,8 +71,21 @@ def run_study(
     previous = previous_results(folder, replace=replace)
     study = load_study(path)
     steps = Steps(previous)
-    own = _own_posterior(study, steps, quiet=quiet)
-    comparison = _compared(study, steps, own, quiet=quiet)
+    fits = len(study.said.class_count.compare) + (study.model is not None)
+    with job_progress(fits, quiet=quiet) as progress:
+        own = _own_posterior(study, steps, progress)
+        comparison = _compared(study, steps, own, progress)
+        progress.say("Writing the report")
+        return _results(study, folder, steps, own, comparison)
+
+
+def _results(
+    study: Study,
+    folder: Path,
+    steps: Steps,
+    own: Posterior | None,
+    comparison: Comparison | None,
+) -> Outcome:
     rests_on, main, alternatives = _answer(study, own, comparison)
     content = ReportContent(
         responses=study.responses,
@@ -89,8 +103,8 @@ def run_study(
         seed=study.said.sampling.seed,
         command=f"bayeslca run {study.path.name} -o {folder.name}",
         study_text=study.text,
-        changes=changes_since(previous, main, study.said.report.interval),
-        replaced=previous is not None,
+        changes=changes_since(steps.previous, main, study.said.report.interval),
+        replaced=steps.previous is not None,
     )
     with written_aside(folder) as aside:
         headline = _write(aside, study, content, comparison, own, steps, rests_on)
@@ -98,20 +112,22 @@ def run_study(
     return _outcome(folder, headline, comparison, main, steps, trusted)
 
 
-def _own_posterior(study: Study, steps: Steps, *, quiet: bool) -> Posterior | None:
+def _own_posterior(study: Study, steps: Steps, progress: JobProgress) -> Posterior | None:
     model = study.model
     if model is None:
         return None
     sampling = _sampling(study)
     seed = study.said.sampling.seed
     kept = steps.take(OWN_FIT, step_key(study.responses, model, sampling, seed))
-    if kept is not None:
-        return kept
-    return model.sample(study.responses, seed=seed, progress=not quiet, **sampling)
+    posterior = kept or model.sample(
+        study.responses, seed=seed, progress=progress.of_own, **sampling
+    )
+    progress.finished(1)
+    return posterior
 
 
 def _compared(
-    study: Study, steps: Steps, own: Posterior | None, *, quiet: bool
+    study: Study, steps: Steps, own: Posterior | None, progress: JobProgress
 ) -> Comparison | None:
     from bayeslca.assess.compare import class_count_model, compare_class_counts
 
@@ -126,6 +142,7 @@ def _compared(
         kept = steps.take(count_fit(n_classes), key)
         if kept is not None:
             fitted[n_classes] = kept
+    progress.finished(len(fitted))
     named = own if own is not None and not own.model.exploratory else None
     return compare_class_counts(
         study.responses,
@@ -134,7 +151,7 @@ def _compared(
         seed=study.said.sampling.seed,
         fitted=fitted,
         own=named,
-        progress=not quiet,
+        progress=progress.of_comparison,
         **sampling,
     )
 

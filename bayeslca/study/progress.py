@@ -1,0 +1,83 @@
+"""Progress of a whole run: one bar over all fits, on a terminal only."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from bayeslca.sampling.progress import Progress, in_words
+
+if TYPE_CHECKING:
+    from bayeslca.assess.compare import FitProgress
+
+Tell = Callable[[str, float, str], None]
+"""Takes what is done now, how much of the whole is done (0 to 1), and figures."""
+
+
+@dataclass
+class JobProgress:
+    """Tells how far a run has come: fits done, and how far the present one is.
+
+    Attributes
+    ----------
+    tell : callable
+    fits : int
+        Number of fits of the whole run.
+    done : int
+        Fits that are finished.
+    """
+
+    tell: Tell
+    fits: int
+    done: int = 0
+
+    def of_own(self, sampling: Progress) -> None:
+        """Take note of how far the study's own model is."""
+        self._show("the study's model", sampling)
+
+    def of_comparison(self, fit: FitProgress) -> None:
+        """Take note of how far the comparison of class counts is."""
+        self.done = max(self.done, self.fits - fit.fits + fit.fit - 1)
+        self._show("1 class" if fit.name == 1 else f"{fit.name} classes", fit.sampling)
+
+    def finished(self, fits: int) -> None:
+        """Count fits that are finished, or were kept from the run before."""
+        self.done += fits
+
+    def say(self, what: str) -> None:
+        """Say what is done after the fits."""
+        self.tell(what, 1.0, "")
+
+    def _show(self, name: str, sampling: Progress) -> None:
+        share = sampling.sweeps / max(sampling.planned, 1)
+        what = f"Fit {min(self.done + 1, self.fits)} of {self.fits}, {name}"
+        self.tell(what, min((self.done + share) / max(self.fits, 1), 1.0), in_words(sampling))
+
+
+@contextmanager
+def job_progress(fits: int, *, quiet: bool) -> Iterator[JobProgress]:
+    """Give what tells the progress of a run; silent when quiet or not on a terminal."""
+    if quiet or not sys.stderr.isatty():
+        yield JobProgress(lambda what, share, figures: None, fits)
+        return
+    from rich.console import Console
+    from rich.progress import BarColumn, TextColumn
+    from rich.progress import Progress as RichProgress
+
+    bar = RichProgress(
+        TextColumn("{task.description}"),
+        BarColumn(bar_width=12),
+        TextColumn("{task.fields[figures]}"),
+        console=Console(stderr=True),
+        transient=True,
+    )
+    with bar:
+        task = bar.add_task("Reading", total=1.0, figures="")
+
+        def tell(what: str, share: float, figures: str) -> None:
+            bar.update(task, description=what, completed=share, figures=figures)
+
+        yield JobProgress(tell, fits)
