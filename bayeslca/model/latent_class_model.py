@@ -22,6 +22,7 @@ from bayeslca.model.constraints import read_links
 from bayeslca.model.describe import describe
 from bayeslca.model.identifiability import Identifiability, identifiability
 from bayeslca.model.naming import classes_named
+from bayeslca.model.naming_links import naming_links
 from bayeslca.model.places import Link
 from bayeslca.model.position_names import element_names, prevalence_names
 from bayeslca.model.prevalence import DirichletPrevalence
@@ -146,8 +147,9 @@ class LatentClassModel:
 
     @cached_property
     def links(self) -> tuple[Link, ...]:
-        """The comparisons of single probabilities that the constraints make."""
-        return read_links(self.stated.constraints, self.vocabulary, self.free_items)
+        """The comparisons of single probabilities that constraints and naming rules make."""
+        stated = read_links(self.stated.constraints, self.vocabulary, self.free_items)
+        return (*stated, *naming_links(self))
 
     @cached_property
     def response_assumptions(self) -> Assumptions:

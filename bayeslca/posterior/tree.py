@@ -17,10 +17,8 @@ import numpy as np
 
 from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import BayesLCAError
-from bayeslca.model.permutations import inverse
 from bayeslca.model.position_names import block_names, element_names
 from bayeslca.model.prior_density import log_block_priors
-from bayeslca.model.symmetry import element_map
 
 if TYPE_CHECKING:
     from xarray import Dataset, DataTree
@@ -183,36 +181,17 @@ def _unit_log_likelihood(posterior: Posterior) -> Dataset:
 def _log_prior(posterior: Posterior) -> Dataset:
     from xarray import Dataset
 
-    blocks, prevalence = _log_prior_parts(posterior)
+    # Relabelling stays within what leaves the priors unchanged, so the relabelled draws have the
+    # density they were sampled with. Bounds divide it by a constant, which has no entry here.
+    draws = posterior.draws
+    blocks = log_block_priors(posterior.table, draws.elements)
+    prevalence = posterior.model.prevalence_source.log_density(draws.prevalence)
     data: dict[str, Any] = {"prevalence": (CHAIN, prevalence)}
     coords: dict[str, Any] = _chain_coordinates(posterior)
     if blocks.shape[2]:
         data["response_probability"] = ((*CHAIN, "block"), blocks)
         coords["block"] = list(block_names(posterior.model))
     return Dataset(data, coords=coords)
-
-
-def _log_prior_parts(posterior: Posterior) -> tuple[Floats, Floats]:
-    """Return the log prior of each block (chain, draw, B) and of the prevalences (chain, draw).
-
-    A naming rule may lead away from the labels that the prior speaks of. A draw's prior density
-    is taken where it was sampled; the entry of a block goes with the block's name.
-    """
-    draws, table = posterior.draws, posterior.table
-    permutations = posterior.relabelled.permutations
-    back = inverse(permutations)
-    prevalence = np.take_along_axis(draws.prevalence, back, axis=-1)
-    blocks = np.empty((draws.n_chains, draws.n_draws, table.n_blocks))
-    flat = permutations.reshape(-1, *permutations.shape[2:])
-    distinct, which = np.unique(flat, axis=0, return_inverse=True)
-    which = which.reshape(draws.n_chains, draws.n_draws)
-    for at, permutation in enumerate(distinct):
-        mine = which == at
-        undo = element_map(table, inverse(permutation))
-        sampled = log_block_priors(table, draws.elements[mine][:, undo])
-        first = element_map(table, permutation)[table.block_start[:-1]]
-        blocks[mine] = sampled[:, table.element_block[first]]
-    return blocks, posterior.model.prevalence_source.log_density(prevalence)
 
 
 def _observed_data(posterior: Posterior) -> Dataset:

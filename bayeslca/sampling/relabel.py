@@ -80,8 +80,8 @@ def relabel(model: LatentClassModel, unit_table: UnitTable, draws: Draws) -> Rel
     model : LatentClassModel
     unit_table : UnitTable
     draws : Draws
-        As they were sampled. Their ``log_prior`` is kept: it belongs to the labels under which
-        they were sampled, and a naming rule may lead away from these.
+        As they were sampled. Their ``log_prior`` is kept: no permutation that is applied here
+        changes the prior.
 
     Returns
     -------
