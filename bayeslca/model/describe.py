@@ -11,6 +11,7 @@ from scipy.special import betaincinv
 
 from bayeslca.model.constraint_words import in_words
 from bayeslca.model.identifiability import count_free
+from bayeslca.model.naming_links import naming_links
 from bayeslca.model.prior_weights import HEAVY, PriorWeight, prior_weights
 from bayeslca.model.priors import DEFAULT
 from bayeslca.model.resolved import PrevalencePrior, ResponsePrior
@@ -73,8 +74,9 @@ def _classes(model: LatentClassModel) -> list[str]:
             f"in the model and are called {names} by falling prevalence."
         )
     out = _wrapped(f"The classes are {names}. What tells them apart:")
+    kept = "a naming rule, kept as an order" if naming_links(model) else "a naming rule"
     for rule in model.naming_rules:
-        out += _indented(f"{rule.text} (a naming rule){_source(model, rule.text)}")
+        out += _indented(f"{rule.text} ({kept}){_source(model, rule.text)}")
     left = [k for k in range(model.n_classes) if k not in _ruled(model)]
     if model.naming_rules and len(left) == 1:
         out += _indented(f"{model.class_names[left[0]]} is the class that is left")
