@@ -8,7 +8,8 @@ import sys
 import bayeslca as lca
 
 if __name__ == "__main__":
-    responses = lca.Responses.read(sys.argv[1], counts="count")
+    raters = [f"rater_{letter}" for letter in "abcdefg"]
+    responses = lca.Responses.read(sys.argv[1], items=raters, counts="count")
     comparison = lca.compare_class_counts(
         responses, [int(k) for k in sys.argv[2:]], seed=7, progress=False
     )
