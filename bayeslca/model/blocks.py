@@ -21,6 +21,10 @@ ROUNDING = 1e-12
 class Blocks(Protocol):
     """Arrays of blocks; see `bayeslca.model.table.Table` for their meaning."""
 
+    def __hash__(self) -> int:
+        """Blocks are told apart as objects, not by their values."""
+        ...
+
     @property
     def block_start(self) -> Ints:
         """Where each block starts, shape (B + 1,)."""

@@ -13,6 +13,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
+from bayeslca.model.blocks import constrained_elements
+from bayeslca.model.pymc_bounds import Coordinates, add_bounded, coordinates
 from bayeslca.model.table import Table
 
 if TYPE_CHECKING:
@@ -69,31 +71,35 @@ class BlockVariable:
         Elements of each block. Where R is 2, the variable is the probability of the first.
     dims : tuple of str
     coords : mapping of str to sequence of str
+    bounded : Coordinates or None
+        For blocks of two with bounds or orders.
     """
 
     name: str
     elements: Ints
     dims: tuple[str, ...]
     coords: Mapping[str, Sequence[Any]]
+    bounded: Coordinates | None = None
 
     @property
     def is_binary(self) -> bool:
         """True for a Beta variable."""
         return bool(self.elements.shape[-1] == 2)
 
-    def add(self, prior: Floats, **options: Any) -> Any:
+    def add(self, table: Table, **options: Any) -> Any:
         """Add the variable to the PyMC model in whose context this is called.
 
         Parameters
         ----------
-        prior : ndarray, shape (E,)
-            Dirichlet parameter of each element.
+        table : Table
         **options
             Handed to the distribution.
         """
         import pymc as pm
 
-        a = prior[self.elements]
+        if self.bounded is not None:
+            return add_bounded(self.name, table, self.bounded, self.dims)
+        a = table.element_prior[self.elements]
         if self.is_binary:
             return pm.Beta(self.name, a[..., 0], a[..., 1], dims=self.dims, **options)
         return pm.Dirichlet(self.name, a, dims=self.dims, **options)
@@ -116,6 +122,11 @@ def block_variables(table: Table, names: Names) -> tuple[BlockVariable, ...]:
     """Return the variables that hold all blocks of a table with more than one element."""
     sizes = np.diff(table.block_start)
     out = []
+    bounded = np.zeros(table.n_blocks, dtype=bool)
+    bounded[table.element_block[constrained_elements(table)]] = True
+    if bounded.any():
+        out.append(_bounded_variable(table, names))
+        sizes = np.where(bounded, 1, sizes)
     for size in sorted(set(sizes[sizes > 1].tolist())):
         blocks = np.flatnonzero(sizes == size)
         items = np.flatnonzero(np.diff(table.item_start) == size)
@@ -125,6 +136,18 @@ def block_variables(table: Table, names: Names) -> tuple[BlockVariable, ...]:
         else:
             out.append(_list_variable(table, blocks, size, names))
     return tuple(out)
+
+
+def _bounded_variable(table: Table, names: Names) -> BlockVariable:
+    found = coordinates(table)
+    labels = [names.block[b] for b in table.element_block[found.elements[:, 0]]]
+    return BlockVariable(
+        "bounded_probability",
+        found.elements,
+        ("bounded_block",),
+        {"bounded_block": labels},
+        found,
+    )
 
 
 def element_tensor(table: Table, variables: Sequence[tuple[BlockVariable, Any]]) -> Any:

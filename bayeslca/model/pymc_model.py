@@ -182,14 +182,14 @@ def build_from_table(
     Raises
     ------
     ModelError
-        When probabilities are bounded or ordered, or a unit's answers are impossible.
+        When bounds or orders have no form on the real line, or a unit's answers are impossible.
     """
     import pymc as pm
 
-    if table.is_bounded:
+    if gibbs and (table.is_bounded or not isinstance(source, DirichletPrevalence)):
         msg = (
-            "the model bounds or orders probabilities (statements with <, >, <= or >=), which "
-            "cannot be written as a PyMC model yet. Leave these statements out."
+            "the Gibbs step in PyMC does not draw probabilities that are bounded or ordered. Use "
+            "sampler='gibbs' without PyMC, or NUTS (leave out gibbs=True)."
         )
         raise ModelError(msg)
     unit_table = compile_units(table, units, log_weight)
@@ -214,7 +214,7 @@ def build_from_table(
         for dim, labels in coords.items():
             pm_model.add_coord(dim, list(labels))
         prevalence = _prevalence(source, names, concentration, options)
-        values = [variable.add(table.element_prior, **options) for variable in variables]
+        values = [variable.add(table, **options) for variable in variables]
         elements = element_tensor(table, list(zip(variables, values, strict=True)))
         rows = row_tensor(table, elements)
         _response_probability(table, rows)

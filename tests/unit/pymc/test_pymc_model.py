@@ -247,7 +247,7 @@ def test_by_case_has_a_line_for_each_case():
     assert "count" not in model.named_vars
 
 
-def test_impossible_answers_and_bounds_are_refused():
+def test_impossible_answers_and_bounds_for_the_gibbs_step_are_refused():
     builder = TableBuilder([2], 1)
     builder.set_known(0, 0, 0, {0: 0.0})
     table = builder.build()
@@ -255,8 +255,8 @@ def test_impossible_answers_and_bounds_are_refused():
     with pytest.raises(ModelError, match="3 cases gave answers that no class allows"):
         build_from_table(table, source, units_of([[0]], count=[3]), plain_names(table))
     bounded = replace(LatentClassModel((FEES,), 1).table, element_lower=np.array([0.2, 0.0]))
-    with pytest.raises(ModelError, match="bounds or orders"):
-        build_from_table(bounded, source, units_of([[0]]), plain_names(bounded))
+    with pytest.raises(ModelError, match="bounded or ordered"):
+        build_from_table(bounded, source, units_of([[0]]), plain_names(bounded), gibbs=True)
 
 
 def test_a_foreign_model_is_refused():
