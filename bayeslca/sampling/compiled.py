@@ -53,12 +53,12 @@ def _cached(function: Function, **options: str) -> Function:
     # functions it calls: have it look at all files of the kernel.
     index: Any = getattr(getattr(dispatcher, "_cache", None), "_cache_file", None)
     if hasattr(index, "_source_stamp"):
-        index._source_stamp = _stamp()
+        index._source_stamp = _stamp(Path(function.__code__.co_filename))
     return cast(Function, dispatcher)
 
 
-def _stamp() -> tuple[tuple[float, int], ...]:
-    """Time and size of every file of the kernel."""
+def _stamp(own: Path) -> tuple[tuple[float, int], ...]:
+    """Time and size of every file of the kernel, and of the function's own."""
     folder = Path(__file__).parent
-    states = [(folder / f"{name}.py").stat() for name in KERNEL_FILES]
+    states = [path.stat() for path in (own, *(folder / f"{name}.py" for name in KERNEL_FILES))]
     return tuple((state.st_mtime, state.st_size) for state in states)
