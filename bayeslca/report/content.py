@@ -49,6 +49,9 @@ class ReportContent:
     study_row : int, str or None
         The row of ``comparison.table`` that is the model the answer rests on; None when it has
         no row there.
+    group_comparison : Comparison or None
+        Of response probabilities that all groups share against ones that differ by group, rows
+        "alike in all groups" and "free by group"; None when not done.
     alternatives : mapping of str to Posterior
         Other numbers of classes that the data support as well, where the study leaves the number
         open; each is shown beside the answer. Keys are headings ("2 classes").
@@ -81,6 +84,7 @@ class ReportContent:
     chosen_because: str = ""
     comparison: Comparison | None = None
     study_row: int | str | None = None
+    group_comparison: Comparison | None = None
     alternatives: Mapping[str, Posterior] = field(default_factory=dict)
     diagnostic: bool = False
     interval: float = 0.95

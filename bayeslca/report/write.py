@@ -15,6 +15,7 @@ from bayeslca.report.sections.answer import answer_section, headline, is_to_be_t
 from bayeslca.report.sections.assumptions import assumptions_section
 from bayeslca.report.sections.class_counts import class_counts_section
 from bayeslca.report.sections.classes import classes_section
+from bayeslca.report.sections.groups import groups_section
 from bayeslca.report.sections.limits import limits_section
 from bayeslca.report.sections.membership import membership_section
 from bayeslca.report.sections.methods import methods_section
@@ -76,11 +77,12 @@ def write_report(content: ReportContent, folder: Path) -> WrittenReport:
 
 def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section, ...]:
     """Return the sections of the page in their order."""
-    return (
+    sections = (
         answer_section(facts),
         classes_section(facts),
         prevalence_section(facts),
         class_counts_section(facts),
+        groups_section(facts),
         membership_section(facts),
         assumptions_section(facts),
         sampling_section(facts),
@@ -89,6 +91,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         methods_section(facts, versions),
         reproduce_section(facts, versions),
     )
+    return tuple(section for section in sections if section is not None)
 
 
 def _notes(facts: Facts) -> list[str]:

@@ -9,6 +9,7 @@ from pathlib import Path
 from bayeslca.findings import Finding
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.responses.responses import Responses
+from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
 
 WIDTH = 79
@@ -34,6 +35,8 @@ def check_study(path: str | Path) -> str:
     checked = model or LatentClassModel(
         responses.items, 2, statements=study.shared_statements, groups=responses.groups
     )
+    if study.said.groups.compare_free:
+        group_models(study, checked)
     parts = [
         f"{study.said.study.title} ({study.path.name})",
         "",
@@ -79,6 +82,8 @@ def _plan(study: Study, responses: Responses) -> list[str]:
     if counts:
         listed = ", ".join(str(n) for n in counts)
         lines += _wrapped(f"- compare models with {listed} unconstrained classes", indent=4)
+    if study.said.groups.compare_free:
+        lines += _wrapped("- compare groups that answer alike with groups that do not", indent=4)
     lines += _wrapped(f"- {_expected_time(study, responses)}", indent=4)
     return lines
 

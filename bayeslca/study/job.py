@@ -8,7 +8,7 @@ import textwrap
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -16,6 +16,8 @@ import bayeslca
 from bayeslca.posterior.storage import save
 from bayeslca.report.content import ReportContent
 from bayeslca.study.changes import changes_since
+from bayeslca.study.group_comparison import FILES as GROUP_FITS
+from bayeslca.study.group_comparison import compared_groups
 from bayeslca.study.load import Study, load_study
 from bayeslca.study.progress import JobProgress, job_progress
 from bayeslca.study.results import RECORD, previous_results, written_aside
@@ -72,21 +74,25 @@ def run_study(
     study = load_study(path)
     steps = Steps(previous)
     fits = len(study.said.class_count.compare) + (study.model is not None)
+    fits += 2 * study.said.groups.compare_free
     with job_progress(fits, quiet=quiet) as progress:
         own = _own_posterior(study, steps, progress)
         comparison = _compared(study, steps, own, progress)
+        answer = _answer(own, comparison)
+        groups = compared_groups(study, steps, answer.main, progress)
         progress.say("Writing the report")
-        return _results(study, folder, steps, own, comparison)
+        return _results(study, folder, steps, answer, comparison, groups)
 
 
 def _results(
     study: Study,
     folder: Path,
     steps: Steps,
-    own: Posterior | None,
+    answer: _Answer,
     comparison: Comparison | None,
+    groups: Comparison | None,
 ) -> Outcome:
-    rests_on, main, alternatives = _answer(study, own, comparison)
+    main = answer.main
     content = ReportContent(
         responses=study.responses,
         posterior=main,
@@ -94,8 +100,9 @@ def _results(
         question=study.said.study.question,
         chosen_because=study.said.model.chosen_because,
         comparison=comparison,
-        study_row=_study_row(study, rests_on),
-        alternatives=alternatives,
+        study_row=_study_row(study, answer.rests_on),
+        group_comparison=groups,
+        alternatives=answer.alternatives,
         diagnostic=study.said.study.diagnostic,
         interval=study.said.report.interval,
         show_cases=study.said.report.show_cases,
@@ -107,8 +114,8 @@ def _results(
         replaced=steps.previous is not None,
     )
     with written_aside(folder) as aside:
-        headline = _write(aside, study, content, comparison, own, steps, rests_on)
-    trusted = _trusted(main, comparison, alternatives)
+        headline = _write(aside, study, content, steps, answer)
+    trusted = _trusted(main, comparison, answer.alternatives)
     return _outcome(folder, headline, comparison, main, steps, trusted)
 
 
@@ -116,11 +123,11 @@ def _own_posterior(study: Study, steps: Steps, progress: JobProgress) -> Posteri
     model = study.model
     if model is None:
         return None
-    sampling = _sampling(study)
+    sampling = study.sampling_options
     seed = study.said.sampling.seed
     kept = steps.take(OWN_FIT, step_key(study.responses, model, sampling, seed))
     posterior = kept or model.sample(
-        study.responses, seed=seed, progress=progress.of_own, **sampling
+        study.responses, seed=seed, progress=progress.of_model("the study's model"), **sampling
     )
     progress.finished(1)
     return posterior
@@ -134,7 +141,7 @@ def _compared(
     counts = study.said.class_count.compare
     if not counts:
         return None
-    sampling = _sampling(study)
+    sampling = study.sampling_options
     fitted = {}
     for n_classes in counts:
         model = class_count_model(study.responses, n_classes, statements=study.shared_statements)
@@ -156,32 +163,24 @@ def _compared(
     )
 
 
-def _sampling(study: Study) -> dict[str, Any]:
-    said = study.said.sampling
-    options: dict[str, Any] = {
-        "sampler": said.sampler,
-        "chains": said.chains,
-        "draws": said.draws,
-        "ess": said.ess,
-        "r_hat": said.r_hat,
-    }
-    if said.max_sweeps is not None:
-        options["max_sweeps"] = said.max_sweeps
-    return options
+@dataclass(frozen=True)
+class _Answer:
+    """Which fit the answer rests on, by its file, and what else the data support as well."""
+
+    rests_on: str
+    main: Posterior
+    alternatives: Mapping[str, Posterior]
 
 
-def _answer(
-    study: Study, own: Posterior | None, comparison: Comparison | None
-) -> tuple[str, Posterior, Mapping[str, Posterior]]:
-    """Say which fit the answer rests on, and what else the data support as well."""
+def _answer(own: Posterior | None, comparison: Comparison | None) -> _Answer:
     if own is not None:
-        return OWN_FIT, own, {}
+        return _Answer(OWN_FIT, own, {})
     assert comparison is not None  # load_study refuses a study without classes and counts
     tied = [int(row) for row in comparison.table.index[comparison.table["tied"]]]
     alternatives = {
         f"{n} classes" if n > 1 else "1 class": comparison.posteriors[n] for n in tied[1:]
     }
-    return count_fit(tied[0]), comparison.posteriors[tied[0]], alternatives
+    return _Answer(count_fit(tied[0]), comparison.posteriors[tied[0]], alternatives)
 
 
 def _study_row(study: Study, rests_on: str) -> int | str | None:
@@ -212,42 +211,45 @@ def _trusted(
 
 
 def _write(
-    folder: Path,
-    study: Study,
-    content: ReportContent,
-    comparison: Comparison | None,
-    own: Posterior | None,
-    steps: Steps,
-    rests_on: str,
+    folder: Path, study: Study, content: ReportContent, steps: Steps, answer: _Answer
 ) -> str:
     from bayeslca.report.write import write_report
 
     written = write_report(content, folder)
-    content.posterior.membership(interval=content.interval).to_csv(
-        folder / "membership.csv", index=False
-    )
-    if own is not None:
-        _keep_fit(folder, OWN_FIT, own, steps)
-    if comparison is not None:
-        (folder / "fits").mkdir()
-        for n_classes in study.said.class_count.compare:
-            _keep_fit(folder, count_fit(n_classes), comparison.posteriors[n_classes], steps)
-    if own is None:
-        shutil.copyfile(folder / rests_on, folder / OWN_FIT)
-        steps.keys[OWN_FIT] = steps.keys[rests_on]
+    answer.main.membership(interval=content.interval).to_csv(folder / "membership.csv", index=False)
+    (folder / "fits").mkdir()
+    for file, posterior in _fits(study, content, answer).items():
+        _keep_fit(folder, file, posterior, steps)
+    if answer.rests_on != OWN_FIT:
+        shutil.copyfile(folder / answer.rests_on, folder / OWN_FIT)
+        steps.keys[OWN_FIT] = steps.keys[answer.rests_on]
     (folder / "study.toml").write_text(study.text, encoding="utf-8")
     record = {
         "bayeslca": bayeslca.__version__,
         "study": study.path.name,
         "seed": content.seed,
         "data_hash": study.responses.data_hash,
-        "answer_rests_on": rests_on,
+        "answer_rests_on": answer.rests_on,
         "headline": written.headline,
         "fits": steps.keys,
         "kept_from_the_run_before": steps.kept,
     }
     (folder / RECORD).write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
     return written.headline
+
+
+def _fits(study: Study, content: ReportContent, answer: _Answer) -> dict[str, Posterior]:
+    """Return every fit of the run by its file."""
+    fits: dict[str, Posterior] = {}
+    if answer.rests_on == OWN_FIT:
+        fits[OWN_FIT] = answer.main
+    if content.comparison is not None:
+        for n in study.said.class_count.compare:
+            fits[count_fit(n)] = content.comparison.posteriors[n]
+    if content.group_comparison is not None:
+        for name, file in GROUP_FITS.items():
+            fits[file] = content.group_comparison.posteriors[name]
+    return fits
 
 
 def _keep_fit(folder: Path, file: str, posterior: Posterior, steps: Steps) -> None:

@@ -74,6 +74,12 @@ class Study:
         )
 
     @property
+    def free_by_group(self) -> bool | tuple[str, ...]:
+        """Items whose response probabilities differ by group."""
+        free = self.said.model.free_by_group
+        return free if isinstance(free, bool) else tuple(free)
+
+    @property
     def statements(self) -> tuple[str, ...]:
         """The model's statements as text."""
         return tuple(
@@ -103,6 +109,7 @@ class Study:
             statements=self.statements,
             groups=self.responses.groups,
             statement_sources=self.statement_sources,
+            free_by_group=self.free_by_group,
         )
 
     def _refuse_open_statements(self) -> None:
@@ -115,6 +122,21 @@ class Study:
                 "Name the classes, or write statements about all classes: P(item=answer | .)."
             )
             raise StudyError(msg)
+
+    @property
+    def sampling_options(self) -> dict[str, Any]:
+        """Options of ``model.sample`` other than the seed."""
+        said = self.said.sampling
+        options: dict[str, Any] = {
+            "sampler": said.sampler,
+            "chains": said.chains,
+            "draws": said.draws,
+            "ess": said.ess,
+            "r_hat": said.r_hat,
+        }
+        if said.max_sweeps is not None:
+            options["max_sweeps"] = said.max_sweeps
+        return options
 
     @cached_property
     def shared_statements(self) -> tuple[str, ...]:

@@ -34,9 +34,9 @@ class JobProgress:
     fits: int
     done: int = 0
 
-    def of_own(self, sampling: Progress) -> None:
-        """Take note of how far the study's own model is."""
-        self._show("the study's model", sampling)
+    def of_model(self, name: str) -> Callable[[Progress], None]:
+        """Return what takes note of how far a model is."""
+        return lambda sampling: self._show(name, sampling)
 
     def of_comparison(self, fit: FitProgress) -> None:
         """Take note of how far the comparison of class counts is."""

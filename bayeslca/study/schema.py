@@ -83,6 +83,7 @@ class ModelSection(_Section):
     classes: int | list[str] | None = None
     chosen_because: str = ""
     statements: list[str | SourcedStatement] = []
+    free_by_group: bool | list[str] = False
 
     @field_validator("classes")
     @classmethod
@@ -105,6 +106,12 @@ class ClassCountSection(_Section):
             msg = "names a number of classes more than once"
             raise ValueError(msg)
         return sorted(compare)
+
+
+class GroupsSection(_Section):
+    """What is asked about the groups."""
+
+    compare_free: bool = False
 
 
 class SamplingSection(_Section):
@@ -134,8 +141,31 @@ class StudyFile(_Section):
     items: dict[str, ItemSection] = {}
     model: ModelSection = ModelSection()
     class_count: ClassCountSection = ClassCountSection()
+    groups: GroupsSection = GroupsSection()
     sampling: SamplingSection = SamplingSection()
     report: ReportSection = ReportSection()
+
+    @model_validator(mode="after")
+    def _something_is_fitted(self) -> StudyFile:
+        if self.model.classes is None and not self.class_count.compare:
+            msg = (
+                "[model] classes is left out and [class_count] compare is empty, so there is "
+                "nothing to fit; give one of them"
+            )
+            raise ValueError(msg)
+        return self
+
+    @model_validator(mode="after")
+    def _groups_are_declared(self) -> StudyFile:
+        asked = {
+            "[groups] compare_free": self.groups.compare_free,
+            "[model] free_by_group": self.model.free_by_group,
+        }
+        for key, value in asked.items():
+            if value and self.answers.group is None:
+                msg = f"{key} needs groups; name their column with [answers] group"
+                raise ValueError(msg)
+        return self
 
     @model_validator(mode="after")
     def _items_are_listed(self) -> StudyFile:

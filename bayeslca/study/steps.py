@@ -26,6 +26,10 @@ def count_fit(n_classes: int) -> str:
     return f"fits/classes-{n_classes}.nc"
 
 
+ALIKE_FIT, FREE_FIT = "fits/groups-alike.nc", "fits/groups-free.nc"
+"""Files of the models whose groups answer alike, or each in its own way."""
+
+
 def step_key(
     responses: Responses, model: LatentClassModel, sampling: Mapping[str, Any], seed: int
 ) -> str:

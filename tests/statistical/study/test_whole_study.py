@@ -184,6 +184,26 @@ def test_an_open_number_of_classes_shows_what_the_data_support(study: Path) -> N
     assert Posterior.load(results / "fit.nc").model.n_classes == 2
 
 
+def test_groups_that_answer_alike_are_compared_with_groups_that_do_not(study: Path) -> None:
+    answers = study.parent / "answers.csv"
+    frame = pd.read_csv(answers)
+    frame["district"] = np.where(np.arange(len(frame)) % 2, "hill", "plain")
+    # In the plain, managed committees do not meet: the same class answers another way there.
+    managed = frame["fees"] == "yes"
+    frame.loc[managed & (frame["district"] == "plain"), "meets"] = "no"
+    frame.to_csv(answers, index=False)
+    change(study, 'case = "committee"', 'case = "committee"\ngroup = "district"')
+    change(study, 'classes = ["managed", "lapsed"]', "classes = 2")
+    change(study, 'statements = ["managed is where P(fees=yes) is highest"]\n', "")
+    change(study, "compare = [1, 2]", "compare = []\n\n[groups]\ncompare_free = true")
+    run_study(study, study.parent / "groups", quiet=True)
+    page = (study.parent / "groups" / "report.html").read_text(encoding="utf-8")
+    assert "Do the groups answer alike" in page
+    assert "differ by district predicts better" in page
+    fits = {path.name for path in (study.parent / "groups" / "fits").iterdir()}
+    assert fits == {"groups-alike.nc", "groups-free.nc"}
+
+
 def test_the_same_seed_gives_the_same_numbers(study: Path) -> None:
     run_study(study, study.parent / "again", quiet=True)
     first = (study.parent / "results" / "tables" / "response_probabilities.csv").read_text("utf-8")

@@ -100,6 +100,14 @@ WRONG = [
     ('classes = ["managed", "lapsed"]', "classes = 0", ["[model] classes", "from 1 up"]),
     ('classes = ["managed", "lapsed"]', "classes = []", ["[model] classes", "list of names"]),
     ('classes = ["managed", "lapsed"]\n', "", ["line", "[model] statements", "Name the classes"]),
+    (
+        'classes = ["managed", "lapsed"]\nstatements = ["managed is where P(fees=yes) is highest"]'
+        "\n\n[class_count]\ncompare = [1, 2]",
+        "[class_count]\ncompare = []",
+        ["nothing to fit", "give one of them"],
+    ),
+    ("seed = 7", "seed = 7\n[groups]\ncompare_free = true", ["[groups] compare_free", "group"]),
+    ('["managed", "lapsed"]', '["managed", "lapsed"]\nfree_by_group = true', ["free_by_group"]),
     ("[class_count]", '[quantities]\n"gap" = "P(managed)"\n[class_count]', ["quantities"]),
     ("[class_count]", "[[hypotheses]]\nclaim = 'x'\n[class_count]", ["hypotheses", "not supp"]),
     ('case = "committee"', 'case = "committee"\nweight = "w"', ["weights", "not supported"]),

@@ -18,7 +18,7 @@ def half_way() -> Progress:
 def test_the_bar_runs_over_all_fits() -> None:
     told: list[tuple[str, float, str]] = []
     progress = JobProgress(lambda *said: told.append(said), fits=4)
-    progress.of_own(half_way())
+    progress.of_model("the study's model")(half_way())
     progress.finished(1)
     progress.finished(1)  # one fit was kept from the run before
     progress.of_comparison(FitProgress(1, fit=1, fits=2, sampling=half_way()))
@@ -36,7 +36,7 @@ def test_the_bar_runs_over_all_fits() -> None:
 
 def test_nothing_is_shown_where_there_is_no_terminal(capsys) -> None:
     with job_progress(2, quiet=False) as progress:
-        progress.of_own(half_way())
+        progress.of_model("the study's model")(half_way())
         progress.say("Writing the report")
     said = capsys.readouterr()
     assert said.out + said.err == ""
