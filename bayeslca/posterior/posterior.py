@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
 from functools import cached_property
@@ -16,8 +17,10 @@ from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_unit_likelihood, response_probability
 from bayeslca.model.table import Table, UnitTable
 from bayeslca.posterior import membership as memberships
+from bayeslca.posterior import quantities as found_quantities
 from bayeslca.posterior import separation as separations
 from bayeslca.posterior import tables
+from bayeslca.posterior.quantities import Quantity
 from bayeslca.posterior.summary import Quantities, summary_frame
 from bayeslca.posterior.versions import versions_now
 from bayeslca.responses.responses import Responses
@@ -30,6 +33,7 @@ if TYPE_CHECKING:
     from xarray import DataTree
 
     from bayeslca.assess.convergence import Diagnostics
+    from bayeslca.assess.hypotheses import HypothesisTest
 
 Rows = Literal["cases", "patterns"]
 
@@ -198,6 +202,61 @@ class Posterior:
             answers say nothing. ``note`` says why it is nan where it is.
         """
         return separations.separation_table(self._separation_quantities, interval)
+
+    def quantity(self, text: str, interval: float = 0.95) -> Quantity:
+        """Return what is known of a quantity, such as a difference of probabilities.
+
+        Parameters
+        ----------
+        text : str
+            Such as ``"P(fees=yes | managed) - P(fees=yes | lapsed)"``.
+        interval : float
+
+        Raises
+        ------
+        StatementError
+            When it is no quantity, or stands for several values (one for each group or class).
+        """
+        return found_quantities.quantity(self, text, interval)
+
+    def quantities(
+        self, texts: Mapping[str, str] | Sequence[str], interval: float = 0.95
+    ) -> pd.DataFrame:
+        """Return what is known of several quantities.
+
+        Parameters
+        ----------
+        texts : sequence of str, or mapping from a name to str
+        interval : float
+
+        Returns
+        -------
+        DataFrame
+            A row per ``quantity``; where one differs by group and names none, a row per
+            ``group``; where it speaks of every class (``.``), a row per ``latent_class``. After
+            the summary come ``prior_median``, ``prior_lower`` and ``prior_upper``: the same of
+            the prior, nan where the prior does not tell the classes apart.
+        """
+        return found_quantities.quantities(self, texts, interval)
+
+    def test(self, *statements: str, seed: int = 0) -> HypothesisTest:
+        """Test a hypothesis, such as an order of probabilities; several are joined by "and".
+
+        Parameters
+        ----------
+        *statements : str
+            Such as ``"P(fees=yes | managed) > P(fees=yes | lapsed)"``.
+        seed : int
+            Of the draws that a Bayes factor needs beside those of the posterior.
+
+        Raises
+        ------
+        StatementError
+            When a statement claims nothing, or the model gives it no meaning.
+        """
+        from bayeslca.assess.hypotheses import hypothesis_test
+
+        return hypothesis_test(self, *statements, seed=seed)
 
     def diagnostics(self) -> Diagnostics:
         """Return whether the sampling is to be trusted: findings, a table, and a verdict."""

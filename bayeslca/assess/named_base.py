@@ -1,0 +1,66 @@
+"""A model whose naming rules are orders: the same posterior, written without rules.
+
+Where everything but the rules leaves all classes exchangeable, the draws that the rules have named
+are draws of the model in which each rule is a set of orders: "managed is where P(fees=yes) is
+highest" is P(fees=yes | managed) > P(fees=yes | b) for the classes b that are left.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from math import factorial
+
+from bayeslca.exceptions import BayesLCAError
+from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.model.naming import classes_named
+from bayeslca.model.notation import to_text
+from bayeslca.model.resolved import ResolvedNamingRule
+from bayeslca.model.syntax import Event, Name, Probability, Relation
+
+
+def without_rules(model: LatentClassModel) -> LatentClassModel | None:
+    """Return the model with orders in the place of its naming rules; None where it has none.
+
+    That is where the priors tell classes apart beside the rules, where the rules leave classes
+    unnamed, and where a rule compares a mean over groups or a sum of answers.
+    """
+    rules = model.naming_rules
+    if not rules:
+        return model
+    k = model.n_classes
+    group = model.symmetry.prior_group
+    if group.n_members != factorial(k) or len(classes_named(rules, k)) < k:
+        return None
+    left, orders = list(range(k)), []
+    for rule in rules:
+        left.remove(rule.latent_class)
+        if left and not _is_single(rule, model):
+            return None
+        orders += [_order(rule, other, model) for other in left]
+    texts = [text for text in model.statements if text not in {rule.text for rule in rules}]
+    try:
+        return replace(model, statements=(*texts, *orders), statement_sources={})
+    except BayesLCAError:
+        return None
+
+
+def _is_single(rule: ResolvedNamingRule, model: LatentClassModel) -> bool:
+    if rule.answer is None:
+        return model.n_groups == 1
+    item, categories = rule.answer
+    return len(categories) == 1 and item not in model.free_items
+
+
+def _order(rule: ResolvedNamingRule, other: int, model: LatentClassModel) -> str:
+    one, two = _compared(rule, rule.latent_class, model), _compared(rule, other, model)
+    return to_text(Relation((one, two), (">" if rule.extreme == "highest" else "<",)))
+
+
+def _compared(rule: ResolvedNamingRule, latent_class: int, model: LatentClassModel) -> Probability:
+    of_class = Event(Name(model.class_names[latent_class]))
+    if rule.answer is None:
+        return Probability((of_class,))
+    item, (category,) = rule.answer
+    spec = model.items[item]
+    answer = Event(Name(spec.name), "=", (Name(spec.categories[category]),))
+    return Probability((answer,), (of_class,))
