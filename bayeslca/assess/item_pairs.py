@@ -1,0 +1,235 @@
+"""Pairs of items: their joint answers laid end to end, and how far they miss what is expected.
+
+A pair of items whose answers have an order (two answers, or declared as ordered) is judged by
+how much the two go together: the sum over joint answers of (a - E a)(b - E b) x (observed -
+expected), in standard errors under the model. For two yes/no items every joint answer's count
+differs from its expectation by just that, where the items' own shares are met. Any other pair
+is judged by X2 of its joint answers, (X2 - df) / sqrt(2 df), which has no direction.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+from itertools import combinations
+
+import numpy as np
+
+from bayeslca._typing import Bools, Floats, Ints
+from bayeslca.model.table import Table
+from bayeslca.responses.item import Item
+
+NO_SPREAD = 1e-12
+"""A variance below this is of something that cannot vary."""
+
+
+@dataclass(frozen=True, eq=False)
+class ItemPairs:
+    """All pairs of some items.
+
+    Attributes
+    ----------
+    items : tuple of Item
+    """
+
+    items: tuple[Item, ...]
+
+    @cached_property
+    def pairs(self) -> tuple[tuple[int, int], ...]:
+        """The pairs, in the items' order."""
+        return tuple(combinations(range(len(self.items)), 2))
+
+    @cached_property
+    def start(self) -> Ints:
+        """Joint answers of pair p are start[p]:start[p + 1], the second item's fastest."""
+        sizes = [self.items[i].n_categories * self.items[j].n_categories for i, j in self.pairs]
+        return np.concatenate([[0], np.cumsum(sizes)]).astype(np.int64)
+
+    @cached_property
+    def cell_pair(self) -> Ints:
+        """The pair of each joint answer."""
+        return np.repeat(np.arange(len(self.pairs)), np.diff(self.start))
+
+    @cached_property
+    def answers(self) -> Ints:
+        """The two items' categories of each joint answer, shape (joint answers, 2)."""
+        sizes = [(self.items[i].n_categories, self.items[j].n_categories) for i, j in self.pairs]
+        return np.concatenate([np.argwhere(np.ones(size)) for size in sizes])
+
+    @cached_property
+    def columns(self) -> Ints:
+        """The two response columns of each joint answer, shape (joint answers, 2)."""
+        starts = np.concatenate([[0], np.cumsum([item.n_categories for item in self.items])])
+        of_pair = starts[np.array(self.pairs)]
+        return np.asarray(of_pair[self.cell_pair] + self.answers)
+
+    @cached_property
+    def values(self) -> Floats:
+        """What the two answers of each joint answer count for, shape (joint answers, 2)."""
+        return answer_scores(self.items)[self.columns].astype(np.float64)
+
+    @cached_property
+    def is_scored(self) -> Bools:
+        """Tell which pairs have answers in an order."""
+        scored = [has_order(item) for item in self.items]
+        return np.array([scored[i] and scored[j] for i, j in self.pairs])
+
+    @property
+    def n_cells(self) -> int:
+        """Number of joint answers of all pairs."""
+        return int(self.start[-1])
+
+    def summed(self, values: Floats) -> Floats:
+        """Sum values (..., joint answers) over each pair's joint answers."""
+        return np.asarray(np.add.reduceat(values, self.start[:-1], axis=-1))
+
+    def probability(
+        self, table: Table, rows: Floats, prevalence: Floats, response_group: Sequence[int]
+    ) -> Floats:
+        """Return the probability of each joint answer in each group.
+
+        Parameters
+        ----------
+        table : Table
+        rows : ndarray, shape (D, R, K)
+            p(row | class).
+        prevalence : ndarray, shape (D, groups, K)
+        response_group : sequence of int
+            The response group of each group.
+
+        Returns
+        -------
+        ndarray, shape (D, groups, joint answers)
+        """
+        out = np.zeros((*prevalence.shape[:2], self.n_cells))
+        joint = self._joint_rows(table)
+        for g, at in enumerate(response_group):
+            first, second = table.response_row[at][self.columns.T]
+            for k in range(table.n_classes):
+                cells = rows[:, first, k] * rows[:, second, k]
+                together = joint[at] >= 0
+                if together.any():
+                    cells[:, together] = rows[:, joint[at][together], k]
+                out[:, g] += prevalence[:, g, k, None] * cells
+        return out
+
+    def _joint_rows(self, table: Table) -> Ints:
+        """Row of joint answers of pairs that are answered together, -1 elsewhere."""
+        out = np.full((table.n_response_groups, self.n_cells), -1, dtype=np.int64)
+        for pair, (first, second) in enumerate(table.pair_item.tolist()):
+            rows = table.pair_row[:, table.pair_start[pair] : table.pair_start[pair + 1]]
+            low, high = min(first, second), max(first, second)
+            if first > second:
+                shape = (len(rows), self.items[first].n_categories, -1)
+                rows = rows.reshape(shape).swapaxes(1, 2).reshape(len(rows), -1)
+            at = self.pairs.index((low, high))
+            out[:, self.start[at] : self.start[at + 1]] = rows
+        return out
+
+    def weights(self, probability: Floats) -> Floats:
+        """Return (a - E a)(b - E b) of each joint answer, of probabilities (..., joint answers)."""
+        a, b = self.values.T
+        mean_a = self.summed(probability * a)[..., self.cell_pair]
+        mean_b = self.summed(probability * b)[..., self.cell_pair]
+        return np.asarray((a - mean_a) * (b - mean_b))
+
+    def residuals(self, counts: Floats, probability: Floats, n_both: Floats) -> Floats:
+        """Return how far each pair misses what is expected; last group: all groups together.
+
+        Parameters
+        ----------
+        counts : ndarray, shape (..., groups, joint answers)
+        probability : ndarray, shape (..., groups, joint answers)
+        n_both : ndarray, shape (groups, pairs)
+            Cases that answered both items.
+
+        Returns
+        -------
+        ndarray, shape (..., groups + 1, pairs)
+        """
+        gap = counts - n_both[:, self.cell_pair] * probability
+        weights = self.weights(probability)
+        moved = self.summed(weights * gap)
+        spread = n_both * (
+            self.summed(weights**2 * probability) - self.summed(weights * probability) ** 2
+        )
+        signed = _in_errors(with_sum(moved), with_sum(spread))
+        if self.is_scored.all():
+            return signed
+        expected = n_both[:, self.cell_pair] * probability
+        with np.errstate(divide="ignore", invalid="ignore"):
+            x2 = self.summed(np.where(expected > 0, gap**2 / expected, 0.0))
+        df = with_sum((np.diff(self.start) - 1) * (n_both > 0).astype(np.float64))
+        unsigned = (with_sum(x2) - df) / np.sqrt(2 * np.maximum(df, 1))
+        return np.where(self.is_scored, signed, unsigned)
+
+    def odds_ratio(self, counts: Floats) -> Floats:
+        """Return concordant over discordant pairs of cases (Agresti 1980), nan without an order.
+
+        Of two yes/no items it is the odds ratio of their 2 x 2 table.
+
+        Parameters
+        ----------
+        counts : ndarray, shape (..., joint answers)
+            Counts, or probabilities.
+
+        Returns
+        -------
+        ndarray, shape (..., pairs)
+        """
+        out = np.full((*counts.shape[:-1], len(self.pairs)), np.nan)
+        for p, (i, j) in enumerate(self.pairs):
+            if self.is_scored[p]:
+                shape = (self.items[i].n_categories, self.items[j].n_categories)
+                table = counts[..., self.start[p] : self.start[p + 1]]
+                table = table.reshape(*table.shape[:-1], *shape)
+                table = table[..., :: _direction(self.items[i]), :: _direction(self.items[j])]
+                out[..., p] = _concordance(table)
+        return out
+
+
+def has_order(item: Item) -> bool:
+    """Tell whether an item's answers can be counted up: two answers, or declared as ordered."""
+    return item.ordered or item.n_categories == 2
+
+
+def answer_scores(items: tuple[Item, ...]) -> Ints:
+    """Return what each answer counts for, shape (A,).
+
+    An item with two answers counts 1 for the one that means yes (the last where nothing was
+    declared), an ordered item the place of its answer from 0, any other item nothing.
+    """
+    out: list[int] = []
+    for item in items:
+        places = list(range(item.n_categories))[:: _direction(item)]
+        out += places if has_order(item) else [0] * item.n_categories
+    return np.array(out, dtype=np.int64)
+
+
+def _direction(item: Item) -> int:
+    """Return -1 where the first of two answers means yes, else 1."""
+    return -1 if item.n_categories == 2 and item.yes == item.categories[0] else 1
+
+
+def with_sum(values: Floats) -> Floats:
+    """Append the sum over groups to values (..., groups, n)."""
+    return np.concatenate([values, values.sum(axis=-2, keepdims=True)], axis=-2)
+
+
+def _in_errors(moved: Floats, variance: Floats) -> Floats:
+    varies = variance > NO_SPREAD
+    return np.where(varies, moved / np.sqrt(np.where(varies, variance, 1.0)), 0.0)
+
+
+def _concordance(tables: Floats) -> Floats:
+    """Return concordant over discordant pairs of tables (..., R, C)."""
+    after = np.zeros_like(tables)  # cases higher on both items
+    across = np.zeros_like(tables)  # cases higher on the first, lower on the second
+    n_rows, n_columns = tables.shape[-2:]
+    for a in range(n_rows):
+        for b in range(n_columns):
+            after[..., a, b] = tables[..., a + 1 :, b + 1 :].sum(axis=(-2, -1))
+            across[..., a, b] = tables[..., a + 1 :, :b].sum(axis=(-2, -1))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        return np.asarray((tables * after).sum(axis=(-2, -1)) / (tables * across).sum((-2, -1)))
