@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -29,6 +30,11 @@ class Allocated:
     answers: Floats
     cases: Floats
     chains: int
+
+    def relabelled(self, classes: Sequence[int]) -> Allocated:
+        """Return the same draws with classes in another order."""
+        order = list(classes)
+        return Allocated(self.answers[:, :, order], self.cases[:, :, order], self.chains)
 
 
 def draw_allocated(posterior: Posterior, seed: int) -> Allocated:

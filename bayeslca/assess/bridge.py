@@ -33,11 +33,11 @@ class LogRatio:
 
 
 def mean_ratio(log_weight: Floats) -> LogRatio:
-    """Return the log mean of weights (chain, draw), given as logs."""
+    """Return the log mean of weights (chain, draw, label), given as logs."""
     highest = log_weight.max()
     if np.isneginf(highest):
         return LogRatio(-np.inf, np.inf)
-    weight = np.exp(log_weight - highest)
+    weight = np.exp(log_weight - highest).mean(axis=-1)
     return LogRatio(float(highest + np.log(weight.mean())), relative_error(weight))
 
 
@@ -46,8 +46,8 @@ def bridge_ratio(log_weight: Floats, log_weight_other: Floats) -> LogRatio:
 
     Parameters
     ----------
-    log_weight : ndarray, shape (chain, draw)
-        log w at draws of the model below the line.
+    log_weight : ndarray, shape (chain, draw, label)
+        log w at draws of the model below the line, under every labelling that is as probable.
     log_weight_other : ndarray, shape (chain, draw)
         log w at draws of the model above the line.
 
@@ -57,9 +57,9 @@ def bridge_ratio(log_weight: Floats, log_weight_other: Floats) -> LogRatio:
         With an infinite error where the models have no draw in common: then an upper bound.
     """
     if np.isneginf(log_weight.max()):  # no draw in common: only a bound (3 of n, rule of three)
-        most = float(log_weight_other.max()) + np.log(3.0 / log_weight.size)
+        most = float(log_weight_other.max() + np.log(3.0 / log_weight.size))
         return LogRatio(most, np.inf)
-    n, m = ess(np.exp(log_weight - log_weight.max())), ess(_bounded(log_weight_other))
+    n, m = ess(np.exp(log_weight - log_weight.max()).mean(axis=-1)), ess(_bounded(log_weight_other))
     s, t = np.log(n / (n + m)), np.log(m / (n + m))
     ratio = float(np.median(log_weight_other))
     for _ in range(ROUNDS):
@@ -70,7 +70,8 @@ def bridge_ratio(log_weight: Floats, log_weight_other: Floats) -> LogRatio:
             break
         ratio = new
     error = np.hypot(
-        relative_error(np.exp(above - above.max())), relative_error(np.exp(below - below.max()))
+        relative_error(np.exp(above - above.max()).mean(axis=-1)),
+        relative_error(np.exp(below - below.max())),
     )
     return LogRatio(float(ratio), float(error))
 

@@ -42,6 +42,8 @@ Method = Literal["definition", "weighed", "counted"]
 Bound = Literal["", "below", "above"]
 NEARLY_SURE = 1e-3
 """With less than this left for the complement, that is weighed by itself where it can be."""
+TOO_UNSURE = 1.0
+"""A Bayes factor with a larger error (of its log) is given no grade."""
 FEWEST_HOLDING = 100
 """With fewer effective draws in which a hypothesis holds, its Bayes factor is only bounded."""
 
@@ -104,7 +106,8 @@ class HypothesisTest:
         """
         if self.true_by_definition:
             return "true by definition"
-        if self.bound == "below" and self.log_bayes_factor > 0:
+        unsure = self.log_bayes_factor_mcse > TOO_UNSURE and self.bound != "above"
+        if unsure or (self.bound == "below" and self.log_bayes_factor > 0):
             return "not decided by so few draws"
         return grade(self.log_bayes_factor_against_complement)
 

@@ -9,7 +9,7 @@ up, and steps are put in where a bridge is weak.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, fields, replace
 from functools import cached_property
 from math import hypot
@@ -71,43 +71,58 @@ class TiltedModel(LatentClassModel):
 
 @dataclass(frozen=True, eq=False)
 class Step:
-    """A model of the ladder, with its classes drawn."""
+    """A model of the ladder, with its classes drawn.
+
+    Attributes
+    ----------
+    collapsed : Collapsed
+    allocated : Allocated
+    labellings : tuple of tuple of int
+        Orders of the classes that the model does not tell apart: draws stand for all of them.
+    """
 
     collapsed: Collapsed
     allocated: Allocated
+    labellings: tuple[tuple[int, ...], ...] = ()
 
     def log_evidence(self, other: Step) -> Floats:
-        """Return log p(answers, classes) (chain, draw) of this model at another's draws."""
-        found = self.collapsed.log_evidence(other.allocated)
-        return np.asarray(found.reshape(other.allocated.chains, -1))
+        """Return log p(answers, classes) (chain, draw, label) of this model at another's draws."""
+        at = [other.allocated.relabelled(order) for order in other.labellings]
+        found = [self.collapsed.log_evidence(one) for one in at or [other.allocated]]
+        return np.stack(found, axis=-1).reshape(other.allocated.chains, -1, len(found))
 
 
 def bridged(low: Step, high: Step) -> LogRatio:
     """Return the log ratio of the evidence of the higher step to that of the lower."""
     return bridge_ratio(
         high.log_evidence(low) - low.log_evidence(low),
-        high.log_evidence(high) - low.log_evidence(high),
+        (high.log_evidence(high) - low.log_evidence(high))[:, :, 0],
     )
 
 
 def climb(
-    base: LatentClassModel, bottom: Step, under: LatentClassModel, responses: Responses, seed: int
+    base: LatentClassModel,
+    bottoms: Sequence[Step],
+    under: LatentClassModel,
+    responses: Responses,
+    seed: int,
 ) -> LogRatio:
     """Return the log ratio of the evidence under a hypothesis to that of the model.
 
     Parameters
     ----------
     base : LatentClassModel
-    bottom : Step
-        Draws of it.
+    bottoms : sequence of Step
+        Draws of it, last as named; before, where there is one, with all labels left open.
     under : LatentClassModel
     responses : Responses
     seed : int
     """
     seeds = iter(np.random.SeedSequence(seed).generate_state(4 * MOST_STEPS).tolist())
     sampled, top = _step(under, responses, seeds)
-    bottom = Step(bottom.collapsed, thinned(bottom.allocated, MOST_DRAWS))
-    direct = bridged(bottom, top)
+    bottoms = [replace(one, allocated=thinned(one.allocated, MOST_DRAWS)) for one in bottoms]
+    direct = bridged(bottoms[0], top)
+    bottom = bottoms[-1]
     if direct.mcse <= GOOD_ENOUGH:
         return direct
     full = _tilts(base, sampled, top.allocated)

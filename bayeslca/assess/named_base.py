@@ -7,7 +7,7 @@ highest" is P(fees=yes | managed) > P(fees=yes | b) for the classes b that are l
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, fields, replace
 from math import factorial
 
 from bayeslca.exceptions import BayesLCAError
@@ -42,6 +42,22 @@ def without_rules(model: LatentClassModel) -> LatentClassModel | None:
         return replace(model, statements=(*texts, *orders), statement_sources={})
     except BayesLCAError:
         return None
+
+
+@dataclass(frozen=True, repr=False)
+class UnnamedModel(LatentClassModel):
+    """A model whose class names mean nothing: what naming rules are applied to."""
+
+    def _refuse_classes_not_told_apart(self) -> None:
+        """Let exchangeable classes be."""
+
+
+def without_names(model: LatentClassModel) -> UnnamedModel:
+    """Return the model without its naming rules, its classes exchangeable."""
+    same = {field.name: getattr(model, field.name) for field in fields(LatentClassModel)}
+    rules = {rule.text for rule in model.naming_rules}
+    texts = tuple(text for text in model.statements if text not in rules)
+    return UnnamedModel(**{**same, "statements": texts, "statement_sources": {}})
 
 
 def _is_single(rule: ResolvedNamingRule, model: LatentClassModel) -> bool:

@@ -5,16 +5,17 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import permutations
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from bayeslca.assess.allocated import draw_allocated
 from bayeslca.assess.bridge import LogRatio, ess, mean_ratio
-from bayeslca.assess.collapsed import collapse
+from bayeslca.assess.collapsed import Collapsed, collapse
 from bayeslca.assess.conditional_model import conditional
 from bayeslca.assess.ladder import GOOD_ENOUGH, Step, climb
-from bayeslca.assess.named_base import without_rules
+from bayeslca.assess.named_base import without_names, without_rules
 from bayeslca.exceptions import BayesLCAError, ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.places import Link, Place, PrevalenceVector
@@ -22,6 +23,8 @@ from bayeslca.model.places import Link, Place, PrevalenceVector
 if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
 
+MOST_RELABELLED = 4
+"""Up to so many classes, all labellings of a draw are looked at."""
 IMPLIED = 1e-9
 """A log prior probability this near to 0 is 0: the model implies the hypothesis."""
 
@@ -78,17 +81,33 @@ def weigh(posterior: Posterior, statements: Sequence[str], seed: int) -> Weighed
     if log_prior is not None and log_prior > -IMPLIED:
         return Weighed(LogRatio(0.0, 0.0), 0.0, 0.0, 0.0)
 
-    bottom = Step(plain, draw_allocated(posterior, seed))
-    log_w = constrained.log_evidence(bottom.allocated) - plain.log_evidence(bottom.allocated)
-    log_w = log_w.reshape(bottom.allocated.chains, -1)
+    top, bottoms = constrained, _bottoms(posterior, base, plain, seed)
+    log_w = Step(top, bottoms[0].allocated).log_evidence(bottoms[0])
+    log_w = log_w - bottoms[0].collapsed.log_evidence(bottoms[0].allocated).reshape(
+        *log_w.shape[:2], 1
+    )
     ratio = mean_ratio(log_w)
     if ratio.mcse > GOOD_ENOUGH:
-        ratio = climb(base, bottom, under, posterior.responses, seed)
+        ratio = climb(base, bottoms, under, posterior.responses, seed)
     if log_prior is None:
         return Weighed(ratio, None, math.nan, math.nan)
-    left = 1.0 - np.exp(np.minimum(log_w + log_prior, 0.0))
+    left = np.maximum(1.0 - np.exp(log_w + log_prior).mean(axis=-1), 0.0)
     error = float(left.std(ddof=1) / np.sqrt(ess(left)))
     return Weighed(ratio, log_prior, float(left.mean()), error)
+
+
+def _bottoms(
+    posterior: Posterior, base: LatentClassModel, plain: Collapsed, seed: int
+) -> tuple[Step, ...]:
+    """Return draws of the model: with all labels open first, where only rules tell classes."""
+    allocated = draw_allocated(posterior, seed)
+    named = Step(plain, allocated)
+    n_classes = posterior.model.n_classes
+    if base is posterior.model or n_classes > MOST_RELABELLED:
+        return (named,)
+    unnamed = collapse(without_names(posterior.model))
+    assert unnamed is not None  # it has fewer bounds than the one with orders
+    return (Step(unnamed, allocated, tuple(permutations(range(n_classes)))), named)
 
 
 def _new_equalities(base: LatentClassModel, under: LatentClassModel) -> tuple[Link, ...]:
