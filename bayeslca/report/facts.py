@@ -87,6 +87,12 @@ class Facts:
         return self.posterior.response_probabilities(interval=self.content.interval)
 
     @cached_property
+    def response_groups(self) -> tuple[str, ...]:
+        """The groups whose response probabilities differ; none where all groups share them."""
+        frame = self.probabilities
+        return tuple(dict.fromkeys(frame["group"])) if "group" in frame else ()
+
+    @cached_property
     def overall(self) -> tuple[Share, ...]:
         """The share of each class among all cases, groups weighted by their sizes."""
         return overall_shares(self.posterior, self.content.interval)

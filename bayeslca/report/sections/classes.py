@@ -43,16 +43,29 @@ def classes_section(facts: Facts) -> Section:
 
 
 def profile_figures(facts: Facts) -> Iterator[Figure]:
-    """Yield the figures of all items: profiles in pieces, then one for each ordered item."""
+    """Yield the figures of all items: profiles in pieces, then one for each ordered item.
+
+    Where response probabilities differ by group, each group has its own.
+    """
+    for group in facts.response_groups or (None,):
+        yield from _figures_of(facts, group)
+
+
+def _figures_of(facts: Facts, group: str | None) -> Iterator[Figure]:
     items = facts.posterior.model.items
     plain = [item for item in items if not (item.ordered and item.n_categories > 2)]
     pieces = list(_pieces(plain, facts.posterior.model.n_classes))
+    end = "" if group is None else f"-group-{facts.response_groups.index(group) + 1}"
     for at, piece in enumerate(pieces, start=1):
         part = f", part {at} of {len(pieces)}" if len(pieces) > 1 else ""
-        yield _profile(facts, piece, f"profile-{at}", part)
+        yield _profile(facts, piece, f"profile-{at}{end}", part, group)
     ordered = [item for item in items if item.ordered and item.n_categories > 2]
     for at, item in enumerate(ordered, start=1):
-        yield _stacked(facts, item, f"ordered-{at}")
+        yield _stacked(facts, item, f"ordered-{at}{end}", group)
+
+
+def _in_group(group: str | None) -> str:
+    return "" if group is None else f", in {group}"
 
 
 def response_table(facts: Facts) -> PageTable:
@@ -111,6 +124,7 @@ def _tells_apart(facts: Facts) -> str:
     return sentence(
         f"the answers that differ most between the classes are {listed_up_to(best, 3)}, from the "
         "class that gives them least often to the one that gives them most often"
+        + (f" (in {facts.response_groups[0]})" if facts.response_groups else "")
     )
 
 
@@ -130,37 +144,44 @@ def _pieces(items: Sequence[Item], n_classes: int) -> Iterator[list[Item]]:
         yield piece
 
 
-def _profile(facts: Facts, items: Sequence[Item], name: str, part: str) -> Figure:
+def _profile(
+    facts: Facts, items: Sequence[Item], name: str, part: str, group: str | None
+) -> Figure:
     interval, n_classes = facts.content.interval, facts.posterior.model.n_classes
     height = 1.2 + len(profile_rows(items)) * row_height(n_classes)
     chosen = [item.name for item in items]
     return draw(
         name,
         lambda drawing: plot_profile(
-            facts.posterior, items=chosen, interval=interval, ax=drawing.subplots()
+            facts.posterior,
+            items=chosen,
+            interval=interval,
+            group=group,
+            ax=drawing.subplots(),
         ),
         size=(WIDTH, height),
         caption=(
-            f"The probability of each answer in each class{part}: a marker at the median, a line "
-            f"over the {level(interval)} interval. Each class has a colour and a marker of its own."
+            f"The probability of each answer in each class{part}{_in_group(group)}: a marker at "
+            f"the median, a line over the {level(interval)} interval. Each class has a colour and "
+            "a marker of its own."
         ),
         alt="Profile plot. "
         + " ".join(f"{called(k)}: {portrait(facts, k)}" for k in facts.class_names),
     )
 
 
-def _stacked(facts: Facts, item: Item, name: str) -> Figure:
+def _stacked(facts: Facts, item: Item, name: str, group: str | None) -> Figure:
     interval, n_classes = facts.content.interval, facts.posterior.model.n_classes
     return draw(
         name,
         lambda drawing: plot_ordered_item(
-            facts.posterior, item.name, interval=interval, ax=drawing.subplots()
+            facts.posterior, item.name, interval=interval, group=group, ax=drawing.subplots()
         ),
         size=(WIDTH, 1.8 + 0.46 * n_classes),
         caption=(
-            f"{item.text}: a bar for each class, its answers in their order, with their mean "
-            f"probabilities in per cent. The thin lines are {level(interval)} intervals of the "
-            "borders between answers."
+            f"{item.text}{_in_group(group)}: a bar for each class, its answers in their order, "
+            f"with their mean probabilities in per cent. The thin lines are {level(interval)} "
+            "intervals of the borders between answers."
         ),
         alt=f"Stacked bars of {item.text}; the numbers stand in the table below.",
     )

@@ -20,7 +20,8 @@ PRIOR_MARK = "†"
 def portrait(facts: Facts, latent_class: str) -> str:
     """Describe a class by its usual and its seldom answers, with their probabilities.
 
-    With many items only the clearest are named: the table has them all.
+    With many items only the clearest are named: the table has them all. Where response
+    probabilities differ by group, the portrait is of the first group and says so.
     """
     items = facts.posterior.model.items
     most = len(items) if len(items) <= FEW_ITEMS else MOST_NAMED
@@ -35,7 +36,8 @@ def portrait(facts: Facts, latent_class: str) -> str:
     several = [one.text for one in named if not one.answer]
     if several:
         parts.append(f"{listed_up_to(several, most)}.")
-    return " ".join(part[0].upper() + part[1:] for part in parts)
+    where = f"in {facts.response_groups[0]}: " if facts.response_groups else ""
+    return (where[:1].upper() + where[1:]) + " ".join(part[0].upper() + part[1:] for part in parts)
 
 
 class _Named(NamedTuple):
