@@ -36,6 +36,7 @@ from bayeslca.model.vocabulary import Vocabulary
 from bayeslca.responses.item import Groups, Item
 
 if TYPE_CHECKING:
+    from bayeslca.assess.maximum_likelihood import MaximumLikelihood
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.responses import Responses
     from bayeslca.responses.units import Units
@@ -306,6 +307,32 @@ class LatentClassModel:
             r_hat=r_hat,
             progress=progress,
             **options,
+        )
+
+    def maximum_likelihood(
+        self,
+        responses: Responses,
+        *,
+        starting_points: int = 100,
+        seed: int | None = None,
+        start: Any = None,
+    ) -> MaximumLikelihood:
+        """Fit this model by maximum likelihood; stated priors play no part in the estimates.
+
+        Parameters
+        ----------
+        responses : Responses
+        starting_points : int
+            Runs of EM from scattered points.
+        seed : int, optional
+        start : Parameters, or ndarray of shape (row, K), optional
+            One start of one's own instead: parameters, or the probability of each class for
+            each row of the responses.
+        """
+        from bayeslca.assess.maximum_likelihood import maximum_likelihood
+
+        return maximum_likelihood(
+            self, responses, starting_points=starting_points, seed=seed, start=start
         )
 
     def to_pymc(
