@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
 from functools import cached_property
@@ -34,6 +34,7 @@ if TYPE_CHECKING:
 
     from bayeslca.assess.convergence import Diagnostics
     from bayeslca.assess.hypotheses import HypothesisTest
+    from bayeslca.assess.predictive_checks import PredictiveChecks
 
 Rows = Literal["cases", "patterns"]
 
@@ -257,6 +258,45 @@ class Posterior:
         from bayeslca.assess.hypotheses import hypothesis_test
 
         return hypothesis_test(self, *statements, seed=seed)
+
+    def predictive_checks(
+        self,
+        *,
+        replicates: int = 1000,
+        seed: int = 0,
+        interval: float = 0.95,
+        calibrate: int = 0,
+        calibrate_from: Literal["posterior", "prior"] = "posterior",
+        progress: bool | Callable[[int, int], None] = True,
+    ) -> PredictiveChecks:
+        """Check whether the model reproduces the answers: patterns, items, pairs, sum scores.
+
+        Parameters
+        ----------
+        replicates : int
+            Replicates of the data, each from a draw of its own.
+        seed : int
+        interval : float
+            Level of the replicates' intervals.
+        calibrate : int
+            Number of simulated studies among whose p-values those of the data are ranked; each
+            is fitted anew. 0: not calibrated.
+        calibrate_from : {"posterior", "prior"}
+            Where the parameters of simulated studies come from.
+        progress : bool or callable
+            Of the calibration: called with studies done and studies to do.
+        """
+        from bayeslca.assess.predictive_checks import predictive_checks
+
+        return predictive_checks(
+            self,
+            replicates=replicates,
+            seed=seed,
+            interval=interval,
+            calibrate=calibrate,
+            calibrate_from=calibrate_from,
+            progress=progress,
+        )
 
     def diagnostics(self) -> Diagnostics:
         """Return whether the sampling is to be trusted: findings, a table, and a verdict."""

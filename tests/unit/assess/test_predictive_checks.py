@@ -234,6 +234,17 @@ def test_the_same_seed_gives_the_same_tables() -> None:
     assert not one["p"].equals(other["p"])
 
 
+def test_the_posterior_hands_over_to_it() -> None:
+    model = LatentClassModel(tuple(YES), 1)
+    posterior = at_known(model, answers(YES, independent()), [0.5] * 8, [1.0])
+    found = posterior.predictive_checks(seed=4, replicates=200, interval=0.8)
+    assert (found.seed, found.replicates, found.calibrated_in) == (4, 200, 0)
+    assert found.margins.attrs["interval"] == 0.8
+    pd.testing.assert_frame_equal(
+        found.overall, one_class(independent(), seed=4, replicates=200, interval=0.8).overall
+    )
+
+
 def test_it_shows_itself(misfits: PredictiveChecks) -> None:
     text = repr(misfits)
     assert max(map(len, text.splitlines())) <= 80
