@@ -116,6 +116,11 @@ def falling_categories(prior):
     prior.where(prior.type("b", M) > prior.type("c", M))
 
 
+def rising_categories(prior):
+    prior.where(prior.type("a", M) < prior.type("b", M))
+    prior.where(prior.type("c", M) < 0.4)
+
+
 def crossing_categories(prior):
     prior.where(prior.type("a", M) > prior.type("a", L))
     prior.where(prior.type("b", M) < prior.type("b", L))
@@ -239,6 +244,10 @@ CASES = {
     ),
     "falling categories": Case(
         ("P(type=a | managed) > P(type=b | managed) > P(type=c | managed)",), falling_categories
+    ),
+    "rising categories": Case(
+        ("P(type=a | managed) < P(type=b | managed)", "P(type=c | managed) < 0.4"),
+        rising_categories,
     ),
     "crossing categories": Case(
         (
