@@ -34,6 +34,7 @@ def commands() -> None:
       bayeslca draft committees.csv -o study.toml  a first study file to edit
       bayeslca check study.toml                    the model in words, warnings
       bayeslca run study.toml -o results           the whole job, with a report
+      bayeslca ask results "P(..) > P(..)"         a hypothesis or a quantity
       bayeslca assign results new.csv -o out.csv   membership of new cases
     """  # noqa: D301 - click keeps lines as they are after a real backspace
 
@@ -124,6 +125,16 @@ def assign(results: Path, file: Path, output: Path, sheet: str | None, replace: 
     from bayeslca.study.assign import assign_new_cases
 
     _print(assign_new_cases(results, file, output, sheet=_sheet(sheet), replace=replace))
+
+
+@commands.command()
+@click.argument("results", type=_FILE)
+@click.argument("statements", nargs=-1, required=True)
+def ask(results: Path, statements: tuple[str, ...]) -> None:
+    """Test a hypothesis, or compute a quantity, on a finished run."""
+    from bayeslca.study.ask import ask as ask_of_results
+
+    _print(ask_of_results(results, *statements))
 
 
 def _sheet(sheet: str | None) -> str | int | None:

@@ -132,20 +132,35 @@ class HypothesisTest:
 
 def hypothesis_test(posterior: Posterior, *statements: str, seed: int = 0) -> HypothesisTest:
     """Test a hypothesis; see `Posterior.test`."""
-    resolved = [_resolved(posterior, text) for text in statements]
-    if not resolved:
-        msg = "no statement was given. Give one, such as 'P(fees=yes | a) > P(fees=yes | b)'."
-        raise ModelError(msg)
-    joined = _joined(resolved)
+    joined = joined_relations(posterior, statements)
     refuse_arbitrary_labels(posterior, joined)
     try:
-        weighed = weigh(posterior, [one.text for one in resolved], seed)
+        weighed = weigh(posterior, statements, seed)
     except NotWeighed as reason:
         _refuse_equalities(joined, str(reason))
         found = _counted(posterior, joined, seed)
     else:
         found = _weighed(posterior, joined, weighed, seed)
     return replace(found, statements=tuple(statements))
+
+
+def joined_relations(posterior: Posterior, statements: Sequence[str]) -> ResolvedRelations:
+    """Read the statements of a hypothesis; all of them are meant.
+
+    Raises
+    ------
+    StatementError
+        When a statement claims nothing, or the model gives it no meaning.
+    """
+    if not statements:
+        msg = "no statement was given. Give one, such as 'P(fees=yes | a) > P(fees=yes | b)'."
+        raise ModelError(msg)
+    resolved = [_resolved(posterior, text) for text in statements]
+    return ResolvedRelations(
+        tuple(relation for one in resolved for relation in one.relations),
+        {p: term for one in resolved for p, term in one.terms.items()},
+        " and ".join(one.text for one in resolved),
+    )
 
 
 def _resolved(posterior: Posterior, text: str) -> ResolvedRelations:
@@ -159,14 +174,6 @@ def _resolved(posterior: Posterior, text: str) -> ResolvedRelations:
             remedy="Compare probabilities, P(a) > P(b), or give it to posterior.quantity(...).",
         )
     return resolved
-
-
-def _joined(resolved: Sequence[ResolvedRelations]) -> ResolvedRelations:
-    return ResolvedRelations(
-        tuple(relation for one in resolved for relation in one.relations),
-        {p: term for one in resolved for p, term in one.terms.items()},
-        " and ".join(one.text for one in resolved),
-    )
 
 
 def _refuse_equalities(joined: ResolvedRelations, reason: str) -> None:

@@ -29,8 +29,10 @@ if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.responses import Responses
 
-GOOD_ENOUGH = 0.03
-"""Largest error of a bridge that is taken without putting in a step."""
+GOOD_ENOUGH = 0.08
+"""With a larger error of the whole, steps are put in."""
+GOOD_BRIDGE = 0.03
+"""Largest error of one bridge that is taken without putting in a step."""
 MOST_STEPS = 7
 MOST_DRAWS = 1_600
 """Draws of the classes that a step keeps: their evidence is worked out many times."""
@@ -135,7 +137,7 @@ def climb(
     bridges = [bridged(ladder[0][1], ladder[1][1])]
     while len(ladder) < MOST_STEPS:
         weakest = max(range(len(bridges)), key=lambda i: bridges[i].mcse)
-        if bridges[weakest].mcse <= GOOD_ENOUGH:
+        if bridges[weakest].mcse <= GOOD_BRIDGE:
             break
         (low, below), (high, above) = ladder[weakest], ladder[weakest + 1]
         between = at(0.5 * (low + high))

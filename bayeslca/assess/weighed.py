@@ -14,7 +14,7 @@ from bayeslca.assess.allocated import draw_allocated
 from bayeslca.assess.bridge import LogRatio, ess, mean_ratio
 from bayeslca.assess.collapsed import Collapsed, collapse
 from bayeslca.assess.conditional_model import conditional
-from bayeslca.assess.ladder import GOOD_ENOUGH, Step, climb
+from bayeslca.assess.ladder import Step, climb
 from bayeslca.assess.named_base import without_names, without_rules
 from bayeslca.exceptions import BayesLCAError, ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
@@ -23,6 +23,8 @@ from bayeslca.model.places import Link, Place, PrevalenceVector
 if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
 
+GOOD_ENOUGH = 0.03
+"""With a larger error, draws under the hypothesis are made too."""
 MOST_RELABELLED = 4
 """Up to so many classes, all labellings of a draw are looked at."""
 IMPLIED = 1e-9

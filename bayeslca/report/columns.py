@@ -107,6 +107,47 @@ COLUMNS: dict[str, Column] = {
     ),
     "trustworthy": Column("Sampling", "whether the sampling is to be trusted", "flag"),
     "tied": Column("Tie", "too close to the best to tell", "flag"),
+    "claim": Column("Claim", "the hypothesis as the study words it", "text"),
+    "planned": Column("Planned", "whether it was stated before the answers were seen", "flag"),
+    "hypothesis": Column("Hypothesis", "one of the rivals, or none of these", "text"),
+    "posterior_probability": Column(
+        "Probability after",
+        "probability after the data that it holds, under the model; empty for an equality",
+        "share",
+    ),
+    "prior_probability": Column(
+        "Probability before", "the same before the data, under the prior", "share"
+    ),
+    "posterior_mcse": Column("Simulation error after", "Monte Carlo error of it", "number"),
+    "prior_mcse": Column("Simulation error before", "Monte Carlo error of it", "number"),
+    "log_bayes_factor": Column(
+        "Log Bayes factor", "natural log of the Bayes factor against the model", "number"
+    ),
+    "log_bayes_factor_mcse": Column(
+        "Simulation error", "Monte Carlo error of the log Bayes factor", "number"
+    ),
+    "log_bayes_factor_against_complement": Column(
+        "Log Bayes factor against the opposite",
+        "natural log of the Bayes factor against the model without the hypothesis",
+        "number",
+    ),
+    "log_bayes_factor_against_complement_mcse": Column(
+        "Simulation error (opposite)", "Monte Carlo error of it", "number"
+    ),
+    "grade": Column("In words", "grade by Kass & Raftery (1995)", "text"),
+    "bound": Column(
+        "Bound",
+        "below or above: too few draws decide, and the Bayes factor is only known to lie there",
+        "text",
+    ),
+    "true_by_definition": Column(
+        "By definition", "the model implies it, so that it is no result", "flag"
+    ),
+    "method": Column("Method", "weighed by evidence, or counted in draws", "text"),
+    "prior_weight": Column("Weight before", "prior probability among the rivals", "share"),
+    "posterior_weight": Column("Weight after", "posterior probability among the rivals", "share"),
+    "text": Column("Formula", "what was computed", "text"),
+    "prior_median": Column("Before the data", "median of the prior", "number"),
     "table": Column("Table", "the table that has the column", "text"),
     "column": Column("Column", "the column's name in the files", "text"),
     "words": Column("Head", "the column's head on the page", "text"),

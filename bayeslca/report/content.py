@@ -8,7 +8,11 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    import pandas as pd
+
     from bayeslca.assess.compare import Comparison
+    from bayeslca.assess.hypotheses import HypothesisTest
+    from bayeslca.assess.rivals import Rivals
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.responses import Responses
 
@@ -28,6 +32,24 @@ class Change:
     what: str
     before: str
     after: str
+
+
+@dataclass(frozen=True)
+class Claim:
+    """A claim of the theory, and what became of it.
+
+    Attributes
+    ----------
+    words : str
+        As the study words it.
+    test : HypothesisTest
+    planned : bool
+        True when it was stated before the answers were seen.
+    """
+
+    words: str
+    test: HypothesisTest
+    planned: bool = False
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -52,6 +74,12 @@ class ReportContent:
     group_comparison : Comparison or None
         Of response probabilities that all groups share against ones that differ by group, rows
         "alike in all groups" and "free by group"; None when not done.
+    claims : tuple of Claim
+        Hypotheses of the study, as tested.
+    rivals : mapping of str to Rivals
+        Sets of hypotheses that compete, by the set's name.
+    quantities : DataFrame or None
+        What the study asked for by name; see `Posterior.quantities`.
     alternatives : mapping of str to Posterior
         Other numbers of classes that the data support as well, where the study leaves the number
         open; each is shown beside the answer. Keys are headings ("2 classes").
@@ -85,6 +113,9 @@ class ReportContent:
     comparison: Comparison | None = None
     study_row: int | str | None = None
     group_comparison: Comparison | None = None
+    claims: tuple[Claim, ...] = ()
+    rivals: Mapping[str, Rivals] = field(default_factory=dict)
+    quantities: pd.DataFrame | None = None
     alternatives: Mapping[str, Posterior] = field(default_factory=dict)
     diagnostic: bool = False
     interval: float = 0.95

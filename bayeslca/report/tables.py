@@ -63,8 +63,51 @@ def file_tables(content: ReportContent) -> tuple[FileTable, ...]:
             "How well models with different numbers of classes predict",
             content.comparison.table,
         )
+    if content.claims:
+        named["hypotheses"] = ("What became of the study's hypotheses", hypotheses_table(content))
+    for name, rivals in content.rivals.items():
+        named[f"rivals_{_file_name(name)}"] = (f"Rival hypotheses: {name}", rivals.table)
+    if content.quantities is not None:
+        named["quantities"] = ("Quantities that the study asks for", content.quantities)
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
+
+
+def hypotheses_table(content: ReportContent) -> pd.DataFrame:
+    """Return a row per hypothesis, with all its numbers."""
+    import pandas as pd
+
+    return pd.DataFrame(
+        [
+            {
+                "claim": claim.words,
+                "planned": claim.planned,
+                "statement": claim.test.text,
+                "posterior_probability": claim.test.posterior_probability,
+                "posterior_mcse": claim.test.posterior_mcse,
+                "prior_probability": claim.test.prior_probability,
+                "prior_mcse": claim.test.prior_mcse,
+                "log_bayes_factor": claim.test.log_bayes_factor,
+                "log_bayes_factor_mcse": claim.test.log_bayes_factor_mcse,
+                "log_bayes_factor_against_complement": (
+                    claim.test.log_bayes_factor_against_complement
+                ),
+                "log_bayes_factor_against_complement_mcse": (
+                    claim.test.log_bayes_factor_against_complement_mcse
+                ),
+                "grade": claim.test.grade,
+                "bound": claim.test.bound,
+                "true_by_definition": claim.test.true_by_definition,
+                "method": claim.test.method,
+            }
+            for claim in content.claims
+        ]
+    )
+
+
+def _file_name(name: str) -> str:
+    """Return a name with everything but letters and digits replaced."""
+    return "".join(sign if sign.isalnum() else "_" for sign in name)
 
 
 def _flat(frame: pd.DataFrame) -> pd.DataFrame:

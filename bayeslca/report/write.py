@@ -23,6 +23,7 @@ from bayeslca.report.sections.prevalence import prevalence_section
 from bayeslca.report.sections.reproduce import reproduce_section, software_versions
 from bayeslca.report.sections.reviewer import reviewer_section
 from bayeslca.report.sections.sampling import sampling_section
+from bayeslca.report.sections.theory import theory_section
 from bayeslca.report.tables import FileTable, file_tables
 from bayeslca.report.wording import sentence
 from bayeslca.report.workbook import write_workbook
@@ -83,6 +84,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         prevalence_section(facts),
         class_counts_section(facts),
         groups_section(facts),
+        theory_section(facts),
         membership_section(facts),
         assumptions_section(facts),
         sampling_section(facts),

@@ -8,7 +8,9 @@ from pathlib import Path
 
 from bayeslca.findings import Finding
 from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.report.wording import counted
 from bayeslca.responses.responses import Responses
+from bayeslca.study.claims import check_theory
 from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
 
@@ -30,6 +32,7 @@ def check_study(path: str | Path) -> str:
         When the study, the answers or the model are wrong.
     """
     study = load_study(path)
+    check_theory(study)
     responses = study.responses
     model = study.model
     checked = model or LatentClassModel(
@@ -84,6 +87,11 @@ def _plan(study: Study, responses: Responses) -> list[str]:
         lines += _wrapped(f"- compare models with {listed} unconstrained classes", indent=4)
     if study.said.groups.compare_free:
         lines += _wrapped("- compare groups that answer alike with groups that do not", indent=4)
+    n_claims, n_quantities = len(study.said.hypotheses), len(study.said.quantities)
+    if n_claims or n_quantities:
+        asked = [counted(n_claims, "hypothesis", "hypotheses")] if n_claims else []
+        asked += [counted(n_quantities, "quantity", "quantities")] if n_quantities else []
+        lines += _wrapped(f"- put {' and '.join(asked)} to the posterior", indent=4)
     lines += _wrapped(f"- {_expected_time(study, responses)}", indent=4)
     return lines
 

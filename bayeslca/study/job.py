@@ -16,6 +16,7 @@ import bayeslca
 from bayeslca.posterior.storage import save
 from bayeslca.report.content import ReportContent
 from bayeslca.study.changes import changes_since
+from bayeslca.study.claims import Theory, check_theory, put_to_the_posterior
 from bayeslca.study.group_comparison import FILES as GROUP_FITS
 from bayeslca.study.group_comparison import compared_groups
 from bayeslca.study.load import Study, load_study
@@ -72,6 +73,7 @@ def run_study(
     folder = Path(folder)
     previous = previous_results(folder, replace=replace)
     study = load_study(path)
+    check_theory(study)
     steps = Steps(previous)
     fits = len(study.said.class_count.compare) + (study.model is not None)
     fits += 2 * study.said.groups.compare_free
@@ -80,8 +82,10 @@ def run_study(
         comparison = _compared(study, steps, own, progress)
         answer = _answer(own, comparison)
         groups = compared_groups(study, steps, answer.main, progress)
+        progress.say("Testing the hypotheses")
+        theory = put_to_the_posterior(study, answer.main)
         progress.say("Writing the report")
-        return _results(study, folder, steps, answer, comparison, groups)
+        return _results(study, folder, steps, answer, comparison, groups, theory)
 
 
 def _results(
@@ -91,6 +95,7 @@ def _results(
     answer: _Answer,
     comparison: Comparison | None,
     groups: Comparison | None,
+    theory: Theory,
 ) -> Outcome:
     main = answer.main
     content = ReportContent(
@@ -102,6 +107,9 @@ def _results(
         comparison=comparison,
         study_row=_study_row(study, answer.rests_on),
         group_comparison=groups,
+        claims=theory.claims,
+        rivals=theory.rivals,
+        quantities=theory.quantities,
         alternatives=answer.alternatives,
         diagnostic=study.said.study.diagnostic,
         interval=study.said.report.interval,

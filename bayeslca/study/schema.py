@@ -114,6 +114,16 @@ class GroupsSection(_Section):
     compare_free: bool = False
 
 
+class HypothesisSection(_Section):
+    """One claim of the theory, and what it says of probabilities."""
+
+    claim: str
+    statements: list[str] = Field(min_length=1)
+    planned: bool = False
+    rivals: str = ""
+    weight: float = Field(default=1.0, gt=0)
+
+
 class SamplingSection(_Section):
     """How the posterior is computed."""
 
@@ -142,6 +152,8 @@ class StudyFile(_Section):
     model: ModelSection = ModelSection()
     class_count: ClassCountSection = ClassCountSection()
     groups: GroupsSection = GroupsSection()
+    hypotheses: list[HypothesisSection] = []
+    quantities: dict[str, str] = {}
     sampling: SamplingSection = SamplingSection()
     report: ReportSection = ReportSection()
 
@@ -168,6 +180,29 @@ class StudyFile(_Section):
         return self
 
     @model_validator(mode="after")
+    def _claims_can_be_weighed(self) -> StudyFile:
+        if (self.hypotheses or self.quantities) and self.model.classes is None:
+            what = "[[hypotheses]]" if self.hypotheses else "[quantities]"
+            msg = f"{what} speak of classes, and [model] classes is left out; name the classes"
+            raise ValueError(msg)
+        claims = [said.claim for said in self.hypotheses]
+        for said in self.hypotheses:
+            rivals = [other for other in self.hypotheses if other.rivals == said.rivals]
+            if claims.count(said.claim) > 1:
+                msg = f"[[hypotheses]] makes the claim {said.claim!r} twice; word them differently"
+                raise ValueError(msg)
+            if said.rivals and len(rivals) == 1:
+                msg = (
+                    f"[[hypotheses]] rivals = {said.rivals!r} has one hypothesis only; a set of "
+                    "rivals has two or more"
+                )
+                raise ValueError(msg)
+            if said.weight != 1.0 and not said.rivals:
+                msg = f"[[hypotheses]] gives {said.claim!r} a weight, but no rivals to weigh it by"
+                raise ValueError(msg)
+        return self
+
+    @model_validator(mode="after")
     def _items_are_listed(self) -> StudyFile:
         for name in self.items:
             if name not in self.answers.items:
@@ -183,7 +218,5 @@ NOT_YET = {
     ("answers", "weight"): "sampling weights",
     ("answers", "cluster"): "clusters of a complex sample",
     ("answers", "stratum"): "strata of a complex sample",
-    ("hypotheses",): "hypotheses",
-    ("quantities",): "quantities",
 }
 """Keys that are known but do not work yet, with what they stand for."""

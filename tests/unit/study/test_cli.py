@@ -35,7 +35,7 @@ def run(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> 
 def test_help_lists_the_commands(run: Run) -> None:
     code, out, _ = run("--help")
     assert code == 0
-    for command in ("draft", "inspect", "check", "run", "assign"):
+    for command in ("draft", "inspect", "check", "run", "ask", "assign"):
         assert command in out
     assert max(map(len, out.splitlines())) <= 80
 
@@ -54,6 +54,7 @@ def test_version(run: Run) -> None:
         (["inspect", "nowhere.csv"], "no such file"),
         (["draft", "nowhere.csv", "-o", "s.toml"], "no such file"),
         (["assign", "nowhere", "new.csv", "-o", "out.csv"], "no such results folder"),
+        (["ask", "nowhere", "P(managed) > 0.5"], "no such results folder"),
         (["inspect", "x.csv", "--header-row", "one"], "not a valid integer"),
     ],
 )

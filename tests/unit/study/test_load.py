@@ -69,6 +69,11 @@ def edit(folder: Path, old: str, new: str) -> None:
     path.write_text(text.replace(old, new, 1), encoding="utf-8")
 
 
+HYPOTHESIS = """[[hypotheses]]
+claim = 'x'
+statements = ['P(managed) > 0.5']
+"""
+
 WRONG = [
     # what is replaced, by what, and what the message must hold: place, problem, remedy
     ("seed = 7", "seed = ", ["study.toml", "not valid TOML", "line"]),
@@ -108,8 +113,12 @@ WRONG = [
     ),
     ("seed = 7", "seed = 7\n[groups]\ncompare_free = true", ["[groups] compare_free", "group"]),
     ('["managed", "lapsed"]', '["managed", "lapsed"]\nfree_by_group = true', ["free_by_group"]),
-    ("[class_count]", '[quantities]\n"gap" = "P(managed)"\n[class_count]', ["quantities"]),
-    ("[class_count]", "[[hypotheses]]\nclaim = 'x'\n[class_count]", ["hypotheses", "not supp"]),
+    ("[class_count]", "[quantities]\n'gap' = 3\n[class_count]", ["[quantities] gap", "string"]),
+    ("[class_count]", "[[hypotheses]]\nclaim = 'x'\n[class_count]", ["statements", "is missing"]),
+    ("[class_count]", f"{HYPOTHESIS}weight = 2\n[class_count]", ["a weight, but no rivals"]),
+    ("[class_count]", f"{HYPOTHESIS}rivals = 'a'\n[class_count]", ["one hypothesis only"]),
+    ("[class_count]", f"{HYPOTHESIS}{HYPOTHESIS}[class_count]", ["the claim 'x' twice"]),
+    ("[class_count]", f"{HYPOTHESIS}planed = true\n[class_count]", ["near names: 'planned'"]),
     ('case = "committee"', 'case = "committee"\nweight = "w"', ["weights", "not supported"]),
     ('case = "committee"', 'case = "committee"\ncluster = "c"', ["clusters", "not supported"]),
     ('case = "committee"', 'case = "committee"\nstratum = "s"', ["strata", "not supported"]),
