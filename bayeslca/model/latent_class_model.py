@@ -7,10 +7,8 @@ from dataclasses import asdict, dataclass, field
 from functools import cached_property
 from typing import TYPE_CHECKING, Any, Literal
 
-import numpy as np
-
 from bayeslca._typing import Bools, Seed
-from bayeslca.exceptions import ModelError, near_names
+from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
 from bayeslca.model.agreement import check_agreement
 from bayeslca.model.assumptions import Assumptions, prevalence_source, response_assumptions
@@ -21,6 +19,13 @@ from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.constraints import read_links
 from bayeslca.model.describe import describe
 from bayeslca.model.identifiability import Identifiability, identifiability
+from bayeslca.model.model_arguments import (
+    check_items,
+    check_sources,
+    checked_classes,
+    checked_free,
+    checked_statements,
+)
 from bayeslca.model.naming import classes_named
 from bayeslca.model.naming_links import naming_links
 from bayeslca.model.places import Link
@@ -89,12 +94,12 @@ class LatentClassModel:
         # Lists are welcome where tuples are kept; a frozen dataclass is set through object.
         keep = object.__setattr__
         keep(self, "items", tuple(self.items))
-        keep(self, "classes", _checked_classes(self.classes))
-        keep(self, "statements", _checked_statements(self.statements))
+        keep(self, "classes", checked_classes(self.classes))
+        keep(self, "statements", checked_statements(self.statements))
         keep(self, "statement_sources", dict(self.statement_sources))
-        _check_items(self.items)
-        _check_sources(self.statement_sources, self.statements)
-        keep(self, "free_by_group", _checked_free(self.free_by_group, self.items, self.groups))
+        check_items(self.items)
+        check_sources(self.statement_sources, self.statements)
+        keep(self, "free_by_group", checked_free(self.free_by_group, self.items, self.groups))
         self._refuse_classes_not_told_apart()
 
     @property
@@ -429,95 +434,4 @@ class LatentClassModel:
             f"'P({example} | {names[0]}) ~ Beta(9, 2)'; or give the number of classes "
             f"instead of names (classes={self.n_classes})."
         )
-        raise ModelError(msg)
-
-
-def _checked_classes(classes: object) -> int | tuple[str, ...]:
-    if isinstance(classes, np.integer):
-        classes = int(classes)
-    if isinstance(classes, bool) or not isinstance(classes, int | Sequence):
-        msg = f"classes must be a number or a list of names; got {classes!r}."
-        raise ModelError(msg)
-    if isinstance(classes, int):
-        if classes < 1:
-            msg = f"classes is {classes}; a model has at least 1 class."
-            raise ModelError(msg)
-        return classes
-    if isinstance(classes, str):
-        msg = f"classes is the text {classes!r}. Give a list of names: classes=[{classes!r}, ...]."
-        raise ModelError(msg)
-    for name in classes:
-        if not isinstance(name, str) or not name.strip():
-            msg = f"{name!r} cannot be the name of a class. Give each class a name in words."
-            raise ModelError(msg)
-    if not classes:
-        msg = "classes is an empty list. Give the names of the classes, or their number."
-        raise ModelError(msg)
-    _refuse_repeated(classes, "class")
-    return tuple(classes)
-
-
-def _checked_statements(statements: object) -> tuple[str, ...]:
-    if isinstance(statements, str) or not isinstance(statements, Sequence):
-        msg = f"statements must be a list of texts; got {statements!r}. Put it in brackets."
-        raise ModelError(msg)
-    for statement in statements:
-        if not isinstance(statement, str):
-            msg = f"the statement {statement!r} is not a text. Write it in quotes."
-            raise ModelError(msg)
-    return tuple(statements)
-
-
-def _check_items(items: tuple[Item, ...]) -> None:
-    for item in items:
-        if not isinstance(item, Item):
-            msg = f"{item!r} is not an Item. Give Item(name, categories), or responses.items."
-            raise ModelError(msg)
-    if not items:
-        msg = "the model has no items. Give at least one, usually responses.items."
-        raise ModelError(msg)
-    _refuse_repeated([item.name for item in items], "item")
-
-
-def _checked_free(
-    free: object, items: Sequence[Item], groups: Groups | None
-) -> bool | tuple[str, ...]:
-    if free is False or free in ((), []):
-        return False
-    if groups is None:
-        msg = (
-            f"free_by_group is {free!r}, but the model has no groups. Give groups, usually "
-            "responses.groups."
-        )
-        raise ModelError(msg)
-    if free is True:
-        return True
-    names = [item.name for item in items]
-    if isinstance(free, str) or not isinstance(free, Sequence):
-        msg = f"free_by_group must be True, False or a list of items; got {free!r}."
-        raise ModelError(msg)
-    for name in free:
-        if name not in names:
-            msg = (
-                f"free_by_group names '{name}', which is no item{near_names(str(name), names)}. "
-                f"The items are {', '.join(names)}."
-            )
-            raise ModelError(msg)
-    return tuple(name for name in names if name in free)
-
-
-def _check_sources(sources: Mapping[str, str], statements: Sequence[str]) -> None:
-    for text in sources:
-        if text not in statements:
-            msg = (
-                f"statement_sources speaks of {text!r}, which is not a statement of the model"
-                f"{near_names(text, statements)}. Write the statement in both places alike."
-            )
-            raise ModelError(msg)
-
-
-def _refuse_repeated(names: Sequence[str], what: str) -> None:
-    repeated = [name for name in dict.fromkeys(names) if list(names).count(name) > 1]
-    if repeated:
-        msg = f"the {what} '{repeated[0]}' is given twice. Give each {what} a name of its own."
         raise ModelError(msg)

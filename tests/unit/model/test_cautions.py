@@ -190,7 +190,7 @@ def test_the_description_says_what_is_assumed_and_what_it_weighs():
     )
     text = model.describe(responses_of(BINARY, 118))
     assert "3 classes, 4 items and 14 free parameters" in text
-    assert "lapsed is where P(fees=yes) is lowest (a naming rule)" in text
+    assert "lapsed is where P(fees=yes) is lowest (a naming rule, kept as" in text
     assert "Dirichlet(1, 1, 1), the default" in text
     words = " ".join(text.split())
     assert "counts for 3 cases, against 118 observed" in words

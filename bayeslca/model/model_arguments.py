@@ -1,0 +1,107 @@
+"""What may be given to a model: its arguments, checked one by one."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+
+import numpy as np
+
+from bayeslca.exceptions import ModelError, near_names
+from bayeslca.responses.item import Groups, Item
+
+
+def checked_classes(classes: object) -> int | tuple[str, ...]:
+    """Return the classes as a number or as names, or refuse them."""
+    if isinstance(classes, np.integer):
+        classes = int(classes)
+    if isinstance(classes, bool) or not isinstance(classes, int | Sequence):
+        msg = f"classes must be a number or a list of names; got {classes!r}."
+        raise ModelError(msg)
+    if isinstance(classes, int):
+        if classes < 1:
+            msg = f"classes is {classes}; a model has at least 1 class."
+            raise ModelError(msg)
+        return classes
+    if isinstance(classes, str):
+        msg = f"classes is the text {classes!r}. Give a list of names: classes=[{classes!r}, ...]."
+        raise ModelError(msg)
+    for name in classes:
+        if not isinstance(name, str) or not name.strip():
+            msg = f"{name!r} cannot be the name of a class. Give each class a name in words."
+            raise ModelError(msg)
+    if not classes:
+        msg = "classes is an empty list. Give the names of the classes, or their number."
+        raise ModelError(msg)
+    refuse_repeated(classes, "class")
+    return tuple(classes)
+
+
+def checked_statements(statements: object) -> tuple[str, ...]:
+    """Return the statements, or refuse what is no list of texts."""
+    if isinstance(statements, str) or not isinstance(statements, Sequence):
+        msg = f"statements must be a list of texts; got {statements!r}. Put it in brackets."
+        raise ModelError(msg)
+    for statement in statements:
+        if not isinstance(statement, str):
+            msg = f"the statement {statement!r} is not a text. Write it in quotes."
+            raise ModelError(msg)
+    return tuple(statements)
+
+
+def check_items(items: tuple[Item, ...]) -> None:
+    """Refuse what are no items, or have one name."""
+    for item in items:
+        if not isinstance(item, Item):
+            msg = f"{item!r} is not an Item. Give Item(name, categories), or responses.items."
+            raise ModelError(msg)
+    if not items:
+        msg = "the model has no items. Give at least one, usually responses.items."
+        raise ModelError(msg)
+    refuse_repeated([item.name for item in items], "item")
+
+
+def checked_free(
+    free: object, items: Sequence[Item], groups: Groups | None
+) -> bool | tuple[str, ...]:
+    """Return which items are free by group, in the order of the items, or refuse them."""
+    if free is False or free in ((), []):
+        return False
+    if groups is None:
+        msg = (
+            f"free_by_group is {free!r}, but the model has no groups. Give groups, usually "
+            "responses.groups."
+        )
+        raise ModelError(msg)
+    if free is True:
+        return True
+    names = [item.name for item in items]
+    if isinstance(free, str) or not isinstance(free, Sequence):
+        msg = f"free_by_group must be True, False or a list of items; got {free!r}."
+        raise ModelError(msg)
+    for name in free:
+        if name not in names:
+            msg = (
+                f"free_by_group names '{name}', which is no item{near_names(str(name), names)}. "
+                f"The items are {', '.join(names)}."
+            )
+            raise ModelError(msg)
+    return tuple(name for name in names if name in free)
+
+
+def check_sources(sources: Mapping[str, str], statements: Sequence[str]) -> None:
+    """Refuse sources of statements that the model does not have."""
+    for text in sources:
+        if text not in statements:
+            msg = (
+                f"statement_sources speaks of {text!r}, which is not a statement of the model"
+                f"{near_names(text, statements)}. Write the statement in both places alike."
+            )
+            raise ModelError(msg)
+
+
+def refuse_repeated(names: Sequence[str], what: str) -> None:
+    """Refuse a name that is given twice."""
+    repeated = [name for name in dict.fromkeys(names) if list(names).count(name) > 1]
+    if repeated:
+        msg = f"the {what} '{repeated[0]}' is given twice. Give each {what} a name of its own."
+        raise ModelError(msg)
