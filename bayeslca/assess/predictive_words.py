@@ -96,9 +96,14 @@ def verdict_in_words(tables: Tables, replicates: int) -> str:
             f"The model reproduces the answers in all {len(rows)} checks (smallest "
             f"{_judged_text(least, replicates)}, of {CHECKS[least['check']]})."
         )
-    worst = furthest_pairs(tables.pairs)[:1]
-    if worst:
-        text += f" The pair of items furthest off: {_pair(worst[0], replicates)}."
+    for row in furthest_pairs(tables.pairs)[:1]:
+        if _pairs_judged(tables) < DOUBTFUL:
+            text += f" The pair of items furthest off: {_pair(row, replicates)}."
+        else:
+            names = f"{row['item_1']} and {row['item_2']}"
+            text += (
+                f" The pair of items furthest off is {names} ({_pair_figures(row, replicates)})."
+            )
     return text
 
 
@@ -194,17 +199,22 @@ def _checks_missed(tables: Tables, replicates: int) -> Iterator[Finding]:
         )
 
 
-def _pairs_missed(tables: Tables, replicates: int) -> Iterator[Finding]:
+def _pairs_judged(tables: Tables) -> float:
+    """Return the p-value of the largest pair residual; 1 where there is no pair."""
     rows = records(overall_rows(tables.overall))
-    together = [judged_p(row) for row in rows if row["check"] == "item_pairs"]
-    if not together or together[0] >= DOUBTFUL:
+    return next((judged_p(row) for row in rows if row["check"] == "item_pairs"), 1.0)
+
+
+def _pairs_missed(tables: Tables, replicates: int) -> Iterator[Finding]:
+    together = _pairs_judged(tables)
+    if together >= DOUBTFUL:
         return
     worst = furthest_pairs(tables.pairs)
     named = [row for row in worst if row["p"] < DOUBTFUL][:MOST_PAIRS] or worst[:1]
     for row in named:
         yield Finding(
             kind="pair_missed",
-            level="warning" if together[0] < MISSED else "note",
+            level="warning" if together < MISSED else "note",
             message=_pair(row, replicates),
             remedy=_REMEDIES["item_pairs"],
             about=(row["item_1"], row["item_2"]),
@@ -281,18 +291,21 @@ def _groups_missed(tables: Tables, replicates: int) -> Iterator[Finding]:
 
 def _pair(row: Mapping[str, Any], replicates: int) -> str:
     """Return ``fees and accounts go together more than the classes explain (...)``."""
-    residual = float(row["pair_residual"])
-    how = "go together less" if residual < 0 else "go together more"
-    inside = [f"pair residual {residual:+.1f}".replace("-", "−")]
+    how = "less" if row["pair_residual"] < 0 else "more"
     if math.isnan(row["odds_ratio_expected"]):
-        how = "go together otherwise"
-    else:
-        seen, expected = _number(row["odds_ratio"]), _number(row["odds_ratio_expected"])
-        inside.append(f"odds ratio {seen}, expected {expected}")
-    inside.append(f"p {p_text(row['p'], replicates)}")
+        how = "otherwise"
     return (
-        f"{row['item_1']} and {row['item_2']} {how} than the classes explain ({', '.join(inside)})"
+        f"{row['item_1']} and {row['item_2']} go together {how} than the classes explain "
+        f"({_pair_figures(row, replicates)})"
     )
+
+
+def _pair_figures(row: Mapping[str, Any], replicates: int) -> str:
+    parts = [f"pair residual {float(row['pair_residual']):+.1f}".replace("-", "−")]
+    if not math.isnan(row["odds_ratio_expected"]):
+        seen, expected = _number(row["odds_ratio"]), _number(row["odds_ratio_expected"])
+        parts.append(f"odds ratio {seen}, expected {expected}")
+    return ", ".join([*parts, f"p {p_text(row['p'], replicates)}"])
 
 
 def _number(value: float) -> str:

@@ -106,6 +106,15 @@ COLUMNS: dict[str, Column] = {
         "Separation", "relative entropy: 1 when every case is placed surely, 0 by chance", "number"
     ),
     "trustworthy": Column("Sampling", "whether the sampling is to be trusted", "flag"),
+    "log_evidence": Column(
+        "Log evidence", "log probability of all answers under the model, over its priors", "number"
+    ),
+    "log_evidence_mcse": Column(
+        "Simulation error of it", "Monte Carlo standard error of the log evidence", "number"
+    ),
+    "probability": Column(
+        "Probability", "of the number of classes, given the answers and the priors", "share"
+    ),
     "tied": Column("Tie", "too close to the best to tell", "flag"),
     "claim": Column("Claim", "the hypothesis as the study words it", "text"),
     "planned": Column("Planned", "whether it was stated before the answers were seen", "flag"),
@@ -148,6 +157,36 @@ COLUMNS: dict[str, Column] = {
     "posterior_weight": Column("Weight after", "posterior probability among the rivals", "share"),
     "text": Column("Formula", "what was computed", "text"),
     "prior_median": Column("Before the data", "median of the prior", "number"),
+    "check": Column(
+        "Check",
+        "g2, x2, power_divergence: response patterns; item_margins, item_pairs, sum_scores, "
+        "distinct_patterns",
+        "text",
+    ),
+    "observed": Column("Observed", "as in the answers; of a check, how far off they are", "number"),
+    "expected": Column(
+        "Expected", "as the model has it; of a check, the mean of replicates", "number"
+    ),
+    "residual": Column("Residual", "observed less expected, in standard errors", "number"),
+    "p": Column("p", "share of replicates that miss by as much as the answers, or more", "share"),
+    "p_mcse": Column("± of p", "Monte Carlo error of p", "number"),
+    "p_calibrated": Column("Calibrated p", "rank of p among simulated studies", "share"),
+    "p_calibrated_mcse": Column("± of calibrated p", "Monte Carlo error of it", "number"),
+    "item_1": Column("Item", "the first item of the pair", "text"),
+    "item_2": Column("Other item", "the second item of the pair", "text"),
+    "odds_ratio": Column(
+        "Odds ratio", "as observed; of ordered items, concordant over discordant pairs", "number"
+    ),
+    "odds_ratio_expected": Column("Expected odds ratio", "median of replicates", "number"),
+    "odds_ratio_lower": Column("Odds ratio from", "lower end, of replicates", "number"),
+    "odds_ratio_upper": Column("Odds ratio to", "upper end, of replicates", "number"),
+    "pair_residual": Column(
+        "Pair residual",
+        "how much more (+) or less (-) the items go together than the classes explain, in standard "
+        "errors",
+        "number",
+    ),
+    "score": Column("Sum score", "yes answers, and steps up of ordered items", "count"),
     "table": Column("Table", "the table that has the column", "text"),
     "column": Column("Column", "the column's name in the files", "text"),
     "words": Column("Head", "the column's head on the page", "text"),

@@ -12,6 +12,7 @@ if TYPE_CHECKING:
 
     from bayeslca.assess.compare import Comparison
     from bayeslca.assess.hypotheses import HypothesisTest
+    from bayeslca.assess.predictive_checks import PredictiveChecks
     from bayeslca.assess.rivals import Rivals
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.responses import Responses
@@ -80,6 +81,10 @@ class ReportContent:
         Sets of hypotheses that compete, by the set's name.
     quantities : DataFrame or None
         What the study asked for by name; see `Posterior.quantities`.
+    checks : PredictiveChecks or None
+        Whether the model reproduces the answers; None when not checked.
+    checks_by_count : mapping of int to PredictiveChecks
+        The same of the models of ``comparison``.
     alternatives : mapping of str to Posterior
         Other numbers of classes that the data support as well, where the study leaves the number
         open; each is shown beside the answer. Keys are headings ("2 classes").
@@ -116,6 +121,8 @@ class ReportContent:
     claims: tuple[Claim, ...] = ()
     rivals: Mapping[str, Rivals] = field(default_factory=dict)
     quantities: pd.DataFrame | None = None
+    checks: PredictiveChecks | None = None
+    checks_by_count: Mapping[int, PredictiveChecks] = field(default_factory=dict)
     alternatives: Mapping[str, Posterior] = field(default_factory=dict)
     diagnostic: bool = False
     interval: float = 0.95

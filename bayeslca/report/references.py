@@ -3,9 +3,33 @@
 from __future__ import annotations
 
 REFERENCES: dict[str, str] = {
+    "Cressie & Read 1984": (
+        "Cressie, N. & Read, T. R. C. (1984). Multinomial goodness-of-fit tests. Journal of the "
+        "Royal Statistical Society: Series B 46, 440-464."
+    ),
+    "Freeman & Tukey 1950": (
+        "Freeman, M. F. & Tukey, J. W. (1950). Transformations related to the angular and the "
+        "square root. Annals of Mathematical Statistics 21, 607-611."
+    ),
+    "Gelman, Meng & Stern 1996": (
+        "Gelman, A., Meng, X.-L. & Stern, H. (1996). Posterior predictive assessment of model "
+        "fitness via realized discrepancies. Statistica Sinica 6, 733-807."
+    ),
+    "Hjort, Dahl & Steinbakk 2006": (
+        "Hjort, N. L., Dahl, F. A. & Steinbakk, G. H. (2006). Post-processing posterior predictive "
+        "p values. Journal of the American Statistical Association 101, 1157-1174."
+    ),
     "Hoffman & Gelman 2014": (
         "Hoffman, M. D. & Gelman, A. (2014). The No-U-Turn sampler: adaptively setting path "
         "lengths in Hamiltonian Monte Carlo. Journal of Machine Learning Research 15, 1593-1623."
+    ),
+    "Kass & Raftery 1995": (
+        "Kass, R. E. & Raftery, A. E. (1995). Bayes factors. Journal of the American Statistical "
+        "Association 90, 773-795."
+    ),
+    "Meng & Wong 1996": (
+        "Meng, X.-L. & Wong, W. H. (1996). Simulating ratios of normalizing constants via a simple "
+        "identity: a theoretical exploration. Statistica Sinica 6, 831-860."
     ),
     "Kostoulas et al. 2017": (
         "Kostoulas, P., Nielsen, S. S., Branscum, A. J., Johnson, W. O., Dendukuri, N., Dhand, "

@@ -69,6 +69,14 @@ def file_tables(content: ReportContent) -> tuple[FileTable, ...]:
         named[f"rivals_{_file_name(name)}"] = (f"Rival hypotheses: {name}", rivals.table)
     if content.quantities is not None:
         named["quantities"] = ("Quantities that the study asks for", content.quantities)
+    if content.checks is not None:
+        fit = {
+            "fit_checks": ("Does the model reproduce the answers", content.checks.overall),
+            "fit_pairs": ("Pairs of items the model misses", content.checks.pairs),
+            "fit_items": ("Answers to single items", content.checks.margins),
+            "fit_sum_scores": ("Cases by their sum score", content.checks.sum_scores),
+        }
+        named |= {name: table for name, table in fit.items() if not table[1].empty}
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
 

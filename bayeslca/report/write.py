@@ -15,6 +15,7 @@ from bayeslca.report.sections.answer import answer_section, headline, is_to_be_t
 from bayeslca.report.sections.assumptions import assumptions_section
 from bayeslca.report.sections.class_counts import class_counts_section
 from bayeslca.report.sections.classes import classes_section
+from bayeslca.report.sections.fit import fit_section
 from bayeslca.report.sections.groups import groups_section
 from bayeslca.report.sections.limits import limits_section
 from bayeslca.report.sections.membership import membership_section
@@ -84,6 +85,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         prevalence_section(facts),
         class_counts_section(facts),
         groups_section(facts),
+        fit_section(facts),
         theory_section(facts),
         membership_section(facts),
         assumptions_section(facts),

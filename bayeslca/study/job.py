@@ -17,6 +17,7 @@ from bayeslca.posterior.storage import save
 from bayeslca.report.content import ReportContent
 from bayeslca.study.changes import changes_since
 from bayeslca.study.claims import Theory, check_theory, put_to_the_posterior
+from bayeslca.study.fit_checks import FitChecks, checked_fit, record_of
 from bayeslca.study.group_comparison import FILES as GROUP_FITS
 from bayeslca.study.group_comparison import compared_groups
 from bayeslca.study.load import Study, load_study
@@ -84,8 +85,9 @@ def run_study(
         groups = compared_groups(study, steps, answer.main, progress)
         progress.say("Testing the hypotheses")
         theory = put_to_the_posterior(study, answer.main)
+        fit = checked_fit(study, answer.main, comparison, progress.say)
         progress.say("Writing the report")
-        return _results(study, folder, steps, answer, comparison, groups, theory)
+        return _results(study, folder, steps, answer, comparison, groups, theory, fit)
 
 
 def _results(
@@ -96,6 +98,7 @@ def _results(
     comparison: Comparison | None,
     groups: Comparison | None,
     theory: Theory,
+    fit: FitChecks,
 ) -> Outcome:
     main = answer.main
     content = ReportContent(
@@ -110,6 +113,8 @@ def _results(
         claims=theory.claims,
         rivals=theory.rivals,
         quantities=theory.quantities,
+        checks=fit.main,
+        checks_by_count=fit.by_count,
         alternatives=answer.alternatives,
         diagnostic=study.said.study.diagnostic,
         interval=study.said.report.interval,
@@ -124,7 +129,7 @@ def _results(
     with written_aside(folder) as aside:
         headline = _write(aside, study, content, steps, answer)
     trusted = _trusted(main, comparison, answer.alternatives)
-    return _outcome(folder, headline, comparison, main, steps, trusted)
+    return _outcome(folder, headline, content, main, steps, trusted)
 
 
 def _own_posterior(study: Study, steps: Steps, progress: JobProgress) -> Posterior | None:
@@ -239,6 +244,7 @@ def _write(
         "data_hash": study.responses.data_hash,
         "answer_rests_on": answer.rests_on,
         "headline": written.headline,
+        "predictive_checks": record_of(content.checks),
         "fits": steps.keys,
         "kept_from_the_run_before": steps.kept,
     }
@@ -271,16 +277,18 @@ def _keep_fit(folder: Path, file: str, posterior: Posterior, steps: Steps) -> No
 def _outcome(
     folder: Path,
     headline: str,
-    comparison: Comparison | None,
+    content: ReportContent,
     main: Posterior,
     steps: Steps,
     trusted: bool,
 ) -> Outcome:
     place = str(folder / "report.html")
     lines = [headline]
-    if comparison is not None:
-        lines.append(comparison.verdict)
+    if content.comparison is not None:
+        lines.append(content.comparison.verdict)
     lines.append(main.diagnostics().verdict)
+    if content.checks is not None and not content.checks.reproduces:
+        lines.append(content.checks.verdict)
     if steps.kept:
         n_kept, n_all = len(steps.kept), len(steps.keys)
         lines.append(f"{n_kept} of {n_all} fits were unchanged and kept from the run before.")

@@ -124,6 +124,13 @@ class HypothesisSection(_Section):
     weight: float = Field(default=1.0, gt=0)
 
 
+class FitSection(_Section):
+    """Whether the model is checked against the answers, and how closely."""
+
+    check: bool = True
+    calibrate: int = Field(default=0, ge=0, le=10_000)
+
+
 class SamplingSection(_Section):
     """How the posterior is computed."""
 
@@ -154,6 +161,7 @@ class StudyFile(_Section):
     groups: GroupsSection = GroupsSection()
     hypotheses: list[HypothesisSection] = []
     quantities: dict[str, str] = {}
+    fit: FitSection = FitSection()
     sampling: SamplingSection = SamplingSection()
     report: ReportSection = ReportSection()
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from bayeslca.report.blocks import Bullets, Section
 from bayeslca.report.facts import Facts
+from bayeslca.report.sections import fit
 from bayeslca.report.sections.class_counts import tie_in_words
 from bayeslca.report.wording import called, counted, level, listed, percent_value, whole
 
@@ -31,12 +32,7 @@ def limits_section(facts: Facts) -> Section:
                 f"by these data: {tie_in_words(facts)} predict equally well within their errors.",
             )
         )
-    entries.append(
-        (
-            "Independence within a class was assumed, not checked",
-            "in this report. Items that ask nearly the same can make up a class of their own.",
-        )
-    )
+    entries.append(_independence(facts))
     if facts.n_missing:
         entries.append(
             (
@@ -47,6 +43,22 @@ def limits_section(facts: Facts) -> Section:
         )
     entries += _small_or_ruled(facts)
     return Section(ANCHOR, HEADING, (Bullets(tuple(entries)),))
+
+
+def _independence(facts: Facts) -> tuple[str, str]:
+    same = "Items that ask nearly the same can make up a class of their own."
+    checks = facts.content.checks
+    if checks is None:
+        return "Independence within a class was assumed, not checked", f"in this report. {same}"
+    if any(finding.kind == "pair_missed" for finding in checks.findings):
+        return (
+            "Items are not independent within a class,",
+            f"though the model takes them to be: “{fit.HEADING}” names the pairs. {same}",
+        )
+    return (
+        "Independence within a class was assumed,",
+        f"and nothing was seen against it (“{fit.HEADING}”); few cases can hide much. {same}",
+    )
 
 
 def _diagnostic() -> tuple[str, str]:

@@ -46,6 +46,7 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
         _priors(facts),
         _sampling(facts),
         _comparison(facts),
+        _fit(facts),
         _software(versions),
     ]
     if model.n_classes > 1:
@@ -122,6 +123,21 @@ def _comparison(facts: Facts) -> str:
     if "weight" in comparison.table:
         text += " and by stacking weights (Yao et al. 2018)"
     return f"{text}. {sentence(comparison.verdict)}"
+
+
+def _fit(facts: Facts) -> str:
+    checks = facts.content.checks
+    if checks is None:
+        return ""
+    text = (
+        f"Fit was judged by {whole(checks.replicates)} replicates from the posterior predictive "
+        "distribution, with discrepancies at the same parameters on both sides (Gelman, Meng & "
+        "Stern 1996)"
+    )
+    if checks.calibrated_in:
+        studies = counted(checks.calibrated_in, "simulated study", "simulated studies")
+        text += f", calibrated by {studies} (Hjort, Dahl & Steinbakk 2006)"
+    return f"{text}. {sentence(checks.verdict)}"
 
 
 def _software(versions: Mapping[str, str]) -> str:

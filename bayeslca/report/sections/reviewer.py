@@ -15,6 +15,7 @@ from bayeslca.report.sections import (
     assumptions,
     class_counts,
     classes,
+    fit,
     limits,
     membership,
     prevalence,
@@ -32,6 +33,7 @@ _CLASSES = (classes.ANCHOR, classes.HEADING)
 _PREVALENCE = (prevalence.ANCHOR, prevalence.HEADING)
 _PLACED = (membership.ANCHOR, membership.HEADING)
 _SAMPLING = (sampling.ANCHOR, sampling.HEADING)
+_FIT = (fit.ANCHOR, fit.HEADING)
 _LIMITS = (limits.ANCHOR, limits.HEADING)
 _REPRODUCE = (reproduce.ANCHOR, reproduce.HEADING)
 
@@ -78,7 +80,7 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
         _items("BARG 5A-5C; WAMBS 7-9", "14b", facts),
     )
     yield _independence(facts)
-    yield _open("Does the model reproduce the answers that were seen?", "BARG 3A")
+    yield _reproduced(facts)
     yield _missing(facts)
     yield _unclear(facts)
     yield _separated(facts)
@@ -165,9 +167,24 @@ def _priors(facts: Facts) -> Answered:
     )
 
 
+def _reproduced(facts: Facts) -> Answered:
+    question, checks = "Does the model reproduce the answers that were seen?", facts.content.checks
+    if checks is None:
+        return _open(question, "BARG 3A")
+    return Answered(question, fit.reproduced_in_words(checks), (_FIT,), "BARG 3A")
+
+
 def _independence(facts: Facts) -> Answered:
+    question, checks = "Are the items independent within a class?", facts.content.checks
+    if checks is not None:
+        return Answered(
+            question,
+            fit.independence_in_words(checks),
+            (_FIT,),
+            _items("BARG 1B", "14a", facts),
+        )
     return Answered(
-        "Are the items independent within a class?",
+        question,
         "It was assumed. Whether pairs of items go together more than the classes explain was "
         "not checked in this study.",
         (_PRIORS,),

@@ -133,6 +133,7 @@ def test_a_pair_that_goes_together_less_is_said_so() -> None:
     found = one_class(codes)
     assert "item_1 and item_2 go together less than" in found.verdict
     assert "pair residual −" in found.verdict
+    assert found.overall.set_index("check").loc["item_pairs", "p"] == 0.0
 
 
 def test_observed_counts_are_the_data(fits: PredictiveChecks) -> None:

@@ -53,7 +53,12 @@ def report(mixed: Any, tmp_path_factory: pytest.TempPathFactory, made: Any) -> P
     if CHROMIUM is None:
         print("chromium is not installed: the page was not opened in a browser")
         pytest.skip("chromium is not installed")
-    content = made.content(mixed, comparison=None, study_text="x = '" + "y" * 300 + "'")
+    content = made.content(
+        mixed,
+        comparison=None,
+        study_text="x = '" + "y" * 300 + "'",
+        checks=mixed.predictive_checks(replicates=100),
+    )
     return write_report(content, tmp_path_factory.mktemp("browser")).page
 
 
@@ -78,7 +83,7 @@ def test_page_fits_loads_nothing_and_shows_text_as_text(
 ) -> None:
     seen, console = open_page(report, width, tmp_path)
     assert console == []
-    assert seen["headings"] == 11
+    assert seen["headings"] == 12
     assert seen["loaded"] == 0
     assert seen["scripts"] == 0
     assert seen["width"] <= width
