@@ -14,7 +14,6 @@ from typing import Any
 import numpy as np
 
 from bayeslca._typing import Bools, Floats, Ints
-from bayeslca.exceptions import ModelError
 from bayeslca.model.blocks import BlockArrays, inside_blocks, log_block_densities
 from bayeslca.model.bounds_probability import log_bounds_probability
 from bayeslca.model.truncated_prior import draw_inside
@@ -165,9 +164,13 @@ class ConstrainedPrevalence:
         return self.prevalence(draw_inside(self.blocks.with_prior(even), 1, rng)[0])
 
     def to_pymc(self, name: str, dims: tuple[str, ...]) -> Any:
-        """Refuse: constrained prevalences are not written as a PyMC model yet."""
-        msg = (
-            f"the constraints on prevalences cannot be written as a PyMC model yet ({name}). Use "
-            "sampler='gibbs', or leave these statements out."
-        )
-        raise ModelError(msg)
+        """Add the prevalences to the PyMC model in whose context it is called.
+
+        Raises
+        ------
+        ModelError
+            Where the constraints have no form on the real line.
+        """
+        from bayeslca.model.pymc_prevalence import add_constrained_prevalence
+
+        return add_constrained_prevalence(self, name, dims)

@@ -50,8 +50,16 @@ class Coordinates:
     below: tuple[tuple[int, ...], ...]
 
 
-def coordinates(blocks: Blocks) -> Coordinates:
+def coordinates(
+    blocks: Blocks, larger: str = "probabilities of items with more than two categories"
+) -> Coordinates:
     """Arrange the bounded blocks of a table, or refuse them by name.
+
+    Parameters
+    ----------
+    blocks : Blocks
+    larger : str
+        What bounded blocks of more than two elements are, for the refusal.
 
     Raises
     ------
@@ -64,8 +72,8 @@ def coordinates(blocks: Blocks) -> Coordinates:
     used = np.unique(block[constrained_elements(blocks)])
     if np.any(np.diff(start)[used] != 2):
         msg = (
-            "the model bounds or orders probabilities of items with more than two categories, "
-            "which cannot be written as a PyMC model. Use sampler='gibbs', which is exact."
+            f"the model bounds or orders {larger}, which cannot be written as a PyMC model. Use "
+            "sampler='gibbs', which is exact."
         )
         raise ModelError(msg)
     orders = [
@@ -188,6 +196,16 @@ def add_bounded(name: str, blocks: Blocks, found: Coordinates, dims: tuple[str, 
     )
 
 
+def interval(found: Coordinates, x: Sequence[Any], i: int) -> tuple[Any, Any]:
+    """Return the bounds of a coordinate, given those before it; symbolic."""
+    import pytensor.tensor as pt
+
+    lower: Any = pt.constant(found.lower[i])
+    for j in found.below[i]:
+        lower = pt.maximum(lower, x[j])
+    return lower, found.upper[i]
+
+
 def bounded_transform(found: Coordinates) -> Any:
     """Return a PyMC transform of a vector of coordinates to the real line.
 
@@ -200,12 +218,6 @@ def bounded_transform(found: Coordinates) -> Any:
 
     n = len(found.lower)
 
-    def interval(x: Any, i: int) -> tuple[Any, Any]:
-        lower: Any = pt.constant(found.lower[i])
-        for j in found.below[i]:
-            lower = pt.maximum(lower, x[j])
-        return lower, found.upper[i]
-
     class Bounded(Transform):  # type: ignore[misc]
         """See the module."""
 
@@ -215,7 +227,7 @@ def bounded_transform(found: Coordinates) -> Any:
             x = [value[i] for i in range(n)]
             out = []
             for i in range(n):
-                low, high = interval(x, i)
+                low, high = interval(found, x, i)
                 share = pt.clip((x[i] - low) / (high - low), EDGE, 1.0 - EDGE)
                 out.append(pt.log(share) - pt.log1p(-share))
             return pt.stack(out)
@@ -227,14 +239,14 @@ def bounded_transform(found: Coordinates) -> Any:
             x = self._values(value)
             total: Any = 0.0
             for i in range(n):
-                low, high = interval(x, i)
+                low, high = interval(found, x, i)
                 total += pt.log(high - low) - pt.softplus(value[i]) - pt.softplus(-value[i])
             return total
 
         def _values(self, value: Any) -> list[Any]:
             x: list[Any] = []
             for i in range(n):
-                low, high = interval(x, i)
+                low, high = interval(found, x, i)
                 x.append(low + (high - low) * pt.sigmoid(value[i]))
             return x
 

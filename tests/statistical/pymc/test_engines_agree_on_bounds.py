@@ -1,6 +1,7 @@
 """Gibbs and NUTS on a model with orders, bounds and equalities: the same posterior.
 
-Means and mean squares of all elements, within 4.5 standard errors of both engines together.
+Means and mean squares of all elements and prevalences, within 4.5 standard errors of both engines
+together.
 """
 
 from __future__ import annotations
@@ -21,11 +22,13 @@ STATEMENTS = (
     "0.2 < P(i2=yes | b) < 0.7",
     "P(i3=yes | b) = P(i0=yes | b)",
     "P(t=b | a) = 0.3",
+    "P(a) > P(b)",
 )
 
 
 def moments(draws):
-    values = np.concatenate([draws.elements, draws.elements**2], axis=-1)
+    values = np.concatenate([draws.elements, draws.prevalence[:, :, 0]], axis=-1)
+    values = np.concatenate([values, values**2], axis=-1)
     batches = values.reshape(draws.n_chains * 10, -1, values.shape[-1]).mean(axis=1)
     return values.mean(axis=(0, 1)), batches.std(axis=0, ddof=1) / np.sqrt(len(batches))
 

@@ -13,6 +13,7 @@ from bayeslca.model.probabilities import log_unit_likelihood
 from bayeslca.model.pymc_bounds import bounded_transform, coordinates
 from bayeslca.model.pymc_model import Parts
 from bayeslca.model.simulate import draw_parameters
+from bayeslca.responses.item import Groups
 
 pytestmark = pytest.mark.pymc
 SEED = 20261208
@@ -105,10 +106,60 @@ def test_prior_draws_keep_the_bounds(model, pm_model):
     [
         (("P(t=a | a) > P(t=a | b)",), "more than two categories"),
         (("P(i0 | a) > P(i1=no | a)", "P(i0 | a) > P(i1 | a)"), "turn round"),
-        (("P(i0 | a) > P(i0 | b)", "P(a) > 0.3"), "constraints on prevalences"),
     ],
 )
 def test_what_has_no_form_on_the_real_line_is_refused_by_name(statements, message):
     model = LatentClassModel(ITEMS, ("a", "b"), ("P(i3 | a) ~ Beta(2, 1)", *statements))
     with pytest.raises(ModelError, match=message):
+        model.to_pymc(model.simulate(20, seed=SEED).responses)
+
+
+DISTRICTS = Groups("district", ("north", "south"))
+PREVALENCES = [
+    (("a", "b"), ("P(a) > P(b)",), None),
+    (("a", "b", "c"), ("P(a) = 0.2", "P(b) > P(c)"), None),
+    (("a", "b", "c"), ("P(a) = P(b)",), None),
+    (("a", "b"), ("P(a | district=north) > P(a | district=south) > 0.2",), DISTRICTS),
+    (("a", "b", "c"), ("P(a | district=north) = 0.3",), DISTRICTS),
+]
+
+
+@pytest.mark.parametrize(("classes", "statements", "groups"), PREVALENCES)
+def test_constrained_prevalences_have_their_density_and_jacobian(classes, statements, groups):
+    import pytensor
+    import pytensor.tensor as pt
+
+    apart = [f"P(i{j} | {classes[j]}) > P(i{j} | {classes[-1]})" for j in range(len(classes) - 1)]
+    model = LatentClassModel(ITEMS, classes, (*apart, *statements), groups)
+    data = model.simulate(40, seed=SEED).responses
+    pm_model, rng = model.to_pymc(data), np.random.default_rng(SEED)
+    parts = Parts.of(pm_model)
+    p = draw_parameters(model.table, model.prevalence_source, rng)
+    units = compile_units(model.table, model.units(data))
+    ours = log_prior(model.table, model.prevalence_source, p.elements, p.prevalence)
+    ours += log_unit_likelihood(model.table, units, p.elements, p.prevalence) @ units.count
+    point = on_the_line(pm_model, parts.values(p.elements, p.prevalence))
+    assert float(pm_model.compile_logp(jacobian=False)(point)) == pytest.approx(float(ours))
+    source = model.prevalence_source
+    variable = pm_model["prevalence"]
+    transform = pm_model.rvs_to_transforms[variable]
+    u = pt.vector("u")
+    shares = transform.backward(u).reshape(source.element.shape)
+    starts = source.blocks.block_start
+    free = [e for e in range(starts[-1]) if e + 1 not in starts]  # all but each block's last
+    places = source.first_place[free]
+    x = pt.stack([shares[g, k] / source.share[g, k] for g, k in places.tolist()])
+    both = pytensor.function(
+        [u], [shares, transform.log_jac_det(u), pytensor.gradient.jacobian(x, u)]
+    )
+    values, log_det, jacobian = both(rng.normal(size=source.n_free))
+    assert log_det == pytest.approx(np.linalg.slogdet(jacobian)[1], rel=1e-9)
+    assert source.is_inside(values)
+    np.testing.assert_allclose(values.sum(axis=-1), 1.0)
+
+
+def test_orders_of_three_prevalences_are_refused_by_name():
+    apart = ("P(i0 | a) > P(i0 | c)", "P(i1 | b) > P(i1 | c)")
+    model = LatentClassModel(ITEMS, ("a", "b", "c"), (*apart, "P(a) > P(b)"))
+    with pytest.raises(ModelError, match="prevalences of more than two classes"):
         model.to_pymc(model.simulate(20, seed=SEED).responses)
