@@ -49,10 +49,7 @@ def estimates(blocks: AllBlocks, units: UnitTable, elements: Floats) -> Estimate
     errors of all others are given these.
     """
     held = _held(blocks, elements)
-    fixed = (elements < EDGE) | (elements > 1.0 - EDGE) | held
-    for first, last in pairwise(blocks.blocks.block_start.tolist()):
-        if np.sum(~fixed[first:last]) == 1:  # what is left to 1 is known, too
-            fixed[first:last] = True
+    fixed = fixed_elements(blocks, elements)
     score = Score.of(blocks, units)
     found = covariance(score, elements, fixed)
     prevalence = _prevalences(blocks, elements, fixed, found)
@@ -64,6 +61,15 @@ def estimates(blocks: AllBlocks, units: UnitTable, elements: Floats) -> Estimate
         active=tuple(blocks.names[e] for e in np.flatnonzero(held)),
         singular=found.free is None,
     )
+
+
+def fixed_elements(blocks: AllBlocks, elements: Floats) -> Bools:
+    """Tell which elements (E,) are taken as known: at 0 or 1, on a bound, held by an order."""
+    fixed = (elements < EDGE) | (elements > 1.0 - EDGE) | _held(blocks, elements)
+    for first, last in pairwise(blocks.blocks.block_start.tolist()):
+        if np.sum(~fixed[first:last]) == 1:  # what is left to 1 is known, too
+            fixed[first:last] = True
+    return np.asarray(fixed)
 
 
 def _held(blocks: AllBlocks, elements: Floats) -> Bools:
