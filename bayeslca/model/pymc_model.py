@@ -238,6 +238,12 @@ def _prevalence(
         shape = (source.n_rows, source.n_classes)[-len(dims) :]
         a = pt.broadcast_to(concentration, shape)
         prevalence = pm.Dirichlet("prevalence", a=a, dims=dims, **options)
+    elif concentration is not None and source.n_classes > 1:
+        msg = (
+            "concentration= replaces the prior of prevalences that are not constrained; this "
+            "model constrains them. Leave it out, or leave out the statements on prevalences."
+        )
+        raise ModelError(msg)
     else:
         prevalence = source.to_pymc("prevalence", dims)
     return prevalence if names.group else prevalence[None, :]

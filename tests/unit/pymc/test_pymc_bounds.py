@@ -11,7 +11,7 @@ from bayeslca.model.compile import compile_units
 from bayeslca.model.prior_density import inside_bounds, log_prior
 from bayeslca.model.probabilities import log_unit_likelihood
 from bayeslca.model.pymc_bounds import bounded_transform, coordinates
-from bayeslca.model.pymc_model import Parts
+from bayeslca.model.pymc_model import Parts, build
 from bayeslca.model.simulate import draw_parameters
 from bayeslca.responses.item import Groups
 
@@ -163,3 +163,10 @@ def test_orders_of_three_prevalences_are_refused_by_name():
     model = LatentClassModel(ITEMS, ("a", "b", "c"), (*apart, "P(a) > P(b)"))
     with pytest.raises(ModelError, match="prevalences of more than two classes"):
         model.to_pymc(model.simulate(20, seed=SEED).responses)
+
+
+def test_another_prior_of_constrained_prevalences_is_refused():
+    model = LatentClassModel(ITEMS, ("a", "b"), ("P(i0 | a) > P(i0 | b)", "P(a) > P(b)"))
+    data = model.simulate(20, seed=SEED).responses
+    with pytest.raises(ModelError, match="this model constrains them"):
+        build(model, data, concentration=np.ones(2))
