@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any, TypeAlias
 import numpy as np
 
 from bayeslca._typing import Seed
+from bayeslca.assess.class_counts import PriorOnCount, checked_prior
 from bayeslca.assess.comparison import Comparison, comparison_of
 from bayeslca.assess.comparison_words import OWN, Name
 from bayeslca.exceptions import ModelError
@@ -76,6 +77,7 @@ def compare_class_counts(
     seed: Seed = None,
     fitted: Mapping[int, Posterior] | None = None,
     own: LatentClassModel | Posterior | None = None,
+    prior_on_count: PriorOnCount | None = None,
     progress: bool | Show = True,
     **sampling: Any,
 ) -> Comparison:
@@ -96,19 +98,22 @@ def compare_class_counts(
         Fits that need not be done again.
     own : LatentClassModel or Posterior, optional
         The study's own model; it gets the row "this study".
+    prior_on_count : mapping from int to float, optional
+        Prior weight of each number of classes; all equal when left out.
     progress : bool or callable
         True shows a bar per fit on a terminal; a callable is given a `FitProgress`.
     **sampling
         Options of ``model.sample``: chains, draws, ess, r_hat, max_sweeps, sampler, threads.
     """
     wanted = _checked_counts(counts)
+    checked_prior(prior_on_count, wanted)  # before anything is sampled
     entries: dict[Name, LatentClassModel | Posterior] = {}
     for n in wanted:
         model = class_count_model(responses, n, statements=statements, groups=groups)
         entries[n] = (fitted or {}).get(n, model)
     if own is not None:
         entries[OWN] = own
-    return _compared(entries, responses, "classes", seed, progress, sampling)
+    return _compared(entries, responses, "classes", seed, progress, sampling, prior_on_count)
 
 
 def compare(
@@ -162,10 +167,11 @@ def _compared(
     seed: Seed,
     progress: bool | Show,
     sampling: Mapping[str, Any],
+    prior: PriorOnCount | None = None,
 ) -> Comparison:
     given = {name: e.responses for name, e in entries.items() if isinstance(e, Posterior)}
     _refuse_different_answers(given, responses)
-    return comparison_of(_fitted(entries, responses, seed, progress, sampling), index)
+    return comparison_of(_fitted(entries, responses, seed, progress, sampling), index, prior)
 
 
 def _fitted(

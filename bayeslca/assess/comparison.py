@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from bayeslca._typing import Ints
+from bayeslca.assess.class_counts import ClassCounts, PriorOnCount, class_counts
 from bayeslca.assess.comparison_words import (
     Name,
     comparison_html,
@@ -16,6 +17,7 @@ from bayeslca.assess.comparison_words import (
     row_in_words,
     verdict_in_words,
 )
+from bayeslca.assess.evidence import Evidence, log_evidence
 from bayeslca.assess.information_criteria import (
     PointwiseElpd,
     difference,
@@ -62,6 +64,10 @@ class Comparison:
         smallest_cases             the median times the number of cases
         separation                 relative entropy (median); nan with one class
         trustworthy                whether the sampling is to be trusted
+        log_evidence               log marginal likelihood; nan where it is not reliable
+        log_evidence_mcse          its Monte Carlo standard error
+        probability                of the number of classes, given the answers; nan for
+                                   models that are not a number of classes
         ========================== ====================================================
     posteriors : dict
         Each row's posterior.
@@ -72,6 +78,10 @@ class Comparison:
     findings : tuple of Finding
     best : int or str
         The row with the highest ``elpd``.
+    evidence : dict of Evidence
+        Each row's log evidence, or why it is not reliable.
+    class_counts : ClassCounts or None
+        How probable each number of classes is; None where the rows are not numbers of classes.
     """
 
     table: pd.DataFrame
@@ -81,6 +91,8 @@ class Comparison:
     verdict: str
     findings: tuple[Finding, ...]
     best: Name
+    evidence: dict[Name, Evidence] = field(default_factory=dict)
+    class_counts: ClassCounts | None = None
 
     @property
     def tied(self) -> tuple[Name, ...]:
@@ -94,7 +106,9 @@ class Comparison:
         return comparison_html(self.table, self.verdict, [f.message for f in self.findings])
 
 
-def comparison_of(posteriors: dict[Name, Posterior], index: str) -> Comparison:
+def comparison_of(
+    posteriors: dict[Name, Posterior], index: str, prior: PriorOnCount | None = None
+) -> Comparison:
     """Compare fitted models of the same answers.
 
     Parameters
@@ -102,20 +116,34 @@ def comparison_of(posteriors: dict[Name, Posterior], index: str) -> Comparison:
     posteriors : dict from int or str to Posterior
     index : str
         What the rows' names are: "classes" or "model".
+    prior : mapping from int to float, optional
+        Prior weight of each number of classes; all equal when left out.
     """
     loo, widely = {}, {}
     for name, posterior in posteriors.items():
         loo[name], widely[name] = _criteria(posterior)
     best = max(loo, key=lambda name: loo[name].elpd)
-    table = _table(posteriors, loo, widely, best, index)
+    by_count = {name: one for name, one in posteriors.items() if isinstance(name, int)}
+    counts = class_counts(by_count, prior=prior) if by_count else None
+    joined = {} if counts is None else counts.evidence
+    evidence: dict[Name, Evidence] = {
+        name: joined[name] if isinstance(name, int) else log_evidence(posterior)
+        for name, posterior in posteriors.items()
+    }
+    table = _with_evidence(_table(posteriors, loo, widely, best, index), evidence, counts)
+    verdict = verdict_in_words(table, best)
+    if counts is not None and len(by_count) > 1:
+        verdict += " " + counts.verdict
     return Comparison(
         table=table,
         posteriors=posteriors,
         loo=loo,
         waic=widely,
-        verdict=verdict_in_words(table, best),
-        findings=_findings(table, loo[best].n_cases),
+        verdict=verdict,
+        findings=(*_findings(table, loo[best].n_cases), *_evidence_findings(evidence)),
         best=best,
+        evidence=evidence,
+        class_counts=counts,
     )
 
 
@@ -195,6 +223,33 @@ def _table(
         )
     names = pd.Index(list(posteriors), name=index)
     return pd.DataFrame(rows, index=names)
+
+
+def _with_evidence(
+    table: pd.DataFrame, evidence: Mapping[Name, Evidence], counts: ClassCounts | None
+) -> pd.DataFrame:
+    """Add the log evidences, and the probabilities of numbers of classes."""
+    good = {name: one for name, one in evidence.items() if one.reliable}
+    chance = {} if counts is None else counts.table["probability"].to_dict()
+    rows = list(table.index)
+    table["log_evidence"] = [good[n].log_evidence if n in good else np.nan for n in rows]
+    table["log_evidence_mcse"] = [good[n].mcse if n in good else np.nan for n in rows]
+    table["probability"] = [chance.get(n, np.nan) for n in rows]
+    return table
+
+
+def _evidence_findings(evidence: Mapping[Name, Evidence]) -> tuple[Finding, ...]:
+    return tuple(
+        Finding(
+            kind="evidence_not_reliable",
+            level="warning",
+            message=f"The evidence of {row_in_words(name)} is not reliable: {one.reason}.",
+            remedy="Sample longer (ess=..., draws=...), or leave that row out of the evidence.",
+            about=(str(name),),
+        )
+        for name, one in evidence.items()
+        if not one.reliable
+    )
 
 
 def _smallest_class(posterior: Posterior) -> dict[str, float]:

@@ -43,7 +43,7 @@ def verdict_in_words(table: pd.DataFrame, best: Name) -> str:
         gap = _gap(rows[nearest])
         lie = "lie" if _is_plural(nearest) else "lies"
         return f"{title} {predicts} best; {row_in_words(nearest)}, the next best, {lie} {gap}."
-    listed = _and([f"{row_in_words(name)} ({_gap(rows[name])})" for name in tied])
+    listed = listed_with_and([f"{row_in_words(name)} ({_gap(rows[name])})" for name in tied])
     is_tied = "are tied" if len(tied) > 1 or _is_plural(tied[0]) else "is tied"
     text = (
         f"{title} {predicts} best, but {listed} {is_tied} with that: the differences are too "
@@ -76,22 +76,58 @@ def comparison_text(table: pd.DataFrame, verdict: str, notes: Sequence[str]) -> 
         ).rstrip()
         for line in lines
     ]
+    if "probability" in table:
+        drawn += ["", *_evidence_lines(table)]
     return "\n".join([*drawn, "", *(fill(text, 79) for text in (verdict, *notes))])
+
+
+def _evidence_lines(table: pd.DataFrame) -> list[str]:
+    """Return log evidences and probabilities of the models for a terminal."""
+    head = ("", "log evidence", "P(number | answers)")
+    lines = [
+        head,
+        *(
+            (_title(name), log_evidence_in_words(row), probability_in_words(row))
+            for name, row in _records(table)
+        ),
+    ]
+    widths = [max(len(line[c]) for line in lines) for c in range(len(head))]
+    return [
+        "  ".join(
+            cell.ljust(width) if c == 0 else cell.rjust(width)
+            for c, (cell, width) in enumerate(zip(line, widths, strict=True))
+        ).rstrip()
+        for line in lines
+    ]
+
+
+def log_evidence_in_words(row: Mapping[Any, Any]) -> str:
+    """Return the log evidence with its error: ``-351.01 ± 0.02``; a dash where there is none."""
+    value, error = float(row["log_evidence"]), float(row["log_evidence_mcse"])
+    if value != value:
+        return "not reliable"
+    return f"{value:.2f}" if error == 0.0 else f"{value:.2f} ± {max(error, 0.01):.2f}"
+
+
+def probability_in_words(row: Mapping[Any, Any]) -> str:
+    """Return the probability of a number of classes; a dash where there is none."""
+    value = float(row["probability"])
+    return "–" if value != value else f"{value:.3f}"
 
 
 def comparison_html(table: pd.DataFrame, verdict: str, notes: Sequence[str]) -> str:
     """Return a comparison for a notebook; all names are escaped."""
     from html import escape
 
-    heads = (
+    heads: tuple[str, ...] = (
         "Model", "Behind the best", "Tied", "Weight", "Accuracy (elpd)", "Effective parameters",
         "Unreliable cases", "Smallest class", "Separation", "Sampling trusted",
     )  # fmt: skip
+    if "probability" in table:
+        heads = (*heads, "Log evidence", "P(number | answers)")
+    cells = [(*_cells(name, row, width=60), *_evidence_cells(row)) for name, row in _records(table)]
     body = "".join(
-        "<tr>"
-        + "".join(f"<td>{escape(cell)}</td>" for cell in _cells(name, row, width=60))
-        + "</tr>"
-        for name, row in _records(table)
+        "<tr>" + "".join(f"<td>{escape(cell)}</td>" for cell in line) + "</tr>" for line in cells
     )
     head = "".join(f"<th>{text}</th>" for text in heads)
     words = "".join(f"<p>{escape(text)}</p>" for text in (verdict, *notes))
@@ -99,10 +135,9 @@ def comparison_html(table: pd.DataFrame, verdict: str, notes: Sequence[str]) -> 
 
 
 def _cells(name: Name, row: Mapping[Any, Any], width: int = 14) -> tuple[str, ...]:
-    text = str(name) if not isinstance(name, int) else f"{name} class{'es' if name > 1 else ''}"
     separation = row["separation"]
     return (
-        text if len(text) <= width else text[: width - 1] + "…",
+        _title(name, width),
         "best" if row["elpd_diff"] == 0 else f"{-row['elpd_diff']:.1f} ± {row['elpd_diff_se']:.1f}",
         "yes" if row["tied"] else "no",
         f"{row['weight']:.2f}",
@@ -113,6 +148,17 @@ def _cells(name: Name, row: Mapping[Any, Any], width: int = 14) -> tuple[str, ..
         "–" if separation != separation else f"{separation:.2f}",
         "yes" if row["trustworthy"] else "no",
     )
+
+
+def _title(name: Name, width: int = 14) -> str:
+    text = str(name) if not isinstance(name, int) else f"{name} class{'es' if name > 1 else ''}"
+    return text if len(text) <= width else text[: width - 1] + "…"
+
+
+def _evidence_cells(row: Mapping[Any, Any]) -> tuple[str, ...]:
+    if "probability" not in row:
+        return ()
+    return log_evidence_in_words(row), probability_in_words(row)
 
 
 def _records(table: pd.DataFrame) -> list[tuple[Name, dict[Any, Any]]]:
@@ -131,5 +177,6 @@ def _starting(text: str) -> str:
     return text[:1].upper() + text[1:]
 
 
-def _and(parts: Sequence[str]) -> str:
+def listed_with_and(parts: Sequence[str]) -> str:
+    """Return ``one, two and three``."""
     return parts[0] if len(parts) == 1 else ", ".join(parts[:-1]) + " and " + parts[-1]

@@ -199,14 +199,16 @@ def _why_not(
     mcse: float,
     refused: str,
 ) -> str:
-    if k not in joined.counts:
-        return refused or "; ".join(one.why_not for one in estimates if one.why_not)
+    if refused:
+        return refused
     r_hat = largest_r_hat(posterior.draws.log_likelihood[:, :, None])
     starts = posterior.draws.starts
     if r_hat > MOST_R_HAT:
         return f"the chains disagree (R-hat of the log likelihood {r_hat:.2f})"
     if starts is not None and starts.n_modes > 1:
         return f"{starts.n_modes} modes lie within {starts.reach:.0f} nats, their weights unknown"
+    if k not in joined.counts:
+        return "; ".join(one.why_not for one in estimates if one.why_not)
     if mcse > MOST_ERROR:
         return f"its Monte Carlo error is {mcse:.2f}"
     if not joined.agrees:

@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.stats import chi2
+from scipy.special import chdtrc
 
 from bayeslca._typing import Floats
 from bayeslca.assess.model_evidence import Estimate
@@ -45,7 +45,7 @@ class Joined:
     @property
     def probability(self) -> float:
         """Probability of so much disagreement if all errors are right; 1 with none beyond."""
-        return float(chi2.sf(self.chi_square, self.degrees)) if self.degrees else 1.0
+        return float(chdtrc(self.degrees, self.chi_square)) if self.degrees else 1.0
 
     @property
     def agrees(self) -> bool:

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
+from bayeslca.assess.comparison_words import verdict_in_words
 from bayeslca.report.blocks import Block, Bullets, Head, PageTable, Paragraph, Picture, Section
+from bayeslca.report.evidence_plot import plot_count_probabilities
 from bayeslca.report.facts import Facts
 from bayeslca.report.figures import WIDTH, draw
 from bayeslca.report.plots import plot_class_counts, row_name
@@ -16,6 +18,9 @@ from bayeslca.report.wording import (
     percent,
     sentence,
 )
+
+if TYPE_CHECKING:
+    from bayeslca.assess.compare import Comparison
 
 ANCHOR, HEADING = "class-counts", "How many classes the data support"
 
@@ -36,18 +41,21 @@ def class_counts_section(facts: Facts) -> Section:
             "difference. Filled: tied with the best. Square: the model the answer rests on. An "
             "arrow stands for a model too far behind to be shown to scale."
         ),
-        alt=sentence(comparison.verdict),
+        alt=sentence(verdict_in_words(table, comparison.best)),
     )
     noticed = tuple((sentence(one.message), sentence(one.remedy)) for one in comparison.findings)
     blocks: list[Block] = [
         Paragraph(_in_words(facts)),
+        *_evidence_paragraph(comparison),
         *([Bullets(noticed)] if noticed else []),
+        *_evidence_figure(comparison),
         Picture(figure),
         _table(facts),
         Paragraph(
             "Predictive accuracy is of a case's answers with its class summed out, left out one "
             "case at a time. Differences below 4, or within two standard errors, are called ties."
         ),
+        *_about_evidence(comparison),
     ]
     return Section(ANCHOR, HEADING, tuple(blocks))
 
@@ -57,11 +65,53 @@ def tie_in_words(facts: Facts) -> str:
     return listed([row_name(name) for name in facts.tied])
 
 
+def _evidence_paragraph(comparison: Comparison) -> list[Block]:
+    """Return what the evidence says, where it is part of the verdict."""
+    counts = comparison.class_counts
+    if counts is None or not comparison.verdict.endswith(counts.verdict):
+        return []
+    return [Paragraph(sentence(counts.verdict))]
+
+
+def _evidence_figure(comparison: Comparison) -> list[Block]:
+    """Return the probability of each number of classes, where it could be found."""
+    counts = comparison.class_counts
+    if counts is None or counts.table["probability"].notna().sum() < 2:
+        return []
+    figure = draw(
+        "class-count-probabilities",
+        lambda drawing: plot_count_probabilities(counts, ax=drawing.subplots()),
+        size=(WIDTH, 1.2 + 0.34 * len(counts.table)),
+        caption=(
+            "How probable each number of classes is, given the answers. The thin lines are two "
+            "errors of the simulation, not of the answers."
+        ),
+        alt=sentence(counts.verdict),
+    )
+    return [Picture(figure)]
+
+
+def _about_evidence(comparison: Comparison) -> list[Block]:
+    if "log_evidence" not in comparison.table:
+        return []
+    text = (
+        "The evidence is the probability of all answers under a model, averaged over its priors; "
+        "its logarithm is shown. It weighs a model by its priors as well as by its fit, so that "
+        "flatter priors speak for fewer classes; predictive accuracy depends on them far less. A "
+        "number of classes counts classes that hold no case of this sample, too: a probable "
+        "larger number need not mean that more kinds were seen. Neither figure tells whether the "
+        "classes are kinds that exist outside the model."
+    )
+    return [Paragraph(text)]
+
+
 def _in_words(facts: Facts) -> str:
     comparison = facts.content.comparison
     if comparison is None:
         return ""
-    text = sentence(comparison.verdict)
+    counts = comparison.class_counts
+    said = comparison.verdict if counts is None else comparison.verdict.removesuffix(counts.verdict)
+    text = sentence(said.strip())
     if facts.content.chosen_because:
         chosen = counted_in_words(len(facts.class_names), "class", "classes")
         text += " " + sentence(f"the study has {chosen} because {facts.content.chosen_because}")
@@ -83,7 +133,7 @@ def _table(facts: Facts) -> PageTable:
             comparison.table.index, comparison.table.to_dict("records"), strict=True
         )
     )
-    heads = (
+    heads: tuple[Head, ...] = (
         Head("Model", "the number of classes, or the study's model", numeric=False),
         Head("Behind the best", "difference in predictive accuracy ± its standard error"),
         Head("Tied", "too close to the best to tell", numeric=False),
@@ -94,6 +144,12 @@ def _table(facts: Facts) -> PageTable:
         Head("Separation", "1: every case placed surely; 0: by chance"),
         Head("Sampling", "is it to be trusted", numeric=False),
     )
+    if "log_evidence" in comparison.table:
+        heads = (
+            *heads,
+            Head("Log evidence", "log probability of all answers ± simulation error"),
+            Head("Probability", "of the number of classes, given the answers"),
+        )
     notes = ("Square brackets: the model the answer rests on.",)
     return PageTable("Models with different numbers of classes", heads, rows, notes)
 
@@ -112,4 +168,15 @@ def _row(facts: Facts, name: object, row: dict[Any, Any]) -> tuple[str, ...]:
         percent(row["smallest_class"]),
         NOTHING if separation is None or separation != separation else decimal(separation, 2),
         "yes" if row["trustworthy"] else "no",
+        *_evidence_cells(row),
     )
+
+
+def _evidence_cells(row: dict[Any, Any]) -> tuple[str, ...]:
+    if "log_evidence" not in row:
+        return ()
+    value, error, chance = row["log_evidence"], row["log_evidence_mcse"], row["probability"]
+    if value != value:
+        return "not reliable", NOTHING
+    shown = decimal(value, 2) if error == 0 else f"{decimal(value, 2)} ± {decimal(error, 2)}"
+    return shown, percent(chance) if chance == chance else NOTHING

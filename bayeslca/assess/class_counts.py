@@ -1,0 +1,146 @@
+"""P(number of classes | answers): from log evidences and a prior on the number of classes."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca._typing import Floats, Seed
+from bayeslca.assess.class_count_words import evidence_in_words
+from bayeslca.assess.evidence import Evidence, log_evidence_of_counts, probabilities
+from bayeslca.assess.join import Joined
+from bayeslca.exceptions import ModelError
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from bayeslca.posterior.posterior import Posterior
+
+PriorOnCount = Mapping[int, float]
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class ClassCounts:
+    """How probable each number of classes is, given the answers.
+
+    Attributes
+    ----------
+    table : DataFrame
+        A row per number of classes.
+
+        ========================== ====================================================
+        log_evidence               nan where it is not reliable
+        log_evidence_mcse          its Monte Carlo standard error
+        prior                      prior probability of the number
+        probability                posterior probability, among the counts whose evidence
+                                   is reliable; nan for the others
+        probability_mcse           its Monte Carlo standard error
+        log_bayes_factor           log evidence less that of one class fewer
+        log_bayes_factor_mcse      its Monte Carlo standard error
+        reliable                   whether the evidence is to be trusted
+        reason                     why it is not, in words
+        ========================== ====================================================
+    evidence : dict from int to Evidence
+    verdict : str
+        What the answers support, how strongly, and on which priors that depends.
+    """
+
+    table: pd.DataFrame
+    evidence: dict[int, Evidence]
+    verdict: str
+
+    def __repr__(self) -> str:
+        columns = ["log_evidence", "log_evidence_mcse", "probability", "log_bayes_factor"]
+        return f"{self.table[columns].round(3).to_string()}\n\n{self.verdict}"
+
+
+def class_counts(
+    posteriors: Mapping[int, Posterior],
+    *,
+    prior: PriorOnCount | None = None,
+    seed: Seed = None,
+) -> ClassCounts:
+    """Return how probable each number of classes is, given the answers.
+
+    Parameters
+    ----------
+    posteriors : mapping from int to Posterior
+        By number of classes; of the same answers, under the same priors.
+    prior : mapping from int to float, optional
+        Prior weight of each number; all equal when left out. Weights need not sum to 1.
+    seed : int, numpy.random.Generator, numpy.random.SeedSequence or None
+        Of the evidences; by default it follows from the posteriors' seeds.
+
+    Raises
+    ------
+    ModelError
+        When the prior leaves out a number, or has a negative weight.
+    """
+    counts = sorted(posteriors)
+    weights = checked_prior(prior, counts)
+    evidence, joined = log_evidence_of_counts(posteriors, seed=seed)
+    table = _table(counts, weights, evidence, joined)
+    stated = any(one.model.stated.priors for one in posteriors.values())
+    return ClassCounts(
+        table, evidence, evidence_in_words(table, is_uniform=prior is None, stated=stated)
+    )
+
+
+def checked_prior(prior: PriorOnCount | None, counts: Sequence[int]) -> Floats:
+    """Return the prior probabilities (counts,) of numbers of classes.
+
+    Raises
+    ------
+    ModelError
+        When a number is left out, a weight is negative, or all are 0.
+    """
+    if prior is None:
+        return np.full(len(counts), 1.0 / len(counts))
+    missing = [k for k in counts if k not in prior]
+    weights = np.array([float(prior.get(k, 0.0)) for k in counts])
+    if missing or not np.all(np.isfinite(weights)) or np.any(weights < 0) or weights.sum() <= 0:
+        msg = (
+            f"the prior on the number of classes is {dict(prior)}. Give a weight of 0 or more for "
+            f"each of {', '.join(map(str, counts))} classes, one of them above 0."
+        )
+        raise ModelError(msg)
+    return np.asarray(weights / weights.sum())
+
+
+def _table(
+    counts: Sequence[int], prior: Floats, evidence: Mapping[int, Evidence], joined: Joined
+) -> pd.DataFrame:
+    import pandas as pd
+
+    good = [k for k in counts if evidence[k].reliable]
+    at = [joined.counts.index(k) for k in good]
+    covariance = joined.covariance[np.ix_(at, at)]
+    value = np.array([evidence[k].log_evidence for k in good])
+    chance, error = np.full(len(counts), np.nan), np.full(len(counts), np.nan)
+    rows = [counts.index(k) for k in good]
+    if good and prior[rows].sum() > 0:
+        chance[rows], error[rows] = probabilities(value, covariance, prior[rows])
+    steps = {}
+    for k in good:
+        if k - 1 in good:
+            i, j = good.index(k), good.index(k - 1)
+            variance = covariance[i, i] + covariance[j, j] - 2 * covariance[i, j]
+            steps[k] = (float(value[i] - value[j]), float(np.sqrt(max(variance, 0.0))))
+    records = [
+        {
+            "log_evidence": evidence[k].log_evidence if evidence[k].reliable else np.nan,
+            "log_evidence_mcse": evidence[k].mcse if evidence[k].reliable else np.nan,
+            "prior": float(prior[i]),
+            "probability": float(chance[i]),
+            "probability_mcse": float(error[i]),
+            "log_bayes_factor": steps.get(k, (np.nan, np.nan))[0],
+            "log_bayes_factor_mcse": steps.get(k, (np.nan, np.nan))[1],
+            "reliable": evidence[k].reliable,
+            "reason": evidence[k].reason,
+        }
+        for i, k in enumerate(counts)
+    ]
+    return pd.DataFrame(records, index=pd.Index(counts, name="classes"))
