@@ -1,8 +1,9 @@
 """A model whose naming rules are orders: the same posterior, written without rules.
 
-Where everything but the rules leaves all classes exchangeable, the draws that the rules have named
-are draws of the model in which each rule is a set of orders: "managed is where P(fees=yes) is
-highest" is P(fees=yes | managed) > P(fees=yes | b) for the classes b that are left.
+Where statements speak of single classes, the model keeps its rules as orders already. Where all
+classes are exchangeable but for the rules, the draws that the rules have named are draws of the
+model in which each rule is a set of orders: "managed is where P(fees=yes) is highest" is
+P(fees=yes | managed) > P(fees=yes | b) for the classes b that are left.
 """
 
 from __future__ import annotations
@@ -13,19 +14,20 @@ from math import factorial
 from bayeslca.exceptions import BayesLCAError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.naming import classes_named
+from bayeslca.model.naming_links import naming_links
 from bayeslca.model.notation import to_text
 from bayeslca.model.resolved import ResolvedNamingRule
 from bayeslca.model.syntax import Event, Name, Probability, Relation
 
 
 def without_rules(model: LatentClassModel) -> LatentClassModel | None:
-    """Return the model with orders in the place of its naming rules; None where it has none.
+    """Return the model with orders in the place of its naming rules; None where there are none.
 
-    That is where the priors tell classes apart beside the rules, where the rules leave classes
-    unnamed, and where a rule compares a mean over groups or a sum of answers.
+    That is where the rules leave classes unnamed, and where a rule compares a mean over groups or
+    a sum of answers.
     """
     rules = model.naming_rules
-    if not rules:
+    if not rules or naming_links(model):
         return model
     k = model.n_classes
     group = model.symmetry.prior_group
