@@ -74,6 +74,9 @@ COLUMNS: dict[str, Column] = {
         "weight over weight plus the expected cases that answered; above half, the prior rules",
         "share",
     ),
+    "constraints": Column(
+        "Held to", "statements that keep it equal, known, bounded or ordered", "text"
+    ),
     "statement": Column("Stated as", "the statement in the study, empty for a default", "text"),
     "source": Column("Source", "where the prior comes from, as the study says", "text"),
     "model": Column("Model", "the number of classes, or the study's own model", "text"),

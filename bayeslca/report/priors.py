@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats
+from bayeslca.model.places import ResponseVector
 from bayeslca.model.priors import DEFAULT
 
 if TYPE_CHECKING:
@@ -36,6 +37,8 @@ class PriorWeight:
         Expected number of cases of the class that answered the item.
     origin : str
         The statement that set the prior, or ``"default"``.
+    constraints : tuple of str
+        Statements that hold it equal to another, known, bounded or ordered.
     """
 
     latent_class: str
@@ -43,6 +46,7 @@ class PriorWeight:
     parameters: Floats
     cases: float
     origin: str
+    constraints: tuple[str, ...] = ()
 
     @property
     def weight(self) -> float:
@@ -72,10 +76,23 @@ def prior_weights(posterior: Posterior) -> tuple[PriorWeight, ...]:
                 model.priors.response[0][j][k],
                 float(expected[k]),
                 model.response_prior_origin(0, j, k),
+                _constraints(model, j, k),
             )
             for k, name in enumerate(model.class_names)
         )
     return tuple(weights)
+
+
+def _constraints(model: LatentClassModel, item: int, latent_class: int) -> tuple[str, ...]:
+    """Return the statements that constrain an item's answers in a class, in some group."""
+    found = [
+        link.text
+        for link in model.links
+        for place in link.places
+        if isinstance(place.vector, ResponseVector)
+        and (place.vector.item, place.vector.latent_class) == (item, latent_class)
+    ]
+    return tuple(dict.fromkeys(found))
 
 
 def ruled_by_prior(posterior: Posterior) -> frozenset[tuple[str, str]]:
@@ -100,8 +117,9 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
     """Return the prior of each prevalence and of each answer in each class, a row each.
 
     Columns: group (where there are groups), latent_class, item, category, prior, prior_mean,
-    prior_lower, prior_upper (95 %), prior_cases, prior_share, statement, source. The rows of
-    prevalences have neither item nor category.
+    prior_lower, prior_upper (95 %), prior_cases, prior_share, statement, source, constraints. The
+    rows of prevalences have neither item nor category. What constraints cut off is not in the
+    prior's figures here.
     """
     import pandas as pd
 
@@ -117,6 +135,7 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
                 {**group, "latent_class": name, "item": "", "category": ""}
                 | _summary(concentration, k, distribution(concentration), share)
                 | _stated(model, model.priors.prevalence_origin[g])
+                | {"constraints": "; ".join(_on_prevalences(model))}
             )
     items = {item.name: item for item in model.items}
     for weight in prior_weights(posterior):
@@ -130,8 +149,13 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
                 | {"category": category}
                 | _summary(weight.parameters, c, written, weight.share)
                 | _stated(model, weight.origin)
+                | {"constraints": "; ".join(weight.constraints)}
             )
     return pd.DataFrame(rows)
+
+
+def _on_prevalences(model: LatentClassModel) -> tuple[str, ...]:
+    return tuple(dict.fromkeys(link.text for link in model.links if link.on_prevalences))
 
 
 def _stated(model: LatentClassModel, origin: str) -> dict[str, object]:

@@ -149,21 +149,22 @@ def _statements(facts: Facts) -> list[Block]:
     model = facts.posterior.model
     if not model.statements:
         return [Paragraph("The study states nothing beyond this: all priors are the defaults.")]
+    rules = {rule.text for rule in model.naming_rules}
     rows = tuple(
-        (statement, _source(model.statement_sources.get(statement), is_prior="~" in statement))
+        (statement, _source(model.statement_sources.get(statement), is_rule=statement in rules))
         for statement in model.statements
     )
     heads = (
-        Head("Statement", "a prior, or a rule that names a class", numeric=False),
+        Head("Statement", "a prior, a constraint, or a rule that names a class", numeric=False),
         Head("Source", "where it comes from, as the study says", numeric=False),
     )
     return [PageTable("What the study states", heads, rows)]
 
 
-def _source(source: str | None, *, is_prior: bool) -> str:
+def _source(source: str | None, *, is_rule: bool) -> str:
     if source is not None:
         return source
-    return "not given" if is_prior else "needs none: it names a class"
+    return "needs none: it names a class" if is_rule else "not given"
 
 
 def _weights_table(facts: Facts) -> PageTable:
@@ -175,18 +176,26 @@ def _weights_table(facts: Facts) -> PageTable:
         for g, concentration in enumerate(model.prevalence_source.concentration)
     ]  # fmt: skip
     rows += [
-        (_item_text(facts, weight), called(weight.latent_class), _written(facts, weight),
+        (_item_text(facts, weight), called(weight.latent_class), _held(facts, weight),
          significant(weight.weight), percent(weight.share))
         for weight in prior_weights(facts.posterior)
     ]  # fmt: skip
     heads = (
         Head("Of", "the prevalences, or an item", numeric=False),
         Head("Class", "the class that it is about", numeric=False),
-        Head("Prior", "a Beta is of the answer that counts as yes", numeric=False),
+        Head(
+            "Prior",
+            "a Beta is of the answer that counts as yes; * cut off or tied by a constraint",
+            numeric=False,
+        ),
         Head("Weight", "the cases that it counts for"),
         Head("Share", "of the result that the prior makes"),
     )
     return PageTable("The priors and their weight", heads, tuple(rows), folded=len(rows) > 12)
+
+
+def _held(facts: Facts, weight: PriorWeight) -> str:
+    return _written(facts, weight) + (" *" if weight.constraints else "")
 
 
 def _written(facts: Facts, weight: PriorWeight) -> str:

@@ -64,8 +64,9 @@ def _priors(facts: Facts) -> str:
     model = facts.posterior.model
     if not model.statements:
         return "All priors were uniform."
-    rules = [text for text in model.statements if "~" not in text]
-    priors = [text for text in model.statements if "~" in text]
+    rules = [rule.text for rule in model.naming_rules]
+    constraints = [constraint.text for constraint in model.stated.constraints]
+    priors = [prior.text for prior in model.stated.priors]
     text = "Priors were uniform"
     if priors:
         sources = dict.fromkeys(
@@ -74,6 +75,10 @@ def _priors(facts: Facts) -> str:
         text += f" except for {listed(priors)}"
         text += f" (source: {'; '.join(sources)})" if sources else " (no source was given)"
     text += "."
+    if constraints:
+        text += (
+            f" These were held to be true, and the prior was cut off there: {listed(constraints)}."
+        )
     if rules:
         text += f" Classes were named by rule: {listed(rules)}."
     return text
