@@ -39,10 +39,13 @@ def posterior_p(both: Both, shape: tuple[int, int]) -> PosteriorP:
 
 
 def two_sided_p(both: Both, shape: tuple[int, int]) -> PosteriorP:
-    """Return P(a replicate lies as far from the replicates' mean as the data, or further)."""
-    centre = both.replicated.mean(axis=0)
-    return posterior_p(
-        Both(np.abs(both.observed - centre), np.abs(both.replicated - centre)), shape
+    """Return twice the smaller of the two tails' shares, at most 1."""
+    turned = Both(-both.observed, -both.replicated)
+    above, below = posterior_p(both, shape), posterior_p(turned, shape)
+    smaller = above.p < below.p
+    return PosteriorP(
+        np.minimum(2.0 * np.minimum(above.p, below.p), 1.0),
+        2.0 * np.where(smaller, above.mcse, below.mcse),
     )
 
 

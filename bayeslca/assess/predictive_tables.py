@@ -70,7 +70,7 @@ def _discrepancies(found: Replicates) -> dict[str, Both]:
         observed, replicated = found.pair.observed, found.pair.replicated
         out["item_pairs"] = Both(np.abs(observed).max(axis=-1), np.abs(replicated).max(axis=-1))
     if has_sum_scores(found):
-        expected = found.scores.replicated.mean(axis=0)
+        expected = found.expected_scores
         out["sum_scores"] = Both(
             freeman_tukey(found.scores.observed, expected),
             freeman_tukey(found.scores.replicated, expected),
@@ -149,7 +149,9 @@ def scores_table(found: Replicates, interval: float) -> pd.DataFrame:
     rows: list[dict[str, Any]] = []
     if not has_sum_scores(found):
         return _frame(rows, interval)
-    judged = two_sided_p(found.scores, found.shape)
+    expected = found.expected_scores
+    gaps = Both(found.scores.observed - expected, found.scores.replicated - expected)
+    judged = posterior_p(_absolute(gaps), found.shape)
     lower, upper = _interval(found.scores.replicated, interval)
     for score in range(found.scores.replicated.shape[-1]):
         for at, group in _groups(found.strata):
@@ -158,7 +160,7 @@ def scores_table(found: Replicates, interval: float) -> pd.DataFrame:
                     "score": score,
                     **group,
                     "observed": int(found.scores.observed[0, at, score]),
-                    "expected": float(found.scores.replicated[:, at, score].mean()),
+                    "expected": float(expected[:, at, score].mean()),
                     "lower": float(lower[at, score]),
                     "upper": float(upper[at, score]),
                     **_judged(judged, at, score),

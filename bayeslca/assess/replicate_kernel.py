@@ -33,7 +33,7 @@ def replicate(
     second_size: Ints,
     item_start: Ints,
     pair_start: Ints,
-    score: Ints,
+    points: Ints,
     mark: Any,
     power: float,
     row_probability: Floats,
@@ -43,6 +43,7 @@ def replicate(
     margins: Ints,
     pairs: Ints,
     scores: Ints,
+    expected_scores: Floats,
 ) -> None:
     """Draw one replicate for each draw of the parameters, and count it.
 
@@ -53,8 +54,8 @@ def replicate(
     item_start : ndarray, shape (J + 1,)
     pair_start : ndarray, shape (J, J)
         Where the joint answers of items i < j begin.
-    score : ndarray, shape (A,)
-        What each answer adds to a case's sum score.
+    points : ndarray, shape (answers of all fields,)
+        What each adds to a case's sum score.
     mark : ndarray of uint64, shape (answers of all fields,)
         Random numbers whose sum stands for a pattern: two patterns of a replicate share one with
         a probability below cases squared / 2^65.
@@ -67,6 +68,8 @@ def replicate(
         Gets G2, X2, power divergence and number of distinct patterns; must be 0.
     margins, pairs, scores : ndarray, shape (D, groups, ...)
         Get counts of answers, joint answers and sum scores; must be 0.
+    expected_scores : ndarray, shape (D, groups, scores)
+        Gets the cases that the parameters expect at each sum score; must be 0.
     """
     n_draws, _, n_classes = row_probability.shape
     n_items = item_start.size - 1
@@ -74,6 +77,8 @@ def replicate(
     largest = size.max()
     probability = np.empty((n_answers, n_classes))
     cumulated = np.empty((n_answers, n_classes))
+    plain = np.empty((n_answers, n_classes))
+    so_far, after = np.empty(scores.shape[2]), np.empty(scores.shape[2])
     log_class = np.empty(n_classes)
     answer = np.empty(n_items, dtype=np.int64)
     chosen = np.empty((largest, n_items), dtype=np.int64)
@@ -90,6 +95,7 @@ def replicate(
                 for at in range(answer_start[f], answer_start[f + 1]):
                     p = row_probability[d, answer_row[at], k]
                     total += p
+                    plain[at, k] = p
                     probability[at, k] = math.log(p) if p > 0.0 else -math.inf
                     cumulated[at, k] = total
         for s in range(size.size):
@@ -98,6 +104,21 @@ def replicate(
             whole = 0.0
             for k in range(n_classes):
                 whole += prevalence[d, of_group, k]
+            for k in range(n_classes):
+                so_far[:] = 0.0
+                so_far[0] = prevalence[d, of_group, k] * n
+                top = 0
+                for place in range(fields.size):
+                    f = fields[place]
+                    after[:] = 0.0
+                    most = 0
+                    for at in range(answer_start[f], answer_start[f + 1]):
+                        most = max(most, points[at])
+                        for before in range(top + 1):
+                            after[before + points[at]] += so_far[before] * plain[at, k]
+                    top += most
+                    so_far[:] = after
+                expected_scores[d, g] += so_far
             room = 4
             while room < 2 * n:
                 room *= 2
@@ -110,6 +131,7 @@ def replicate(
                     k += 1
                     below += prevalence[d, of_group, k]
                 answer[:] = -1
+                total_points = 0
                 code = np.uint64(0)
                 for place in range(fields.size):
                     f = fields[place]
@@ -120,6 +142,7 @@ def replicate(
                         at += 1
                     chosen[case, place] = at
                     code += mark[at]
+                    total_points += points[at]
                     category = at - answer_start[f]
                     if second[f] < 0:
                         answer[first[f]] = category
@@ -127,19 +150,17 @@ def replicate(
                         answer[first[f]] = category // second_size[f]
                         answer[second[f]] = category % second_size[f]
                 key[case] = code
-                points = 0
                 for i in range(n_items):
                     a = answer[i]
                     if a < 0:
                         continue
                     margins[d, g, item_start[i] + a] += 1
-                    points += score[item_start[i] + a]
                     for j in range(i + 1, n_items):
                         b = answer[j]
                         if b >= 0:
                             width = item_start[j + 1] - item_start[j]
                             pairs[d, g, pair_start[i, j] + a * width + b] += 1
-                scores[d, g, points] += 1
+                scores[d, g, total_points] += 1
                 slot = np.int64(code >> np.uint64(8)) & (room - 1)
                 while slots[slot] >= 0 and key[slots[slot]] != code:
                     slot = (slot + 1) & (room - 1)

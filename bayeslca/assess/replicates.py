@@ -61,6 +61,8 @@ class Replicates:
         Odds ratios.
     scores : Both, shape (D, G + 1, points)
         Cases with each sum score.
+    expected_scores : ndarray, shape (D, G + 1, points)
+        The same, as the parameters have it.
     """
 
     strata: Strata
@@ -77,6 +79,7 @@ class Replicates:
     pair: Both
     odds: Both
     scores: Both
+    expected_scores: Floats
 
     @property
     def n(self) -> int:
@@ -133,6 +136,7 @@ def replicates(posterior: Posterior, wanted: int, seed: int) -> Replicates:
         pair=_both(joined, "pair"),
         odds=Both(observed.odds[None], joined["replicated odds"]),
         scores=Both(with_sum(observed.scores)[None], joined["replicated scores"]),
+        expected_scores=joined["expected scores"],
     )
 
 
@@ -189,11 +193,12 @@ class _Measure:
             ],
             axis=1,
         )
-        patterns, counts, pair_counts, scores = self._replicate(rows, prevalence, rng)
+        patterns, counts, pair_counts, scores, expected = self._replicate(rows, prevalence, rng)
         out = {
             "replicated n_patterns": patterns[..., 3],
             "replicated counts": with_sum(counts),
             "replicated scores": with_sum(scores),
+            "expected scores": with_sum(expected),
             "expected": with_sum(self._asked * answers),
         }
         seen = self._divergences(elements, prevalence)
@@ -218,6 +223,18 @@ class _Measure:
         return np.repeat(self.strata.answered, np.diff(self.table.item_start), axis=1).astype(
             np.float64
         )
+
+    @property
+    def _points(self) -> Ints:
+        """What each answer of each field adds to a sum score."""
+        fields, start = self.strata.fields, self.table.item_start
+        field = np.repeat(np.arange(fields.first.size), np.diff(fields.start))
+        place = np.arange(fields.row.size) - fields.start[field]
+        one, two = np.divmod(place, fields.second_size[field])
+        out = self.score[start[fields.first[field]] + one]
+        both = fields.second[field] >= 0
+        out[both] += self.score[start[fields.second[field[both]]] + two[both]]
+        return out
 
     def _observe(self) -> _Observed:
         units = self.strata.units
@@ -273,7 +290,7 @@ class _Measure:
 
     def _replicate(
         self, rows: Floats, prevalence: Floats, rng: np.random.Generator
-    ) -> tuple[Floats, Floats, Floats, Floats]:
+    ) -> tuple[Floats, Floats, Floats, Floats, Floats]:
         from bayeslca.assess.replicate_kernel import replicate
 
         strata, fields, start = self.strata, self.strata.fields, self.table.item_start
@@ -286,19 +303,21 @@ class _Measure:
         counts = np.zeros((n_draws, n_groups, int(start[-1])), dtype=np.int32)
         pairs = np.zeros((n_draws, n_groups, n_cells), dtype=np.int32)
         scores = np.zeros((n_draws, n_groups, highest_score(self.score, start) + 1), dtype=np.int32)
+        expected = np.zeros(scores.shape)
         replicate(
             strata.size, strata.group, strata.prevalence_row, strata.field_start, strata.field,
             fields.start, fields.row, fields.first, fields.second, fields.second_size, start,
-            pair_start, self.score,
+            pair_start, self._points,
             rng.integers(1 << 63, size=fields.row.size, dtype=np.uint64) * np.uint64(2),
             POWER, np.ascontiguousarray(rows), np.ascontiguousarray(prevalence), rng,
-            patterns, counts, pairs, scores,
+            patterns, counts, pairs, scores, expected,
         )  # fmt: skip
         return (
             with_sum(patterns),
             counts.astype(np.float64),
             pairs.astype(np.float64),
             scores.astype(np.float64),
+            expected,
         )
 
 

@@ -288,7 +288,9 @@ def test_a_two_sided_p_is_small_at_both_ends() -> None:
         for at in (7.0, 10.0, 13.0)
     )
     assert max(low, high) < 0.02
-    assert middle > 0.95
+    above = (replicated >= 11.0).mean()
+    assert two_sided_p(Both(np.full((1, 1), 11.0), replicated), (4, 100)).p[0] == 2 * above
+    assert middle > 0.9
 
 
 def test_freeman_tukey_is_nought_where_counts_are_as_expected() -> None:

@@ -89,6 +89,28 @@ def test_each_replicate_draws_classes_anew_from_the_prevalence() -> None:
     assert close_to(score_two, 50 * p_two, 50 * p_two * (1 - p_two))
 
 
+def test_expected_sum_scores_are_those_of_all_patterns() -> None:
+    """Every pattern enumerated here, by group and missing pattern; sums are folded there."""
+    items = (YES, SCALE, TYPE)  # an unordered item adds nothing
+    model = LatentClassModel(items, 2, groups=Groups("district", ("north", "south")))
+    rng = np.random.default_rng(9)
+    blocks = [rng.dirichlet(np.ones(r)) for r in (2, 2, 3, 3, 3, 3)]
+    prevalence = np.array([[0.3, 0.7], [0.9, 0.1]])
+    codes = [[0, 0, 0]] * 5 + [[1, -1, 2]] * 3 + [[-1, 2, 1]] * 4 + [[1, 1, 1]] * 6
+    responses = answers(items, codes, [0] * 12 + [1] * 6)
+    found = at_known(model, responses, np.concatenate(blocks), prevalence, n=400)
+    direct = np.zeros((3, 4))
+    for row, code in enumerate(codes):
+        g = int(row >= 12)
+        for k, fees, trust in product(range(2), range(2), range(3)):
+            p = prevalence[g, k] * blocks[k][fees] * blocks[2 + k][trust]
+            points = (fees if code[0] >= 0 else 0) + (trust if code[1] >= 0 else 0)
+            direct[[g, 2], points] += p
+    np.testing.assert_allclose(found.expected_scores[0], direct)
+    drawn = found.scores.replicated.mean(axis=0)
+    assert np.all(np.abs(drawn - direct) < 5 * np.sqrt(direct / 400) + 1e-9)
+
+
 def test_masks_and_groups_are_kept() -> None:
     model = LatentClassModel((YES, TYPE, MEETS), 2, groups=Groups("district", ("north", "south")))
     codes = [[0, -1, 1]] * 7 + [[1, 2, -1]] * 5 + [[-1, 0, -1]] * 3 + [[1, 1, 1]] * 4 + [[-1] * 3]
@@ -227,6 +249,8 @@ def test_a_pair_answered_together_is_drawn_and_expected_together() -> None:
     assert close_to(found.pair.replicated[:, -1, 0], 0.0, 1.0)
     yes = found.counts.replicated[:, -1, 1]
     assert close_to(yes, 40 * 0.55, 40 * 0.55 * 0.45)
+    drawn = found.scores.replicated[:, -1].mean(axis=0)
+    assert np.all(np.abs(drawn - found.expected_scores[0, -1]) < 5 * np.sqrt(drawn / 2000))
     median = np.median(found.odds.replicated[:, -1, 0])
     exact = (0.3 * 0.5 + 0.1 * 0.4) / (0.1 * 0.05 + 0.05 * 0.15)
     assert 0.5 * exact < median < 2 * exact
