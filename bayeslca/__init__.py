@@ -14,8 +14,12 @@ _HOME = {
     "LatentClassModel": "bayeslca.model.latent_class_model",
     "Posterior": "bayeslca.posterior.posterior",
     "Responses": "bayeslca.responses.responses",
+    "class_count_test": "bayeslca.assess.likelihood_ratio",
     "compare": "bayeslca.assess.compare",
     "compare_class_counts": "bayeslca.assess.compare",
+    "criteria_beside": "bayeslca.assess.criteria_beside",
+    "criteria_table": "bayeslca.assess.fit_statistics",
+    "likelihood_ratio_test": "bayeslca.assess.likelihood_ratio",
 }
 """Where each public name lives; loaded when first used, so that importing stays light."""
 
@@ -28,8 +32,12 @@ __all__ = [
     "LatentClassModel",
     "Posterior",
     "Responses",
+    "class_count_test",
     "compare",
     "compare_class_counts",
+    "criteria_beside",
+    "criteria_table",
+    "likelihood_ratio_test",
 ]
 __version__ = "0.1.0"
 

@@ -13,7 +13,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, fields
 from math import log, nan
-from typing import TYPE_CHECKING, Protocol
+from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 from scipy.special import xlogy
@@ -77,12 +77,12 @@ def information_criteria(log_likelihood: float, n_parameters: int, n_cases: int)
     )
 
 
-def criteria_table(fits: Mapping[str, HasCriteria] | Mapping[int, HasCriteria]) -> pd.DataFrame:
+def criteria_table(fits: Mapping[Any, HasCriteria]) -> pd.DataFrame:
     """Return the criteria of several models of the same answers as a long table.
 
     Parameters
     ----------
-    fits : mapping from name or number of classes to MaximumLikelihood
+    fits : mapping from name, or number of classes, to MaximumLikelihood
 
     Returns
     -------
