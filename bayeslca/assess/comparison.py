@@ -239,17 +239,32 @@ def _with_evidence(
 
 
 def _evidence_findings(evidence: Mapping[Name, Evidence]) -> tuple[Finding, ...]:
-    return tuple(
-        Finding(
-            kind="evidence_not_reliable",
-            level="warning",
-            message=f"The evidence of {row_in_words(name)} is not reliable: {one.reason}.",
-            remedy="Sample longer (ess=..., draws=...), or leave that row out of the evidence.",
-            about=(str(name),),
-        )
-        for name, one in evidence.items()
-        if not one.reliable
-    )
+    found = []
+    for name, one in evidence.items():
+        if not one.reliable:
+            found.append(
+                Finding(
+                    kind="evidence_not_reliable",
+                    level="warning",
+                    message=f"The evidence of {row_in_words(name)} is not reliable: {one.reason}.",
+                    remedy="Sample longer (ess=..., draws=...), or do without that row's evidence.",
+                    about=(str(name),),
+                )
+            )
+        elif one.modes:
+            shares = ", ".join(f"{100 * mode.share:.1f} %" for mode in one.modes)
+            found.append(
+                Finding(
+                    kind="modes_weighed",
+                    level="note",
+                    message=(
+                        f"The posterior of {row_in_words(name)} has {len(one.modes)} modes; by "
+                        f"their evidence they hold {shares} of it."
+                    ),
+                    about=(str(name),),
+                )
+            )
+    return tuple(found)
 
 
 def _smallest_class(posterior: Posterior) -> dict[str, float]:

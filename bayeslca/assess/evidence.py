@@ -7,7 +7,7 @@ normalised over labelled parameters. Whether a figure is to be trusted is part o
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from typing import TYPE_CHECKING
 
@@ -16,7 +16,14 @@ import numpy as np
 from bayeslca._typing import Floats, Seed
 from bayeslca.assess.empty_class_ladder import Step, can_be_joined, ladder_step, rung_of
 from bayeslca.assess.join import Joined, join
-from bayeslca.assess.model_evidence import SIZES, Estimate, model_estimates
+from bayeslca.assess.mode_evidence import (
+    MOST_R_HAT,
+    ModeEvidence,
+    chains_of_modes,
+    evidence_of_modes,
+    summed,
+)
+from bayeslca.assess.model_evidence import SIZES, Estimate
 from bayeslca.assess.modes import largest_r_hat
 from bayeslca.exceptions import ModelError
 
@@ -27,8 +34,6 @@ MOST_ERROR = 0.5
 """A log evidence with a larger Monte Carlo error is not given as reliable."""
 WANTED_ERROR = 0.1
 """Bridges take larger proposals until the joined error is below this."""
-MOST_R_HAT = 1.05
-"""R-hat of the log likelihood above which chains disagree."""
 GUARD_ERRORS = 4.0
 """Standard errors by which a guarding estimate may differ."""
 
@@ -50,6 +55,8 @@ class Evidence:
         Everything that was tried: those used, those that guard them, those left out.
     chi_square, degrees : float, int
         Disagreement of the joined estimates (of all class counts together).
+    modes : tuple of ModeEvidence
+        Where chains stay in several modes: what each of them weighs. Empty for one mode.
     """
 
     log_evidence: float
@@ -59,13 +66,18 @@ class Evidence:
     estimates: tuple[Estimate, ...] = ()
     chi_square: float = 0.0
     degrees: int = 0
+    modes: tuple[ModeEvidence, ...] = ()
 
     def __repr__(self) -> str:
         if not self.reliable:
             return f"The evidence is not reliable: {self.reason}."
         kinds = " and ".join(dict.fromkeys(one.kind for one in self.estimates if one.is_usable))
         error = "exact" if self.mcse == 0.0 else f"± {self.mcse:.3f}"
-        return f"Log evidence {self.log_evidence:.3f} ({error}; by {kinds})."
+        text = f"Log evidence {self.log_evidence:.3f} ({error}; by {kinds})."
+        if self.modes:
+            shares = ", ".join(f"{100 * one.share:.1f} %" for one in self.modes)
+            text += f" {len(self.modes)} modes hold {shares} of the posterior."
+        return text
 
 
 def log_evidence(posterior: Posterior, *, seed: Seed = None) -> Evidence:
@@ -109,23 +121,28 @@ def _evidences(
     rng: np.random.Generator,
 ) -> tuple[dict[int, Evidence], Joined]:
     streams = dict(zip(posteriors, rng.spawn(len(posteriors)), strict=True))
-    estimates: dict[int, tuple[Estimate, ...]] = {}
+    modes: dict[int, tuple[ModeEvidence, ...]] = {}
     refused: dict[int, str] = {}
     for k, posterior in posteriors.items():
         try:
-            estimates[k] = model_estimates(posterior, streams[k])
+            modes[k] = evidence_of_modes(posterior, streams[k])
         except ModelError as error:
-            estimates[k], refused[k] = (), str(error)
+            refused[k] = str(error)
+    estimates = {k: summed(modes[k]) if k in modes else () for k in posteriors}
     steps = _steps(posteriors, neighbours, rng)
     joined = _joined(estimates, steps)
     for size in range(1, len(SIZES)):
         for k in _too_vague(estimates, joined):
-            estimates[k] = model_estimates(posteriors[k], streams[k], size=size)
+            modes[k] = evidence_of_modes(posteriors[k], streams[k], size=size)
+            estimates[k] = summed(modes[k])
             joined = _joined(estimates, steps)
     found = {
         k: _judged(k, posterior, estimates[k], steps, joined, refused.get(k, ""))
         for k, posterior in posteriors.items()
     }
+    for k, several in modes.items():
+        if len(several) > 1:
+            found[k] = replace(found[k], modes=several)
     return found, joined
 
 
@@ -137,7 +154,10 @@ def _steps(
     """Return the ladder's steps between neighbouring counts, by the lower one."""
     if not neighbours:
         return {}
-    rungs = {k: rung_of(posterior) for k, posterior in posteriors.items()}
+    rungs = {
+        k: rung_of(posterior) if len(chains_of_modes(posterior)) == 1 else None
+        for k, posterior in posteriors.items()
+    }
     steps = {}
     for (a, b), stream in zip(neighbours, rng.spawn(len(neighbours)), strict=True):
         lower, upper = rungs[a], rungs[b]
@@ -201,11 +221,11 @@ def _why_not(
 ) -> str:
     if refused:
         return refused
+    starts, n_modes = posterior.draws.starts, len(chains_of_modes(posterior))
     r_hat = largest_r_hat(posterior.draws.log_likelihood[:, :, None])
-    starts = posterior.draws.starts
-    if r_hat > MOST_R_HAT:
+    if n_modes == 1 and r_hat > MOST_R_HAT:
         return f"the chains disagree (R-hat of the log likelihood {r_hat:.2f})"
-    if starts is not None and starts.n_modes > 1:
+    if starts is not None and starts.n_modes > n_modes:
         return f"{starts.n_modes} modes lie within {starts.reach:.0f} nats, their weights unknown"
     if k not in joined.counts:
         return "; ".join(one.why_not for one in estimates if one.why_not)

@@ -123,8 +123,8 @@ def _solved(used: Sequence[_Equation]) -> Joined:
     # About the first value: log evidences are large, their differences are not.
     origin = next(one.estimate.value for one in rows if one.lower is None)
     target = target - np.array([origin if one.lower is None else 0.0 for one in rows])
-    covariance = np.linalg.inv(design.T @ (weight[:, None] * design))
-    value = covariance @ (design.T @ (weight * target))
+    covariance: Floats = np.asarray(np.linalg.inv(design.T @ (weight[:, None] * design)))
+    value: Floats = np.asarray(covariance @ (design.T @ (weight * target)))
     residual = target - design @ value
     chi_square = float(np.sum(weight * residual**2))
     return Joined(counts, value + origin, covariance, chi_square, len(rows) - len(counts), ())

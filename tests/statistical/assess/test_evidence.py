@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import tomllib
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 from functools import cache
 from itertools import product
 from pathlib import Path
@@ -270,6 +271,28 @@ def test_an_order_that_only_picks_labels_changes_nothing() -> None:
     assert {one.kind for one in found.estimates} == {"bridge", "importance"}
     assert found.reliable, found.reason
     assert abs(found.log_evidence - reference(CARCINOMA)[2][0]) < 4 * found.mcse
+
+
+def test_two_modes_are_weighed_by_their_evidence() -> None:
+    # The order keeps the labels of one item only: with this table the swapped labelling has a mode
+    # of its own some 10 nats lower, in which a chain is kept. Together they are the free model.
+    responses = published(STOUFFER)
+    first = responses.items[0].name
+    model = LatentClassModel(
+        responses.items, ("high", "low"), (f"P({first}=1 | high) > P({first}=1 | low)",)
+    )
+    posterior = model.sample(responses, seed=1, max_sweeps=20_000, **QUICK)
+    found = log_evidence(posterior)
+    assert [len(mode.chains) for mode in found.modes] == [3, 1]
+    assert found.reliable, found.reason
+    assert abs(found.log_evidence - reference(STOUFFER)[2][0]) < 4 * found.mcse
+    assert found.modes[0].share > 0.999
+    assert found.modes[0].share + found.modes[1].share == pytest.approx(1.0)
+    # All chains taken together as if they were one mode, the bridge is far off.
+    assert posterior.draws.starts is not None
+    draws = replace(posterior.draws, starts=None)
+    alone = replace(posterior, relabelled=replace(posterior.relabelled, draws=draws))
+    assert not log_evidence(alone).reliable
 
 
 def test_stated_errors_are_the_spread_of_short_runs() -> None:

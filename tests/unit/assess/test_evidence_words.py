@@ -148,7 +148,7 @@ def test_chains_that_disagree_have_no_reliable_evidence() -> None:
 def test_two_modes_within_reach_have_no_reliable_evidence() -> None:
     posterior = fitted(2)
     assert posterior.draws.starts is not None
-    starts = replace(posterior.draws.starts, n_modes=2)
+    starts = replace(posterior.draws.starts, n_modes=2)  # and no chain was kept in the second
     found = log_evidence(changed(posterior, starts=starts))
     assert not found.reliable
     assert "2 modes" in found.reason
