@@ -7,7 +7,6 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
 from bayeslca.model.compile import compile_units
 from bayeslca.model.identifiability import count_free
@@ -36,19 +35,6 @@ def model_findings(model: LatentClassModel, responses: Responses) -> tuple[Findi
         *_small_groups(model, responses),
         *_heavy_priors(model, responses),
     )
-
-
-def refuse_impossible(model: LatentClassModel, responses: Responses) -> None:
-    """Raise where a case's answers have probability 0 in every class.
-
-    Raises
-    ------
-    ModelError
-        Naming the cases.
-    """
-    for finding in impossible_patterns(model, responses):
-        msg = f"{finding.message} {finding.remedy}"
-        raise ModelError(msg)
 
 
 def impossible_patterns(model: LatentClassModel, responses: Responses) -> tuple[Finding, ...]:

@@ -36,16 +36,13 @@ def step_key(
     """Digest of all that a fit rests on: data, model, sampling, seed and version."""
     content = {
         "data": responses.data_hash,
-        "cases": _digest("\0".join(responses.row_names)),
+        "cases": responses.row_names_hash,
         "model": model.to_dict(),
         "sampling": dict(sampling),
         "seed": seed,
         "version": bayeslca.__version__,
     }
-    return _digest(json.dumps(content, sort_keys=True, default=str))
-
-
-def _digest(text: str) -> str:
+    text = json.dumps(content, sort_keys=True, default=str)
     return hashlib.sha256(text.encode()).hexdigest()
 
 

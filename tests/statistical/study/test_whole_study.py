@@ -237,3 +237,12 @@ def test_the_messy_spreadsheet_goes_from_draft_to_report(messy: Path, tmp_path: 
     assert "118" in page
     assert "R-1000" not in page
     assert "nobody was there" not in page
+
+
+def test_answers_that_changed_places_are_fitted_anew(study: Path) -> None:
+    answers = study.parent / "answers.csv"
+    frame = pd.read_csv(answers)
+    frame["committee"] = frame["committee"].to_numpy()[::-1]  # the same answers of other cases
+    frame.sort_values("committee").to_csv(answers, index=False)
+    outcome = run_study(study, study.parent / "results", replace=True, quiet=True)
+    assert "unchanged" not in outcome.words
