@@ -42,6 +42,7 @@ from bayeslca.responses.item import Groups, Item
 
 if TYPE_CHECKING:
     from bayeslca.assess.maximum_likelihood import MaximumLikelihood
+    from bayeslca.model.prior_predictive import PriorPredictive
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.responses import Responses
     from bayeslca.responses.units import Units
@@ -269,6 +270,32 @@ class LatentClassModel:
             Which answers are given; all when left out.
         """
         return simulate(self, n, seed, parameters, answered)
+
+    def prior_predictive(
+        self,
+        n_cases: int | Sequence[int] | None = None,
+        *,
+        draws: int = 1000,
+        seed: Seed = None,
+        responses: Responses | None = None,
+    ) -> PriorPredictive:
+        """Return what the priors imply, constraints and naming rules kept.
+
+        Parameters
+        ----------
+        n_cases : int or sequence of int, optional
+            Cases of the study; with groups, of each group (a single number is divided evenly).
+        draws : int
+            Draws of the parameters, and studies simulated from them.
+        seed : int or numpy Generator, optional
+        responses : Responses, optional
+            In place of ``n_cases``: take number of cases, groups and missing answers from these,
+            and put what was observed beside what the priors imply. A prior should be argued
+            about before that is seen.
+        """
+        from bayeslca.model.prior_predictive import prior_predictive
+
+        return prior_predictive(self, n_cases, draws=draws, seed=seed, responses=responses)
 
     def sample(
         self,

@@ -79,7 +79,7 @@ def simulate(
     table = model.table
     if parameters is None:
         parameters = draw_parameters(table, model.prevalence_source, rng)
-    group = np.repeat(np.arange(model.n_groups), _group_sizes(n, model.n_groups))
+    group = np.repeat(np.arange(model.n_groups), group_sizes(n, model.n_groups))
     latent_class = draw_classes(parameters.prevalence, group, rng)
     codes = draw_answers(table, parameters.elements, latent_class, group, rng)
     if answered is not None:
@@ -201,7 +201,8 @@ def _check_simplex(values: Floats, what: str) -> None:
         raise ModelError(msg)
 
 
-def _group_sizes(n: int | Sequence[int], n_groups: int) -> list[int]:
+def group_sizes(n: int | Sequence[int], n_groups: int) -> list[int]:
+    """Return the cases of each group; a single number is divided evenly."""
     if isinstance(n, int | np.integer):
         return [n // n_groups + (g < n % n_groups) for g in range(n_groups)]
     sizes = [int(size) for size in n]
