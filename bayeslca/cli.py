@@ -32,6 +32,7 @@ def commands() -> None:
     A study goes like this:
       bayeslca inspect committees.csv              what is in the file
       bayeslca draft committees.csv -o study.toml  a first study file to edit
+      bayeslca prior --most-likely 0.8 ...         a prior from a judgement
       bayeslca check study.toml                    the model in words, warnings
       bayeslca run study.toml -o results           the whole job, with a report
       bayeslca ask results "P(..) > P(..)"         a hypothesis or a quantity
@@ -92,11 +93,27 @@ def draft(
 
 @commands.command()
 @click.argument("study", type=_FILE)
-def check(study: Path) -> None:
-    """Read the study and say what would be done; samples nothing."""
+@click.option("--prior", is_flag=True, help="Show also what the priors imply before the data.")
+def check(study: Path, prior: bool) -> None:
+    """Read the study and say what would be done; fits nothing."""
     from bayeslca.study.check import check_study
 
-    _print(check_study(study))
+    _print(check_study(study, prior=prior))
+
+
+@commands.command()
+@click.option("--most-likely", type=float, required=True, help="The most likely value, 0 to 1.")
+@click.option("--above", type=float, help="The probability is above this ...")
+@click.option("--below", type=float, help="... or below this (give one of them) ...")
+@click.option("--sure", type=float, required=True, help="... with this sureness, such as 0.95.")
+@click.option("--target", help="What it is of, such as 'P(fees=yes | managed)'.")
+def prior(
+    most_likely: float, above: float | None, below: float | None, sure: float, target: str | None
+) -> None:
+    """Turn an expert's judgement into a prior to paste."""
+    from bayeslca.study.prior import beta_prior
+
+    _print(beta_prior(most_likely, above=above, below=below, sure=sure, target=target))
 
 
 @commands.command()

@@ -6,8 +6,11 @@ import textwrap
 from collections.abc import Iterable
 from pathlib import Path
 
+import numpy as np
+
 from bayeslca.findings import Finding
 from bayeslca.model.latent_class_model import LatentClassModel
+from bayeslca.model.prior_predictive import PriorPredictive
 from bayeslca.report.wording import counted
 from bayeslca.responses.responses import Responses
 from bayeslca.study.claims import check_theory
@@ -23,8 +26,15 @@ SECONDS_TO_START = 15
 """Loading the libraries, summaries and the report."""
 
 
-def check_study(path: str | Path) -> str:
-    """Read all of a study and say what `run` would do; nothing is sampled or written.
+def check_study(path: str | Path, *, prior: bool = False) -> str:
+    """Read all of a study and say what `run` would do; nothing is fitted or written.
+
+    Parameters
+    ----------
+    path : str or Path
+        The study file.
+    prior : bool
+        Show also what the priors imply for a study of this size.
 
     Raises
     ------
@@ -51,6 +61,9 @@ def check_study(path: str | Path) -> str:
         "",
         *_plan(study, responses),
     ]
+    if prior:
+        with_two = [] if study.model is not None else ["With two classes:"]
+        parts += ["", *with_two, str(_implied(study, checked))]
     return "\n".join(parts)
 
 
@@ -94,6 +107,14 @@ def _plan(study: Study, responses: Responses) -> list[str]:
         lines += _wrapped(f"- put {' and '.join(asked)} to the posterior", indent=4)
     lines += _wrapped(f"- {_expected_time(study, responses)}", indent=4)
     return lines
+
+
+def _implied(study: Study, model: LatentClassModel) -> PriorPredictive:
+    """Return what the priors imply, without what was observed: it would not be a prior then."""
+    units = model.units(study.responses)
+    sizes = np.bincount(units.group, weights=units.count, minlength=model.n_groups)
+    seed = study.said.sampling.seed
+    return model.prior_predictive([int(n) for n in sizes], seed=seed)
 
 
 def _expected_time(study: Study, responses: Responses) -> str:
