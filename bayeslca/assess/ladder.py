@@ -87,6 +87,12 @@ class Step:
     allocated: Allocated
     labellings: tuple[tuple[int, ...], ...] = ()
 
+    @cached_property
+    def own(self) -> Floats:
+        """Log p(answers, classes) (chain, draw, 1) at this model's own draws."""
+        found = self.collapsed.log_evidence(self.allocated)
+        return found.reshape(self.allocated.chains, -1, 1)
+
     def log_evidence(self, other: Step) -> Floats:
         """Return log p(answers, classes) (chain, draw, label) of this model at another's draws."""
         at = [other.allocated.relabelled(order) for order in other.labellings]
@@ -97,8 +103,8 @@ class Step:
 def bridged(low: Step, high: Step) -> LogRatio:
     """Return the log ratio of the evidence of the higher step to that of the lower."""
     return bridge_ratio(
-        high.log_evidence(low) - low.log_evidence(low),
-        (high.log_evidence(high) - low.log_evidence(high))[:, :, 0],
+        high.log_evidence(low) - low.own,
+        (high.own - low.log_evidence(high))[:, :, 0],
     )
 
 

@@ -9,14 +9,15 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from scipy.special import betainc, betaincc
 
-from bayeslca._typing import Floats
+from bayeslca._typing import Bools, Floats
 from bayeslca.model.blocks import Blocks, constrained_elements
 
-NODES = 256
+NODES = 512
 """Cells of the integrals; evenly spread on the arcsine scale, where a Beta's width is even."""
 PIECE = 200
 """Parameter sets that are worked through at once."""
@@ -166,20 +167,21 @@ def _neighbours(v: int, orders: Sequence[tuple[int, int]]) -> list[tuple[int, bo
 def _tree_probability(
     found: Forest, root: int, members: Sequence[int], ab: Sequence[Floats]
 ) -> Floats:
-    cuts = [x for v in members for x in (found.variates[v].lower, found.variates[v].upper)]
-    nodes = np.unique(np.append(np.sin(np.linspace(0.0, np.pi / 2, NODES + 1)) ** 2, cuts))
+    cuts = {x for v in members for x in (found.variates[v].lower, found.variates[v].upper)}
+    inside_cuts = tuple(sorted(cuts - {0.0, 1.0}))
     # The same parameters come again and again: each set of them is worked out once.
     together, which = np.unique(np.concatenate(ab, axis=1), axis=0, return_inverse=True)
     cells, of_row = {}, {}
     for i, v in enumerate(members):
         distinct, of_row[v] = np.unique(together[:, 2 * i : 2 * i + 2], axis=0, return_inverse=True)
-        cells[v] = _cell_masses(distinct, found.variates[v], nodes)
+        mass = np.stack([_cell_masses(*row, inside_cuts) for row in distinct.tolist()])
+        cells[v] = np.where(_inside(found.variates[v], inside_cuts), mass, 0.0)
     values = np.empty(len(together))
     for first in range(0, len(together), PIECE):
         rows = slice(first, first + PIECE)
         piece = {v: cells[v][of_row[v].reshape(-1)[rows]] for v in members}
         fine = _masses(found, root, None, piece).sum(axis=1)
-        if nodes.size == NODES + 1:  # Richardson: the error falls with the square of the width
+        if not inside_cuts:  # Richardson: the error falls with the square of the width
             halved = {v: mass[:, ::2] + mass[:, 1::2] for v, mass in piece.items()}
             coarse = _masses(found, root, None, halved).sum(axis=1)
             fine = np.clip((4.0 * fine - coarse) / 3.0, 0.5 * fine, 1.0)
@@ -202,16 +204,31 @@ def _masses(found: Forest, v: int, parent: int | None, cells: dict[int, Floats])
     return mass
 
 
-def _cell_masses(ab: Floats, variate: Variate, nodes: Floats) -> Floats:
-    """Return the probability (S, cells) of each cell; in the upper half from the upper tail."""
-    a, b = ab[:, :1], ab[:, 1:]
-    lower, upper = betainc(a, b, nodes), betaincc(a, b, nodes)
-    from_below = lower[:, 1:] - lower[:, :-1]
-    from_above = upper[:, :-1] - upper[:, 1:]
-    mass = np.where(lower[:, 1:] < 0.5, from_below, from_above)
+@lru_cache(maxsize=64)
+def _nodes(cuts: tuple[float, ...]) -> Floats:
+    """Return the ends of the cells, with cuts among them."""
+    return np.unique(np.append(np.sin(np.linspace(0.0, np.pi / 2, NODES + 1)) ** 2, cuts))
+
+
+def _inside(variate: Variate, cuts: tuple[float, ...]) -> Bools:
+    """Tell which cells lie between a variate's bounds."""
+    nodes = _nodes(cuts)
     middle = 0.5 * (nodes[1:] + nodes[:-1])
-    inside = (middle > variate.lower) & (middle < variate.upper)
-    return np.asarray(np.where(inside, mass, 0.0))
+    return np.asarray((middle > variate.lower) & (middle < variate.upper))
+
+
+@lru_cache(maxsize=20_000)
+def _cell_masses(a: float, b: float, cuts: tuple[float, ...]) -> Floats:
+    """Return the probability (cells,) of each cell under Beta(a, b).
+
+    Below the mean from the lower tail, above it from the upper: no small number is lost.
+    """
+    nodes = _nodes(cuts)
+    low = nodes <= a / (a + b)
+    tail = betainc(np.where(low, a, b), np.where(low, b, a), np.where(low, nodes, 1.0 - nodes))
+    mass = np.where(low[1:], tail[1:] - tail[:-1], tail[:-1] - tail[1:])
+    split = low[:-1] & ~low[1:]
+    return np.asarray(np.where(split, 1.0 - tail[:-1] - tail[1:], mass))
 
 
 def interval_probability(ab: Floats, lower: float, upper: float) -> Floats:

@@ -83,11 +83,8 @@ def weigh(posterior: Posterior, statements: Sequence[str], seed: int) -> Weighed
     if log_prior is not None and log_prior > -IMPLIED:
         return Weighed(LogRatio(0.0, 0.0), 0.0, 0.0, 0.0)
 
-    top, bottoms = constrained, _bottoms(posterior, base, plain, seed)
-    log_w = Step(top, bottoms[0].allocated).log_evidence(bottoms[0])
-    log_w = log_w - bottoms[0].collapsed.log_evidence(bottoms[0].allocated).reshape(
-        *log_w.shape[:2], 1
-    )
+    bottoms = _bottoms(posterior, base, plain, seed)
+    log_w = Step(constrained, bottoms[0].allocated).log_evidence(bottoms[0]) - bottoms[0].own
     ratio = mean_ratio(log_w)
     if ratio.mcse > GOOD_ENOUGH:
         ratio = climb(base, bottoms, under, posterior.responses, seed)

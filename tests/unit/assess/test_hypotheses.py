@@ -10,7 +10,9 @@ import pytest
 from scipy.integrate import quad
 from scipy.stats import beta, betabinom
 
+from bayeslca.assess.order_probability import forest, log_probability
 from bayeslca.exceptions import ModelError, StatementError
+from bayeslca.model.blocks import BlockArrays
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.item import ItemSpec
@@ -239,3 +241,34 @@ def test_renaming_classes_and_items_changes_nothing(grouped_by_rule: Posterior) 
     one = grouped_by_rule.test("P(meets=yes | managed) > 0.8")
     two = other.test("P(sits=yes | run) > 0.8")
     assert one.log_bayes_factor == two.log_bayes_factor
+
+
+@pytest.mark.parametrize(
+    ("one", "two"),
+    [((10, 90), (60, 40)), ((5, 200), (30, 20)), ((200, 300), (250, 250)), ((0.5, 0.5), (0.5, 30))],
+)
+def test_order_of_two_betas_far_into_the_tail(
+    one: tuple[float, float], two: tuple[float, float]
+) -> None:
+    # Down to 8e-22; by adaptive quadrature of SciPy. Elements: no, yes of each item.
+    pair = BlockArrays(
+        block_start=np.array([0, 2, 4]),
+        element_prior=np.ones(4),
+        element_lower=np.zeros(4),
+        element_upper=np.ones(4),
+        order_above=np.array([1]),
+        order_below=np.array([3]),
+    )
+    exact = quad(
+        lambda x: beta.pdf(x, *one) * beta.cdf(x, *two),
+        0,
+        1,
+        epsabs=0,
+        epsrel=1e-10,
+        limit=2000,
+        points=[one[0] / sum(one), two[0] / sum(two)],
+    )[0]
+    parameters = np.array([[one[1], one[0], two[1], two[0]]], dtype=float)
+    orders = forest(pair)
+    assert orders is not None
+    assert np.exp(log_probability(orders, parameters))[0] == pytest.approx(exact, rel=3e-3)
