@@ -16,6 +16,7 @@ import pandas as pd
 import pytest
 from scipy.special import gammaln
 
+from bayeslca.assess.empty_class_ladder import can_be_joined, ladder_step, rung_of
 from bayeslca.assess.evidence import log_evidence, log_evidence_of_counts
 from bayeslca.assess.proposal import Labels
 from bayeslca.assess.unknown_count import sample_class_count
@@ -82,21 +83,27 @@ def test_one_model_alone(name: str) -> None:
         assert abs(one.value - exact) < 4 * one.mcse
 
 
-@pytest.mark.parametrize("table", ["tiny_8", "tiny_12"])
-def test_tiny_tables(table: str) -> None:
+@cache
+def tiny(table: str) -> tuple[dict[int, Posterior], dict[int, float]]:
     frame = pd.read_csv(REFERENCES / "tiny_tables_made_up.csv", dtype=str)
     frame = frame[frame["table"] == table].astype({"count": int})
     items = [name for name in frame.columns if name.startswith("item")]
     responses = Responses.from_frame(frame, items=items, counts="count")
     parts = next(t for t in references() if t["id"] == "tiny_exact")["computed_evidence"]
     exact = next(part for part in parts if part["table"] == table)
-    counts = dict(zip(exact["classes"], exact["log_evidence"], strict=True))
+    values = dict(zip(exact["classes"], exact["log_evidence"], strict=True))
     posteriors = {
         k: LatentClassModel(responses.items, k).sample(responses, seed=SEED, **QUICK)
-        for k in counts
+        for k in values
     }
+    return posteriors, values
+
+
+@pytest.mark.parametrize("table", ["tiny_8", "tiny_12"])
+def test_tiny_tables(table: str) -> None:
+    posteriors, exact = tiny(table)
     found, _ = log_evidence_of_counts(posteriors)
-    for k, value in counts.items():
+    for k, value in exact.items():
         assert found[k].reliable, found[k].reason
         assert abs(found[k].log_evidence - value) < 4 * found[k].mcse + 1e-6
 
@@ -226,6 +233,55 @@ def test_prevalences_by_group() -> None:
     check(responses, model, by_brute_force(ROWS, CATEGORIES, 2))
 
 
+def check_step(lower: Posterior, upper: Posterior, exact: float) -> None:
+    one, two = rung_of(lower), rung_of(upper)
+    assert one is not None
+    assert two is not None
+    assert can_be_joined(one, two)
+    assert not can_be_joined(two, one)
+    step = ladder_step(one, two, np.random.default_rng(SEED))
+    assert step.ladder.mcse < 0.06
+    for estimate in (step.ladder, step.emptied):
+        assert estimate.is_usable
+        assert estimate.mcse < 0.3
+        assert abs(estimate.value - exact) < 4 * estimate.mcse
+
+
+def test_the_ladder_alone_has_the_exact_step_with_groups() -> None:
+    responses = small(grouped=True)
+    lower, upper = (
+        LatentClassModel(responses.items, k, groups=responses.groups).sample(
+            responses, seed=SEED, **QUICK
+        )
+        for k in (1, 2)
+    )
+    exact = [by_brute_force(ROWS, CATEGORIES, k) for k in (1, 2)]
+    check_step(lower, upper, exact[1] - exact[0])
+
+
+def test_the_ladder_alone_has_the_exact_steps() -> None:
+    posteriors, exact = tiny("tiny_8")
+    for k in (2, 3):
+        check_step(posteriors[k], posteriors[k + 1], exact[k + 1] - exact[k])
+
+
+@pytest.mark.parametrize(
+    ("classes", "statements"),
+    [
+        (
+            ("one", "two"),
+            ("P(fees=yes | one) = P(fees=yes | two)", "one is where P(trust=low) is highest"),
+        ),
+        (2, ("P(fees=yes | .) > 0.1",)),
+        (("one", "two"), ("P(fees=yes | one) ~ Beta(3, 1)",)),
+    ],
+)
+def test_restricted_models_are_no_rungs(classes: Any, statements: tuple[str, ...]) -> None:
+    responses = small(grouped=False)
+    model = LatentClassModel(responses.items, classes, statements)
+    assert rung_of(model.sample(responses, seed=SEED, **QUICK)) is None
+
+
 def test_groups_with_probabilities_of_their_own_add_up() -> None:
     responses = small(grouped=True)
     model = LatentClassModel(responses.items, 2, groups=responses.groups, free_by_group=True)
@@ -258,6 +314,16 @@ def test_equal_and_known_probabilities() -> None:
         known={(0, 0): (0.1, 0.9)},
     )
     check(responses, model, exact)
+
+
+def test_a_known_probability_of_one_class_has_a_closed_form() -> None:
+    responses = small(grouped=False)
+    pooled = [("", answers) for _, answers in ROWS]
+    model = LatentClassModel(responses.items, ("all",), ("P(fees=yes | all) = 0.9",))
+    exact = by_brute_force(pooled, CATEGORIES, 1, known={(0, 0): (0.1, 0.9)})
+    found = log_evidence(model.sample(responses, seed=SEED, **QUICK))
+    assert found.mcse == 0.0
+    assert found.log_evidence == pytest.approx(exact)
 
 
 def test_an_order_that_only_picks_labels_changes_nothing() -> None:
