@@ -46,6 +46,14 @@ MODELS = {
         "classes": ("managed", "lapsed"),
         "statements": ["P(managed) < 0.25", "P(fees=yes | managed) > P(fees=yes | lapsed)"],
     },
+    "equal prevalences": {
+        "classes": ("managed", "lapsed"),
+        "statements": ["P(managed) = P(lapsed)", "P(fees=yes | managed) > P(fees=yes | lapsed)"],
+    },
+    "known prevalence": {
+        "classes": ("a", "b", "c"),
+        "statements": ["P(a) = 0.3", "P(fees=yes | b) > P(fees=yes | c)"],
+    },
     "three ordered": {
         "classes": ("a", "b", "c"),
         "statements": ["P(fees=yes | a) > P(fees=yes | b) > P(fees=yes | c) > 0.3"],
@@ -152,13 +160,13 @@ def test_tiny_probabilities_go_by_logs() -> None:
     responses = model.simulate(20, seed=SEED).responses
     blocks = AllBlocks.of(model)
     units = compile_units(model.table, model.units(responses))
-    point = np.where(np.arange(blocks.n_elements) % 2, 1e-7, 1.0 - 1e-7)
+    point = np.where(np.arange(blocks.n_elements) % 2, 1e-13, 1.0 - 1e-13)
     point[-2:] = 0.3, 0.7
     layout = blocks.layout(units)
     one = blocks.parameters(point)
     expected = units.count @ log_unit_likelihood(model.table, units, one.elements, one.prevalence)
     assert expect(layout, work_for(layout), point) == pytest.approx(float(expected), rel=1e-12)
-    assert expected < 20 * np.log(1e-200)
+    assert expected < 20 * np.log(1e-308)  # their product is 0
 
 
 def test_one_class_is_the_margins() -> None:
@@ -309,6 +317,58 @@ def test_pooling_is_isotonic_regression_of_scikit_learn() -> None:
         )
         assert_allclose(point[chain.element], fitted, atol=1e-12)
         assert point[chain.element[0]] >= 0.3
+
+
+def test_different_bounds_along_a_chain() -> None:
+    # SLSQP on the three proportions, which knows nothing of pooling.
+    model = LatentClassModel(
+        ITEMS,
+        ("a", "b", "c"),
+        [
+            "P(fees=yes | a) > P(fees=yes | b) > P(fees=yes | c)",
+            "P(fees=yes | a) < 0.6",
+            "P(fees=no | b) < 0.6",
+            "P(fees=yes | c) > 0.3",
+        ],
+    )
+    blocks = AllBlocks.of(model)
+    layout = blocks.layout(compile_units(model.table, model.units(answers())))
+    work = work_for(layout)
+    rng = np.random.default_rng(SEED)
+    low, high = np.array([0.3, 0.4, 0.3]), 0.6
+    for _ in range(20):
+        counts = rng.gamma(1.0, 10.0, blocks.n_elements)
+        work.counts[:] = counts
+        point = np.full(blocks.n_elements, 0.5)
+        maximise(layout, work, point)
+        chain = blocks.chains.element
+        yes = np.array([e if model.table.item_start[0] == 0 and e % 2 else e ^ 1 for e in chain])
+        order = yes if yes[0] == chain[0] else yes[::-1]
+        a, b = counts[order], counts[order ^ 1]  # from c to a
+
+        def loss(x: np.ndarray, a: np.ndarray = a, b: np.ndarray = b) -> float:
+            return -float(a @ np.log(x) + b @ np.log1p(-x))
+
+        run = minimize(
+            loss,
+            [0.41, 0.45, 0.5],
+            method="SLSQP",
+            bounds=[(low[0], high), (low[1], high), (low[2], high)],
+            constraints=[{"type": "ineq", "fun": np.diff}],
+            options={"ftol": 1e-14},
+        )
+        found = point[order]
+        assert loss(found) <= run.fun + 1e-7
+        assert np.all(found >= low - 1e-12)
+        assert np.all(found <= high + 1e-12)
+        assert np.all(np.diff(found) >= -1e-12)
+
+
+@pytest.mark.parametrize("name", MODELS)
+def test_free_parameters_are_those_of_the_identifiability_check(name: str) -> None:
+    groups = Groups("herd", ("a", "b"))
+    for model in (stated(name), stated(name, groups)):
+        assert AllBlocks.of(model).n_free == model.identifiability().n_free
 
 
 def test_groups_that_share_nothing_are_fitted_apart() -> None:
