@@ -4,7 +4,8 @@ A pair of items whose answers have an order (two answers, or declared as ordered
 how much the two go together: the sum over joint answers of (a - E a)(b - E b) x (observed -
 expected), in standard errors under the model. For two yes/no items every joint answer's count
 differs from its expectation by just that, where the items' own shares are met. Any other pair
-is judged by X2 of its joint answers, (X2 - df) / sqrt(2 df), which has no direction.
+is judged by how far all its joint answers together go otherwise than expected, which has no
+direction. Neither is moved much by items whose own shares are missed.
 """
 
 from __future__ import annotations
@@ -157,12 +158,38 @@ class ItemPairs:
         signed = _in_errors(with_sum(moved), with_sum(spread))
         if self.is_scored.all():
             return signed
-        expected = n_both[:, self.cell_pair] * probability
-        with np.errstate(divide="ignore", invalid="ignore"):
-            x2 = self.summed(np.where(expected > 0, gap**2 / expected, 0.0))
-        df = with_sum((np.diff(self.start) - 1) * (n_both > 0).astype(np.float64))
-        unsigned = (with_sum(x2) - df) / np.sqrt(2 * np.maximum(df, 1))
+        unsigned = np.zeros_like(signed)
+        for pair in np.flatnonzero(~self.is_scored).tolist():
+            unsigned[..., pair] = self._unsigned(pair, gap, probability, n_both[:, pair])
         return np.where(self.is_scored, signed, unsigned)
+
+    def _unsigned(self, pair: int, gap: Floats, probability: Floats, n: Floats) -> Floats:
+        """Return (T - E T) / sqrt(2 df) of one pair, for each group and all together.
+
+        T is the sum of squares of the joint answers' covariances less expected, over n p(a) p(b):
+        under independence within a class a chi-square with df (R - 1)(C - 1).
+        """
+        i, j = self.pairs[pair]
+        shape = (self.items[i].n_categories, self.items[j].n_categories)
+        cells = slice(self.start[pair], self.start[pair + 1])
+        gap = gap[..., cells].reshape(*gap.shape[:-1], *shape)
+        p = probability[..., cells].reshape(*probability.shape[:-1], *shape)
+        pa, pb = p.sum(axis=-1, keepdims=True), p.sum(axis=-2, keepdims=True)
+        off = gap - pb * gap.sum(axis=-1, keepdims=True) - pa * gap.sum(axis=-2, keepdims=True)
+        variance = (
+            p * (1 - 2 * pa) * (1 - 2 * pb)
+            + pa * (1 - 2 * pa) * pb**2
+            + pb * (1 - 2 * pb) * pa**2
+            + pa**2 * pb**2
+            - (p - pa * pb) ** 2
+        )
+        may = pa * pb > 0
+        scale = np.where(may, pa * pb, 1.0)
+        cases = np.maximum(n, 1.0)[:, None, None]
+        over = np.where(may, off**2 / (cases * scale) - variance / scale, 0.0).sum(axis=(-2, -1))
+        over = np.where(n > 0, over, 0.0)[..., None]
+        df = (shape[0] - 1) * (shape[1] - 1) * with_sum((n > 0).astype(np.float64)[:, None])[:, 0]
+        return np.asarray(with_sum(over)[..., 0] / np.sqrt(2 * np.maximum(df, 1)))
 
     def odds_ratio(self, counts: Floats) -> Floats:
         """Return concordant over discordant pairs of cases (Agresti 1980), nan without an order.

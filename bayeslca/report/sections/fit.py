@@ -13,6 +13,7 @@ from bayeslca.assess.predictive_words import (
     p_text,
     records,
 )
+from bayeslca.posterior.tables import OVERALL
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -39,6 +40,8 @@ from bayeslca.report.wording import (
 )
 
 if TYPE_CHECKING:
+    import pandas as pd
+
     from bayeslca.assess.predictive_checks import PredictiveChecks
 
 ANCHOR, HEADING = "fit", "Does the model fit"
@@ -57,7 +60,7 @@ def fit_section(facts: Facts) -> Section | None:
         Paragraph(sentence(checks.verdict)),
         *([Bullets(noticed)] if noticed else []),
         Paragraph(checks_in_words(checks)),
-        _checks_table(checks),
+        *_checks_tables(checks),
         *_other_counts(facts),
         *_pairs(checks),
         *_scores(checks),
@@ -114,9 +117,22 @@ def independence_in_words(checks: PredictiveChecks) -> str:
     return text + "No pair is further off than the furthest pair of replicates tends to be."
 
 
-def _checks_table(checks: PredictiveChecks) -> PageTable:
-    frame = checks.overall
-    grouped, calibrated = "group" in frame, bool(checks.calibrated_in)
+def _checks_tables(checks: PredictiveChecks) -> list[Block]:
+    """Return the checks of all cases, and folded those by group."""
+    frame, caption = checks.overall, "How the answers compare with replicates"
+    whole_table = _checks_table(checks, overall_rows(frame), caption)
+    if "group" not in frame:
+        return [whole_table]
+    by_group = _checks_table(
+        checks, frame[frame["group"] != OVERALL], f"{caption}, by group", grouped=True
+    )
+    return [whole_table, by_group]
+
+
+def _checks_table(
+    checks: PredictiveChecks, frame: pd.DataFrame, caption: str, *, grouped: bool = False
+) -> PageTable:
+    calibrated = bool(checks.calibrated_in)
     rows = tuple(
         (
             CHECKS[row["check"]],
@@ -124,7 +140,7 @@ def _checks_table(checks: PredictiveChecks) -> PageTable:
             significant(row["observed"], 3),
             f"{significant(row['expected'], 3)} ({significant(row['lower'], 3)} to "
             f"{significant(row['upper'], 3)})",
-            f"{p_text(row['p'], checks.replicates)} ± {significant(row['p_mcse'], 1)}",
+            _p_with_error(row, checks),
             *(
                 [f"{decimal(row['p_calibrated'], 2)} ± {significant(row['p_calibrated_mcse'], 1)}"]
                 if calibrated
@@ -135,13 +151,18 @@ def _checks_table(checks: PredictiveChecks) -> PageTable:
     )
     heads = (
         Head("Check", "what is compared", numeric=False),
-        *([Head("Group", "“overall”: all cases", numeric=False)] if grouped else []),
+        *([Head("Group", numeric=False)] if grouped else []),
         Head("Observed", "how far the answers are from what the model expects"),
         Head("Replicates", f"how far they are ({level(frame.attrs['interval'])} interval)"),
         Head("p", "share of replicates as far off, or further ± Monte Carlo error"),
         *([Head("Calibrated p", "rank among simulated studies ± its error")] if calibrated else []),
     )
-    return PageTable("How the answers compare with replicates", heads, rows)
+    return PageTable(caption, heads, rows, folded=grouped)
+
+
+def _p_with_error(row: dict[str, Any], checks: PredictiveChecks) -> str:
+    text = p_text(row["p"], checks.replicates)
+    return text if text.startswith("below") else f"{text} ± {significant(row['p_mcse'], 1)}"
 
 
 def _other_counts(facts: Facts) -> list[Block]:

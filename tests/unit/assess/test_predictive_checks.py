@@ -12,7 +12,7 @@ from bayeslca.assess.calibrated_p import simulated_responses
 from bayeslca.assess.posterior_p import posterior_p, two_sided_p
 from bayeslca.assess.predictive_checks import PredictiveChecks, predictive_checks
 from bayeslca.assess.predictive_tables import CHECKS, freeman_tukey
-from bayeslca.assess.predictive_words import p_text
+from bayeslca.assess.predictive_words import judged_p, p_text
 from bayeslca.assess.replicates import Both, spread_draws
 from bayeslca.exceptions import BayesLCAError
 from bayeslca.model.latent_class_model import LatentClassModel
@@ -174,10 +174,21 @@ def test_groups_have_rows_of_their_own(grouped: PredictiveChecks) -> None:
     assert "group" in grouped.patterns
 
 
+def test_what_every_group_misses_is_not_laid_on_groups() -> None:
+    codes = independent(dependent=True)
+    codes[:, 3] = codes[:, 2]
+    model = LatentClassModel(tuple(YES), 1, groups=DISTRICT)
+    responses = answers(YES, codes, [0, 1] * 60, DISTRICT)
+    found = predictive_checks(at_known(model, responses, [0.5] * 8, [[1.0], [1.0]]))
+    pairs = found.overall[found.overall["check"] == "item_pairs"]
+    assert (pairs["p"] == 0).all()
+    assert not [f for f in found.findings if f.kind == "group_missed" and "item_pairs" in f.about]
+
+
 def test_a_missed_item_is_named(grouped: PredictiveChecks) -> None:
     (item,) = [finding for finding in grouped.findings if finding.kind == "item_missed"]
     assert item.about == ("item_1",)
-    assert "cases answered" in item.message
+    assert item.message.startswith("item_1: 60 cases in north answered yes, where the model")
 
 
 def test_missing_answers_are_mentioned_where_something_is_missed(
@@ -340,5 +351,10 @@ def test_calibrated_p_values_are_ranks_among_simulated_studies(source: Any) -> N
     p = found.overall.set_index("check")["p_calibrated"]
     assert set(p) <= {0.25, 0.5, 0.75, 1.0}
     assert p["item_pairs"] == 0.25  # smaller than all three
-    assert "calibrated p 0.25" in found.verdict
-    assert found.reproduces  # with three studies nothing can be called missed
+    assert not found.reproduces  # three studies cannot make it small: p itself does
+    assert "pairs of items (posterior predictive p below 0.003)" in found.verdict
+
+
+def test_a_calibrated_p_is_the_one_that_is_judged() -> None:
+    assert judged_p({"p": 0.3, "p_calibrated": 0.02}) == 0.02
+    assert judged_p({"p": 0.3}) == 0.3

@@ -65,12 +65,28 @@ def test_the_residual_is_observed_less_expected_counts_in_errors() -> None:
     assert residual(ItemPairs((YES, MEETS)), (100 * p).tolist(), p.tolist()) == pytest.approx(0.0)
 
 
-def test_the_residual_of_an_unordered_pair_is_x2_in_its_own_errors() -> None:
-    p = np.array([0.2, 0.1, 0.3, 0.1, 0.2, 0.1])
-    counts = np.array([25, 5, 30, 10, 18, 12.0])
-    x2 = np.sum((counts - 100 * p) ** 2 / (100 * p))
-    found = residual(ItemPairs((TYPE, YES)), counts.tolist(), p.tolist())
-    assert found == pytest.approx((x2 - 5) / np.sqrt(10))
+def test_the_residual_of_an_unordered_pair_is_x2_of_independence_in_its_own_errors() -> None:
+    """With independent answers and both margins met, T is Pearson's X2 of independence."""
+    pa, pb = np.array([0.2, 0.5, 0.3]), np.array([0.4, 0.6])
+    p = np.outer(pa, pb).ravel()
+    moved = np.array([4.0, -4.0, -1.0, 1.0, -3.0, 3.0])
+    x2 = np.sum(moved**2 / (100 * p))
+    found = residual(ItemPairs((TYPE, YES)), (100 * p + moved).tolist(), p.tolist())
+    assert found == pytest.approx((x2 - 2) / np.sqrt(2 * 2))  # E T = df = 2 x 1
+
+
+@pytest.mark.parametrize("items", [(YES, MEETS), (TYPE, YES)])
+def test_missed_margins_alone_move_no_pair(items: tuple[Item, ...]) -> None:
+    pa = np.array([0.3, 0.7]) if items[0] is YES else np.array([0.3, 0.5, 0.2])
+    seen = np.array([0.6, 0.4]) if items[0] is YES else np.array([0.6, 0.2, 0.2])
+    pb = np.array([0.5, 0.5])
+    n = 200
+    found = residual(
+        ItemPairs(items),
+        (n * np.outer(seen, pb)).ravel().tolist(),
+        np.outer(pa, pb).ravel().tolist(),
+    )
+    assert found < 0.1
 
 
 @pytest.mark.parametrize("items", [(YES, MEETS), (SCALE, YES), (TYPE, SCALE), (TYPE, TYPE)])
@@ -82,8 +98,8 @@ def test_residuals_have_mean_0_and_variance_1_under_the_model(items: tuple[Item,
     found = ItemPairs(items).residuals(counts, p[None], np.array([[150.0]]))[:, 0, 0]
     assert abs(found.mean()) < 5 / np.sqrt(4000)
     fourth = np.mean((found - found.mean()) ** 4)
-    # X2 of few cases varies a little more than chi-square does: within 10 %
-    slack = 0.0 if ItemPairs(items).is_scored[0] else 0.1
+    # Without an order it is scaled like a chi-square, which it is under independence only
+    slack = 0.0 if ItemPairs(items).is_scored[0] else 0.3
     assert abs(found.var() - 1) < 5 * np.sqrt(fourth / 4000) + slack
 
 
