@@ -19,8 +19,9 @@ from scipy.special import xlogy
 from bayeslca._typing import Floats, Ints
 from bayeslca.responses.units import MISSING, Units
 
-MOST_CELLS = 20_000
-"""Intersections of one group; with more the saturated model is not fitted."""
+MOST_CELLS, MOST_UNITS = 20_000, 10_000
+"""Intersections and distinct answers of one group; with more, and answers missing, the saturated
+model is not fitted."""
 MOST_STEPS = 20_000
 CLOSE = 1e-6
 """The log likelihood is known to lie at most so much below the highest when EM ends."""
@@ -53,10 +54,11 @@ def saturated(units: Units) -> Saturated:
         if not (pattern == MISSING).any():
             total += float(xlogy(count, count / count.sum()).sum())
             continue
-        cells = _cells(pattern)
+        cells = _cells(pattern) if len(pattern) <= MOST_UNITS else None
         if cells is None:
             reason = (
-                f"the missing answers leave more than {MOST_CELLS:,} cells to the saturated model"
+                f"answers are missing, and the saturated model would have more than {MOST_CELLS:,} "
+                "cells to fit, or too many distinct answers to find them"
             )
             return Saturated(nan, nan, reason)
         value, left = _fit(cells, count)
