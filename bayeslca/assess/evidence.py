@@ -6,8 +6,10 @@ normalised over labelled parameters. Whether a figure is to be trusted is part o
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+import threading
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from itertools import pairwise
 from typing import TYPE_CHECKING
 
@@ -26,14 +28,17 @@ from bayeslca.assess.mode_evidence import (
 from bayeslca.assess.model_evidence import SIZES, Estimate
 from bayeslca.assess.modes import largest_r_hat
 from bayeslca.exceptions import ModelError
+from bayeslca.sampling.threads import default_threads, on_threads
 
 if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
 
 MOST_ERROR = 0.5
 """A log evidence with a larger Monte Carlo error is not given as reliable."""
-WANTED_ERROR = 0.1
+WANTED_ERROR = 0.15
 """Bridges take larger proposals until the joined error is below this."""
+WORTH_IT = 0.8
+"""A still larger proposal is tried where the last one took the error down to this share of it."""
 GUARD_ERRORS = 4.0
 """Standard errors by which a guarding estimate may differ."""
 
@@ -123,19 +128,25 @@ def _evidences(
     streams = dict(zip(posteriors, rng.spawn(len(posteriors)), strict=True))
     modes: dict[int, tuple[ModeEvidence, ...]] = {}
     refused: dict[int, str] = {}
-    for k, posterior in posteriors.items():
+
+    def weigh(k: int, size: int = 0) -> None:
         try:
-            modes[k] = evidence_of_modes(posterior, streams[k])
+            modes[k] = evidence_of_modes(posteriors[k], streams[k], size=size)
         except ModelError as error:
             refused[k] = str(error)
+
+    _on_threads(weigh, list(posteriors))
     estimates = {k: summed(modes[k]) if k in modes else () for k in posteriors}
     steps = _steps(posteriors, neighbours, rng)
     joined = _joined(estimates, steps)
+    vague = _too_vague(estimates, joined)
     for size in range(1, len(SIZES)):
-        for k in _too_vague(estimates, joined):
-            modes[k] = evidence_of_modes(posteriors[k], streams[k], size=size)
-            estimates[k] = summed(modes[k])
-            joined = _joined(estimates, steps)
+        before = {k: estimates[k][0].mcse for k in vague}
+        _on_threads(partial(weigh, size=size), vague)
+        estimates |= {k: summed(modes[k]) for k in vague}
+        joined = _joined(estimates, steps)
+        helped = {k for k in vague if estimates[k][0].mcse < WORTH_IT * before[k]}
+        vague = [k for k in _too_vague(estimates, joined) if k in helped]
     found = {
         k: _judged(k, posterior, estimates[k], steps, joined, refused.get(k, ""))
         for k, posterior in posteriors.items()
@@ -144,6 +155,12 @@ def _evidences(
         if len(several) > 1:
             found[k] = replace(found[k], modes=several)
     return found, joined
+
+
+def _on_threads(work: Callable[[int], None], counts: Sequence[int]) -> None:
+    """Do the work for every count: most of it lets other threads run."""
+    stop = threading.Event()
+    on_threads(work, counts, threads=default_threads(), stop=stop)
 
 
 def _steps(
