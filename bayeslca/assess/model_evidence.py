@@ -35,6 +35,8 @@ from bayeslca.assess.conditionals import (
 )
 from bayeslca.assess.proposal import Labels, Proposal, labels_of
 from bayeslca.exceptions import ModelError
+from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
+from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.prior_density import log_prior
 from bayeslca.model.probabilities import log_unit_likelihood
 
@@ -94,7 +96,11 @@ def model_estimates(
     if posterior.draws.n_draws * posterior.draws.n_chains < LEAST_DRAWS:
         msg = f"there are fewer than {LEAST_DRAWS} draws"
         raise ModelError(msg)
-    free = FreeParameters(posterior.table, posterior.model.prevalence_source)
+    source: PrevalenceSource = posterior.model.prevalence_source
+    if not isinstance(source, DirichletPrevalence | ConstrainedPrevalence):
+        msg = f"no evidence is offered where prevalences come from {type(source).__name__}"
+        raise ModelError(msg)
+    free = FreeParameters(posterior.table, source)
     exact = log_evidence_of_one_class(free, posterior.unit_table)
     if exact is not None:
         return (Estimate("exact", exact, 0.0),)
@@ -211,7 +217,7 @@ def _ordinate(
         largest_count = weights.sum() ** 2 / np.sum(weights**2)
         effective = min(effective, n, float(largest_count))
     why_not = "few draws decide" if effective < LEAST_EFFECTIVE else ""
-    error = float(np.hypot(*errors)) / 2.0
+    error = float(np.hypot(errors[0], errors[1])) / 2.0
     return Estimate("ordinate", float(np.mean(values)), error, why_not)
 
 

@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 import pytest
-from scipy.special import gammaln
+from scipy.special import betaln, gammaln
 
 from bayeslca.assess.empty_class_ladder import can_be_joined, ladder_step, rung_of
 from bayeslca.assess.evidence import log_evidence, log_evidence_of_counts
@@ -314,6 +314,65 @@ def test_equal_and_known_probabilities() -> None:
         known={(0, 0): (0.1, 0.9)},
     )
     check(responses, model, exact)
+
+
+def test_equal_answers_of_items_with_different_numbers_of_categories() -> None:
+    # p(fees=yes) = p(source=a) in class one: Beta(1, 1) and the Beta(1, 3) margin of a uniform
+    # Dirichlet given equality are Beta(1, 3); the other sources keep their uniform shares.
+    responses = small(grouped=False)
+    model = LatentClassModel(
+        responses.items, ("one", "two"), ("P(fees=yes | one) = P(source=a | one)",)
+    )
+    terms = []
+    for classes in product(range(2), repeat=len(ROWS)):
+        log_p = _dirichlet_multinomial(np.bincount(classes, minlength=2), 1.0)
+        for k in range(2):
+            counts = [np.zeros(len(values)) for values in CATEGORIES]
+            for (_, answers), mine in zip(ROWS, classes, strict=True):
+                for item, answer in enumerate(answers):
+                    if mine == k and answer is not None:
+                        counts[item][CATEGORIES[item].index(answer)] += 1
+            fees, trust, source = counts
+            log_p += _dirichlet_multinomial(trust, 1.0)
+            if k == 1:
+                log_p += _dirichlet_multinomial(fees, 1.0) + _dirichlet_multinomial(source, 1.0)
+                continue
+            tied, rest = fees[1] + source[0], fees[0] + source[1:].sum()
+            log_p += float(betaln(1 + tied, 3 + rest) - betaln(1, 3))
+            log_p += _dirichlet_multinomial(source[1:], 1.0)
+        terms.append(log_p)
+    check(responses, model, float(np.logaddexp.reduce(terms)))
+
+
+def test_equal_and_known_prevalences() -> None:
+    responses = small(grouped=True)
+    model = LatentClassModel(
+        responses.items,
+        ("one", "two"),
+        ("P(one | district=north) = 0.3", "P(fees=yes | one) = 0.9"),
+        groups=responses.groups,
+    )
+    terms = []
+    for classes in product(range(2), repeat=len(ROWS)):
+        inside = [
+            [k for (g, _), k in zip(ROWS, classes, strict=True) if g == group]
+            for group in ("north", "south")
+        ]
+        log_p = float(np.sum(np.log([(0.3, 0.7)[k] for k in inside[0]])))
+        log_p += _dirichlet_multinomial(np.bincount(inside[1], minlength=2), 1.0)
+        for k in range(2):
+            for item, values in enumerate(CATEGORIES):
+                given = [
+                    values.index(answers[item])
+                    for (_, answers), mine in zip(ROWS, classes, strict=True)
+                    if mine == k and answers[item] is not None
+                ]
+                if (item, k) == (0, 0):
+                    log_p += float(np.sum(np.log([(0.1, 0.9)[at] for at in given])))
+                else:
+                    log_p += _dirichlet_multinomial(np.bincount(given, minlength=len(values)), 1.0)
+        terms.append(log_p)
+    check(responses, model, float(np.logaddexp.reduce(terms)))
 
 
 def test_a_known_probability_of_one_class_has_a_closed_form() -> None:

@@ -12,6 +12,7 @@ import pytest
 
 from bayeslca.assess.class_count_words import evidence_in_words, strength
 from bayeslca.assess.class_counts import ClassCounts, checked_prior, class_counts
+from bayeslca.assess.compare import compare_class_counts
 from bayeslca.assess.conditionals import FreeParameters, conditional_parameters
 from bayeslca.assess.evidence import log_evidence
 from bayeslca.assess.proposal import Proposal, labels_of
@@ -61,6 +62,37 @@ def test_probabilities_follow_from_evidences_and_prior() -> None:
     assert table.loc[2, "log_bayes_factor"] == pytest.approx(
         table.loc[2, "log_evidence"] - table.loc[1, "log_evidence"]
     )
+
+
+def test_the_comparison_has_the_evidence_of_every_row() -> None:
+    own = LatentClassModel(responses().items, ("a", "b"), ("a is where P(fees=yes) is highest",))
+    found = compare_class_counts(
+        responses(),
+        [1, 2],
+        fitted={k: fitted(k) for k in (1, 2)},
+        own=own,
+        seed=SEED,
+        prior_on_count={1: 1.0, 2: 3.0},
+        **QUICK,
+    )
+    table = found.table
+    assert table["log_evidence"].notna().all()
+    assert table["probability"].isna().tolist() == [False, False, True]
+    assert table["probability"].iloc[:2].sum() == pytest.approx(1.0)
+    assert found.class_counts is not None
+    assert found.class_counts.table["prior"].tolist() == [0.25, 0.75]
+    # A naming rule picks a label and changes nothing else: the evidence is that of two classes.
+    gap = table["log_evidence"].iloc[2] - table["log_evidence"].iloc[1]
+    assert abs(gap) < 4 * np.hypot(*table["log_evidence_mcse"].iloc[1:])
+    assert "P(number | answers)" in repr(found)
+    assert max(map(len, repr(found).splitlines())) <= 80
+    assert found.verdict.endswith(found.class_counts.verdict)
+    assert "<th>Log evidence</th>" in found._repr_html_()
+
+
+def test_a_wrong_prior_is_refused_before_anything_is_sampled() -> None:
+    with pytest.raises(ModelError, match="each of 1, 2"):
+        compare_class_counts(responses(), [1, 2], prior_on_count={1: 1.0}, **QUICK)
 
 
 def test_the_same_posteriors_give_the_same_evidence() -> None:
