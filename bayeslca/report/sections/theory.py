@@ -7,6 +7,7 @@ from collections.abc import Sequence
 
 from bayeslca.assess.grades import SOURCE, bayes_factor_text
 from bayeslca.assess.hypotheses import HypothesisTest
+from bayeslca.assess.rivals import Rivals
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -124,8 +125,14 @@ def _claim_row(claim: Claim) -> tuple[str, ...]:
     )
 
 
-def _plain(side: str, log_bayes_factor: float) -> str:
-    return side + bayes_factor_text(log_bayes_factor)
+def _plain(side: str, log_bayes_factor: object) -> str:
+    return side + bayes_factor_text(float(str(log_bayes_factor)))
+
+
+def _rival_bound(rivals: Rivals, name: str) -> str:
+    """Return "below " where too few draws decide about a rival."""
+    test = rivals.tests.get(name)
+    return "below " if test is not None and test.bound == "below" else ""
 
 
 def _rivals(facts: Facts) -> list[Block]:
@@ -142,7 +149,7 @@ def _rivals(facts: Facts) -> list[Block]:
                 str(row["hypothesis"]),
                 percent(float(str(row["prior_weight"]))),
                 percent(float(str(row["posterior_weight"]))),
-                bayes_factor_text(float(str(row["log_bayes_factor"]))),
+                _plain(_rival_bound(rivals, str(row["hypothesis"])), row["log_bayes_factor"]),
             )
             for row in records(rivals.table.reset_index())
         )

@@ -51,7 +51,7 @@ def section(made: SimpleNamespace, small: Posterior) -> Section:
             },
             index=pd.Index(["one", "two"], name="hypothesis"),
         ),
-        {},
+        {"two": made_test(-0.8, bound="below")},
         (),
     )
     quantities = small.quantities({"gap": "P(item_1=yes | managed) - P(item_1=yes | lapsed)"})
@@ -85,7 +85,8 @@ def test_what_was_not_planned_stands_under_its_own_heading(section: Section) -> 
 
 def test_rivals_and_quantities_have_their_tables(section: Section) -> None:
     tables = {block.caption: block for block in section.blocks if isinstance(block, PageTable)}
-    assert tables["Rivals: pay"].rows[0][:3] == ("one", "50 %", "80 %")
+    assert tables["Rivals: pay"].rows[0] == ("one", "50 %", "80 %", "2.72")
+    assert tables["Rivals: pay"].rows[1][-1] == "below 0.67"
     ((name, after, *_),) = tables["Quantities that the study asks for"].rows
     assert name == "gap"
     assert " to " in after
