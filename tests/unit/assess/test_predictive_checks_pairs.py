@@ -103,6 +103,14 @@ def test_residuals_have_mean_0_and_variance_1_under_the_model(items: tuple[Item,
     assert abs(found.var() - 1) < 5 * np.sqrt(fourth / 4000) + slack
 
 
+def test_an_unordered_pair_that_hangs_together_as_expected_is_not_off() -> None:
+    p = (np.eye(3) * 0.26 + 0.06 * (1 - np.eye(3))).ravel()
+    p /= p.sum()
+    counts = np.random.default_rng(8).multinomial(150, p, size=4000).astype(float)[:, None]
+    found = ItemPairs((TYPE, TYPE)).residuals(counts, p[None], np.array([[150.0]]))[:, 0, 0]
+    assert abs(found.mean()) < 5 * found.std() / np.sqrt(4000)
+
+
 def test_something_that_cannot_vary_is_not_off() -> None:
     assert residual(ItemPairs((YES, MEETS)), [10, 0, 0, 0], [1.0, 0.0, 0.0, 0.0]) == 0.0
 
