@@ -64,7 +64,7 @@ class BayesLCAWarning(UserWarning):
     """Something the analyst should know; also kept as a finding."""
 
 
-def near_names(name: str, known: Iterable[str], *, most: int = 3) -> str:
+def near_names(name: str, known: Iterable[str], *, most: int = 3, likeness: float = 0.6) -> str:
     """Return `` (near names: 'a', 'b')`` for a name that was not found, or ''.
 
     Parameters
@@ -75,9 +75,11 @@ def near_names(name: str, known: Iterable[str], *, most: int = 3) -> str:
         The names that exist.
     most : int
         How many to suggest at the most.
+    likeness : float
+        How alike they must be, from 0 to 1; more for names that share an ending.
     """
     by_folded = {candidate.casefold(): candidate for candidate in known}
-    close = difflib.get_close_matches(name.casefold(), list(by_folded), n=most, cutoff=0.6)
+    close = difflib.get_close_matches(name.casefold(), list(by_folded), n=most, cutoff=likeness)
     if not close:
         return ""
     return " (near names: " + ", ".join(repr(by_folded[name]) for name in close) + ")"

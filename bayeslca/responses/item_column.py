@@ -340,7 +340,12 @@ class ItemColumn:
         if not suspects:
             return False
         found = {name: counts[name] for name in suspects}
-        kept = order_categories([name for name in counts if name not in suspects]).categories
+        answers = [name for name in counts if name not in suspects]
+        for same in spelling_variants(answers):
+            answers = [
+                name for name in answers if name not in same or name == cleanest(same, counts)
+            ]
+        kept = order_categories(answers).categories
         named = ", ".join(repr(name) for name in suspects)
         self._problem(
             f"{listed_with_counts(found)} in {self._place(suspects, name_of)} "

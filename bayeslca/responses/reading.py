@@ -107,7 +107,8 @@ def _check_path(path: Path, ending: str) -> None:
     if not path.exists():
         there = [other.name for other in path.parent.iterdir()] if path.parent.is_dir() else []
         where = "" if path.parent.is_dir() else f" (nor the folder {path.parent})"
-        msg = f"{path}: there is no such file{where}{near_names(path.name, there)}. Check the path."
+        near = near_names(path.name, there, likeness=0.75)
+        msg = f"{path}: there is no such file{where}{near}. Check the path."
         raise ResponsesError(msg)
     if ending not in known:
         remedy = REMEDIES.get(ending, "Save it as one of these.")

@@ -170,7 +170,7 @@ def closing_lines(responses: Responses) -> list[str]:
         lines.append(f"{aside} without any answer set aside")
     others = [f for f in responses.findings if f.kind != "cases_set_aside"]
     if others:
-        lines.append(f"{_several(len(others), 'note')} from reading: see .findings")
+        lines.append(f"{_several(len(others), 'note')} from reading (findings)")
     return lines
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import textwrap
 from pathlib import Path
 
 from bayeslca.model.resolve import resolve
@@ -9,6 +10,7 @@ from bayeslca.model.resolved import ResolvedRelations
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.study.results import open_results
 
+WIDTH = 79
 NOT_TRUSTED = "The sampling it rests on is not to be trusted: see the report."
 
 
@@ -21,7 +23,12 @@ def ask(folder: Path, *texts: str) -> str:
         When the results cannot be opened, or a statement cannot be used.
     """
     posterior = Posterior.load(open_results(folder).main_fit)
-    answers = [_answer(posterior, text) for text in texts]
+    answers = [
+        textwrap.fill(
+            _answer(posterior, text), WIDTH, break_long_words=False, break_on_hyphens=False
+        )
+        for text in texts
+    ]
     if not posterior.diagnostics().trustworthy:
         answers.append(NOT_TRUSTED)
     return "\n".join(answers)

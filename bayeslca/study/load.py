@@ -12,7 +12,7 @@ from typing import Any
 
 from pydantic import BaseModel, ValidationError
 
-from bayeslca.exceptions import StatementError, StudyError, near_names
+from bayeslca.exceptions import ModelError, StatementError, StudyError, near_names
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.resolve import read_statements
 from bayeslca.model.vocabulary import Vocabulary
@@ -103,14 +103,34 @@ class Study:
         if classes is None:
             self._refuse_open_statements()
             return None
-        return LatentClassModel(
-            self.responses.items,
-            classes if isinstance(classes, int) else tuple(classes),
-            statements=self.statements,
-            groups=self.responses.groups,
-            statement_sources=self.statement_sources,
-            free_by_group=self.free_by_group,
-        )
+        responses = self.responses
+        try:
+            return LatentClassModel(
+                responses.items,
+                classes if isinstance(classes, int) else tuple(classes),
+                statements=self.statements,
+                groups=responses.groups,
+                statement_sources=self.statement_sources,
+                free_by_group=self.free_by_group,
+            )
+        except StatementError as error:
+            problem = f"{self._where_stated(error.statement)}: {error.problem}"
+            raise StatementError(
+                problem,
+                statement=error.statement,
+                position=error.position,
+                remedy=error.remedy,
+            ) from None
+        except ModelError as error:
+            msg = f"{_where(self.path, self.text, ('model',))}: {error}"
+            raise ModelError(msg) from None
+
+    def _where_stated(self, statement: str) -> str:
+        """Say in which line of the file a statement stands, as far as that can be found."""
+        for number, line in enumerate(self.text.splitlines(), start=1):
+            if statement in line:
+                return f"{self.path.name}, line {number}"
+        return _where(self.path, self.text, ("model", "statements"))
 
     def _refuse_open_statements(self) -> None:
         """Statements about named classes need the classes."""
@@ -183,7 +203,7 @@ def _read_text(path: Path) -> str:
     except FileNotFoundError:
         there = [other.name for other in path.parent.glob("*.toml")] if path.parent.is_dir() else []
         msg = (
-            f"{path}: no such study file{near_names(path.name, there)}. "
+            f"{path}: no such study file{near_names(path.name, there, likeness=0.75)}. "
             "`bayeslca draft DATA -o study.toml` writes a first one."
         )
         raise StudyError(msg) from None

@@ -131,14 +131,18 @@ WRONG = [
     (
         "managed is where P(fees=yes) is highest",
         "managed is where P(fees=maybe) is highest",
-        ["'maybe'", "Its categories are", "^"],
+        ["study.toml, line 11", "'maybe'", "Its categories are", "^"],
     ),
     (
         "managed is where P(fees=yes) is highest",
         "P(fees=yes | managd) ~ Beta(2, 2)",
         ["'managd'", "near names: 'managed'", "^"],
     ),
-    ('["managed is where P(fees=yes) is highest"]', "[]", ["nothing in the study tells"]),
+    (
+        '["managed is where P(fees=yes) is highest"]',
+        "[]",
+        ["study.toml, line 9, model: nothing in the study tells"],
+    ),
     ('["managed is where P(fees=yes) is highest"]', "[1]", ["[model] statements", "1"]),
     (
         '["managed is where P(fees=yes) is highest"]',
