@@ -66,6 +66,14 @@ COLUMNS: dict[str, Column] = {
     "prior_mean": Column("Prior mean", "expected before the answers", "share"),
     "prior_lower": Column("Prior from", "lower end of the prior's interval", "share"),
     "prior_upper": Column("Prior to", "upper end of the prior's interval", "share"),
+    "prior_lower_50": Column(
+        "Prior from, 50 %", "lower end of the 50 % interval before the data", "number"
+    ),
+    "prior_upper_50": Column("Prior to, 50 %", "its upper end", "number"),
+    "prior_lower_95": Column(
+        "Prior from, 95 %", "lower end of the 95 % interval before the data", "number"
+    ),
+    "prior_upper_95": Column("Prior to, 95 %", "its upper end", "number"),
     "prior_cases": Column(
         "Weight", "the cases that the prior counts for (sum of its parameters)", "number"
     ),

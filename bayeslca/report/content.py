@@ -149,7 +149,8 @@ class WrittenReport:
     tables : mapping of str to Path
         ``tables/<name>.csv`` by name: ``prevalence``, ``response_probabilities``,
         ``membership_of_patterns``, ``assignment_error``, ``separation``, ``diagnostics``,
-        ``class_counts`` (when compared), ``answers`` (what was observed), ``priors``, ``columns``
+        ``class_counts`` (when compared), ``answers`` (what was observed), ``priors``,
+        ``prior_predictive`` (what the priors imply before the data), ``columns``
         (what every column means).
     figures : mapping of str to Path
         ``figures/<name>.png`` and ``figures/<name>.svg`` by file name.

@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.assess.convergence import Diagnostics
+    from bayeslca.model.prior_predictive import PriorPredictive
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.units import Units
 
@@ -23,6 +24,9 @@ TEST_RESULTS = frozenset(
     {"positive", "negative", "pos", "neg", "+", "-", "reactive", "non-reactive", "nonreactive"}
 )
 """Answers that make an item look like a diagnostic test."""
+PRIOR_SEED = 1
+PRIOR_DRAWS, FEWEST_PRIOR_DRAWS, PRIOR_ANSWERS = 1000, 200, 2_000_000
+"""Studies drawn from the prior: fewer where they are large, so that it takes about a second."""
 
 
 @dataclass(frozen=True)
@@ -101,6 +105,16 @@ class Facts:
     def ruled(self) -> frozenset[tuple[str, str]]:
         """The (class, item) pairs that rest mostly on the prior."""
         return ruled_by_prior(self.posterior)
+
+    @cached_property
+    def prior_predictive(self) -> PriorPredictive:
+        """What the priors imply for a study like this one, beside what was observed."""
+        responses = self.posterior.responses
+        n_answers = self.n_cases * len(responses.items)
+        draws = min(PRIOR_DRAWS, max(FEWEST_PRIOR_DRAWS, PRIOR_ANSWERS // n_answers))
+        return self.posterior.model.prior_predictive(
+            responses=responses, draws=draws, seed=PRIOR_SEED
+        )
 
     @property
     def n_missing(self) -> int:

@@ -88,14 +88,14 @@ def plot_profile(
     ax = ax if ax is not None else new_axes(7.0, profile_height(posterior, chosen))
     table = _keyed(_one_group(posterior.response_probabilities(interval=interval), group))
     names = posterior.model.class_names
-    offsets = _dodge(len(names))
+    offsets = dodge(len(names))
     for at in range(0, len(rows), 2):
         ax.axhspan(at - 0.5, at + 0.5, color=BAND, zorder=0, linewidth=0)
     for k, name in enumerate(names):
         cells = [table[(name, item.name, category)] for item, category in rows]
         places = np.arange(len(rows)) + offsets[k]
         _points(ax, cells, places, k, label=plain(called(name), LABEL_WIDTH, 1))
-    ax.set_yticks(range(len(rows)), [_row_label(item, category) for item, category in rows])
+    ax.set_yticks(range(len(rows)), [row_label(item, category) for item, category in rows])
     ax.set_ylim(len(rows) - 0.5, -0.5)
     percent_axis(ax, f"Probability given the class ({level(interval)} interval)")
     legend_above(ax, len(names))
@@ -276,11 +276,13 @@ def _keyed(frame: pd.DataFrame) -> dict[tuple[str, str, str], dict[str, float]]:
     }
 
 
-def _row_label(item: Item, category: str) -> str:
+def row_label(item: Item, category: str) -> str:
+    """Return how a row of a profile is called: the item, and its answer where that is not yes."""
     if item.n_categories == 2 and item.yes is not None and item.yes.casefold() == "yes":
         return plain(item.text, LABEL_WIDTH)
     return plain(f"{item.text}: {category}", LABEL_WIDTH)
 
 
-def _dodge(count: int) -> Any:
+def dodge(count: int) -> Any:
+    """Return how far the marks of each class stand from the middle of their row."""
     return (np.arange(count) - (count - 1) / 2) * min(0.2, 0.8 / max(count, 1))

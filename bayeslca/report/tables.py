@@ -15,6 +15,7 @@ from bayeslca.report.wording import level
 if TYPE_CHECKING:
     import pandas as pd
 
+    from bayeslca.model.prior_predictive import PriorPredictive
     from bayeslca.report.content import ReportContent
 
 
@@ -37,8 +38,23 @@ class FileTable:
     frame: pd.DataFrame
 
 
-def file_tables(content: ReportContent) -> tuple[FileTable, ...]:
-    """Return all tables of a report; none holds a single case's name or answers."""
+PRIOR_NAMES = {
+    name: f"prior_{name}"
+    for name in ("median", "mean", "lower_50", "upper_50", "lower_95", "upper_95")
+}
+
+
+def file_tables(
+    content: ReportContent, prior: PriorPredictive | None = None
+) -> tuple[FileTable, ...]:
+    """Return all tables of a report; none holds a single case's name or answers.
+
+    Parameters
+    ----------
+    content : ReportContent
+    prior : PriorPredictive, optional
+        What the priors imply; its table is left out when not given.
+    """
     posterior, interval = content.posterior, content.interval
     named: dict[str, tuple[str, pd.DataFrame]] = {
         "prevalence": ("How common each class is", posterior.prevalence(interval=interval)),
@@ -58,6 +74,11 @@ def file_tables(content: ReportContent) -> tuple[FileTable, ...]:
         "answers": ("What was answered", content.responses.summary()),
         "diagnostics": ("How the sampling went", posterior.diagnostics().table),
     }
+    if prior is not None:
+        named["prior_predictive"] = (
+            "What the priors imply before the data",
+            prior.table.rename(columns=PRIOR_NAMES),
+        )
     if content.comparison is not None:
         named["class_counts"] = (
             "How well models with different numbers of classes predict",

@@ -60,7 +60,7 @@ def write_report(content: ReportContent, folder: Path) -> WrittenReport:
         encoding="utf-8",
         newline="\n",
     )
-    tables = file_tables(content)
+    tables = file_tables(content, facts.prior_predictive)
     workbook = folder / "tables.xlsx"
     warning = "" if trusted else "Not to be trusted yet: see the sheet read me."
     write_workbook(workbook, tables, _notes(facts), warning=warning)

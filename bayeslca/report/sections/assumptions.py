@@ -14,6 +14,7 @@ from bayeslca.report.blocks import (
 )
 from bayeslca.report.facts import Facts
 from bayeslca.report.priors import HEAVY, PriorWeight, distribution, prior_weights
+from bayeslca.report.sections.prior_predictive import prior_blocks
 from bayeslca.report.wording import (
     called,
     counted,
@@ -38,6 +39,7 @@ def assumptions_section(facts: Facts) -> Section:
         Subheading("What the priors weigh"),
         Paragraph(weights_in_words(facts)),
         _weights_table(facts),
+        *prior_blocks(facts),
         Verbatim(model.describe(facts.content.responses), "The whole model in words"),
     ]
     noticed = _noticed(facts)

@@ -19,6 +19,7 @@ from bayeslca.report.sections import (
     limits,
     membership,
     prevalence,
+    prior_predictive,
     reproduce,
     sampling,
 )
@@ -74,7 +75,7 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     yield _best_solution(facts)
     yield _converged(facts)
     yield _priors(facts)
-    yield _open("What did the priors imply before the data?", "BARG 1E; WAMBS 1")
+    yield _implied(facts)
     yield _open(
         "Would other priors have changed the answer?",
         _items("BARG 5A-5C; WAMBS 7-9", "14b", facts),
@@ -164,6 +165,15 @@ def _priors(facts: Facts) -> Answered:
         f"{text} {assumptions.weights_in_words(facts)}",
         (_PRIORS,),
         _items("BARG 1C; WAMBS 1", "14b", facts),
+    )
+
+
+def _implied(facts: Facts) -> Answered:
+    return Answered(
+        "What did the priors imply before the data?",
+        prior_predictive.implied_in_words(facts),
+        (_PRIORS,),
+        "BARG 1E; WAMBS 1",
     )
 
 
