@@ -120,13 +120,14 @@ class HypothesisTest:
         else:
             factor += f" (error {_error(self.log_bayes_factor_mcse)})"
         if math.isnan(self.posterior_probability):
-            return f"{self.text}: Bayes factor {factor} against the model; {self.grade} ({SOURCE})."
+            words = f"{self.grade}, as graded by {SOURCE}"
+            return f"{self.text}: Bayes factor {factor} against the model; {words}."
         other = bayes_factor_text(self.log_bayes_factor_against_complement)
         side = {"": "", "below": "below ", "above": "more than "}[self.bound]
         return (
             f"{self.text} has the probability {_share(self.posterior_probability)} after the data "
             f"and {_share(self.prior_probability)} before: Bayes factor {factor} against the "
-            f"model, {side}{other} against its opposite; {self.grade} ({SOURCE})."
+            f"model, {side}{other} against its opposite; {self.grade}, as graded by {SOURCE}."
         )
 
 
