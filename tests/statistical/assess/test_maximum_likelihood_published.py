@@ -147,6 +147,8 @@ def test_goodmans_scale_model() -> None:
     assert fit.g2 == pytest.approx(truth["value"], abs=DIGITS)
     assert round(fit.g2, 2) == printed["value"]
     assert fit.df == printed["df"]
+    # Known answers are no estimates, whatever their value.
+    assert all("unscalable" in name for name in fit.boundary)
     shares = fit.prevalence["estimate"].to_numpy()
     expected = [*truth["scale_type_weights"], truth["unscalable_weight"]]
     assert_allclose(shares, expected, atol=DIGITS)
@@ -265,3 +267,33 @@ def test_boundary_estimates_are_named() -> None:
     at_edge = fitted(TABLES[1], 2).response_probability.query("at_boundary")
     assert at_edge["standard_error"].isna().all()
     assert len(at_edge) == 10
+
+
+def test_errors_take_boundary_estimates_as_known() -> None:
+    free = fitted(TABLES[1], 2)
+    known = [
+        "P(rater_a=1 | one) = 1",
+        "P(rater_g=1 | one) = 1",
+        *(f"P(rater_{rater}=1 | two) = 0" for rater in "cdf"),
+    ]
+    model = LatentClassModel(free.model.items, ("one", "two"), known)
+    stated = model.maximum_likelihood(responses_of(TABLES[1]), starting_points=20, seed=SEED)
+    assert stated.log_likelihood == pytest.approx(free.log_likelihood, abs=1e-6)
+    assert not stated.boundary
+    inside = ~free.response_probability["at_boundary"]
+    assert inside.sum() == 18
+    assert_allclose(
+        free.response_probability["standard_error"][inside],
+        stated.response_probability["standard_error"][inside],
+        rtol=1e-4,
+    )
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_the_best_run_is_taken(seed: int) -> None:
+    # Four classes: about a third of the runs reach the best maximum (log likelihood -289.2858).
+    responses = responses_of(TABLES[1])
+    model = LatentClassModel(responses.items, 4)
+    fit = model.maximum_likelihood(responses, starting_points=25, seed=seed)
+    assert fit.log_likelihood == pytest.approx(-289.2858, abs=DIGITS)
+    assert 1 <= fit.reached_best < 25

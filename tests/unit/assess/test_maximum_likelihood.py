@@ -490,6 +490,23 @@ def test_orders_of_no_are_orders_of_yes() -> None:
     assert_allclose(found, found[0], atol=1e-6)
 
 
+def test_a_chain_stated_by_yes_and_by_no_is_one_chain() -> None:
+    responses = answers()
+    found = [
+        LatentClassModel(ITEMS, ("a", "b", "c"), statements)
+        .maximum_likelihood(responses, starting_points=20, seed=1)
+        .response_probability.query("item == 'fees' and category == 'yes'")["estimate"]
+        .to_numpy()
+        for statements in (
+            ["P(fees=yes | a) > P(fees=yes | b)", "P(fees=yes | b) > P(fees=yes | c)"],
+            ["P(fees=yes | a) > P(fees=yes | b)", "P(fees=no | b) < P(fees=no | c)"],
+        )
+    ]
+    for yes in found:
+        assert np.all(np.diff(yes) <= 1e-9)
+    assert_allclose(found[0], found[1], atol=1e-3)
+
+
 def test_active_constraints_are_named_and_have_no_error() -> None:
     responses = answers(missing=0.0)
     free = stated("free").maximum_likelihood(responses, starting_points=20, seed=1)
