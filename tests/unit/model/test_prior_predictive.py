@@ -132,7 +132,7 @@ def test_classes_without_names_all_have_the_same_prior() -> None:
         pd.testing.assert_frame_equal(parts[0], parts[1])
         pd.testing.assert_frame_equal(parts[0], parts[2])
     assert_distributed(row(found.prevalence, latent_class="2"), stats.beta(1, 2), 2000)
-    assert "any class" in repr(found)
+    assert repr(found).count("any class") == 1 + 2  # a share, and an answer of each item
 
 
 def test_groups_have_rows_of_their_own_and_overall_is_weighted_by_size() -> None:
@@ -164,15 +164,18 @@ def test_groups_have_rows_of_their_own_and_overall_is_weighted_by_size() -> None
 
 
 def test_distinct_patterns_and_scores_of_a_tiny_study_by_enumeration() -> None:
-    """Two cases, two items, one class with known P(yes) = 1/4 and 1/2: all 16 outcomes."""
+    """Two cases, two items, one class with known P(yes) = 1/4 and 1/10: all 16 outcomes."""
     model = LatentClassModel(
         (FEES, MEETS),
         ("all",),
-        statements=("P(fees=yes | all) = 0.25", "P(meets=yes | all) = 0.5"),
+        statements=("P(fees=yes | all) = 0.25", "P(meets=yes | all) = 0.1"),
     )
     n = 3000
     found = model.prior_predictive(2, draws=n, seed=7)
-    one_case = {(f, m): (0.25 if f else 0.75) * 0.5 for f, m in itertools.product((0, 1), repeat=2)}
+    one_case = {
+        (f, m): (0.25 if f else 0.75) * (0.1 if m else 0.9)
+        for f, m in itertools.product((0, 1), repeat=2)
+    }
     patterns, scores, means, sds = 0.0, np.zeros(3), 0.0, 0.0
     for (a, p), (b, q) in itertools.product(one_case.items(), repeat=2):
         patterns += p * q * len({a, b})
@@ -237,12 +240,33 @@ def test_missing_answers_are_missing_in_the_simulated_studies_too() -> None:
 def test_an_item_that_nobody_answers_has_no_margin() -> None:
     codes = np.array([[0, -1], [1, -1]], dtype=np.int16)
     responses = Responses(items=(FEES, MEETS), codes=codes, counts=np.ones(2, dtype=np.int64))
-    found = LatentClassModel(responses.items, 1).prior_predictive(
-        responses=responses, draws=20, seed=9
-    )
+    with np.errstate(all="raise"):
+        found = LatentClassModel(responses.items, 1).prior_predictive(
+            responses=responses, draws=20, seed=9
+        )
     margins = found.item_margins.set_index("item")
     assert margins.loc["meets"].drop(columns="category").isna().all(axis=None)
     assert not margins.loc["fees"].isna().any(axis=None)
+
+
+def test_groups_of_the_responses_are_those_of_the_simulated_studies() -> None:
+    """Hill has no fees, plain nothing but fees: each case's group decides what it answers."""
+    frame = pd.DataFrame({"fees": ["yes"] * 3 + ["no"], "district": ["hill"] * 3 + ["plain"]})
+    responses = Responses.from_frame(frame, items=["fees"], group="district")
+    model = LatentClassModel(
+        responses.items,
+        ("all",),
+        groups=responses.groups,
+        free_by_group=True,
+        statements=(
+            "P(fees=yes | all, district=hill) = 0",
+            "P(fees=yes | all, district=plain) = 1",
+        ),
+    )
+    found = model.prior_predictive(responses=responses, draws=20, seed=1)
+    margin = row(found.item_margins, item="fees", category="yes")
+    assert margin["lower_95"] == margin["upper_95"] == 1 / 4
+    assert margin["observed"] == 3 / 4
 
 
 def test_items_without_an_order_add_nothing_to_a_sum_score() -> None:

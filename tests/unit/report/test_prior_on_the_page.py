@@ -12,6 +12,7 @@ import pytest
 from matplotlib.collections import LineCollection
 from matplotlib.figure import Figure as Drawing
 
+from bayeslca import Item, LatentClassModel
 from bayeslca.exceptions import ModelError
 from bayeslca.report.blocks import PageTable, Paragraph, Picture, Questions, Subheading
 from bayeslca.report.columns import COLUMNS
@@ -85,6 +86,10 @@ def test_markers_and_colours_tell_the_classes_apart(facts: Facts) -> None:
 def test_a_posterior_of_another_model_is_refused(facts: Facts, mixed: Any) -> None:
     with pytest.raises(ModelError, match="different models"):
         plot_prior_predictive(facts.prior_predictive, mixed, ax=axes())
+    fewer = LatentClassModel(facts.posterior.model.items, 2)
+    prior = fewer.prior_predictive(20, draws=20, seed=1)
+    with pytest.raises(ModelError, match="different models"):
+        plot_prior_predictive(prior, facts.posterior, ax=axes())
 
 
 def test_groups_have_rows_and_a_wrong_one_is_refused(mixed: Any) -> None:
@@ -98,8 +103,6 @@ def test_groups_have_rows_and_a_wrong_one_is_refused(mixed: Any) -> None:
 
 
 def test_a_group_shows_its_own_answers(made: Any) -> None:
-    from bayeslca import Item, LatentClassModel
-
     model = LatentClassModel(
         (Item("fees", ("no", "yes")), Item("meets", ("no", "yes"))),
         2,
@@ -183,6 +186,9 @@ def say(facts: Facts, **observed: float) -> str:
 
 def test_words_name_what_the_priors_did_not_expect(facts: Facts) -> None:
     assert "Of 10 numbers about the answers, all lie within" in say(facts)
+    patterns = facts.prior_predictive.patterns.set_index("quantity")
+    unusual = float(patterns.loc["sum_score_mean", ["lower_50", "lower_95"]].mean())
+    assert "all lie within" in say(facts, sum_score_mean=unusual)
     text = say(facts, sum_score_sd=3.1, item_4=0.999)
     assert "8 lie within" in text
     assert "the spread of the sum scores (3.1 observed, " in text
