@@ -153,11 +153,11 @@ def conditional_parameters(
         shares = class_shares(joint).transpose(2, 1, 0)
         numbers = rng.multinomial(units.count, shares).astype(np.float64)  # (s, U, K)
         by_unit = numbers.transpose(1, 0, 2).reshape(units.n_units, -1)
-        by_row = (holds.T @ by_unit).reshape(n_rows, size, n_classes)
+        by_row = np.asarray(holds.T @ by_unit).reshape(n_rows, size, n_classes)
         counts = np.zeros((size, free.prior.size))
         counts[:, : table.n_elements] = (in_element @ by_row[rows, :, classes]).T
         _add_cells(table, elements[draws], by_row, counts, rng)
-        by_class = (in_prevalence_row @ by_unit).reshape(-1, size, n_classes)
+        by_class = np.asarray(in_prevalence_row @ by_unit).reshape(-1, size, n_classes)
         _add_classes(free, by_class.transpose(1, 0, 2), counts)
         out[draws] += counts
     return out
