@@ -276,12 +276,14 @@ def test_items_without_an_order_add_nothing_to_a_sum_score() -> None:
     assert "Cases with each sum score" not in repr(found)
 
 
-def test_many_items_are_counted_by_sorting_with_the_same_result() -> None:
-    """Beyond 62 bits of pattern: with known answers there is one pattern."""
-    items = [Item(f"item_{j}", ("no", "yes")) for j in range(45)]
-    model = LatentClassModel(items, ("all",), statements=("P(item_0=yes | all) = 1",))
-    found = model.prior_predictive(6, draws=20, seed=1)
-    assert row(found.patterns, quantity="distinct_patterns")["median"] == 6
+def test_patterns_of_more_items_than_a_whole_number_holds_are_told_apart() -> None:
+    """40 items in base 4 are 80 bits: only the last item differs between cases."""
+    items = [Item(f"item_{j}", ("low", "middle", "high")) for j in range(40)]
+    known = tuple(f"P(item_{j}=low | all) = 1" for j in range(39))
+    model = LatentClassModel(items, ("all",), statements=known)
+    found = row(model.prior_predictive(50, draws=40, seed=1).patterns, quantity="distinct_patterns")
+    assert found["upper_95"] == 3
+    assert found["lower_50"] >= 2
 
 
 def test_one_table_has_stable_columns_and_no_holes_in_its_keys() -> None:
