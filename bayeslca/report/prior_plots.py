@@ -94,8 +94,8 @@ def plot_prior_predictive(
             _learnt(ax, [_cell(*learnt, row, name) for row in rows], places, k, label)
     ax.set_yticks(range(len(rows)), [row.label for row in rows])
     ax.set_ylim(len(rows) - 0.5, -0.5)
-    after = "" if posterior is None else f"; line: {level(interval)} after the data"
-    percent_axis(ax, f"Bar: 95 % and 50 % before the data{after}")
+    after = "" if posterior is None else f"; line: after, {level(interval)}"
+    percent_axis(ax, f"Bar: before the data, 95 and 50 %{after}")
     legend_above(ax, len(names))
     return ax
 

@@ -27,8 +27,8 @@ MOST_NAMED = 3
 KEYS = ("group", "latent_class", "item", "category")
 _QUANTITIES = {
     "distinct_patterns": ("the number of different patterns of answers", 0),
-    "sum_score_mean": ("the mean of the sum scores", 1),
-    "sum_score_sd": ("the spread of the sum scores", 1),
+    "sum_score_mean": ("the mean of the sum scores", 2),
+    "sum_score_sd": ("the spread of the sum scores", 2),
 }
 
 

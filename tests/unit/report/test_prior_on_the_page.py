@@ -61,7 +61,7 @@ def test_bars_are_the_priors_intervals_and_marks_the_posterior(facts: Facts) -> 
         after = learnt[(learnt["latent_class"] == name) & (learnt["category"] == "yes")]
         median = [*share.loc[share["latent_class"] == name, "median"], *after["median"]]
         np.testing.assert_allclose(ax.containers[k].lines[0].get_xdata(), median)
-    assert "line: 90 % after" in ax.get_xlabel()
+    assert "line: after, 90 %" in ax.get_xlabel()
 
 
 def test_without_a_posterior_the_priors_medians_are_marked(facts: Facts) -> None:
@@ -191,7 +191,7 @@ def test_words_name_what_the_priors_did_not_expect(facts: Facts) -> None:
     assert "all lie within" in say(facts, sum_score_mean=unusual)
     text = say(facts, sum_score_sd=3.1, item_4=0.999)
     assert "8 lie within" in text
-    assert "the spread of the sum scores (3.1 observed, " in text
+    assert "the spread of the sum scores (3.10 observed, " in text
     assert "Does thing number 4: yes (99.9 % observed, " in text
     assert text.index("spread") < text.index("number 4")  # the furthest outside first
     many = say(facts, **{f"item_{j}": 0.999 for j in range(1, 8)})
