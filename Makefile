@@ -5,6 +5,8 @@ PYTHON ?= python3
 VENV := .venv
 BIN := $(VENV)/bin
 PYTEST := $(BIN)/python -m pytest
+# Files of tests side by side, one to a core; each file stays in one process.
+PARALLEL := -n auto --dist loadfile
 
 .PHONY: study test quick slow bench lint build clean help
 
@@ -23,10 +25,10 @@ study: $(VENV)/.ready ## run the demo study and say where the report is
 	$(BIN)/bayeslca run examples/water_points/study.toml -o results/water_points --replace
 
 test: $(VENV)/.ready ## run the whole test suite
-	$(PYTEST) tests/unit tests/statistical tests/slow
+	$(PYTEST) $(PARALLEL) tests/unit tests/statistical tests/slow
 
 quick: $(VENV)/.ready ## run the fast tests only
-	$(PYTEST) tests/unit -m "not pymc and not browser"
+	$(PYTEST) $(PARALLEL) tests/unit -m "not pymc and not browser"
 
 bench: $(VENV)/.ready ## run the benchmarks
 	$(PYTEST) tests/benchmarks --benchmark-only --benchmark-columns=median,iqr,rounds
