@@ -21,6 +21,8 @@ _HOME = {
     "criteria_beside": "bayeslca.assess.criteria_beside",
     "criteria_table": "bayeslca.assess.fit_statistics",
     "likelihood_ratio_test": "bayeslca.assess.likelihood_ratio",
+    "log_evidence": "bayeslca.assess.evidence",
+    "sample_class_count": "bayeslca.assess.unknown_count",
 }
 """Where each public name lives; loaded when first used, so that importing stays light."""
 
@@ -40,6 +42,8 @@ __all__ = [
     "criteria_beside",
     "criteria_table",
     "likelihood_ratio_test",
+    "log_evidence",
+    "sample_class_count",
 ]
 __version__ = "0.1.0"
 
