@@ -36,6 +36,10 @@ TAIL = (0.05, 0.95)
 """The quantiles whose effective sample size is the tail one."""
 
 
+MIRROR = 1e-12
+"""Two probabilities that sum to 1 within this are the two answers of one item."""
+
+
 @dataclass(frozen=True, eq=False)
 class Quantities:
     """Draws of some quantities, with what does not depend on the interval kept.
@@ -102,6 +106,10 @@ def _monte_carlo(draws: Floats) -> dict[str, Floats]:
     out = {name: np.full(n, np.nan) for name in ("mcse", "ess_bulk", "ess_tail", "r_hat")}
     moving = np.flatnonzero(np.ptp(draws, axis=(0, 1)) > 0.0)
     for q in moving:
+        if _mirrors_the_one_before(draws, q):  # "yes" after "no": the same figures
+            for column in out.values():
+                column[q] = column[q - 1]
+            continue
         values = np.ascontiguousarray(draws[:, :, q])
         with np.errstate(invalid="ignore", divide="ignore"):  # chains that never move: nan
             out["mcse"][q] = array_stats.mcse(values, method="mean")
@@ -109,3 +117,8 @@ def _monte_carlo(draws: Floats) -> dict[str, Floats]:
             out["ess_tail"][q] = array_stats.ess(values, method="tail", prob=TAIL)
             out["r_hat"][q] = array_stats.rhat(values)
     return out
+
+
+def _mirrors_the_one_before(draws: Floats, q: int) -> bool:
+    """Whether a quantity is one minus the quantity before it, in every draw."""
+    return q > 0 and bool(np.all(np.abs(draws[:, :, q] + draws[:, :, q - 1] - 1.0) < MIRROR))

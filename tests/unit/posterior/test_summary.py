@@ -63,3 +63,14 @@ def test_monte_carlo_figures_are_found_once(
 def test_a_level_is_a_share(draws: np.ndarray, interval: float) -> None:
     with pytest.raises(BayesLCAError, match="a share between 0 and 1"):
         Quantities(draws).summary(interval)
+
+
+def test_the_two_answers_of_an_item_have_the_figures_that_each_has_alone() -> None:
+    yes = np.random.default_rng(12).beta(3, 9, size=(4, 300, 1)).cumsum(axis=1) / 300
+    both = Quantities(np.concatenate([1 - yes, yes], axis=2)).monte_carlo()
+    alone = Quantities(yes).monte_carlo()
+    for name, values in both.items():
+        assert values[0] == pytest.approx(values[1], rel=1e-9)
+        assert values[1] == pytest.approx(alone[name][0], rel=1e-6)
+    unrelated = Quantities(np.concatenate([yes, np.sqrt(yes)], axis=2)).monte_carlo()
+    assert unrelated["mcse"][0] != unrelated["mcse"][1]
