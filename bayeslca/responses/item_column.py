@@ -368,7 +368,9 @@ class ItemColumn:
                 "sparse_category",
                 f"Item {self.spec.name!r}: few cases chose {listed_with_counts(sparse)}; the prior "
                 "weighs much there.",
-                "Merge it with a neighbouring answer if the question allows.",
+                "Merge it with a neighbouring answer if the question allows."
+                if item.n_categories > 2
+                else "State what is known of it, or leave the item out.",
                 value=float(min(sparse.values())),
             )
         if self.column.declared_missing:
@@ -379,7 +381,7 @@ class ItemColumn:
             self._note(
                 "declared_missing",
                 f"Item {self.spec.name!r}: {listed_with_counts(declared)} read as no answer, "
-                "because the file declares it missing.",
+                f"because the file declares {'it' if len(declared) == 1 else 'them'} missing.",
             )
 
 

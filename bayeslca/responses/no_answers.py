@@ -17,6 +17,8 @@ _PHRASES = (
     r"not applicable|inapplicable|does not apply|n a|na|n\.a\.|n app|inap|iap|nap",
     r"not available|no data|no information|no info|missing|missing value|sysmiss|system missing",
     r"unknown|not known|not stated|not ascertained|not asked|not sure|unsure|skipped|skip",
+    # laboratories: not done, not determined ("n.d."; "nd" alone may be an abbreviation of a name)
+    r"not done|not tested|not determined|n d",
     r"null|nan|nil response|undefined|value|div 0|ref|name",
     # the same in some other languages
     r"weiss nicht|weiß nicht|keine angabe|k a|keine antwort|trifft nicht zu",

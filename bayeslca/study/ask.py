@@ -3,11 +3,15 @@
 from __future__ import annotations
 
 import textwrap
+from collections.abc import Mapping
+from dataclasses import fields
 from pathlib import Path
+from typing import Any
 
 from bayeslca.model.resolve import resolve
 from bayeslca.model.resolved import ResolvedRelations
 from bayeslca.posterior.posterior import Posterior
+from bayeslca.posterior.quantities import Quantity
 from bayeslca.study.results import open_results
 
 WIDTH = 79
@@ -23,18 +27,30 @@ def ask(folder: Path, *texts: str) -> str:
         When the results cannot be opened, or a statement cannot be used.
     """
     posterior = Posterior.load(open_results(folder).main_fit)
-    answers = [
-        textwrap.fill(
-            _answer(posterior, text), WIDTH, break_long_words=False, break_on_hyphens=False
-        )
-        for text in texts
-    ]
+    answers = [_answer(posterior, text) for text in texts]
     if not posterior.diagnostics().trustworthy:
         answers.append(NOT_TRUSTED)
     return "\n".join(answers)
 
 
 def _answer(posterior: Posterior, text: str) -> str:
+    """Answer one statement; a quantity of several groups or classes has a sentence for each."""
     if isinstance(resolve(text, posterior.model.vocabulary), ResolvedRelations):
-        return repr(posterior.test(text))
-    return repr(posterior.quantity(text))
+        return _wrapped(repr(posterior.test(text)))
+    rows = posterior.quantities([text]).to_dict("records")
+    if len(rows) == 1:
+        return _wrapped(repr(posterior.quantity(text)))
+    known = {field.name for field in fields(Quantity)}
+    return "\n".join(
+        _wrapped(f"{_place(row)}: {Quantity(**{k: v for k, v in row.items() if k in known})!r}")
+        for row in rows
+    )
+
+
+def _place(row: Mapping[Any, Any]) -> str:
+    """Return the group, the class, or both that a row is about."""
+    return ", ".join(row[key] for key in ("group", "latent_class") if row.get(key))
+
+
+def _wrapped(text: str) -> str:
+    return textwrap.fill(text, WIDTH, break_long_words=False, break_on_hyphens=False)

@@ -18,6 +18,7 @@ from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
 
 WIDTH = 79
+_REFUSED = ("What `run` will do", "- refuse to sample until what is marked !! is put right")
 SWEEPS = 10_000
 """Sweeps a chain usually takes before the stopping rule is met."""
 SECONDS_PER_SPLIT = 2.5e-8
@@ -50,6 +51,8 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
     )
     if study.said.groups.compare_free:
         group_models(study, checked)
+    findings = [*responses.findings, *checked.findings(responses)]
+    refused = any(finding.level == "problem" for finding in findings)
     parts = [
         f"{study.said.study.title} ({study.path.name})",
         "",
@@ -57,9 +60,9 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
         "",
         *_model_in_words(study, checked),
         "",
-        *_findings([*responses.findings, *checked.findings(responses)]),
+        *_findings(findings),
         "",
-        *_plan(study, responses),
+        *(_REFUSED if refused else _plan(study, responses)),
     ]
     if prior:
         with_two = [] if study.model is not None else ["With two classes:"]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shlex
 import textwrap
 from pathlib import Path
 
@@ -50,7 +51,23 @@ def inspection(
     lines += textwrap.wrap(
         f"{len(items)} columns look like items: {', '.join(items) or 'none'}.", WIDTH
     )
-    lines.append(f"Next: bayeslca draft {path.name} -o study.toml")
+    names = raw.column_names
+    unnamed = sum(name == f"column {i}" for i, name in enumerate(names, start=1))
+    if 2 * unnamed >= len(names):
+        lines += textwrap.wrap(
+            f"{unnamed} of {len(names)} columns have no name in row {header_row}: if the names "
+            f"stand further down, below a title, say so: --header-row {header_row + 1}.",
+            WIDTH,
+        )
+    options = {
+        "sheet": sheet,
+        "header-row": None if header_row == 1 else header_row,
+        "encoding": encoding,
+        "separator": separator,
+    }
+    given = [f"--{key} {shlex.quote(str(v))}" for key, v in options.items() if v is not None]
+    command = ["bayeslca draft", shlex.quote(path.name), *given, "-o study.toml"]
+    lines.append(f"Next: {' '.join(command)}")
     return "\n".join(lines)
 
 

@@ -20,6 +20,17 @@ from bayeslca.report.wording import (
 )
 
 ANCHOR, HEADING = "answer", "The question and the answer"
+UNDETERMINED = {
+    "not_identified": (
+        "The answers alone cannot determine all of this model: some of these figures rest on the "
+        "priors, however many cases there are."
+    ),
+    "weakly_identified": (
+        "The answers hardly determine some of this model: some of these figures rest much on the "
+        "priors."
+    ),
+}
+"""What the answer says of a model that the cases do not settle, by kind of finding."""
 
 
 def answer_section(facts: Facts) -> Section:
@@ -120,6 +131,11 @@ def _how_sure(facts: Facts) -> list[str]:
             f"A case's most probable class has a probability of {percent(placed.mean_highest)} on "
             f"average; for {whole(sure)} of {counted(placed.n_cases, 'case')} it is 80 % or more."
         )
+    says += [
+        UNDETERMINED[finding.kind]
+        for finding in facts.diagnostics.findings
+        if finding.kind in UNDETERMINED
+    ]
     says.append(
         "Classes are a model's summary of the answers; how far to trust it stands under "
         "“Limits and cautions”."

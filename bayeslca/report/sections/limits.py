@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from bayeslca.model.cautions import CASES_PER_CLASS
 from bayeslca.report.blocks import Bullets, Section
 from bayeslca.report.facts import Facts
 from bayeslca.report.sections import fit
@@ -10,6 +11,7 @@ from bayeslca.report.wording import called, counted, level, listed, percent_valu
 
 ANCHOR, HEADING = "limits", "Limits and cautions"
 FEW = 5
+MOST_NAMED = 6
 
 
 def limits_section(facts: Facts) -> Section:
@@ -25,6 +27,7 @@ def limits_section(facts: Facts) -> Section:
         entries.insert(0, _diagnostic())
     if len(facts.class_names) > 1:
         entries += [_size(facts), _placement(facts)]
+    entries += [*_undetermined(facts), *_small_groups(facts)]
     if len(facts.tied) > 1:
         entries.append(
             (
@@ -86,6 +89,50 @@ def _placement(facts: Facts) -> tuple[str, str]:
         f"for {whole(unsure)} of {counted(placed.n_cases, 'case')} the most probable class has a "
         "probability below 80 %. Do not treat it as data.",
     )
+
+
+def _undetermined(facts: Facts) -> list[tuple[str, str]]:
+    """Name what the answers cannot determine, or hardly, as the diagnostics found it."""
+    entries = []
+    for finding in facts.diagnostics.findings:
+        names = listed(finding.about[:MOST_NAMED])
+        if len(finding.about) > MOST_NAMED:
+            names = f"{', '.join(finding.about[:MOST_NAMED])} and others"
+        if finding.kind == "not_identified":
+            entries.append(
+                (
+                    "The answers cannot determine all of the model:",
+                    f"what is said of {names} rests on the priors, however many cases there are. "
+                    "Other priors give other figures.",
+                )
+            )
+        elif finding.kind == "weakly_identified":
+            entries.append(
+                (
+                    "The answers hardly determine some of the model:",
+                    f"of some combination of {names} they say less than a uniform prior. Other "
+                    "priors give other figures.",
+                )
+            )
+    return entries
+
+
+def _small_groups(facts: Facts) -> list[tuple[str, str]]:
+    groups = facts.posterior.model.groups
+    if groups is None:
+        return []
+    fewest = CASES_PER_CLASS * len(facts.class_names)
+    sizes = zip(groups.levels, facts.posterior.group_cases, strict=True)
+    small = [f"{level} ({whole(size)})" for level, size in sizes if size < fewest]
+    if not small:
+        return []
+    return [
+        (
+            f"Few cases in {listed(small)}:",
+            f"what is said of such a group of {groups.name} alone rests on little, and on its "
+            "prior.",
+        )
+    ]
 
 
 def _small_or_ruled(facts: Facts) -> list[tuple[str, str]]:

@@ -83,6 +83,20 @@ def test_check_says_the_model_in_words(run: Run, folder: Path) -> None:
     assert sorted(path.name for path in folder.iterdir()) == ["answers.csv", "study.toml"]
 
 
+def test_check_says_that_run_will_refuse_impossible_answers(run: Run, folder: Path) -> None:
+    study = folder / "study.toml"
+    text = study.read_text("utf-8").replace(
+        'statements = ["managed is where P(fees=yes) is highest"]',
+        'statements = ["P(fees=yes | lapsed) = 0", "P(meets=yes | managed) = 0"]',
+    )
+    study.write_text(text, encoding="utf-8")
+    code, out, _ = run("check", study)
+    assert code == 0
+    assert "!! 3 case(s) gave answers" in out
+    assert out.rstrip().endswith("- refuse to sample until what is marked !! is put right")
+    assert run("run", study, "-o", folder / "results")[0] == 2
+
+
 def test_a_fault_of_ours_exits_with_3(
     run: Run, folder: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
