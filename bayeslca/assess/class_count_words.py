@@ -62,8 +62,7 @@ def _probabilities(good: dict[int, dict[Any, Any]], *, is_uniform: bool) -> str:
         if total >= MOST_OF_IT:
             break
     first, *others = named
-    all_counts = row_in_words(max(good)).split()[0]
-    before = f"{row_in_words(min(good)).split()[0]} to {all_counts} classes"
+    before = _counted(sorted(good))
     equally = "equally probable" if is_uniform else "as probable as stated"
     text = f"If {before} were {equally} before the answers, {row_in_words(first)}"
     text += f" {_have(first)} probability {_probability(good[first])} after them"
@@ -73,6 +72,14 @@ def _probabilities(good: dict[int, dict[Any, Any]], *, is_uniform: bool) -> str:
         )
         return text + f": the answers do not settle the number beyond these {_number(named)}."
     return text + "."
+
+
+def _counted(counts: list[int]) -> str:
+    """Return the numbers of classes in words; a gap among them is not passed over."""
+    words = [row_in_words(k).split()[0] for k in counts]
+    if len(counts) > 2 and counts[-1] - counts[0] == len(counts) - 1:
+        return f"{words[0]} to {words[-1]} classes"
+    return f"{listed_with_and(words)} classes"
 
 
 def _strength(good: dict[int, dict[Any, Any]]) -> list[str]:

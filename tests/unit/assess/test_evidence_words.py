@@ -223,7 +223,7 @@ def row(probability: float, evidence: float, reliable: bool = True, reason: str 
 def test_words_for_a_settled_number() -> None:
     table = pd.DataFrame([row(0.001, -20.0), row(0.999, -10.0)], index=[1, 2])
     assert evidence_in_words(table, is_uniform=True, stated=False) == (
-        "If one to two classes were equally probable before the answers, two classes have "
+        "If one and two classes were equally probable before the answers, two classes have "
         "probability 0.999 after them. By the grades of Kass & Raftery 1995 the evidence for two "
         "classes over one class is very strong (Bayes factor 22,026). All this depends on uniform "
         "priors of probabilities and on equal prior weights of the numbers; other priors give "
@@ -242,6 +242,23 @@ def test_words_for_an_open_number_and_an_unreliable_one() -> None:
     assert "over three classes is not worth more than a bare mention (Bayes factor 1.5)" in said
     assert "The evidence of four classes is not reliable (the chains disagree)" in said
     assert "the priors stated for probabilities" in said
+
+
+@pytest.mark.parametrize(
+    ("reliable", "words"),
+    [
+        ((1, 2, 3), "If one to three classes were"),
+        ((1, 3), "If one and three classes were"),
+        ((1, 2, 4), "If one, two and four classes were"),
+    ],
+)
+def test_words_pass_over_no_number_without_evidence(reliable: tuple[int, ...], words: str) -> None:
+    # A number whose evidence is not reliable is not among those that were compared.
+    table = pd.DataFrame(
+        [row(1 / len(reliable), -10.0, k in reliable, "two modes") for k in (1, 2, 3, 4)],
+        index=[1, 2, 3, 4],
+    )
+    assert evidence_in_words(table, is_uniform=True, stated=False).startswith(words)
 
 
 @pytest.mark.parametrize(

@@ -135,6 +135,7 @@ def test_labels_give_names_order_and_missing(tmp_path: Path) -> None:
     kinds = {finding.kind: finding.message for finding in responses.findings}
     assert "'none'" in kinds["labelled_answers_not_chosen"]
     assert "\"don't know\" (1), '9' (1), '97' (1)" in kinds["declared_missing"]
+    assert kinds["declared_missing"].endswith("because the file declares them missing.")
 
 
 def test_text_files_as_they_come(tmp_path: Path) -> None:
