@@ -17,9 +17,8 @@ from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import ModelError
 from bayeslca.model.blocks import inside_blocks
 from bayeslca.model.latent_class_model import LatentClassModel
-from bayeslca.model.naming import apply_naming_rules
+from bayeslca.model.naming import permutations_by_rules
 from bayeslca.model.prior_density import log_prior
-from bayeslca.model.probabilities import response_probability
 from bayeslca.model.simulate import Parameters
 from bayeslca.model.symmetry import element_map
 
@@ -37,11 +36,12 @@ def labelled(model: LatentClassModel, found: Parameters, group_cases: Floats) ->
     group_cases : ndarray, shape (groups,)
     """
     if model.naming_rules:
-        order = apply_naming_rules(
-            response_probability(model.table, found.elements[None]),
+        order = permutations_by_rules(
+            model.table,
+            found.elements[None],
             found.prevalence[None],
             model.naming_rules,
-            model.table.item_start,
+            model.symmetry.prior_group,
             group_cases,
         )[0]
         return _permuted(model, found, order) or found
@@ -70,12 +70,17 @@ def _density(model: LatentClassModel, one: Parameters) -> float:
 
 
 def _permuted(model: LatentClassModel, found: Parameters, order: Ints) -> Parameters | None:
-    """Return the solution with its classes in another order; None where the model has no such."""
-    groups = found.prevalence.shape[0]
+    """Return the solution with its classes in another order; None where the model has no such.
+
+    The order is (K,), or (groups, K) where it is another one in each group.
+    """
+    permutation = np.broadcast_to(order, found.prevalence.shape)
     try:
-        mapped = element_map(model.table, np.tile(order, (groups, 1)))
+        mapped = element_map(model.table, permutation)
     except ModelError:
         return None
-    if not model.prevalence_source.keeps_ties(np.tile(order, (groups, 1))):
+    if not model.prevalence_source.keeps_ties(permutation):
         return None
-    return Parameters(found.elements[mapped], found.prevalence[:, order])
+    return Parameters(
+        found.elements[mapped], np.take_along_axis(found.prevalence, permutation, axis=1)
+    )

@@ -8,7 +8,10 @@ import numpy as np
 
 from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import StatementError
+from bayeslca.model.permutations import PermutationGroup
+from bayeslca.model.probabilities import response_probability
 from bayeslca.model.resolved import Answer, ResolvedNamingRule
+from bayeslca.model.table import Table
 from bayeslca.model.vocabulary import Vocabulary
 
 
@@ -52,6 +55,48 @@ def classes_named(rules: Sequence[ResolvedNamingRule], n_classes: int) -> frozen
     """
     named = frozenset(rule.latent_class for rule in rules)
     return frozenset(range(n_classes)) if len(named) >= n_classes - 1 else named
+
+
+def permutations_by_rules(
+    table: Table,
+    elements: Floats,
+    prevalence: Floats,
+    rules: Sequence[ResolvedNamingRule],
+    exchangeable: PermutationGroup,
+    group_share: Floats | None = None,
+) -> Ints:
+    """Find in each draw, and in each group, the classes that the rules name.
+
+    Where groups share nothing, the classes of one can change places while those of another do
+    not, and a mean over groups would name them at random: there the rules hold in each group.
+
+    Parameters
+    ----------
+    table : Table
+    elements : ndarray, shape (S, E)
+    prevalence : ndarray, shape (S, groups, K)
+    rules : sequence of ResolvedNamingRule
+    exchangeable : PermutationGroup
+        What priors and table leave open, rules aside.
+    group_share : ndarray, shape (groups,), optional
+        Share of the cases in each group; equal when left out.
+
+    Returns
+    -------
+    ndarray of int64, shape (S, groups, K)
+        permutation[s, g, k] is the old position that becomes class k of group g.
+    """
+    response = response_probability(table, elements)
+    out = np.empty(prevalence.shape, dtype=np.int64)
+    for groups in exchangeable.group_sets:
+        at = list(groups)
+        share = None if group_share is None or not group_share[at].sum() else group_share[at]
+        of_groups = np.unique(table.response_group[at])
+        found = apply_naming_rules(
+            response[:, of_groups], prevalence[:, at], rules, table.item_start, share
+        )
+        out[:, at] = found[:, None, :]
+    return out
 
 
 def apply_naming_rules(

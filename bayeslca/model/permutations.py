@@ -54,6 +54,20 @@ class PermutationGroup:
         """True when nothing can be exchanged."""
         return self.n_members == 1
 
+    @property
+    def group_sets(self) -> tuple[tuple[int, ...], ...]:
+        """Sets of groups in which all classes can be exchanged apart from the other sets.
+
+        One set of all groups wherever something ties their classes together.
+        """
+        everything = tuple(range(self.n_groups))
+        factors = self.factors or ()
+        whole = all(len(factor.classes) == self.n_classes for factor in factors)
+        covered = sorted(g for factor in factors for g in factor.groups)
+        if not whole or covered != list(everything):
+            return (everything,)
+        return tuple(factor.groups for factor in factors)
+
     @cached_property
     def proposals(self) -> Ints:
         """Members (M, group, K) that reach all others, closed under inversion, no identity.

@@ -9,9 +9,8 @@ import numpy as np
 from bayeslca._typing import Floats, Ints
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.evaluate import ParameterDraws
-from bayeslca.model.naming import apply_naming_rules
+from bayeslca.model.naming import permutations_by_rules
 from bayeslca.model.prevalence import DirichletPrevalence
-from bayeslca.model.probabilities import response_probability
 from bayeslca.model.symmetry import element_map
 from bayeslca.model.table import Table
 from bayeslca.model.truncated_prior import draw_inside
@@ -38,14 +37,9 @@ def draw_prior(
     prevalence = _prevalences(model.prevalence_source, n, rng)
     share = np.full(model.n_groups, 1.0 / model.n_groups) if group_share is None else group_share
     if model.naming_rules:
-        found = apply_naming_rules(
-            response_probability(table, elements),
-            prevalence,
-            model.naming_rules,
-            table.item_start,
-            share,
+        permutations = permutations_by_rules(
+            table, elements, prevalence, model.naming_rules, model.symmetry.prior_group, share
         )
-        permutations = np.repeat(found[:, None, :], table.n_prevalence_rows, axis=1)
         elements, prevalence = permuted(table, elements, prevalence, permutations)
     return ParameterDraws(table, elements, prevalence, share)
 

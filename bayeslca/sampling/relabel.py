@@ -22,9 +22,9 @@ from scipy.optimize import linear_sum_assignment
 
 from bayeslca._typing import Floats, Ints
 from bayeslca.findings import Finding
-from bayeslca.model.naming import apply_naming_rules
+from bayeslca.model.naming import permutations_by_rules
 from bayeslca.model.permutations import PermutationGroup, compose, identity
-from bayeslca.model.probabilities import class_shares, log_joint, response_probability
+from bayeslca.model.probabilities import class_shares, log_joint
 from bayeslca.model.symmetry import Symmetry, element_map, symmetry
 from bayeslca.model.table import Table, UnitTable
 from bayeslca.sampling.draws import Draws
@@ -100,8 +100,14 @@ def relabel(model: LatentClassModel, unit_table: UnitTable, draws: Draws) -> Rel
     start = identity(table.n_prevalence_rows, n_classes)
     permutations = np.tile(start, (flat.n_draws, 1, 1))
     if model.naming_rules:
-        named = _by_rules(model, unit_table, flat)
-        permutations = np.repeat(named[:, None, :], table.n_prevalence_rows, axis=1)
+        permutations = permutations_by_rules(
+            table,
+            flat.elements,
+            flat.prevalence,
+            model.naming_rules,
+            labels.prior_group,
+            _group_sizes(unit_table, table.n_prevalence_rows),
+        )
         flat = flat.permuted(table, permutations)
     if not labels.named_group.is_identity:
         found = stephens(table, unit_table, flat, labels.named_group)
@@ -163,16 +169,6 @@ def _symmetry(model: LatentClassModel, unit_table: UnitTable) -> Symmetry:
         return model.symmetry
     named = {rule.latent_class for rule in model.naming_rules}
     return symmetry(model.table, model.prevalence_source, unit_table, named)
-
-
-def _by_rules(model: LatentClassModel, unit_table: UnitTable, flat: _Flat) -> Ints:
-    return apply_naming_rules(
-        response_probability(model.table, flat.elements),
-        flat.prevalence,
-        model.naming_rules,
-        model.table.item_start,
-        _group_sizes(unit_table, model.table.n_prevalence_rows),
-    )
 
 
 def _group_sizes(unit_table: UnitTable, n_groups: int) -> Floats:
