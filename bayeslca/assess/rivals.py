@@ -45,7 +45,8 @@ class Rivals:
     Attributes
     ----------
     table : DataFrame
-        A row per hypothesis, "none of these" last; columns ``statement``, ``prior_weight``,
+        A row per hypothesis, "none of these" last where they leave something over; columns
+        ``statement``, ``prior_weight``,
         ``posterior_weight`` (the posterior probability among the rivals), ``log_bayes_factor``
         and ``log_bayes_factor_mcse`` (against the model), ``posterior_probability`` and
         ``prior_probability`` (among the draws of the model; nan for equalities).
@@ -88,7 +89,8 @@ def compare_rivals(
     weights : mapping from a name to float, optional
         Prior weights; equal when left out. "none of these" may have one too.
     none_of_these : bool
-        False when one of the hypotheses is held to be true.
+        False when one of the hypotheses is held to be true. Rivals that cover everything, such
+        as an order and its opposite, have no such row unless it was given a weight.
     seed : int
 
     Raises
@@ -119,7 +121,8 @@ def compare_rivals(
         }
         for name, test in tests.items()
     }
-    if none_of_these:
+    asked = len(hypotheses) < 2 or NONE_OF_THESE in (weights or {})
+    if none_of_these and (asked or _something_is_left(after, before)):
         rows[NONE_OF_THESE] = _none_of_these(after, before, posterior.draws.n_chains)
     table = pd.DataFrame.from_dict(rows, orient="index")
     table.index.name = "hypothesis"
@@ -155,6 +158,11 @@ def _holding(
         {name: drawn.holds(said) for name, said in relations.items()},
         {name: prior.holds(said) for name, said in relations.items()},
     )
+
+
+def _something_is_left(after: Mapping[str, Bools], before: Mapping[str, Bools]) -> bool:
+    """Whether any draw is of none of the hypotheses: rivals that cover everything leave nothing."""
+    return not all(bool(np.any(list(held.values()), axis=0).all()) for held in (after, before))
 
 
 def _none_of_these(

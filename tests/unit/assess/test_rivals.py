@@ -47,6 +47,17 @@ def test_shares_follow_from_bayes_factors(posterior: Posterior) -> None:
     assert 0 < error < 0.05
 
 
+def test_rivals_that_cover_everything_leave_no_weight_to_none_of_these(
+    posterior: Posterior,
+) -> None:
+    both = {"low": "P(fees=yes | all) < 0.4", "rest": "P(fees=yes | all) >= 0.4"}
+    table = compare_rivals(posterior, both).table
+    assert table.index.tolist() == ["low", "rest"]
+    assert table["prior_weight"].tolist() == [0.5, 0.5]
+    asked = compare_rivals(posterior, both, weights={NONE_OF_THESE: 1.0}).table
+    assert asked.index.tolist() == ["low", "rest", NONE_OF_THESE]
+
+
 def test_weights_multiply(posterior: Posterior) -> None:
     found = compare_rivals(
         posterior,
