@@ -291,7 +291,7 @@ def _findings(table: pd.DataFrame, n_cases: int) -> tuple[Finding, ...]:
                 kind="row_not_trusted",
                 level="problem" if decides else "warning",
                 message=f"The sampling of {listed} is not to be trusted, so that row may change.",
-                remedy="Sample longer; in Python, posteriors[...].diagnostics() of the row says why.",
+                remedy="Sample longer; in Python, posteriors[...].diagnostics() says why.",
                 about=tuple(str(name) for name in untrusted),
             )
         )
