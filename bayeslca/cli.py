@@ -164,6 +164,9 @@ def _print(text: str) -> None:
 
 def main() -> None:
     """Run the command line and leave with its exit code."""
+    # The matrices are small: threads that wait for each other cost more than they save, most of
+    # all on a busy machine. NumPy reads this when it is loaded; the user's own setting is kept.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     try:
         commands.main(standalone_mode=False)
     except click.exceptions.Exit as leaving:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import subprocess
 import sys
 from collections.abc import Callable
@@ -161,3 +162,20 @@ def test_versions_are_equal() -> None:
     from importlib.metadata import version
 
     assert version("bayeslca") == bayeslca.__version__
+
+
+def test_small_matrices_get_one_thread_unless_the_user_says_otherwise(
+    run: Run, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("OPENBLAS_NUM_THREADS", "2")
+    run("--version")
+    assert os.environ["OPENBLAS_NUM_THREADS"] == "2"
+    monkeypatch.delenv("OPENBLAS_NUM_THREADS")
+    run("--version")
+    assert os.environ["OPENBLAS_NUM_THREADS"] == "1"
+
+
+def test_nothing_loads_numpy_before_the_command_line_starts() -> None:
+    # The number of threads is read when NumPy is loaded.
+    code = "import sys, bayeslca.cli; sys.exit('numpy' in sys.modules)"
+    assert subprocess.run([sys.executable, "-c", code], check=False).returncode == 0
