@@ -238,6 +238,17 @@ def _about_classes(posterior: Posterior, state: ClassState) -> Iterator[Finding]
 def _about_the_model(posterior: Posterior, state: ClassState) -> Iterator[Finding]:
     """Yield what the answers cannot determine, at all or near the estimate."""
     draws, model = posterior.draws, posterior.model
+    if len(model.symmetry.named_group.group_sets) > 1:
+        yield Finding(
+            kind="classes_not_matched",
+            level="warning",
+            message=(
+                "groups share no response probabilities, so a class of one group need not be the "
+                "class of that name in another: classes are called by falling prevalence in each "
+                "group, and what is said of a class overall means little"
+            ),
+            remedy="Name the classes by a rule, or let groups share some items.",
+        )
     estimate = Parameters(draws.elements.mean(axis=(0, 1)), draws.prevalence.mean(axis=(0, 1)))
     found = model.identifiability(posterior.responses, estimate=estimate)
     if not found.identified:

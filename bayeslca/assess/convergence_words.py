@@ -9,7 +9,8 @@ from bayeslca.assess.convergence_table import Worst
 from bayeslca.findings import Finding
 
 SAID = (
-    "empty_class", "duplicate_classes", "names_not_settled", "not_identified",
+    "empty_class", "duplicate_classes", "names_not_settled", "classes_not_matched",
+    "not_identified",
     "limit_reached", "modes_dropped",
 )  # fmt: skip
 """Findings that the verdict tells even where the sampling is to be trusted."""
