@@ -124,7 +124,10 @@ COLUMNS: dict[str, Column] = {
         "Simulation error of it", "Monte Carlo standard error of the log evidence", "number"
     ),
     "probability": Column(
-        "Probability", "of the number of classes, given the answers and the priors", "share"
+        "Probability",
+        "of the number of classes, given the answers and the priors, among those whose evidence is "
+        "reliable",
+        "share",
     ),
     "tied": Column("Tie", "too close to the best to tell", "flag"),
     "claim": Column("Claim", "the hypothesis as the study words it", "text"),

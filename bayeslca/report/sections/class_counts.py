@@ -148,7 +148,7 @@ def _table(facts: Facts) -> PageTable:
         heads = (
             *heads,
             Head("Log evidence", "log probability of all answers ± simulation error"),
-            Head("Probability", "of the number of classes, given the answers"),
+            Head("Probability", "given the answers, among the rows whose evidence is reliable"),
         )
     notes = ("Square brackets: the model the answer rests on.",)
     return PageTable("Models with different numbers of classes", heads, rows, notes)

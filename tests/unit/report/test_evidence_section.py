@@ -71,6 +71,7 @@ def test_the_section_shows_probabilities_evidence_and_what_they_depend_on(
     assert pictures == ["class-count-probabilities", "class-counts"]
     (table,) = [block for block in blocks if isinstance(block, PageTable)]
     assert [head.words for head in table.heads][-2:] == ["Log evidence", "Probability"]
+    assert "whose evidence is reliable" in table.heads[-1].gloss
     assert [row[-2:] for row in table.rows] == [
         ("−440.00", "0.1 %"), ("−430.00 ± 0.02", "73 %"), ("−431.00 ± 0.03", "27 %"),
     ]  # fmt: skip
