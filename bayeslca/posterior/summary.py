@@ -105,7 +105,7 @@ def _monte_carlo(draws: Floats) -> dict[str, Floats]:
     n = draws.shape[-1]
     out = {name: np.full(n, np.nan) for name in ("mcse", "ess_bulk", "ess_tail", "r_hat")}
     moving = np.flatnonzero(np.ptp(draws, axis=(0, 1)) > 0.0)
-    for q in moving:
+    for q in moving.tolist():
         if _mirrors_the_one_before(draws, q):  # "yes" after "no": the same figures
             for column in out.values():
                 column[q] = column[q - 1]

@@ -15,6 +15,7 @@ import numpy as np
 import bayeslca
 from bayeslca.posterior.storage import save
 from bayeslca.report.content import ReportContent
+from bayeslca.report.sections.theory import outcome_in_words
 from bayeslca.study.changes import changes_since
 from bayeslca.study.claims import Theory, check_theory, put_to_the_posterior
 from bayeslca.study.fit_checks import FitChecks, checked_fit, record_of
@@ -286,6 +287,13 @@ def _outcome(
     lines = [headline]
     if content.comparison is not None:
         lines.append(content.comparison.verdict)
+    if content.claims:
+        lines.append(outcome_in_words(content.claims))
+    if content.quantities is not None:
+        lines += [
+            f"{row['quantity']}: {row['median']:.3g} ({row['lower']:.3g} to {row['upper']:.3g})"
+            for row in content.quantities.to_dict("records")
+        ]
     lines.append(main.diagnostics().verdict)
     if content.checks is not None and not content.checks.reproduces:
         lines.append(content.checks.verdict)
