@@ -121,7 +121,8 @@ def _table(
     value = np.array([evidence[k].log_evidence for k in good])
     chance, error = np.full(len(counts), np.nan), np.full(len(counts), np.nan)
     rows = [counts.index(k) for k in good]
-    if good and prior[rows].sum() > 0:
+    # One number alone among several would get a probability of 1 for want of rivals.
+    if (len(good) > 1 or len(counts) == 1) and prior[rows].sum() > 0:
         chance[rows], error[rows] = probabilities(value, covariance, prior[rows])
     steps = {}
     for k in good:

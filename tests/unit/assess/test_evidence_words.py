@@ -202,6 +202,15 @@ def test_few_draws_are_refused() -> None:
     assert np.isnan(found.log_evidence)
 
 
+def test_one_reliable_number_among_several_has_no_probability() -> None:
+    # It would be 1 whatever the answers say, as nothing competes with it.
+    posterior = fitted(2)
+    swapped = posterior.draws.prevalence[..., ::-1].copy()
+    found = class_counts({1: fitted(1), 2: changed(posterior, prevalence=swapped)})
+    assert found.table["reliable"].tolist() == [True, False]
+    assert found.table["probability"].isna().all()
+
+
 def test_draws_from_somewhere_else_are_noticed() -> None:
     # Prevalences swapped against response probabilities: not the posterior's draws at all.
     posterior = fitted(2)
