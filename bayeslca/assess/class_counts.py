@@ -110,6 +110,18 @@ def checked_prior(prior: PriorOnCount | None, counts: Sequence[int]) -> Floats:
     return np.asarray(weights / weights.sum())
 
 
+def _has_its_rivals(counts: Sequence[int], good: Sequence[int], value: Floats) -> bool:
+    """Whether the best number can be weighed: its neighbours' evidence is reliable too.
+
+    Without them it would get a probability near 1 for want of rivals.
+    """
+    if not good:
+        return False
+    best = good[int(np.argmax(value))]
+    beside = [k for k in (best - 1, best + 1) if k in counts]
+    return all(k in good for k in beside) and (len(good) > 1 or len(counts) == 1)
+
+
 def _table(
     counts: Sequence[int], prior: Floats, evidence: Mapping[int, Evidence], joined: Joined
 ) -> pd.DataFrame:
@@ -121,8 +133,7 @@ def _table(
     value = np.array([evidence[k].log_evidence for k in good])
     chance, error = np.full(len(counts), np.nan), np.full(len(counts), np.nan)
     rows = [counts.index(k) for k in good]
-    # One number alone among several would get a probability of 1 for want of rivals.
-    if (len(good) > 1 or len(counts) == 1) and prior[rows].sum() > 0:
+    if _has_its_rivals(counts, good, value) and prior[rows].sum() > 0:
         chance[rows], error[rows] = probabilities(value, covariance, prior[rows])
     steps = {}
     for k in good:

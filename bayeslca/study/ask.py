@@ -26,17 +26,19 @@ def ask(folder: Path, *texts: str) -> str:
     BayesLCAError
         When the results cannot be opened, or a statement cannot be used.
     """
-    posterior = Posterior.load(open_results(folder).main_fit)
-    answers = [_answer(posterior, text) for text in texts]
+    results = open_results(folder)
+    posterior = Posterior.load(results.main_fit)
+    seed = int(results.record.get("seed") or 0)  # the study's own, so that page and answer agree
+    answers = [_answer(posterior, text, seed) for text in texts]
     if not posterior.diagnostics().trustworthy:
         answers.append(NOT_TRUSTED)
     return "\n".join(answers)
 
 
-def _answer(posterior: Posterior, text: str) -> str:
+def _answer(posterior: Posterior, text: str, seed: int = 0) -> str:
     """Answer one statement; a quantity of several groups or classes has a sentence for each."""
     if isinstance(resolve(text, posterior.model.vocabulary), ResolvedRelations):
-        return _wrapped(repr(posterior.test(text)))
+        return _wrapped(repr(posterior.test(text, seed=seed)))
     rows = posterior.quantities([text]).to_dict("records")
     if len(rows) == 1:
         return _wrapped(repr(posterior.quantity(text)))

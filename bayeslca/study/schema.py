@@ -8,7 +8,15 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, field_validator, model_validator
+from pydantic import (
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    StrictBool,
+    field_validator,
+    model_validator,
+)
 
 
 def _as_text(value: Any) -> Any:
@@ -31,7 +39,7 @@ class StudySection(_Section):
 
     title: str = "Latent class study"
     question: str = ""
-    diagnostic: bool = False
+    diagnostic: StrictBool = False
 
 
 class AnswersSection(_Section):
@@ -64,7 +72,7 @@ class ItemSection(_Section):
 
     label: str = ""
     categories: list[Text] | None = None
-    ordered: bool = False
+    ordered: StrictBool = False
     yes: Text | None = None
     merge: dict[str, list[Text]] = {}
     no_answer: list[Text] = []
@@ -83,7 +91,7 @@ class ModelSection(_Section):
     classes: int | list[str] | None = None
     chosen_because: str = ""
     statements: list[str | SourcedStatement] = []
-    free_by_group: bool | list[str] = False
+    free_by_group: StrictBool | list[str] = False
 
     @field_validator("classes")
     @classmethod
@@ -111,7 +119,7 @@ class ClassCountSection(_Section):
 class GroupsSection(_Section):
     """What is asked about the groups."""
 
-    compare_free: bool = False
+    compare_free: StrictBool = False
 
 
 class HypothesisSection(_Section):
@@ -119,7 +127,7 @@ class HypothesisSection(_Section):
 
     claim: str
     statements: list[str] = Field(min_length=1)
-    planned: bool = False
+    planned: StrictBool = False
     rivals: str = ""
     weight: float = Field(default=1.0, gt=0)
 
@@ -127,7 +135,7 @@ class HypothesisSection(_Section):
 class FitSection(_Section):
     """Whether the model is checked against the answers, and how closely."""
 
-    check: bool = True
+    check: StrictBool = True
     calibrate: int = Field(default=0, ge=0, le=10_000)
 
 
@@ -147,7 +155,7 @@ class ReportSection(_Section):
     """What the report shows."""
 
     interval: float = Field(default=0.95, gt=0.5, lt=1)
-    show_cases: bool = False
+    show_cases: StrictBool = False
 
 
 class StudyFile(_Section):

@@ -11,7 +11,12 @@ import pandas as pd
 import pytest
 
 from bayeslca.assess.class_count_words import evidence_in_words, strength
-from bayeslca.assess.class_counts import ClassCounts, checked_prior, class_counts
+from bayeslca.assess.class_counts import (
+    ClassCounts,
+    _has_its_rivals,
+    checked_prior,
+    class_counts,
+)
 from bayeslca.assess.compare import compare_class_counts
 from bayeslca.assess.conditionals import FreeParameters, conditional_parameters
 from bayeslca.assess.evidence import log_evidence
@@ -209,6 +214,25 @@ def test_one_reliable_number_among_several_has_no_probability() -> None:
     found = class_counts({1: fitted(1), 2: changed(posterior, prevalence=swapped)})
     assert found.table["reliable"].tolist() == [True, False]
     assert found.table["probability"].isna().all()
+
+
+@pytest.mark.parametrize(
+    ("counts", "reliable", "weighed"),
+    [
+        ([1, 2, 3], [1, 2, 3], True),
+        ([1, 2, 3], [1, 2], False),  # three, beside the best, may be better still
+        ([1, 2, 3, 4], [1, 2, 3], True),  # 2 is the best; four is not beside it
+        ([1, 2], [1], False),
+        ([1, 3], [1], False),
+        ([2], [2], True),
+        ([1, 2], [], False),
+    ],
+)
+def test_the_best_number_needs_its_neighbours_to_be_weighed(
+    counts: list[int], reliable: list[int], weighed: bool
+) -> None:
+    value = np.array([{1: -90.0, 2: -10.0, 3: -12.0, 4: -13.0}[k] for k in reliable])
+    assert _has_its_rivals(counts, reliable, value) is weighed
 
 
 def test_draws_from_somewhere_else_are_noticed() -> None:

@@ -123,6 +123,7 @@ WRONG = [
     ('case = "committee"', 'case = "committee"\ncluster = "c"', ["clusters", "not supported"]),
     ('case = "committee"', 'case = "committee"\nstratum = "s"', ["strata", "not supported"]),
     ("seed = 7", "seed = 7\n[report]\ninterval = 95", ["[report] interval", "less than 1"]),
+    ("[class_count]", "[items.fees]\nordered = 'yes'\n[class_count]", ["ordered", "boolean"]),
     ("seed = 7", "seed = 7\n[report]\nshow_cases = 'maybe'", ["[report] show_cases", "boolean"]),
     ('file = "answers.csv"', 'file = "answer.csv"', ["answer.csv", "near names: 'answers.csv'"]),
     ('case = "committee"', 'case = "comittee"', ["'comittee'", "near names: 'committee'"]),
