@@ -2,9 +2,15 @@
 
 from __future__ import annotations
 
+import sys
+from collections.abc import Callable
 from pathlib import Path
 
 import pytest
+
+from bayeslca import cli
+
+Run = Callable[..., tuple[int, str, str]]
 
 ANSWERS = """\
 committee,fees,accounts,meets,district
@@ -43,3 +49,20 @@ def folder(tmp_path: Path) -> Path:
     (tmp_path / "answers.csv").write_text(ANSWERS, encoding="utf-8")
     (tmp_path / "study.toml").write_text(STUDY, encoding="utf-8")
     return tmp_path
+
+
+@pytest.fixture
+def run(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> Run:
+    """Return a function that runs the command line and gives exit code, output and errors."""
+
+    def call(*words: object) -> tuple[int, str, str]:
+        monkeypatch.setattr(sys, "argv", ["bayeslca", *map(str, words)])
+        code = 0
+        try:
+            cli.main()
+        except SystemExit as leaving:
+            code = int(leaving.code or 0)
+        said = capsys.readouterr()
+        return code, said.out, said.err
+
+    return call

@@ -11,26 +11,8 @@ from pathlib import Path
 import pytest
 
 import bayeslca
-from bayeslca import cli
 
 Run = Callable[..., tuple[int, str, str]]
-
-
-@pytest.fixture
-def run(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> Run:
-    """Return a function that runs the command line and gives exit code, output and errors."""
-
-    def call(*words: object) -> tuple[int, str, str]:
-        monkeypatch.setattr(sys, "argv", ["bayeslca", *map(str, words)])
-        code = 0
-        try:
-            cli.main()
-        except SystemExit as leaving:
-            code = int(leaving.code or 0)
-        said = capsys.readouterr()
-        return code, said.out, said.err
-
-    return call
 
 
 def test_help_lists_the_commands(run: Run) -> None:

@@ -3,37 +3,19 @@
 from __future__ import annotations
 
 import re
-import sys
 from collections.abc import Callable
 from pathlib import Path
 
 import pytest
 from scipy import stats
 
-from bayeslca import Item, LatentClassModel, cli
+from bayeslca import Item, LatentClassModel
 from bayeslca.exceptions import StatementError
 from bayeslca.study.check import check_study
 from bayeslca.study.prior import beta_prior
 
 Run = Callable[..., tuple[int, str, str]]
 ASKED = ("prior", "--most-likely", 0.8, "--sure", 0.95)
-
-
-@pytest.fixture
-def run(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> Run:
-    """Return a function that runs the command line and gives exit code, output and errors."""
-
-    def call(*words: object) -> tuple[int, str, str]:
-        monkeypatch.setattr(sys, "argv", ["bayeslca", *map(str, words)])
-        code = 0
-        try:
-            cli.main()
-        except SystemExit as leaving:
-            code = int(leaving.code or 0)
-        said = capsys.readouterr()
-        return code, said.out, said.err
-
-    return call
 
 
 def test_the_statement_can_be_pasted_and_its_points_are_those_of_scipy(run: Run) -> None:
