@@ -2,31 +2,19 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
+from collections.abc import Callable
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from bayeslca.exceptions import BayesLCAError, StudyError
 from bayeslca.model.resolve import resolve
 from bayeslca.model.resolved import ResolvedQuantity, ResolvedRelations
-from bayeslca.report.content import Claim
+from bayeslca.report.content import Claim, ReportContent
 
 if TYPE_CHECKING:
-    import pandas as pd
-
     from bayeslca.assess.hypotheses import HypothesisTest
     from bayeslca.assess.rivals import Rivals
-    from bayeslca.posterior.posterior import Posterior
     from bayeslca.study.load import Study
-
-
-@dataclass(frozen=True, eq=False)
-class Theory:
-    """What became of the theory; fields as in `ReportContent`."""
-
-    claims: tuple[Claim, ...] = ()
-    rivals: Mapping[str, Rivals] = field(default_factory=dict)
-    quantities: pd.DataFrame | None = None
 
 
 def check_theory(study: Study) -> None:
@@ -61,10 +49,12 @@ def check_theory(study: Study) -> None:
             raise StudyError(msg)
 
 
-def put_to_the_posterior(study: Study, posterior: Posterior) -> Theory:
+def with_theory(study: Study, content: ReportContent, say: Callable[[str], None]) -> ReportContent:
     """Test the study's hypotheses and compute its quantities."""
     from bayeslca.assess.rivals import compare_rivals
 
+    say("Testing the hypotheses")
+    posterior = content.posterior
     said, seed = study.said, study.said.sampling.seed
     tests: dict[str, HypothesisTest] = {}
     rivals: dict[str, Rivals] = {}
@@ -82,4 +72,6 @@ def put_to_the_posterior(study: Study, posterior: Posterior) -> Theory:
             tests[one.claim] = posterior.test(*one.statements, seed=seed)
     claims = tuple(Claim(one.claim, tests[one.claim], one.planned) for one in said.hypotheses)
     wanted = posterior.quantities(said.quantities, said.report.interval)
-    return Theory(claims, rivals, wanted if said.quantities else None)
+    return replace(
+        content, claims=claims, rivals=rivals, quantities=wanted if said.quantities else None
+    )

@@ -5,13 +5,13 @@ from __future__ import annotations
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
+from bayeslca.report.content import ReportContent
 from bayeslca.report.sections.groups import ALIKE, FREE
 from bayeslca.study.load import Study
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.steps import ALIKE_FIT, FREE_FIT, Steps, step_key
 
 if TYPE_CHECKING:
-    from bayeslca.assess.compare import Comparison
     from bayeslca.model.latent_class_model import LatentClassModel
     from bayeslca.posterior.posterior import Posterior
 
@@ -32,14 +32,15 @@ def group_models(study: Study, model: LatentClassModel) -> dict[str, LatentClass
     }
 
 
-def compared_groups(
-    study: Study, steps: Steps, main: Posterior, progress: JobProgress
-) -> Comparison | None:
-    """Fit and compare both models; None when the study does not ask for it."""
+def with_group_comparison(
+    study: Study, content: ReportContent, steps: Steps, progress: JobProgress
+) -> ReportContent:
+    """Fit and compare both models, if the study asks for it."""
     from bayeslca.assess.compare import compare
 
     if not study.said.groups.compare_free:
-        return None
+        return content
+    main = content.posterior
     sampling, seed = study.sampling_options, study.said.sampling.seed
     fitted: dict[str, Posterior] = {}
     for name, model in group_models(study, main.model).items():
@@ -51,4 +52,4 @@ def compared_groups(
             study.responses, seed=seed, progress=progress.of_model(f"groups {name}"), **sampling
         )
         progress.finished(1)
-    return compare(fitted)
+    return replace(content, group_comparison=compare(fitted))

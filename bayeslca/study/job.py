@@ -17,11 +17,11 @@ from bayeslca.posterior.storage import save
 from bayeslca.report.content import ReportContent
 from bayeslca.report.sections.theory import outcome_in_words
 from bayeslca.study.changes import changes_since
-from bayeslca.study.claims import Theory, check_theory, put_to_the_posterior
-from bayeslca.study.fit_checks import FitChecks, checked_fit, record_of
+from bayeslca.study.claims import check_theory
+from bayeslca.study.fit_checks import record_of
 from bayeslca.study.group_comparison import FILES as GROUP_FITS
-from bayeslca.study.group_comparison import compared_groups
 from bayeslca.study.load import Study, load_study
+from bayeslca.study.parts import Run, with_all_parts
 from bayeslca.study.progress import JobProgress, job_progress
 from bayeslca.study.results import RECORD, previous_results, written_aside
 from bayeslca.study.steps import OWN_FIT, Steps, count_fit, step_key
@@ -83,39 +83,31 @@ def run_study(
         own = _own_posterior(study, steps, progress)
         comparison = _compared(study, steps, own, progress)
         answer = _answer(own, comparison)
-        groups = compared_groups(study, steps, answer.main, progress)
-        progress.say("Testing the hypotheses")
-        theory = put_to_the_posterior(study, answer.main)
-        fit = checked_fit(study, answer.main, comparison, progress.say)
+        content = _content(study, folder, steps, answer, comparison)
+        content = with_all_parts(Run(study, steps, progress), content)
         progress.say("Writing the report")
-        return _results(study, folder, steps, answer, comparison, groups, theory, fit)
+    with written_aside(folder) as aside:
+        headline = _write(aside, study, content, steps, answer)
+    trusted = _trusted(answer.main, comparison, answer.alternatives)
+    return _outcome(folder, headline, content, steps, trusted)
 
 
-def _results(
+def _content(
     study: Study,
     folder: Path,
     steps: Steps,
     answer: _Answer,
     comparison: Comparison | None,
-    groups: Comparison | None,
-    theory: Theory,
-    fit: FitChecks,
-) -> Outcome:
-    main = answer.main
-    content = ReportContent(
+) -> ReportContent:
+    """Return what the report is made from, before the parts add theirs."""
+    return ReportContent(
         responses=study.responses,
-        posterior=main,
+        posterior=answer.main,
         title=study.said.study.title,
         question=study.said.study.question,
         chosen_because=study.said.model.chosen_because,
         comparison=comparison,
         study_row=_study_row(study, answer.rests_on),
-        group_comparison=groups,
-        claims=theory.claims,
-        rivals=theory.rivals,
-        quantities=theory.quantities,
-        checks=fit.main,
-        checks_by_count=fit.by_count,
         alternatives=answer.alternatives,
         diagnostic=study.said.study.diagnostic,
         interval=study.said.report.interval,
@@ -124,13 +116,9 @@ def _results(
         seed=study.said.sampling.seed,
         command=f"bayeslca run {study.path.name} -o {folder.name}",
         study_text=study.text,
-        changes=changes_since(steps.previous, main, study.said.report.interval),
+        changes=changes_since(steps.previous, answer.main, study.said.report.interval),
         replaced=steps.previous is not None,
     )
-    with written_aside(folder) as aside:
-        headline = _write(aside, study, content, steps, answer)
-    trusted = _trusted(main, comparison, answer.alternatives)
-    return _outcome(folder, headline, content, main, steps, trusted)
 
 
 def _own_posterior(study: Study, steps: Steps, progress: JobProgress) -> Posterior | None:
@@ -279,7 +267,6 @@ def _outcome(
     folder: Path,
     headline: str,
     content: ReportContent,
-    main: Posterior,
     steps: Steps,
     trusted: bool,
 ) -> Outcome:
@@ -294,7 +281,7 @@ def _outcome(
             f"{row['quantity']}: {row['median']:.3g} ({row['lower']:.3g} to {row['upper']:.3g})"
             for row in content.quantities.to_dict("records")
         ]
-    lines.append(main.diagnostics().verdict)
+    lines.append(content.posterior.diagnostics().verdict)
     if content.checks is not None and not content.checks.reproduces:
         lines.append(content.checks.verdict)
     if steps.kept:

@@ -9,7 +9,8 @@ import pandas as pd
 import pytest
 
 from bayeslca.exceptions import StudyError
-from bayeslca.study.fit_checks import checked_fit, record_of
+from bayeslca.report.content import ReportContent
+from bayeslca.study.fit_checks import record_of, with_fit_checks
 from bayeslca.study.job import run_study
 from bayeslca.study.load import load_study
 
@@ -50,12 +51,13 @@ def test_a_study_may_ask_for_calibrated_p_values(folder: Path) -> None:
     assert study.model is not None
     posterior = study.model.sample(study.responses, seed=1, draws=100, ess=100, progress=False)
     told: list[str] = []
-    found = checked_fit(study, posterior, None, told.append)
-    assert found.main is not None
-    assert found.main.calibrated_in == 2
-    assert found.by_count == {}
+    content = ReportContent(responses=study.responses, posterior=posterior)
+    found = with_fit_checks(study, content, told.append)
+    assert found.checks is not None
+    assert found.checks.calibrated_in == 2
+    assert found.checks_by_count == {}
     assert told[-1] == "Checking the fit: simulated study 2 of 2"
-    kept = record_of(found.main)
+    kept = record_of(found.checks)
     assert kept is not None
     assert kept["simulated_studies"] == 2
 

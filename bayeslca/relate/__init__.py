@@ -1,0 +1,1 @@
+"""What goes with class: predictors, outcomes, levels and complex samples."""

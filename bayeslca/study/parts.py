@@ -1,0 +1,67 @@
+"""Parts of a run that come after the fits: each adds to what the report is made from.
+
+A part is a function of the run and the content so far, and returns the content with its own
+fields filled. A part that the study does not ask for returns the content as it came.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TypeAlias
+
+from bayeslca.report.content import ReportContent
+from bayeslca.study.claims import with_theory
+from bayeslca.study.fit_checks import with_fit_checks
+from bayeslca.study.group_comparison import with_group_comparison
+from bayeslca.study.load import Study
+from bayeslca.study.progress import JobProgress
+from bayeslca.study.steps import Steps
+
+
+@dataclass(frozen=True)
+class Run:
+    """What a part may use besides the content.
+
+    Attributes
+    ----------
+    study : Study
+    steps : Steps
+        Fits that can be taken over from the run before.
+    progress : JobProgress
+        Told what is being done.
+    """
+
+    study: Study
+    steps: Steps
+    progress: JobProgress
+
+
+Part: TypeAlias = Callable[[Run, ReportContent], ReportContent]
+
+
+def _group_comparison(run: Run, content: ReportContent) -> ReportContent:
+    return with_group_comparison(run.study, content, run.steps, run.progress)
+
+
+def _theory(run: Run, content: ReportContent) -> ReportContent:
+    return with_theory(run.study, content, run.progress.say)
+
+
+def _fit_checks(run: Run, content: ReportContent) -> ReportContent:
+    return with_fit_checks(run.study, content, run.progress.say)
+
+
+PARTS: tuple[Part, ...] = (
+    _group_comparison,
+    _theory,
+    _fit_checks,
+)
+"""All parts, in the order in which they are done."""
+
+
+def with_all_parts(run: Run, content: ReportContent) -> ReportContent:
+    """Do every part that the study asks for."""
+    for part in PARTS:
+        content = part(run, content)
+    return content
