@@ -14,6 +14,7 @@ from math import factorial
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
+from bayeslca.assess.likelihood_model import likelihood_model
 from bayeslca.exceptions import ModelError
 from bayeslca.model.blocks import inside_blocks
 from bayeslca.model.latent_class_model import LatentClassModel
@@ -36,15 +37,16 @@ def labelled(model: LatentClassModel, found: Parameters, group_cases: Floats) ->
     group_cases : ndarray, shape (groups,)
     """
     if model.naming_rules:
+        free = likelihood_model(model)
         order = permutations_by_rules(
-            model.table,
+            free.table,
             found.elements[None],
             found.prevalence[None],
             model.naming_rules,
-            model.symmetry.prior_group,
+            free.symmetry.prior_group,
             group_cases,
         )[0]
-        return _permuted(model, found, order) or found
+        return _permuted(free, found, order) or found
     if model.exploratory:
         overall = group_cases @ found.prevalence
         return _permuted(model, found, np.argsort(-overall, kind="stable")) or found

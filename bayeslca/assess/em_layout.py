@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, NamedTuple
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
+from bayeslca.assess.likelihood_model import likelihood_model
 from bayeslca.assess.order_chains import OrderChains, order_chains
 from bayeslca.model.blocks import BlockArrays
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
@@ -95,7 +96,8 @@ class AllBlocks:
 
     @classmethod
     def of(cls, model: LatentClassModel) -> AllBlocks:
-        """Lay the blocks of a model end to end."""
+        """Lay the blocks of a model end to end; see `likelihood_model` for its naming rules."""
+        model = likelihood_model(model)
         table, source = model.table, model.prevalence_source
         if isinstance(source, ConstrainedPrevalence):
             second, element, share = source.blocks, source.element, source.share

@@ -191,7 +191,7 @@ def maximum_likelihood(
     refuse_impossible(model.table, table, responses)
     points = _points(blocks, units, table, responses, starting_points, seed, start)
     found = climb_from(blocks, table, points, threads)
-    return _result(blocks, units, table, responses, found)
+    return _result(model, blocks, units, table, responses, found)
 
 
 def _points(
@@ -236,9 +236,13 @@ def _points(
 
 
 def _result(
-    blocks: AllBlocks, units: Units, table: UnitTable, responses: Responses, found: Climbed
+    model: LatentClassModel,
+    blocks: AllBlocks,
+    units: Units,
+    table: UnitTable,
+    responses: Responses,
+    found: Climbed,
 ) -> MaximumLikelihood:
-    model = blocks.model
     sizes = np.bincount(units.group, weights=units.count, minlength=model.n_groups)
     group_cases = np.asarray(sizes, dtype=np.float64)
     best = labelled(model, blocks.parameters(found.elements), group_cases)

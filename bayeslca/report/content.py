@@ -11,7 +11,9 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.assess.compare import Comparison
+    from bayeslca.assess.criteria_beside import CriteriaBeside
     from bayeslca.assess.hypotheses import HypothesisTest
+    from bayeslca.assess.likelihood_ratio import LikelihoodRatioTest
     from bayeslca.assess.predictive_checks import PredictiveChecks
     from bayeslca.assess.rivals import Rivals
     from bayeslca.posterior.posterior import Posterior
@@ -85,6 +87,11 @@ class ReportContent:
         Whether the model reproduces the answers; None when not checked.
     checks_by_count : mapping of int to PredictiveChecks
         The same of the models of ``comparison``.
+    criteria : CriteriaBeside or None
+        Maximum likelihood of the models of ``comparison`` (of the one model, where there is no
+        comparison); None when not asked for.
+    one_class_fewer : tuple of LikelihoodRatioTest
+        Bootstrap tests of one class fewer, as far as asked for.
     alternatives : mapping of str to Posterior
         Other numbers of classes that the data support as well, where the study leaves the number
         open; each is shown beside the answer. Keys are headings ("2 classes").
@@ -123,6 +130,8 @@ class ReportContent:
     quantities: pd.DataFrame | None = None
     checks: PredictiveChecks | None = None
     checks_by_count: Mapping[int, PredictiveChecks] = field(default_factory=dict)
+    criteria: CriteriaBeside | None = None
+    one_class_fewer: tuple[LikelihoodRatioTest, ...] = ()
     alternatives: Mapping[str, Posterior] = field(default_factory=dict)
     diagnostic: bool = False
     interval: float = 0.95

@@ -10,6 +10,7 @@ import numpy as np
 
 from bayeslca.report.columns import column
 from bayeslca.report.priors import priors_table
+from bayeslca.report.sections.likelihood import likelihood_tables
 from bayeslca.report.wording import level
 
 if TYPE_CHECKING:
@@ -98,6 +99,7 @@ def file_tables(
             "fit_sum_scores": ("Cases by their sum score", content.checks.sum_scores),
         }
         named |= {name: table for name, table in fit.items() if not table[1].empty}
+    named |= likelihood_tables(content)
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
 

@@ -17,6 +17,7 @@ from bayeslca.report.sections.class_counts import class_counts_section
 from bayeslca.report.sections.classes import classes_section
 from bayeslca.report.sections.fit import fit_section
 from bayeslca.report.sections.groups import groups_section
+from bayeslca.report.sections.likelihood import likelihood_section
 from bayeslca.report.sections.limits import limits_section
 from bayeslca.report.sections.membership import membership_section
 from bayeslca.report.sections.methods import methods_section
@@ -86,6 +87,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         class_counts_section(facts),
         groups_section(facts),
         fit_section(facts),
+        likelihood_section(facts),
         theory_section(facts),
         membership_section(facts),
         assumptions_section(facts),

@@ -14,6 +14,7 @@ from bayeslca.report.content import ReportContent
 from bayeslca.study.claims import with_theory
 from bayeslca.study.fit_checks import with_fit_checks
 from bayeslca.study.group_comparison import with_group_comparison
+from bayeslca.study.likelihood import with_maximum_likelihood
 from bayeslca.study.load import Study
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.steps import Steps
@@ -52,10 +53,15 @@ def _fit_checks(run: Run, content: ReportContent) -> ReportContent:
     return with_fit_checks(run.study, content, run.progress.say)
 
 
+def _maximum_likelihood(run: Run, content: ReportContent) -> ReportContent:
+    return with_maximum_likelihood(run.study, content, run.progress.say)
+
+
 PARTS: tuple[Part, ...] = (
     _group_comparison,
     _theory,
     _fit_checks,
+    _maximum_likelihood,
 )
 """All parts, in the order in which they are done."""
 

@@ -139,6 +139,13 @@ class FitSection(_Section):
     calibrate: int = Field(default=0, ge=0, le=10_000)
 
 
+class MaximumLikelihoodSection(_Section):
+    """Maximum likelihood beside the posterior, for readers who ask for it."""
+
+    starting_points: int = Field(default=100, ge=1, le=10_000)
+    bootstrap: int = Field(default=0, ge=0, le=100_000)
+
+
 class SamplingSection(_Section):
     """How the posterior is computed."""
 
@@ -170,6 +177,7 @@ class StudyFile(_Section):
     hypotheses: list[HypothesisSection] = []
     quantities: dict[str, str] = {}
     fit: FitSection = FitSection()
+    maximum_likelihood: MaximumLikelihoodSection | None = None
     sampling: SamplingSection = SamplingSection()
     report: ReportSection = ReportSection()
 
