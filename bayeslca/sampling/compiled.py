@@ -24,6 +24,7 @@ KERNEL_FILES = (
     "label_move",
     "gibbs",
     "bounded_gibbs",
+    "joint_kernel",
 )
 
 
