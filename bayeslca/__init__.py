@@ -22,6 +22,8 @@ _HOME = {
     "criteria_table": "bayeslca.assess.fit_statistics",
     "likelihood_ratio_test": "bayeslca.assess.likelihood_ratio",
     "log_evidence": "bayeslca.assess.evidence",
+    "place_cases": "bayeslca.relate.placing",
+    "plausible_values": "bayeslca.relate.plausible_values",
     "sample_class_count": "bayeslca.assess.unknown_count",
 }
 """Where each public name lives; loaded when first used, so that importing stays light."""
@@ -43,6 +45,8 @@ __all__ = [
     "criteria_table",
     "likelihood_ratio_test",
     "log_evidence",
+    "place_cases",
+    "plausible_values",
     "sample_class_count",
 ]
 __version__ = "0.1.0"

@@ -136,12 +136,24 @@ def run(study: Path, output: Path, replace: bool, quiet: bool) -> None:
 @click.argument("file", type=_FILE)
 @click.option("-o", "--output", type=_FILE, required=True, help="CSV file to write.")
 @click.option("--sheet", help="Sheet of a workbook (its name, or its number from 1).")
+@click.option("--at-most", type=float, help="Place a case where the expected cost is at most this.")
 @click.option("--replace", is_flag=True, help="Overwrite the output if it is there.")
-def assign(results: Path, file: Path, output: Path, sheet: str | None, replace: bool) -> None:
+def assign(
+    results: Path,
+    file: Path,
+    output: Path,
+    sheet: str | None,
+    at_most: float | None,
+    replace: bool,
+) -> None:
     """Give the class membership of new cases from a finished run."""
     from bayeslca.study.assign import assign_new_cases
 
-    _print(assign_new_cases(results, file, output, sheet=_sheet(sheet), replace=replace))
+    _print(
+        assign_new_cases(
+            results, file, output, sheet=_sheet(sheet), at_most=at_most, replace=replace
+        )
+    )
 
 
 @commands.command()

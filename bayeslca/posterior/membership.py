@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import warnings
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, Literal
 
@@ -58,19 +59,31 @@ class MembershipSummary:
         )
 
 
-def unit_membership(
-    posterior: Posterior, unit_table: UnitTable, interval: float
-) -> MembershipSummary:
-    """Return the membership of each unit, some units at a time to keep memory bounded."""
+def membership_draws(posterior: Posterior, unit_table: UnitTable) -> Iterator[tuple[Ints, Floats]]:
+    """Yield units, some at a time to keep memory bounded, and P(class | answers) in each draw.
+
+    Yields
+    ------
+    which : ndarray of int, shape (units,)
+    draws : ndarray of float64, shape (draw, units, K)
+        Draws of all chains, one chain after another; nan where no class allows the answers.
+    """
     draws, table = posterior.draws, posterior.table
     elements = draws.elements.reshape(-1, table.n_elements)
     prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
     size = max(1, 4 * PIECE // (elements.shape[0] * table.n_classes))
-    none = np.zeros((0, table.n_classes))
-    out = MembershipSummary(none, none, none)
     for first in range(0, unit_table.n_units, size):
         which = np.arange(first, min(first + size, unit_table.n_units))
-        found = membership(table, some_units(unit_table, which), elements, prevalence)
+        yield which, membership(table, some_units(unit_table, which), elements, prevalence)
+
+
+def unit_membership(
+    posterior: Posterior, unit_table: UnitTable, interval: float
+) -> MembershipSummary:
+    """Return the membership of each unit."""
+    none = np.zeros((0, posterior.table.n_classes))
+    out = MembershipSummary(none, none, none)
+    for _, found in membership_draws(posterior, unit_table):
         out = out.followed_by(MembershipSummary.of(found, interval))
     return out
 
@@ -110,12 +123,13 @@ def _by_case(
     """Give each row its unit's membership; rows without an answer have their group's prevalence."""
     draws = posterior.draws.prevalence
     prevalence = MembershipSummary.of(draws.reshape(-1, *draws.shape[2:]), interval)
-    group = _group_of_row(posterior, responses)
+    group = group_of_row(posterior, responses)
     unit = units.unit_of_row
     return found.followed_by(prevalence).rows(np.where(unit >= 0, unit, units.n_units + group))
 
 
-def _group_of_row(posterior: Posterior, responses: Responses) -> Ints:
+def group_of_row(posterior: Posterior, responses: Responses) -> Ints:
+    """Return each row's prevalence row: its group's, or 0 without groups."""
     if posterior.model.groups is None:
         return np.zeros(responses.n_rows, dtype=np.int64)
     return np.asarray(responses.group_codes, dtype=np.int64)
@@ -127,7 +141,7 @@ def _case_keys(posterior: Posterior, responses: Responses) -> pd.DataFrame:
     keys: dict[str, Any] = {"case": list(responses.row_names)}
     if posterior.model.groups is not None:
         levels = np.asarray(posterior.model.groups.levels, dtype=object)
-        keys["group"] = levels[_group_of_row(posterior, responses)]
+        keys["group"] = levels[group_of_row(posterior, responses)]
     if responses.is_table_of_patterns:
         keys["count"] = responses.counts
     return pd.DataFrame(keys)

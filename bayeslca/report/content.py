@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from bayeslca.assess.predictive_checks import PredictiveChecks
     from bayeslca.assess.rivals import Rivals
     from bayeslca.posterior.posterior import Posterior
+    from bayeslca.relate.placing import PlacingRule
     from bayeslca.responses.responses import Responses
 
 
@@ -92,6 +93,12 @@ class ReportContent:
         comparison); None when not asked for.
     one_class_fewer : tuple of LikelihoodRatioTest
         Bootstrap tests of one class fewer, as far as asked for.
+    placing_rule : PlacingRule or None
+        When a case is placed in a class; None when the study does not say.
+    placed : DataFrame or None
+        Where each case is placed by that rule; see `bayeslca.relate.placing.place_cases`.
+    plausible_values : DataFrame or None
+        Drawn classes of the cases; goes into a file of its own.
     alternatives : mapping of str to Posterior
         Other numbers of classes that the data support as well, where the study leaves the number
         open; each is shown beside the answer. Keys are headings ("2 classes").
@@ -132,6 +139,9 @@ class ReportContent:
     checks_by_count: Mapping[int, PredictiveChecks] = field(default_factory=dict)
     criteria: CriteriaBeside | None = None
     one_class_fewer: tuple[LikelihoodRatioTest, ...] = ()
+    placing_rule: PlacingRule | None = None
+    placed: pd.DataFrame | None = None
+    plausible_values: pd.DataFrame | None = None
     alternatives: Mapping[str, Posterior] = field(default_factory=dict)
     diagnostic: bool = False
     interval: float = 0.95

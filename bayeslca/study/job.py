@@ -22,11 +22,14 @@ from bayeslca.study.fit_checks import record_of
 from bayeslca.study.group_comparison import FILES as GROUP_FITS
 from bayeslca.study.load import Study, load_study
 from bayeslca.study.parts import Run, with_all_parts
+from bayeslca.study.placing import check_placing
 from bayeslca.study.progress import JobProgress, job_progress
 from bayeslca.study.results import RECORD, previous_results, written_aside
 from bayeslca.study.steps import OWN_FIT, Steps, count_fit, step_key
 
 if TYPE_CHECKING:
+    import pandas as pd
+
     from bayeslca.assess.compare import Comparison
     from bayeslca.posterior.posterior import Posterior
 
@@ -76,6 +79,7 @@ def run_study(
     previous = previous_results(folder, replace=replace)
     study = load_study(path)
     check_theory(study)
+    check_placing(study)
     steps = Steps(previous)
     fits = len(study.said.class_count.compare) + (study.model is not None)
     fits += 2 * study.said.groups.compare_free
@@ -218,7 +222,9 @@ def _write(
     from bayeslca.report.write import write_report
 
     written = write_report(content, folder)
-    answer.main.membership(interval=content.interval).to_csv(folder / "membership.csv", index=False)
+    _membership(content).to_csv(folder / "membership.csv", index=False)
+    if content.plausible_values is not None:
+        content.plausible_values.to_csv(folder / "plausible_values.csv", index=False)
     (folder / "fits").mkdir()
     for file, posterior in _fits(study, content, answer).items():
         _keep_fit(folder, file, posterior, steps)
@@ -239,6 +245,14 @@ def _write(
     }
     (folder / RECORD).write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
     return written.headline
+
+
+def _membership(content: ReportContent) -> pd.DataFrame:
+    """Return the membership of each case, and where the study's rule places it."""
+    table = content.posterior.membership(interval=content.interval)
+    if content.placed is None:
+        return table
+    return table.join(content.placed.drop(columns="case"))
 
 
 def _fits(study: Study, content: ReportContent, answer: _Answer) -> dict[str, Posterior]:

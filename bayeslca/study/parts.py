@@ -16,6 +16,7 @@ from bayeslca.study.fit_checks import with_fit_checks
 from bayeslca.study.group_comparison import with_group_comparison
 from bayeslca.study.likelihood import with_maximum_likelihood
 from bayeslca.study.load import Study
+from bayeslca.study.placing import with_placing
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.steps import Steps
 
@@ -57,11 +58,16 @@ def _maximum_likelihood(run: Run, content: ReportContent) -> ReportContent:
     return with_maximum_likelihood(run.study, content, run.progress.say)
 
 
+def _placing(run: Run, content: ReportContent) -> ReportContent:
+    return with_placing(run.study, content, run.progress.say)
+
+
 PARTS: tuple[Part, ...] = (
     _group_comparison,
     _theory,
     _fit_checks,
     _maximum_likelihood,
+    _placing,
 )
 """All parts, in the order in which they are done."""
 

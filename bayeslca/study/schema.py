@@ -139,6 +139,14 @@ class FitSection(_Section):
     calibrate: int = Field(default=0, ge=0, le=10_000)
 
 
+class AssignmentSection(_Section):
+    """When a case is placed in a class, and whether classes are drawn for other programs."""
+
+    at_most: float = Field(default=0.2, ge=0, allow_inf_nan=False)
+    costs: dict[str, dict[str, Annotated[float, Field(ge=0, allow_inf_nan=False)]]] = {}
+    plausible_values: int = Field(default=0, ge=0, le=10_000)
+
+
 class MaximumLikelihoodSection(_Section):
     """Maximum likelihood beside the posterior, for readers who ask for it."""
 
@@ -178,6 +186,7 @@ class StudyFile(_Section):
     quantities: dict[str, str] = {}
     fit: FitSection = FitSection()
     maximum_likelihood: MaximumLikelihoodSection | None = None
+    assignment: AssignmentSection | None = None
     sampling: SamplingSection = SamplingSection()
     report: ReportSection = ReportSection()
 

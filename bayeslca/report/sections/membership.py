@@ -2,13 +2,24 @@
 
 from __future__ import annotations
 
-from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
+from bayeslca.relate.placing import UNASSIGNED, PlacingRule
+from bayeslca.report.blocks import (
+    Block,
+    Head,
+    PageTable,
+    Paragraph,
+    Picture,
+    Section,
+    Subheading,
+)
 from bayeslca.report.facts import Facts
 from bayeslca.report.figures import WIDTH, draw
 from bayeslca.report.plots import plot_membership
 from bayeslca.report.wording import (
+    NOTHING,
     called,
     counted,
+    decimal,
     level,
     listed,
     number_interval,
@@ -18,6 +29,13 @@ from bayeslca.report.wording import (
 )
 
 ANCHOR, HEADING = "membership", "How surely cases are placed"
+STEADY = 0.95
+CHECK_FIRST = (
+    "Placing describes cases under this model. Before it decides about anyone: those who answer "
+    "for the decision set the costs; the model is checked on cases like these whose class is "
+    "known; errors are compared between the groups of people that it would touch; local rules and "
+    "licensed practice come first."
+)
 
 
 def membership_section(facts: Facts) -> Section:
@@ -41,6 +59,7 @@ def membership_section(facts: Facts) -> Section:
         _placed_table(facts),
         Paragraph(separation_in_words(facts)),
         _assignment_table(facts),
+        *_placing(facts),
         Paragraph(_where(facts)),
     ]
     if facts.content.show_cases:
@@ -140,12 +159,70 @@ def _assignment_table(facts: Facts) -> PageTable:
     )
 
 
+def _placing(facts: Facts) -> list[Block]:
+    """Return how many cases the study's rule places, and how many it leaves unassigned."""
+    rule, placed = facts.content.placing_rule, facts.content.placed
+    if rule is None or placed is None:
+        return []
+    counts = facts.content.responses.counts
+    rows = []
+    for name in (*facts.class_names, UNASSIGNED):
+        mine = (placed["placed_in"] == name).to_numpy()
+        cost = float((counts[mine] * placed["expected_cost"].to_numpy()[mine]).sum())
+        rows.append(
+            (
+                called(name) if name != UNASSIGNED else name,
+                whole(int(counts[mine].sum())),
+                NOTHING if name == UNASSIGNED else decimal(cost),
+                whole(int(counts[mine & (placed["steady"] < STEADY).to_numpy()].sum())),
+            )
+        )
+    wrong = "expected cost" if rule.costs else "cases expected to be wrong"
+    heads = (
+        Head("Placed in", numeric=False),
+        Head("Cases"),
+        Head(wrong[0].upper() + wrong[1:], "added up over these cases"),
+        Head("Unsteady", "the rule says otherwise in more than 5 % of posterior draws"),
+    )
+    return [
+        Subheading("Cases placed by the study's rule"),
+        Paragraph(_rule_in_words(rule)),
+        PageTable("Cases placed, and left unassigned", heads, tuple(rows)),
+        Paragraph(CHECK_FIRST),
+    ]
+
+
+def _rule_in_words(rule: PlacingRule) -> str:
+    if not rule.costs:
+        least = percent(max(0.0, 1.0 - rule.at_most))
+        return (
+            f"A case is placed in its most probable class when that has a probability of at least "
+            f"{least}, and is left unassigned otherwise."
+        )
+    stated = [
+        f"{cost:g} for {called(truth)} placed in {called(placed)}"
+        for truth, row in rule.costs.items()
+        for placed, cost in row.items()
+    ]
+    return (
+        "A case is placed where the expected cost is lowest, and left unassigned when that is "
+        f"above {rule.at_most:g} (Chow 1970). The costs: {listed(stated)}; any other "
+        "wrong class costs 1."
+    )
+
+
 def _where(facts: Facts) -> str:
     text = (
         "The membership of each case stands in membership.csv beside this page. Do not treat the "
         "most probable class as if it had been observed: relations of class with other variables "
         "come out too weak when it is."
     )
+    drawn = facts.content.plausible_values
+    if drawn is not None:
+        text += (
+            f" For other programs, {counted(drawn.shape[1] - 2, 'drawn class', 'drawn classes')} "
+            f"of each case stand in plausible_values.csv, {drawn['made'].iloc[0]}."
+        )
     if not facts.content.show_cases:
         text += " No single case is shown on this page; the study can ask for it (show_cases)."
     return text

@@ -216,7 +216,7 @@ def test_new_cases_are_assigned_like_the_old(study: Path) -> None:
     assign_new_cases(results, study.parent / "answers.csv", study.parent / "out.csv")
     new = pd.read_csv(study.parent / "out.csv")
     old = pd.read_csv(results / "membership.csv")
-    pd.testing.assert_frame_equal(new, old[new.columns])
+    pd.testing.assert_frame_equal(new[old.columns], old)
 
 
 def test_a_new_answer_is_refused_by_name(study: Path) -> None:
