@@ -18,6 +18,7 @@ from bayeslca.assess.allocated import Allocated
 from bayeslca.assess.order_probability import Forest, forest, log_probability
 from bayeslca.model.blocks import BlockArrays, Blocks
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.table import Table
 
 if TYPE_CHECKING:
@@ -115,6 +116,12 @@ def collapse(model: LatentClassModel) -> Collapsed | None:
         orders = forest(blocks) if bounded else None
         if bounded and orders is None:
             return None
+    elif isinstance(source, PooledPrevalence):
+        # Nothing may be stated on pooled prevalences, so that what they give to the probability
+        # of the classes is the same in all models that are weighed: it is left out.
+        blocks = _plain_blocks(np.zeros((0, 1)))
+        element = np.full(source.concentration.size, -1, dtype=np.int64)
+        share, orders = np.ones(element.size), None
     else:
         a = source.concentration
         blocks = _plain_blocks(a)

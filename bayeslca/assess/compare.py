@@ -47,7 +47,13 @@ Show: TypeAlias = Callable[[FitProgress], None]
 
 
 def class_count_model(
-    responses: Responses, n_classes: int, *, statements: Sequence[str] = (), groups: bool = True
+    responses: Responses,
+    n_classes: int,
+    *,
+    statements: Sequence[str] = (),
+    groups: bool = True,
+    pooled: bool = False,
+    spread_prior: tuple[float, float] = (1.0, 1.0),
 ) -> LatentClassModel:
     """Return the model of a number of classes that a comparison of class counts fits.
 
@@ -59,12 +65,17 @@ def class_count_model(
         What is stated of all classes alike, such as ``"P(fees=yes | .) ~ Beta(2, 2)"``.
     groups : bool
         Whether groups that the responses have get prevalences of their own.
+    pooled, spread_prior
+        Whether these are pooled, and the prior on their spread; see `LatentClassModel`. With one
+        class there is nothing to pool.
     """
     return LatentClassModel(
         responses.items,
         n_classes,
         statements=tuple(statements),
         groups=responses.groups if groups else None,
+        pooled=pooled and n_classes > 1,
+        spread_prior=spread_prior if pooled and n_classes > 1 else (1.0, 1.0),
     )
 
 
@@ -74,6 +85,8 @@ def compare_class_counts(
     *,
     statements: Sequence[str] = (),
     groups: bool = True,
+    pooled: bool = False,
+    spread_prior: tuple[float, float] = (1.0, 1.0),
     seed: Seed = None,
     fitted: Mapping[int, Posterior] | None = None,
     own: LatentClassModel | Posterior | None = None,
@@ -92,6 +105,8 @@ def compare_class_counts(
         Stated of all classes alike, in every model.
     groups : bool
         Whether groups that the responses have get prevalences of their own.
+    pooled, spread_prior
+        As in `class_count_model`.
     seed : int, numpy.random.Generator, numpy.random.SeedSequence or None
         Each count has a stream of its own, so that its row does not depend on the others.
     fitted : mapping from int to Posterior, optional
@@ -109,7 +124,14 @@ def compare_class_counts(
     checked_prior(prior_on_count, wanted)  # before anything is sampled
     entries: dict[Name, LatentClassModel | Posterior] = {}
     for n in wanted:
-        model = class_count_model(responses, n, statements=statements, groups=groups)
+        model = class_count_model(
+            responses,
+            n,
+            statements=statements,
+            groups=groups,
+            pooled=pooled,
+            spread_prior=spread_prior,
+        )
         entries[n] = (fitted or {}).get(n, model)
     if own is not None:
         entries[OWN] = own

@@ -65,6 +65,8 @@ def diagnostics_table(posterior: Posterior, state: ClassState) -> pd.DataFrame:
         Quantities(posterior.draws.log_likelihood[:, :, None]),
     )
     parts = [log_likelihood, posterior.prevalence().assign(quantity="prevalence")]
+    if posterior.model.pooled:
+        parts.append(posterior.between_units())
     if posterior.model.n_classes > 1:
         parts.append(posterior.separation().assign(quantity="separation").drop(columns="note"))
     parts.append(posterior.response_probabilities().assign(quantity="response probability"))

@@ -205,7 +205,7 @@ def _tilts(base: LatentClassModel, sampled: Posterior, allocated: Allocated) -> 
         _imagined(a + n, mean)
         for a, n, mean in zip(base.priors.prevalence, cases, prevalence, strict=True)
     ]
-    if base.exploratory:
+    if base.exploratory or base.pooled:  # pooled: one prior, and nothing is stated on it
         shares = [np.zeros_like(share) for share in shares]
     return _Tilts(tuple(response), tuple(shares))
 

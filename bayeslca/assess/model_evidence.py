@@ -36,6 +36,7 @@ from bayeslca.assess.conditionals import (
 from bayeslca.assess.proposal import Labels, Proposal, labels_of
 from bayeslca.exceptions import ModelError
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.prior_density import log_prior
 from bayeslca.model.probabilities import log_unit_likelihood
@@ -97,6 +98,9 @@ def model_estimates(
         msg = f"there are fewer than {LEAST_DRAWS} draws"
         raise ModelError(msg)
     source: PrevalenceSource = posterior.model.prevalence_source
+    if isinstance(source, PooledPrevalence):
+        msg = "no bridge is written for units that are pooled; compare by leaving units out"
+        raise ModelError(msg)
     if not isinstance(source, DirichletPrevalence | ConstrainedPrevalence):
         msg = f"no evidence is offered where prevalences come from {type(source).__name__}"
         raise ModelError(msg)

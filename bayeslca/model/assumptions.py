@@ -14,8 +14,10 @@ from bayeslca.model.bounds import Bounds, bounded_blocks, element_bounds
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.contradictions import refuse_contradictions
 from bayeslca.model.places import Link, Place, PrevalenceVector, ResponseVector, Vector
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.priors import DEFAULT
+from bayeslca.model.resolved import PrevalencePrior
 from bayeslca.model.ties import Tied, VectorPrior, tie
 
 if TYPE_CHECKING:
@@ -63,7 +65,9 @@ def response_assumptions(model: LatentClassModel) -> Assumptions:
     return _assumed(priors, [link for link in model.links if not link.on_prevalences])
 
 
-def prevalence_source(model: LatentClassModel) -> DirichletPrevalence | ConstrainedPrevalence:
+def prevalence_source(
+    model: LatentClassModel,
+) -> DirichletPrevalence | ConstrainedPrevalence | PooledPrevalence:
     """Return the prior of a model's prevalences.
 
     Raises
@@ -73,6 +77,8 @@ def prevalence_source(model: LatentClassModel) -> DirichletPrevalence | Constrai
     """
     links = [link for link in model.links if link.on_prevalences]
     concentration = model.priors.prevalence
+    if model.pooled:
+        return _pooled(model, links)
     if not links:
         return DirichletPrevalence(concentration)
     priors: dict[Vector, VectorPrior] = {}
@@ -97,6 +103,31 @@ def prevalence_source(model: LatentClassModel) -> DirichletPrevalence | Constrai
         if form.elements:
             element[g, k] = form.elements[0]
     return ConstrainedPrevalence(concentration, element, share, assumed.blocks)
+
+
+def _pooled(model: LatentClassModel, links: Sequence[Link]) -> PooledPrevalence:
+    """Return the common prior of pooled units; what is about single units is refused."""
+    name = model.groups.name if model.groups else "group"
+    stated = {prior.text for prior in model.stated.priors if isinstance(prior, PrevalencePrior)}
+    of_one = [
+        p for p in model.stated.priors if isinstance(p, PrevalencePrior) and p.group is not None
+    ]
+    if of_one or len(stated) > 1:
+        text = of_one[0].text if of_one else sorted(stated)[0]
+        msg = (
+            f"'{text}' gives one {name} a prior of its own, and pooled units have one prior "
+            "together. State it of all classes without a group: it is then the prior of their "
+            "mean. Or leave out pooled=True."
+        )
+        raise ModelError(msg)
+    if links:
+        msg = (
+            f"'{links[0].text}' holds prevalences to be known, equal, bounded or ordered, and no "
+            "sampler is written for that where units are pooled. Test it as a hypothesis on the "
+            "posterior instead, or leave out pooled=True."
+        )
+        raise ModelError(msg)
+    return PooledPrevalence(model.n_groups, model.priors.prevalence[0], model.spread_prior)
 
 
 def _assumed(priors: Mapping[Vector, VectorPrior], links: Sequence[Link]) -> Assumptions:

@@ -23,6 +23,8 @@ CASES_PER_PARAMETER = 5
 """Fewer cases than this for each free parameter are pointed out (common practice, no source)."""
 CASES_PER_CLASS = 20
 """Groups with fewer cases than this for each class are pointed out."""
+FEW_UNITS = 8
+"""Of fewer pooled units it is said that their spread is hardly known (common practice, no source)."""
 MOST_NAMED = 5
 
 
@@ -106,6 +108,9 @@ def _small_groups(model: LatentClassModel, responses: Responses) -> Iterable[Fin
         return
     units = model.units(responses)
     sizes = np.bincount(units.group, weights=units.count, minlength=model.n_groups)
+    if model.pooled:
+        yield from _few_units(model, int(np.sum(sizes > 0)))
+        return
     for level, size in zip(model.groups.levels, sizes, strict=True):
         if size < CASES_PER_CLASS * model.n_classes:
             yield Finding(
@@ -120,6 +125,22 @@ def _small_groups(model: LatentClassModel, responses: Responses) -> Iterable[Fin
                 about=(level,),
                 value=float(size),
             )
+
+
+def _few_units(model: LatentClassModel, n_units: int) -> Iterable[Finding]:
+    """Yield a finding where so few units are pooled that how much they differ is hardly known."""
+    if n_units < FEW_UNITS and model.groups is not None:
+        yield Finding(
+            kind="few_units",
+            level="note",
+            message=(
+                f"{n_units} units ({model.groups.name}) with cases are pooled: how much units "
+                f"differ is hardly known from fewer than {FEW_UNITS}, so the prior on the spread "
+                "counts."
+            ),
+            remedy="Look at posterior.spread_sensitivity(), which tries other priors.",
+            value=float(n_units),
+        )
 
 
 def _heavy_priors(model: LatentClassModel, responses: Responses) -> Iterable[Finding]:

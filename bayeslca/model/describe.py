@@ -12,6 +12,7 @@ from scipy.special import betaincinv
 from bayeslca.model.constraint_words import in_words
 from bayeslca.model.identifiability import count_free
 from bayeslca.model.naming_links import naming_links
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prior_weights import HEAVY, PriorWeight, prior_weights
 from bayeslca.model.priors import DEFAULT
 from bayeslca.model.resolved import PrevalencePrior, ResponsePrior
@@ -132,6 +133,8 @@ def _items(model: LatentClassModel) -> list[str]:
 def _prevalences(model: LatentClassModel, n_cases: int | None) -> list[str]:
     source = model.prevalence_source
     out: list[str] = []
+    if isinstance(source, PooledPrevalence):
+        return _pooled(model, source)
     levels = model.groups.levels if model.groups else ("",)
     alike = (source.concentration == source.concentration[0]).all()
     for g, level in enumerate(levels[:1] if alike else levels):
@@ -150,6 +153,33 @@ def _prevalences(model: LatentClassModel, n_cases: int | None) -> list[str]:
         rest = "" if len(free) == len(model.items) else "; those of the others are the same in all"
         out += _indented(f"Groups differ in the response probabilities of {_listed(free)}{rest}.")
     return out
+
+
+def _pooled(model: LatentClassModel, source: PooledPrevalence) -> list[str]:
+    """Say in words how units are pooled."""
+    assert model.groups is not None  # pooled units are groups
+    name, n = model.groups.name, len(model.groups.levels)
+    a, b = source.spread_prior
+    origin = "the default (uniform)" if (a, b) == (1.0, 1.0) else "as stated"
+    out = _indented(
+        f"Pooled over {n} units ({name}): the prevalences of each {name} are drawn from one "
+        f"Dirichlet with an estimated mean and spread, so that a {name} with few cases borrows "
+        "from the others, as much as they turn out to be alike."
+    )
+    out += _indented(
+        f"Mean: {_dirichlet(source.mean_prior)}{_origin(model, model.priors.prevalence_origin[0])}."
+    )
+    out += _indented(
+        f"Spread, 0 where all units are alike and 1 where each holds one class only: Beta({a:g}, "
+        f"{b:g}), {origin}. Its square is the correlation of two cases of one {name}."
+    )
+    if model.free_items:
+        free = [model.items[j].name for j in sorted(model.free_items)]
+        return out + _indented(
+            f"Units differ in the response probabilities of {_listed(free)}; those of the others "
+            "are the same in all."
+        )
+    return out + _indented("Response probabilities are the same in all units.")
 
 
 def _response_priors(model: LatentClassModel, weights: Sequence[PriorWeight]) -> list[str]:

@@ -21,14 +21,17 @@ from bayeslca.model.describe import describe
 from bayeslca.model.identifiability import Identifiability, identifiability
 from bayeslca.model.model_arguments import (
     check_items,
+    check_pooled,
     check_sources,
     checked_classes,
     checked_free,
+    checked_spread,
     checked_statements,
 )
 from bayeslca.model.naming import classes_named
 from bayeslca.model.naming_links import naming_links
 from bayeslca.model.places import Link
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.position_names import element_names, prevalence_names
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.priors import PriorTable, prior_table
@@ -69,6 +72,13 @@ class LatentClassModel:
         Where a statement comes from, for the report.
     free_by_group : bool or tuple of str
         Items whose response probabilities differ by group; True: all, False: none.
+    pooled : bool
+        True: the groups are units of one kind (districts, herds), whose prevalences are drawn
+        from one Dirichlet with an estimated mean and spread, so that units with few cases borrow
+        from the others. A prior on the prevalences is then that of their mean.
+    spread_prior : tuple of float
+        Beta parameters of the prior on the spread between units, from 0 (all alike) to 1 (each
+        holds one class only); see `bayeslca.model.pooled_prevalence.PooledPrevalence`.
 
     Raises
     ------
@@ -90,6 +100,8 @@ class LatentClassModel:
     groups: Groups | None = None
     statement_sources: Mapping[str, str] = field(default_factory=dict, hash=False)
     free_by_group: bool | tuple[str, ...] = False
+    pooled: bool = False
+    spread_prior: tuple[float, float] = (1.0, 1.0)
 
     def __post_init__(self) -> None:
         # Lists are welcome where tuples are kept; a frozen dataclass is set through object.
@@ -101,6 +113,8 @@ class LatentClassModel:
         check_items(self.items)
         check_sources(self.statement_sources, self.statements)
         keep(self, "free_by_group", checked_free(self.free_by_group, self.items, self.groups))
+        keep(self, "spread_prior", checked_spread(self.spread_prior))
+        check_pooled(self)
         self._refuse_classes_not_told_apart()
 
     @property
@@ -182,7 +196,7 @@ class LatentClassModel:
         return self.stated.naming_rules
 
     @cached_property
-    def prevalence_source(self) -> DirichletPrevalence | ConstrainedPrevalence:
+    def prevalence_source(self) -> DirichletPrevalence | ConstrainedPrevalence | PooledPrevalence:
         """The prior of the prevalences."""
         return prevalence_source(self)
 
@@ -415,6 +429,7 @@ class LatentClassModel:
             "free_by_group": self.free_by_group
             if isinstance(self.free_by_group, bool)
             else list(self.free_by_group),
+            **({"pooled": True, "spread_prior": list(self.spread_prior)} if self.pooled else {}),
         }
 
     @classmethod
@@ -431,6 +446,8 @@ class LatentClassModel:
             groups=groups and Groups(groups["name"], tuple(groups["levels"])),
             statement_sources=values["statement_sources"],
             free_by_group=values.get("free_by_group", False),
+            pooled=values.get("pooled", False),
+            spread_prior=tuple(values.get("spread_prior", (1.0, 1.0))),
         )
 
     def __repr__(self) -> str:
@@ -442,6 +459,8 @@ class LatentClassModel:
             parts.append(f"groups={self.groups.name}: {', '.join(self.groups.levels)}")
         if self.free_by_group:
             parts.append(f"free_by_group={self.free_by_group}")
+        if self.pooled:
+            parts.append("pooled=True")
         return f"LatentClassModel({', '.join(parts)})"
 
     def _refuse_classes_not_told_apart(self) -> None:

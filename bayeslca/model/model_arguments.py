@@ -4,10 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 
+from typing import TYPE_CHECKING
+
 import numpy as np
 
 from bayeslca.exceptions import ModelError, near_names
 from bayeslca.responses.item import Groups, Item
+
+if TYPE_CHECKING:
+    from bayeslca.model.latent_class_model import LatentClassModel
 
 
 def checked_classes(classes: object) -> int | tuple[str, ...]:
@@ -86,6 +91,46 @@ def checked_free(
             )
             raise ModelError(msg)
     return tuple(name for name in names if name in free)
+
+
+def checked_spread(prior: object) -> tuple[float, float]:
+    """Return the Beta parameters of the spread between units, or refuse them."""
+    found = tuple(prior) if isinstance(prior, Sequence) else ()
+    numbers = [float(a) for a in found if isinstance(a, int | float) and not isinstance(a, bool)]
+    if len(found) != 2 or len(numbers) != 2 or not all(0.0 < a < np.inf for a in numbers):
+        msg = (
+            f"spread_prior is {prior!r}; it takes the two parameters of a Beta, both above 0, such "
+            "as (1, 1), which is uniform, or (1, 4), which holds units to be rather alike."
+        )
+        raise ModelError(msg)
+    return numbers[0], numbers[1]
+
+
+def check_pooled(model: LatentClassModel) -> None:
+    """Refuse pooled units where there are none, or where nothing can be pooled."""
+    if not isinstance(model.pooled, bool | np.bool_):
+        msg = f"pooled is {model.pooled!r}; it is True or False."
+        raise ModelError(msg)
+    if not model.pooled:
+        if model.spread_prior != (1.0, 1.0):
+            msg = "spread_prior is about pooled units. Give pooled=True, or leave it out."
+            raise ModelError(msg)
+        return
+    if model.groups is None or len(model.groups.levels) < 2:
+        msg = (
+            "pooled=True takes the prevalences of two or more units together, and the model has "
+            "no groups. Give groups, usually responses.groups (the column of the units)."
+        )
+        raise ModelError(msg)
+    if model.n_classes == 1:
+        msg = "with one class there is no prevalence to pool. Leave out pooled=True."
+        raise ModelError(msg)
+    if len(model.free_items) == len(model.items):
+        msg = (
+            "pooled=True needs classes that mean the same in every unit, and free_by_group lets "
+            "all response probabilities differ. Let the units share some items."
+        )
+        raise ModelError(msg)
 
 
 def check_sources(sources: Mapping[str, str], statements: Sequence[str]) -> None:

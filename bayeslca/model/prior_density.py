@@ -7,12 +7,17 @@ import numpy as np
 from bayeslca._typing import Bools, Floats
 from bayeslca.model.blocks import inside_blocks, log_block_densities
 from bayeslca.model.bounds_probability import log_bounds_probability
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import PrevalenceSource
 from bayeslca.model.table import Table
 
 
 def log_prior(
-    table: Table, source: PrevalenceSource, elements: Floats, prevalence: Floats
+    table: Table,
+    source: PrevalenceSource,
+    elements: Floats,
+    prevalence: Floats,
+    concentration: Floats | None = None,
 ) -> Floats:
     """Return the log density of all parameters under the prior.
 
@@ -22,13 +27,19 @@ def log_prior(
     source : PrevalenceSource
     elements : ndarray, shape (..., E)
     prevalence : ndarray, shape (..., prevalence rows, K)
+    concentration : ndarray, shape (..., K), optional
+        Of pooled units; see `bayeslca.model.pooled_prevalence`.
 
     Returns
     -------
     ndarray, shape (...)
         Minus infinity outside the bounds; inside them divided by the bounds' probability.
     """
-    total = log_block_priors(table, elements).sum(axis=-1) + source.log_density(prevalence)
+    if isinstance(source, PooledPrevalence):
+        of_prevalence = source.log_density(prevalence, concentration)
+    else:
+        of_prevalence = source.log_density(prevalence)
+    total = log_block_priors(table, elements).sum(axis=-1) + of_prevalence
     if table.is_bounded:
         total = total - log_bounds_probability(table).value
         total = np.where(inside_bounds(table, elements), total, -np.inf)

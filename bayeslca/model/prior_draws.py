@@ -10,6 +10,7 @@ from bayeslca._typing import Floats, Ints
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.evaluate import ParameterDraws
 from bayeslca.model.naming import permutations_by_rules
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.symmetry import element_map
 from bayeslca.model.table import Table
@@ -57,8 +58,12 @@ def permuted(
 
 
 def _prevalences(
-    source: DirichletPrevalence | ConstrainedPrevalence, n: int, rng: np.random.Generator
+    source: DirichletPrevalence | ConstrainedPrevalence | PooledPrevalence,
+    n: int,
+    rng: np.random.Generator,
 ) -> Floats:
+    if isinstance(source, PooledPrevalence):
+        return source.simulate_many(rng, n)[0]
     if isinstance(source, ConstrainedPrevalence):
         return source.prevalence(draw_inside(source.blocks, n, rng))
     return np.stack([rng.dirichlet(a, size=n) for a in source.concentration], axis=1)

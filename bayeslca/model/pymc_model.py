@@ -16,6 +16,7 @@ import numpy as np
 from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import ModelError
 from bayeslca.model.compile import compile_units
+from bayeslca.model.pooled_prevalence import PooledPrevalence, spread_of
 from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.pymc_blocks import (
     BlockVariable,
@@ -78,12 +79,27 @@ class Parts:
         count = np.asarray(pm_model["count"].get_value(), dtype=np.int64)
         return replace(parts, units=replace(parts.units, count=count))
 
-    def values(self, elements: Floats, prevalence: Floats) -> dict[str, Floats]:
-        """Return the value of each random variable for elements (E,) and prevalence (rows, K)."""
+    def values(
+        self, elements: Floats, prevalence: Floats, concentration: Floats | None = None
+    ) -> dict[str, Floats]:
+        """Return the value of each random variable.
+
+        For elements (E,), prevalence (rows, K) and, of pooled units, concentration (K,).
+        """
         out = {variable.name: variable.value(elements) for variable in self.variables}
         if self.table.n_classes > 1:
             out["prevalence"] = prevalence if self.by_group else prevalence[0]
+        if concentration is not None:
+            out["mean_prevalence"] = concentration / concentration.sum()
+            out["spread"] = np.clip(spread_of(concentration), 1e-3, 1.0 - 1e-3)
         return out
+
+    def concentration(self, values: Mapping[str, Floats]) -> Floats | None:
+        """Return the concentration (..., K) of pooled units; None where they are not pooled."""
+        if not isinstance(self.source, PooledPrevalence):
+            return None
+        total = np.asarray(values["spread"], dtype=np.float64) ** -2 - 1.0
+        return np.asarray(total[..., None] * values["mean_prevalence"])
 
     def elements(self, values: Mapping[str, Floats], leading: tuple[int, ...] = ()) -> Floats:
         """Return elements (*leading, E) from values by variable name."""
@@ -188,7 +204,7 @@ def build_from_table(
 
     if gibbs and (table.is_bounded or not isinstance(source, DirichletPrevalence)):
         msg = (
-            "the Gibbs step in PyMC does not draw probabilities that are bounded or ordered. Use "
+            "the Gibbs step in PyMC does not draw what is bounded, ordered or pooled. Use "
             "sampler='gibbs' without PyMC, or NUTS (leave out gibbs=True)."
         )
         raise ModelError(msg)
@@ -240,8 +256,8 @@ def _prevalence(
         prevalence = pm.Dirichlet("prevalence", a=a, dims=dims, **options)
     elif concentration is not None and source.n_classes > 1:
         msg = (
-            "concentration= replaces the prior of prevalences that are not constrained; this "
-            "model constrains them. Leave it out, or leave out the statements on prevalences."
+            "concentration= replaces the prior of prevalences that are neither constrained nor "
+            "pooled; this model has such a prior already. Leave out concentration=, or that."
         )
         raise ModelError(msg)
     else:

@@ -133,7 +133,12 @@ class _Watch:
         last, sampled = self.last, self.sampled
         if last is None or sampled is None or not np.array_equal(sampled, drawn.elements):
             return relabel(self.model, self.units, drawn)
-        named = replace(drawn, elements=last.draws.elements, prevalence=last.draws.prevalence)
+        named = replace(
+            drawn,
+            elements=last.draws.elements,
+            prevalence=last.draws.prevalence,
+            concentration=last.draws.concentration,
+        )
         return replace(last, draws=named)
 
 
@@ -153,6 +158,9 @@ def reported_quantities(
             out[f"prevalence of {model.class_names[k]} in group {g + 1}"] = named.prevalence[
                 :, :, g, k
             ]
+    if named.concentration is not None:
+        means = named.concentration / named.concentration.sum(axis=-1, keepdims=True)
+        out |= {f"mean prevalence of {model.class_names[k]}": means[:, :, k] for k in steady}
     for element in _elements_of(model, steady):
         out[f"element {element + 1}"] = named.elements[:, :, element]
     return out

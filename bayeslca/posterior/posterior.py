@@ -17,6 +17,7 @@ from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_unit_likelihood, response_probability
 from bayeslca.model.table import Table, UnitTable
 from bayeslca.posterior import membership as memberships
+from bayeslca.posterior import partial_pooling as partial
 from bayeslca.posterior import quantities as found_quantities
 from bayeslca.posterior import separation as separations
 from bayeslca.posterior import tables
@@ -121,11 +122,62 @@ class Posterior:
         -------
         DataFrame
             A row per class with the key ``latent_class``; with groups, a row per ``group`` and
-            class, then rows of the group "overall" (weighted by group sizes). After the summary
+            class, then rows of the group "overall" (weighted by group sizes); of pooled units
+            before them rows of a unit that was not observed ("a new district"). After the summary
             come ``cases``, ``cases_lower`` and ``cases_upper``: median, lower and upper share
             times the number of cases of the group that gave an answer.
         """
         return tables.prevalence_table(self, self._prevalence_quantities, interval)
+
+    def partial_pooling(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return each pooled unit by itself and with the others taken into account.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``group`` (unit) and ``latent_class`` with ``cases`` (of the unit),
+            ``alone`` (the share that the unit's own cases are most probable under, given the
+            response probabilities; nan without cases), the summary of the pooled prevalence, and
+            ``borrowed``: the share of the estimate that comes from all units together, c / (c +
+            cases), which is a lower bound where classes are not surely known.
+
+        Raises
+        ------
+        BayesLCAError
+            When the model does not pool its units.
+        """
+        return partial.partial_pooling(self, interval)
+
+    def between_units(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return how much pooled units differ.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``quantity`` (and ``latent_class``): the spread, 0 when all units are alike
+            and 1 when each holds one class only; the concentration; each class's mean prevalence
+            over units, units counting alike, and its standard deviation between units. After the
+            summary ``prior_median``, ``prior_lower`` and ``prior_upper``.
+
+        Raises
+        ------
+        BayesLCAError
+            When the model does not pool its units.
+        """
+        return partial.between_units(self, interval)
+
+    def spread_sensitivity(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return what other priors on the spread between units would have given.
+
+        Draws are weighed anew, which is exact but for the number of draws that count.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``prior`` with the spread's ``median``, ``lower`` and ``upper``, the
+            ``largest_change`` of any unit's mean prevalence, and ``draws_that_count``.
+        """
+        return partial.spread_sensitivity(self, interval)
 
     def response_probabilities(self, interval: float = 0.95) -> pd.DataFrame:
         """Return what each class looks like.

@@ -39,10 +39,16 @@ def _rows(posterior: Posterior) -> tuple[list[tuple[str, str, str]], str]:
     frame = posterior.prevalence()
     grouped = posterior.model.groups is not None
     rows = []
-    for row in frame.to_dict("records"):
+    shown = frame
+    if posterior.model.pooled and posterior.model.groups is not None:
+        # Units may be many: partial_pooling shows each of them.
+        shown = frame[~frame["group"].isin(posterior.model.groups.levels)]
+    for row in shown.to_dict("records"):
         name = f"{row['latent_class']}, {row['group']}" if grouped else str(row["latent_class"])
         share = f"{row['median']:.1%} ({row['lower']:.1%} to {row['upper']:.1%})"
-        cases = f"{row['cases']:.0f} ({row['cases_lower']:.0f} to {row['cases_upper']:.0f})"
+        cases = ""
+        if row["cases"] == row["cases"]:  # a unit that was not observed has no cases
+            cases = f"{row['cases']:.0f} ({row['cases_lower']:.0f} to {row['cases_upper']:.0f})"
         rows.append((name, share, cases))
     return rows, "median (95 % interval)"
 

@@ -16,6 +16,7 @@ from uuid import uuid4
 
 import numpy as np
 
+from bayeslca._typing import Floats
 from bayeslca.exceptions import BayesLCAError, StorageError
 from bayeslca.findings import Finding
 from bayeslca.model.latent_class_model import LatentClassModel
@@ -230,8 +231,18 @@ def _draws(tree: DataTree, about: Mapping[str, Any]) -> Draws:
         thin=int(attrs["thin"]),
         seconds=float(attrs["sampling_time"]),
         limit_reached=bool(attrs["limit_reached"]),
+        concentration=_concentration(tree),
         starts=_starts_from_dict(about["starts"]),
     )
+
+
+def _concentration(tree: DataTree) -> Floats | None:
+    """Return what pooled units' prevalences were drawn from; None where they are not pooled."""
+    if "unit_concentration" not in tree["posterior"]:
+        return None
+    mean = tree["posterior"]["mean_prevalence"].to_numpy()
+    total = tree["posterior"]["unit_concentration"].to_numpy()
+    return np.asarray(total[..., None] * mean)
 
 
 def _responses(tree: DataTree, about: Mapping[str, Any]) -> Responses:

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats
+from bayeslca.posterior.partial_pooling import new_unit_draws, new_unit_name
 from bayeslca.posterior.summary import Quantities, summary_frame
 
 if TYPE_CHECKING:
@@ -24,12 +25,16 @@ def overall_prevalence(prevalence: Floats, group_cases: Floats) -> Floats:
 
 
 def prevalence_quantities(posterior: Posterior) -> Quantities:
-    """Return the draws of all prevalences: group by group, then overall where there are groups."""
+    """Return the draws of all prevalences: group by group, then overall where there are groups.
+
+    Of pooled units those of a unit that was not observed stand before the overall ones.
+    """
     draws = posterior.prevalence_draws
     flat = draws.reshape(*draws.shape[:2], -1)
     if posterior.model.groups is not None:
+        new = [new_unit_draws(posterior)] if posterior.model.pooled else []
         overall = overall_prevalence(draws, posterior.group_cases)
-        flat = np.concatenate([flat, overall], axis=-1)
+        flat = np.concatenate([flat, *new, overall], axis=-1)
     return Quantities(flat)
 
 
@@ -42,8 +47,9 @@ def prevalence_table(posterior: Posterior, quantities: Quantities, interval: flo
     sizes = posterior.group_cases
     keys = pd.DataFrame({"latent_class": names})
     if groups is not None:
-        levels = [*groups.levels, OVERALL]
-        sizes = np.append(sizes, sizes.sum())
+        new = [new_unit_name(groups.name)] if posterior.model.pooled else []
+        levels = [*groups.levels, *new, OVERALL]
+        sizes = np.concatenate([sizes, [np.nan] * len(new), [sizes.sum()]])
         keys = pd.DataFrame(
             {
                 "group": np.repeat(levels, len(names)),

@@ -1,6 +1,7 @@
 """The posterior as an xarray DataTree in ArviZ's schema.
 
-Groups: ``posterior`` (prevalence, response_probability), ``sample_stats`` (lp, log_likelihood and
+Groups: ``posterior`` (prevalence, response_probability; of pooled units also mean_prevalence,
+unit_concentration and spread), ``sample_stats`` (lp, log_likelihood and
 what else the sampler noticed), ``unit_log_likelihood`` (one column per distinct answers, with
 ``count``), ``log_prior`` (one entry per block, and the prevalences), ``observed_data`` and
 ``block_draws`` (the elements of the compiled table). ``log_likelihood``, in which a column is a
@@ -17,6 +18,7 @@ import numpy as np
 
 from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import BayesLCAError
+from bayeslca.model.pooled_prevalence import PooledPrevalence, spread_of
 from bayeslca.model.position_names import block_names, element_names
 from bayeslca.model.prior_density import log_block_priors
 
@@ -137,13 +139,17 @@ def _posterior_group(posterior: Posterior) -> Dataset:
         response, response_dims = response[:, :, 0], (*CHAIN, "latent_class", "response")
     else:
         coords["response_group"] = np.arange(response.shape[2])
-    return Dataset(
-        {
-            "prevalence": (prevalence_dims, prevalence),
-            "response_probability": (response_dims, response),
-        },
-        coords=coords,
-    )
+    data: dict[str, Any] = {
+        "prevalence": (prevalence_dims, prevalence),
+        "response_probability": (response_dims, response),
+    }
+    concentration = posterior.draws.concentration
+    if concentration is not None:
+        total = concentration.sum(axis=-1)
+        data["mean_prevalence"] = ((*CHAIN, "latent_class"), concentration / total[..., None])
+        data["unit_concentration"] = (CHAIN, total)
+        data["spread"] = (CHAIN, spread_of(concentration))
+    return Dataset(data, coords=coords)
 
 
 def _sample_stats(posterior: Posterior) -> Dataset:
@@ -185,8 +191,16 @@ def _log_prior(posterior: Posterior) -> Dataset:
     # density they were sampled with. Bounds divide it by a constant, which has no entry here.
     draws = posterior.draws
     blocks = log_block_priors(posterior.table, draws.elements)
-    prevalence = posterior.model.prevalence_source.log_density(draws.prevalence)
-    data: dict[str, Any] = {"prevalence": (CHAIN, prevalence)}
+    source = posterior.model.prevalence_source
+    data: dict[str, Any] = {}
+    if isinstance(source, PooledPrevalence):
+        # Only the top level: that of the units' prevalences is no prior to be scaled (Kallioinen
+        # et al. 2024).
+        assert draws.concentration is not None
+        of_mean, of_spread = source.log_top(draws.concentration)
+        data |= {"mean_prevalence": (CHAIN, of_mean), "spread": (CHAIN, of_spread)}
+    else:
+        data["prevalence"] = (CHAIN, source.log_density(draws.prevalence))
     coords: dict[str, Any] = _chain_coordinates(posterior)
     if blocks.shape[2]:
         data["response_probability"] = ((*CHAIN, "block"), blocks)

@@ -13,11 +13,13 @@ import numpy as np
 from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import SamplingError
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.symmetry import Symmetry, element_map
 from bayeslca.model.table import Table, UnitTable
 from bayeslca.sampling.bounds_layout import Bounded, Shares, bounded, shares
 from bayeslca.sampling.layout import Layout, arrange, workspace
+from bayeslca.sampling.pool_layout import pool
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -41,7 +43,7 @@ class Task:
     ----------
     table : Table
     units : UnitTable
-    source : DirichletPrevalence or ConstrainedPrevalence
+    source : DirichletPrevalence, ConstrainedPrevalence or PooledPrevalence
     layout : Layout
     bounds : Bounded
         Bounds and orders of the table's elements.
@@ -54,7 +56,7 @@ class Task:
 
     table: Table
     units: UnitTable
-    source: DirichletPrevalence | ConstrainedPrevalence
+    source: DirichletPrevalence | ConstrainedPrevalence | PooledPrevalence
     layout: Layout
     bounds: Bounded
     shares: Shares
@@ -66,6 +68,11 @@ class Task:
         """True when probabilities are bounded or ordered, or prevalences constrained."""
         return bool(self.bounds.block.shape[0] or self.shares.element.shape[0])
 
+    @property
+    def is_pooled(self) -> bool:
+        """True when units are pooled."""
+        return isinstance(self.source, PooledPrevalence)
+
 
 @dataclass(frozen=True, eq=False)
 class Kept:
@@ -76,22 +83,33 @@ class Kept:
     elements : ndarray, shape (draw, E)
     prevalence : ndarray, shape (draw, groups, K)
     log_likelihood, swaps : ndarray, shape (draw,)
+    concentration : ndarray, shape (draw, K) or (draw, 0)
+        Of pooled units.
     """
 
     elements: Floats
     prevalence: Floats
     log_likelihood: Floats
     swaps: Floats
+    concentration: Floats
 
     @classmethod
-    def empty(cls, draws: int, n_elements: int, groups: int, n_classes: int) -> Kept:
+    def empty(
+        cls, draws: int, n_elements: int, groups: int, n_classes: int, pooled: bool = False
+    ) -> Kept:
         """Return room for so many draws."""
         return cls(
             np.empty((draws, n_elements)),
             np.empty((draws, groups, n_classes)),
             np.empty(draws),
             np.empty(draws),
+            np.empty((draws, n_classes if pooled else 0)),
         )
+
+    @property
+    def pooled_concentration(self) -> Floats | None:
+        """The concentration; None where units are not pooled."""
+        return self.concentration if self.concentration.shape[-1] else None
 
     def part(self, rows: slice) -> Kept:
         """Return some of the draws (views, not copies)."""
@@ -100,6 +118,7 @@ class Kept:
             self.prevalence[rows],
             self.log_likelihood[rows],
             self.swaps[rows],
+            self.concentration[rows],
         )
 
 
@@ -121,7 +140,7 @@ def make_task(
     SamplingError
         Where the Gibbs sampler has no exact step.
     """
-    if not isinstance(source, DirichletPrevalence | ConstrainedPrevalence):
+    if not isinstance(source, DirichletPrevalence | ConstrainedPrevalence | PooledPrevalence):
         msg = (
             f"prevalences come from {type(source).__name__}, for which the Gibbs sampler has no "
             "exact step. Use sampler='nuts'."
@@ -140,7 +159,7 @@ def make_task(
         bounds=bounded(table),
         shares=shares(source, table.n_classes),
         permutations=permutations,
-        element_maps=np.asarray(maps, dtype=np.int64).reshape(-1, table.n_elements),
+        element_maps=np.asarray(maps, dtype=np.int64).reshape(len(maps), table.n_elements),
     )
 
 
@@ -153,16 +172,28 @@ class Chain:
     elements : ndarray, shape (E,)
     prevalence : ndarray, shape (groups, K)
     rng : numpy.random.Generator
+    concentration : ndarray, shape (K,), optional
+        Where that of pooled units begins; 1 when left out, and forgotten after one sweep.
     """
 
     def __init__(
-        self, task: Task, elements: Floats, prevalence: Floats, rng: np.random.Generator
+        self,
+        task: Task,
+        elements: Floats,
+        prevalence: Floats,
+        rng: np.random.Generator,
+        concentration: Floats | None = None,
     ) -> None:
         self.task = task
         self.elements = np.array(elements, dtype=np.float64)
         self.prevalence = np.array(prevalence, dtype=np.float64, order="C")
         self.rng = rng
         self.sweeps = 0
+        begin = np.ones(task.source.n_classes) if concentration is None else concentration
+        self._state = np.tile(np.asarray(begin, dtype=np.float64), (task.source.n_rows, 1))
+        self._pool = None
+        if isinstance(task.source, PooledPrevalence):
+            self._pool = pool(task.source, task.layout)
         self._work = workspace(task.layout)
         self._seconds_per_sweep = 1e-5
 
@@ -193,7 +224,8 @@ class Chain:
         SamplingError
             When a unit has probability 0 in every class.
         """
-        kept = Kept.empty(draws, self.elements.size, *self.prevalence.shape)
+        groups, n_classes = self.prevalence.shape
+        kept = Kept.empty(draws, self.elements.size, groups, n_classes, pooled=self.task.is_pooled)
         first = 0
         while first < draws:
             if stop is not None and stop.is_set():
@@ -208,6 +240,11 @@ class Chain:
                 report(n_sweeps)
             first = last
         return kept
+
+    @property
+    def concentration(self) -> Floats | None:
+        """Concentration times mean (K,) of pooled units; None where units are not pooled."""
+        return self._state[0].copy() if self.task.is_pooled else None
 
     def _run_block(self, kept: Kept, thin: int) -> None:
         from bayeslca.sampling.gibbs import run_sweeps
@@ -228,7 +265,20 @@ class Chain:
             kept.swaps,
             self.rng,
         )
-        if task.is_bounded:
+        if self._pool is not None:
+            from bayeslca.sampling.pooled_gibbs import run_pooled_sweeps
+
+            failed = run_pooled_sweeps(
+                task.layout,
+                self._work,
+                task.bounds,
+                self._pool,
+                np.empty_like(self.elements),
+                self._state,
+                kept.concentration,
+                *rest[1:],
+            )
+        elif task.is_bounded:
             from bayeslca.sampling.bounded_gibbs import run_bounded_sweeps, scratch
 
             room = scratch(task.layout, task.shares)
@@ -252,6 +302,7 @@ def thinned(older: Kept, newer: Kept) -> Kept:
         np.concatenate([half.prevalence, newer.prevalence]),
         np.concatenate([half.log_likelihood, newer.log_likelihood]),
         np.concatenate([pairs, newer.swaps]),
+        np.concatenate([half.concentration, newer.concentration]),
     )
 
 
@@ -262,4 +313,5 @@ def stacked(chains: Sequence[Kept]) -> Kept:
         np.stack([kept.prevalence for kept in chains]),
         np.stack([kept.log_likelihood for kept in chains]),
         np.stack([kept.swaps for kept in chains]),
+        np.stack([kept.concentration for kept in chains]),
     )

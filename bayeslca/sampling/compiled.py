@@ -25,6 +25,9 @@ KERNEL_FILES = (
     "gibbs",
     "bounded_gibbs",
     "joint_kernel",
+    "pool_layout",
+    "pooled_step",
+    "pooled_gibbs",
 )
 
 

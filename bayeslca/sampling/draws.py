@@ -24,7 +24,8 @@ class Draws:
     log_likelihood : ndarray of float64, shape (chain, draw)
         Of the data at these draws: class summed out, all cases counted.
     log_prior : ndarray of float64, shape (chain, draw)
-        Normalised density of elements and prevalences.
+        Normalised density of elements and prevalences; of pooled units also of their mean and
+        spread, with the units' prevalences as log odds.
     statistics : mapping of str to ndarray, shape (chain, draw)
         What else the sampler noticed: "accepted_swaps" (permutation moves accepted since the
         draw before), "diverging".
@@ -40,6 +41,9 @@ class Draws:
     seconds : float
     limit_reached : bool
         True when the stopping rule was not met before the stated number of sweeps.
+    concentration : ndarray of float64, shape (chain, draw, K), or None
+        Of pooled units: the Dirichlet parameters of their prevalences, concentration times mean
+        (see `bayeslca.model.pooled_prevalence`); None where units are not pooled.
     starts : StartingPoints or None
         Where the chains began and what was dropped; None for a sampler that has no such step.
     """
@@ -56,6 +60,7 @@ class Draws:
     thin: int = 1
     seconds: float = 0.0
     limit_reached: bool = False
+    concentration: Floats | None = None
     starts: StartingPoints | None = None
 
     @property

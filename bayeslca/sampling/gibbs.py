@@ -193,7 +193,7 @@ def run_sweeps(
         for step in range(thin):
             done += 1
             if permutations.shape[0] and done % moves_every == 0:
-                swaps += swap_labels(
+                moved = swap_labels(
                     layout,
                     work,
                     concentration,
@@ -203,6 +203,7 @@ def run_sweeps(
                     prevalence,
                     rng,
                 )
+                swaps += moved > 0
             if step == thin - 1:
                 keep_state(elements, prevalence, kept_elements, kept_prevalence, draw)
             log_likelihood = sweep(layout, work, concentration, elements, prevalence, rng)

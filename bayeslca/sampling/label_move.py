@@ -43,7 +43,7 @@ def swap_labels(
     Returns
     -------
     int
-        1 when accepted, 0 otherwise.
+        The number of the accepted move, counted from 1; 0 when none was accepted.
     """
     move = min(int(rng.random() * permutations.shape[0]), permutations.shape[0] - 1)
     log_ratio = 0.0
@@ -69,4 +69,4 @@ def swap_labels(
     for g in range(prevalence.shape[0]):
         for k in range(prevalence.shape[1]):
             prevalence[g, k] = work.swap_prevalence[g, k]
-    return 1
+    return move + 1

@@ -171,7 +171,9 @@ def sample_pymc_model(
         elements=kept.elements,
         prevalence=kept.prevalence,
         log_likelihood=_log_likelihood(parts, kept),
-        log_prior=log_prior(parts.table, parts.source, kept.elements, kept.prevalence),
+        log_prior=log_prior(
+            parts.table, parts.source, kept.elements, kept.prevalence, kept.concentration
+        ),
         statistics={"diverging": kept.diverging},
         sampler="nuts",
         seed=int(seed) if isinstance(seed, int | np.integer) else None,
@@ -180,6 +182,7 @@ def sample_pymc_model(
         thin=thin,
         seconds=time.perf_counter() - begin,
         limit_reached=not convergence.meets(rule),
+        concentration=kept.concentration,
         starts=points,
     )
 
@@ -209,13 +212,20 @@ class _Kept:
     elements: Floats
     prevalence: Floats
     diverging: Floats
+    concentration: Floats | None = None
 
     def every(self, thin: int) -> _Kept:
         """Keep every thin-th draw; a divergence since the draw before is kept with it."""
         chains, draws = self.diverging.shape
         diverging = self.diverging.reshape(chains, draws // thin, thin).max(axis=2)
         last = slice(thin - 1, None, thin)
-        return _Kept(self.elements[:, last], self.prevalence[:, last], diverging)
+        a = self.concentration
+        return _Kept(
+            self.elements[:, last],
+            self.prevalence[:, last],
+            diverging,
+            None if a is None else a[:, last],
+        )
 
 
 class _Run:
@@ -255,6 +265,7 @@ class _Run:
             elements=self.parts.elements(values, shape),
             prevalence=prevalence.reshape(*shape, table.n_prevalence_rows, table.n_classes),
             diverging=np.asarray(tree.sample_stats["diverging"].values, dtype=np.float64),
+            concentration=self.parts.concentration(values),
         )
 
     def _pymc(self, draws: int, seeds: list[int]) -> Any:
@@ -332,6 +343,7 @@ def _label_free(parts: Parts, kept: _Kept) -> dict[str, Floats]:
         kept.elements,
         kept.prevalence,
         _log_likelihood(parts, kept),
+        kept.concentration,
     )
 
 

@@ -127,11 +127,15 @@ def relabel(model: LatentClassModel, unit_table: UnitTable, draws: Draws) -> Rel
 
 @dataclass(frozen=True, eq=False)
 class _Flat:
-    """Draws of all chains end to end: elements (S, E), prevalence (S, group, K)."""
+    """Draws of all chains end to end: elements (S, E), prevalence (S, group, K).
+
+    Of pooled units also concentration (S, K), whose classes are those of every group.
+    """
 
     elements: Floats
     prevalence: Floats
     log_posterior: Floats
+    concentration: Floats | None = None
 
     @classmethod
     def of(cls, draws: Draws) -> _Flat:
@@ -139,6 +143,9 @@ class _Flat:
             draws.elements.reshape(-1, draws.elements.shape[-1]),
             draws.prevalence.reshape(-1, *draws.prevalence.shape[2:]),
             (draws.log_likelihood + draws.log_prior).reshape(-1),
+            None
+            if draws.concentration is None
+            else draws.concentration.reshape(-1, draws.n_classes),
         )
 
     @property
@@ -153,13 +160,19 @@ class _Flat:
             mine = np.flatnonzero(which.reshape(-1) == at)
             elements[mine] = self.elements[np.ix_(mine, element_map(table, permutation))]
         prevalence = np.take_along_axis(self.prevalence, permutations, axis=-1)
-        return replace(self, elements=elements, prevalence=prevalence)
+        concentration = self.concentration
+        if concentration is not None:
+            concentration = np.take_along_axis(concentration, permutations[:, 0], axis=-1)
+        return replace(self, elements=elements, prevalence=prevalence, concentration=concentration)
 
     def put_into(self, draws: Draws) -> Draws:
         return replace(
             draws,
             elements=self.elements.reshape(draws.elements.shape),
             prevalence=self.prevalence.reshape(draws.prevalence.shape),
+            concentration=None
+            if self.concentration is None or draws.concentration is None
+            else self.concentration.reshape(draws.concentration.shape),
         )
 
 

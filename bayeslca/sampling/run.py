@@ -148,7 +148,13 @@ def sample_table(
         # The chains go on from where the short runs ended, with generators of their own: two
         # chains may go on from one short run.
         running = [
-            Chain(task, one.elements, one.prevalence, np.random.default_rng(child))
+            Chain(
+                task,
+                one.elements,
+                one.prevalence,
+                np.random.default_rng(child),
+                one.concentration,
+            )
             for one, child in zip(begun, sequence.spawn(chains), strict=True)
         ]
         meter = Meter(show, rule, most=max_sweeps * chains)
@@ -242,6 +248,7 @@ class _Rounds:
             found.kept.elements,
             found.kept.prevalence,
             found.kept.log_likelihood,
+            found.kept.pooled_concentration,
         )
         if self.watch is not None:
             draws = _draws(self.task, found, self.points, seed=None, seconds=0.0)
@@ -259,7 +266,9 @@ def _draws(
         elements=kept.elements,
         prevalence=kept.prevalence,
         log_likelihood=kept.log_likelihood,
-        log_prior=log_prior(task.table, task.source, kept.elements, kept.prevalence),
+        log_prior=log_prior(
+            task.table, task.source, kept.elements, kept.prevalence, kept.pooled_concentration
+        ),
         statistics={"accepted_swaps": kept.swaps},
         sampler="gibbs",
         seed=seed,
@@ -268,6 +277,7 @@ def _draws(
         thin=found.thin,
         seconds=seconds,
         limit_reached=found.limit_reached,
+        concentration=kept.pooled_concentration,
         starts=points,
     )
 

@@ -223,7 +223,9 @@ def _scattered(task: Task, rng: np.random.Generator, *, flat: bool) -> Chain:
 
 
 def _log_posterior(task: Task, kept: Kept) -> Floats:
-    return kept.log_likelihood + log_prior(task.table, task.source, kept.elements, kept.prevalence)
+    return kept.log_likelihood + log_prior(
+        task.table, task.source, kept.elements, kept.prevalence, kept.pooled_concentration
+    )
 
 
 def _fit(task: Task, kept: Kept) -> Floats:

@@ -13,6 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
+from bayeslca.model.pooled_prevalence import spread_of
 from bayeslca.model.probabilities import log_unit_likelihood
 from bayeslca.model.table import Table, UnitTable
 
@@ -96,7 +97,12 @@ def judge(quantities: Mapping[str, Floats]) -> Convergence:
 
 
 def label_free(
-    table: Table, watched: UnitTable, elements: Floats, prevalence: Floats, log_likelihood: Floats
+    table: Table,
+    watched: UnitTable,
+    elements: Floats,
+    prevalence: Floats,
+    log_likelihood: Floats,
+    concentration: Floats | None = None,
 ) -> dict[str, Floats]:
     """Return the quantities that do not depend on labels.
 
@@ -108,12 +114,19 @@ def label_free(
     elements : ndarray, shape (chain, draw, E)
     prevalence : ndarray, shape (chain, draw, groups, K)
     log_likelihood : ndarray, shape (chain, draw)
+    concentration : ndarray, shape (chain, draw, K), optional
+        Of pooled units.
     """
     quantities = {"log likelihood": log_likelihood}
     ranked = np.sort(prevalence, axis=-1)[..., ::-1]
     for g in range(ranked.shape[2]):
         for k in range(ranked.shape[3]):
             quantities[f"prevalence of rank {k + 1} in group {g + 1}"] = ranked[:, :, g, k]
+    if concentration is not None:
+        quantities["spread between units"] = spread_of(concentration)
+        means = np.sort(concentration / concentration.sum(axis=-1, keepdims=True), axis=-1)
+        for k in range(means.shape[2]):
+            quantities[f"mean prevalence of rank {k + 1}"] = means[:, :, -1 - k]
     patterns = log_unit_likelihood(table, watched, elements, prevalence)
     for u in range(patterns.shape[-1]):
         quantities[f"probability of watched pattern {u + 1}"] = patterns[..., u]
