@@ -18,12 +18,15 @@ def likelihood_model(model: LatentClassModel) -> LatentClassModel:
     While sampling, a naming rule beside a prior on a single class is an order, since the prior
     and the rule must be of the same class. The likelihood does not change when classes that
     nothing else tells apart change places, so the rules can be applied to any maximum: it is
-    among those that keep the orders. Other models come back as they are.
+    among those that keep the orders. Pooling is a prior too: without it each unit has prevalences
+    of its own. Other models come back as they are.
 
     Parameters
     ----------
     model : LatentClassModel
     """
+    if model.pooled:
+        model = replace(model, pooled=False, spread_prior=(1.0, 1.0))
     if not naming_links(model):
         return model
     texts = tuple(text for text in model.statements if not isinstance(parse(text), Prior))

@@ -135,7 +135,9 @@ class _Half:
 def _halves(posterior: Posterior) -> tuple[_Half, _Half]:
     """Cut the chains in two; a single chain in its first and second half."""
     draws = posterior.draws
-    free = FreeParameters(posterior.table, posterior.model.prevalence_source)
+    source = posterior.model.prevalence_source
+    assert not isinstance(source, PooledPrevalence)  # refused in `model_estimates`
+    free = FreeParameters(posterior.table, source)
     values = free.joined(draws.elements, draws.prevalence)
     log_posterior = draws.log_likelihood + draws.log_prior
     if draws.n_chains > 1:

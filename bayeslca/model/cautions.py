@@ -24,7 +24,7 @@ CASES_PER_PARAMETER = 5
 CASES_PER_CLASS = 20
 """Groups with fewer cases than this for each class are pointed out."""
 FEW_UNITS = 8
-"""Of fewer pooled units it is said that their spread is hardly known (common practice, no source)."""
+"""With fewer pooled units their spread is hardly known (common practice, no source)."""
 MOST_NAMED = 5
 
 

@@ -72,7 +72,7 @@ class PooledPrevalence:
 
     def simulate(self, rng: np.random.Generator) -> Floats:
         """Draw prevalences (row, K) from the prior."""
-        return self.simulate_many(rng, 1)[0][0]
+        return np.asarray(self.simulate_many(rng, 1)[0][0])
 
     def simulate_many(self, rng: np.random.Generator, n: int) -> tuple[Floats, Floats]:
         """Draw prevalences (n, row, K), and the concentrations (n, K) behind them."""

@@ -35,6 +35,7 @@ if TYPE_CHECKING:
 
     from bayeslca.assess.convergence import Diagnostics
     from bayeslca.assess.hypotheses import HypothesisTest
+    from bayeslca.assess.leave_one_unit_out import LeaveOneUnitOut
     from bayeslca.assess.predictive_checks import PredictiveChecks
 
 Rows = Literal["cases", "patterns"]
@@ -310,6 +311,27 @@ class Posterior:
         from bayeslca.assess.hypotheses import hypothesis_test
 
         return hypothesis_test(self, *statements, seed=seed)
+
+    def leave_one_unit_out(self, *, refit: bool = False, seed: int = 0) -> LeaveOneUnitOut:
+        """Return how well each unit (group) is predicted from the others.
+
+        The unit's own prevalences are summed out: accuracy for a *new* unit. Leave-one-out in
+        ``compare`` is of a new case of a known unit.
+
+        Parameters
+        ----------
+        refit : bool
+            Fit the model anew without each unit whose importance weights are not reliable.
+        seed : int
+
+        Raises
+        ------
+        ModelError
+            When the responses have no units, or the prevalences of units are constrained.
+        """
+        from bayeslca.assess.leave_one_unit_out import leave_one_unit_out
+
+        return leave_one_unit_out(self, refit=refit, seed=seed)
 
     def predictive_checks(
         self,

@@ -5,7 +5,7 @@ from __future__ import annotations
 import threading
 import time
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -91,7 +91,7 @@ class Kept:
     prevalence: Floats
     log_likelihood: Floats
     swaps: Floats
-    concentration: Floats
+    concentration: Floats = field(default_factory=lambda: np.zeros((0, 0)))
 
     @classmethod
     def empty(

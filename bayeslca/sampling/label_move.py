@@ -45,7 +45,7 @@ def swap_labels(
     int
         The number of the accepted move, counted from 1; 0 when none was accepted.
     """
-    move = min(int(rng.random() * permutations.shape[0]), permutations.shape[0] - 1)
+    move: int = min(int(rng.random() * permutations.shape[0]), permutations.shape[0] - 1)
     log_ratio = 0.0
     for e in range(elements.shape[0]):
         old = element_maps[move, e]

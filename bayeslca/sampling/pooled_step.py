@@ -14,6 +14,7 @@ conjugate (section 5.3).
 from __future__ import annotations
 
 import math
+
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
@@ -43,7 +44,8 @@ def draw_pool(
 
     Parameters
     ----------
-    mean_prior, spread_prior, at_least, parameter, mean, start : see `bayeslca.sampling.pool_layout.Pool`
+    mean_prior, spread_prior, at_least, parameter, mean, start
+        See `bayeslca.sampling.pool_layout.Pool`.
     class_count : ndarray of int64, shape (row, K)
     concentration : ndarray of float64, shape (row, K)
         Concentration times mean, the same in every row; replaced by the new draw.
@@ -94,7 +96,7 @@ def _log_density(eta: float, spread_prior: Floats, at_least: Ints, mean: Floats)
     """Log density of the log concentration, given mean and classes; up to a constant."""
     total = math.exp(eta)
     log_spread = -0.5 * math.log1p(total)
-    out = spread_prior[0] * log_spread + eta - math.log1p(total)
+    out: float = spread_prior[0] * log_spread + eta - math.log1p(total)
     if spread_prior[1] != 1.0:
         out += (spread_prior[1] - 1.0) * math.log(-math.expm1(log_spread))
     last = at_least.shape[0] - 1
