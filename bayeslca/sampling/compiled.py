@@ -28,6 +28,11 @@ KERNEL_FILES = (
     "pool_layout",
     "pooled_step",
     "pooled_gibbs",
+    "outcome_forms",
+    "outcome_density",
+    "slice_step",
+    "outcome_regression",
+    "outcome_draws",
 )
 
 
