@@ -6,6 +6,7 @@ from importlib import import_module
 from typing import Any
 
 _HOME = {
+    "ClassOutcomes": "bayeslca.relate.class_outcomes",
     "Comparison": "bayeslca.assess.compare",
     "GibbsStep": "bayeslca.sampling.pymc_step",
     "Groups": "bayeslca.responses.item",
@@ -15,6 +16,7 @@ _HOME = {
     "Posterior": "bayeslca.posterior.posterior",
     "Responses": "bayeslca.responses.responses",
     "class_count_test": "bayeslca.assess.likelihood_ratio",
+    "class_outcomes": "bayeslca.relate.class_outcomes",
     "compare": "bayeslca.assess.compare",
     "compare_class_counts": "bayeslca.assess.compare",
     "compare_rivals": "bayeslca.assess.rivals",
@@ -30,6 +32,7 @@ _HOME = {
 """Where each public name lives; loaded when first used, so that importing stays light."""
 
 __all__ = [
+    "ClassOutcomes",
     "Comparison",
     "GibbsStep",
     "Groups",
@@ -39,6 +42,7 @@ __all__ = [
     "Posterior",
     "Responses",
     "class_count_test",
+    "class_outcomes",
     "compare",
     "compare_class_counts",
     "compare_rivals",

@@ -159,7 +159,7 @@ def _numbers(table: CaseTable, column: str, kind: str, names: Sequence[str]) -> 
 def _at_cases(
     column: str, what: str, values: Any, wrong: Bools, names: Sequence[str], remedy: str
 ) -> str:
-    cases = [names[i] for i in np.flatnonzero(wrong)]
+    cases = [names[i] for i in np.flatnonzero(wrong).tolist()]
     shown = ", ".join(
         f"{value} (case {case})"
         for value, case in zip(list(values)[:MOST_SHOWN], cases[:MOST_SHOWN], strict=True)
@@ -271,7 +271,7 @@ def _missing(outcome: Outcome, names: Sequence[str]) -> tuple[Finding, ...]:
     gone = np.flatnonzero(~outcome.seen)
     if not gone.size:
         return ()
-    cases = tuple(names[i] for i in gone)
+    cases = tuple(names[i] for i in gone.tolist())
     return (
         Finding(
             "outcome_missing",

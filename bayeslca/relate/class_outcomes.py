@@ -1,0 +1,466 @@
+"""Outcomes that follow from class: means of each class, three ways."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from functools import cached_property
+from typing import TYPE_CHECKING, Any, Literal
+
+import numpy as np
+
+from bayeslca._typing import Floats, Ints
+from bayeslca.exceptions import ModelError, near_names
+from bayeslca.findings import Finding
+from bayeslca.model.probabilities import membership
+from bayeslca.relate import outcome_tables as tables
+from bayeslca.relate.case_units import CaseUnits, case_units
+from bayeslca.relate.error_matrix import PLACEMENTS, Placement
+from bayeslca.relate.match_labels import refuse_unmatched_groups
+from bayeslca.relate.outcome_checks import outcome_checks, replicated_outcomes
+from bayeslca.relate.outcome_column import Outcome, OutcomeKind, read_outcome
+from bayeslca.relate.outcome_cut import CUT_DRAWS, cut_draws
+from bayeslca.relate.outcome_draws import OutcomeDraws
+from bayeslca.relate.outcome_joint import MAX_SWEEPS, joint_draws
+from bayeslca.relate.outcome_model import CountModel, OutcomeModel, outcome_model
+from bayeslca.relate.outcome_three_steps import (
+    CORRECTIONS,
+    FIRST_STEP_DRAWS,
+    Correction,
+    ThreeSteps,
+    three_steps,
+)
+from bayeslca.relate.overdispersion import overdispersion
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from bayeslca.posterior.posterior import Posterior
+
+Way = Literal["joint", "cut", "three_steps"]
+WAYS: tuple[Way, ...] = ("joint", "cut", "three_steps")
+COUNT_MODELS = ("check", "poisson", "negative_binomial")
+SPREADS = ("by_class", "equal")
+OVERDISPERSED = 0.05
+"""Counts vary too much for a Poisson when its replicates do so less often than this."""
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class ClassOutcomes:
+    """What follows from class in one outcome.
+
+    Ways stand one under another in every table: ``joint`` (the outcome helps to shape the
+    classes), ``cut`` (it cannot), and the three-step corrections ``inverse_error_matrix`` and
+    ``fixed_error_likelihood``. The way to report is the cut, unless the outcome is meant to
+    define the classes.
+
+    Attributes
+    ----------
+    outcome : Outcome
+    model : OutcomeModel
+        Form and priors.
+    class_names : tuple of str
+    case_names : tuple of str
+    drawn : mapping of str to OutcomeDraws
+        Draws of the joint way and of the cut.
+    steps : mapping of str to ThreeSteps or None
+        Three-step estimates by correction; None where there was none.
+    answers_membership : ndarray, shape (N, K)
+        P(class | answers) of the measurement model.
+    checks : DataFrame
+        Posterior predictive check by ``way``; see `bayeslca.relate.outcome_checks`.
+    findings : tuple of Finding
+    adjusted_for : str
+        Formula of the covariates; empty when there are none.
+    covariate_names : tuple of str
+    count_model : {"poisson", "negative_binomial", ""}
+    placement : {"modal", "proportional"}
+        How cases were placed in the three-step ways.
+    seed : int or None
+    """
+
+    outcome: Outcome
+    model: OutcomeModel
+    class_names: tuple[str, ...]
+    case_names: tuple[str, ...]
+    drawn: Mapping[str, OutcomeDraws]
+    steps: Mapping[str, ThreeSteps | None]
+    answers_membership: Floats
+    checks: pd.DataFrame
+    findings: tuple[Finding, ...]
+    adjusted_for: str = ""
+    covariate_names: tuple[str, ...] = ()
+    count_model: str = ""
+    placement: Placement = "modal"
+    seed: int | None = None
+
+    @property
+    def ways(self) -> tuple[str, ...]:
+        """The ways in the order of the tables."""
+        return (*self.drawn, *self.steps)
+
+    @cached_property
+    def expected_cases(self) -> Floats:
+        """Cases with an outcome that are expected in each class, shape (K,)."""
+        return np.asarray(self.answers_membership[self.model.seen].sum(axis=0))
+
+    def means(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return the mean of each class.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``way`` and ``latent_class``: of binary outcomes the probability of yes, of
+            ordered ones the mean place counted from 1; adjusted ones averaged over the covariates
+            of all cases. ``cases``: expected in the class, with an outcome.
+        """
+        return tables.means_table(self, interval)
+
+    def differences(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return all differences of class means.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``way``, ``latent_class`` and ``other_class``: mean of the first less that
+            of the other; ``probability_larger``, the posterior probability that it is above 0;
+            and the standardised ``effect`` with ``effect_lower`` and ``effect_upper``, see
+            `bayeslca.relate.outcome_quantities.EFFECTS`.
+        """
+        return tables.differences_table(self, interval)
+
+    def categories(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return the probability of each ``category`` of an ordered outcome, by class and way."""
+        return tables.categories_table(self, interval)
+
+    def parameters(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return standard deviations or sizes by class, and slopes of covariates, by way."""
+        return tables.parameters_table(self, interval)
+
+    def order(self, text: str) -> pd.DataFrame:
+        """Return how probable an order of class means is.
+
+        Parameters
+        ----------
+        text : str
+            Such as ``"managed < informal < lapsed"``.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``way`` that has draws: ``probability``, its ``mcse``, and
+            ``prior_probability``, that of any order of so many classes.
+        """
+        return tables.order_table(self, text)
+
+    def membership_moved(self) -> pd.DataFrame:
+        """Return each case's membership from its answers, and given the outcome by each way.
+
+        Returns
+        -------
+        DataFrame
+            A row per ``case``: ``modal_class_<way>`` and ``probability_<class>_<way>`` for the
+            ways "answers", "cut" and "joint"; ``moved``, how far joint and cut differ (half the
+            sum of absolute differences, 0 to 1), and ``changed``, whether their modal classes do.
+        """
+        return tables.moved_table(self)
+
+    def __repr__(self) -> str:
+        from bayeslca.relate.outcome_words import as_terminal_text
+
+        return as_terminal_text(self)
+
+
+def class_outcomes(
+    posterior: Posterior,
+    data: Any,
+    column: str,
+    *,
+    kind: OutcomeKind,
+    ways: Sequence[Way] = WAYS,
+    adjusted_for: str | None = None,
+    count_model: Literal["check", "poisson", "negative_binomial"] = "check",
+    spread: Literal["by_class", "equal"] = "by_class",
+    corrections: Sequence[Correction] = CORRECTIONS,
+    placement: Placement = "modal",
+    levels: Sequence[Any] | None = None,
+    yes: Any = None,
+    label: str = "",
+    case: str | None = None,
+    no_answer: Sequence[Any] = (),
+    seed: int | None = None,
+    draws: int = 1000,
+    held: int = CUT_DRAWS,
+    ess: float = 1000.0,
+    max_sweeps: int = MAX_SWEEPS,
+    threads: int | None = None,
+    interval: float = 0.95,
+    **how_to_read: Any,
+) -> ClassOutcomes:
+    """Relate an outcome to class, three ways.
+
+    Parameters
+    ----------
+    posterior : Posterior
+        Of the measurement model: the number of classes is settled without the outcome.
+    data : path or data frame
+        With a row per case and the outcome's column; cases are matched by their id.
+    column : str
+    kind : {"numeric", "binary", "count", "ordered"}
+    ways : sequence of {"joint", "cut", "three_steps"}
+        The joint way is always shown beside the cut.
+    adjusted_for : str, optional
+        Formula of covariates, such as ``"district + age"``. Class means are then standardised.
+    count_model : {"check", "poisson", "negative_binomial"}
+        Of counts. "check" takes the negative binomial where counts vary more within classes than
+        a Poisson gives.
+    spread : {"by_class", "equal"}
+        Whether each class has a variance (or a negative binomial's size) of its own.
+    corrections : sequence of {"inverse_error_matrix", "fixed_error_likelihood"}
+        Of the three-step way.
+    placement : {"modal", "proportional"}
+        How cases are placed in the three-step way.
+    levels : sequence, optional
+        Categories of an ordered outcome from the lowest to the highest.
+    yes : optional
+        Which value of a binary outcome counts.
+    label : str
+        What tables and report call the outcome.
+    case : str, optional
+        Column of case ids in ``data``, when it is called otherwise than in the answers.
+    no_answer : sequence
+        Values that mean that there is none.
+    seed : int, optional
+    draws : int
+        Kept draws per chain of the joint way.
+    held : int
+        Draws of the measurement model that are held in the cut.
+    ess, max_sweeps : see `bayeslca.sampling.joint_gibbs.sample_joint`
+    threads : int, optional
+    interval : float
+        Of the checks' replicates.
+    **how_to_read
+        ``sheet``, ``header_row``, ``encoding``, ``separator``, ``keep_only`` of a file.
+
+    Returns
+    -------
+    ClassOutcomes
+
+    Raises
+    ------
+    ModelError
+        When an option is unknown, or classes are not the same in all groups.
+    ResponsesError
+        When the outcome cannot be used as it is; the message names the cases.
+    """
+    from bayeslca.relate.outcome_words import outcome_findings
+
+    _check_options(ways, count_model, spread, corrections, placement)
+    refuse_unmatched_groups(posterior)
+    responses = posterior.responses
+    outcome = read_outcome(
+        responses, data, column, kind, case=case, levels=levels, yes=yes, label=label,
+        no_answer=no_answer, **how_to_read,
+    )  # fmt: skip
+    covariate, names, noticed = _covariates(
+        posterior, data, adjusted_for, case=case, no_answer=no_answer, **how_to_read
+    )
+    work = _Work(posterior, outcome, covariate, spread == "equal", seed, threads)
+    chosen: CountModel = "negative_binomial" if count_model == "check" else count_model
+    counted: tuple[Finding, ...] = ()
+    if kind == "count" and count_model == "check":
+        chosen, counted = work.count_model()
+    model = work.model(chosen)
+    drawn: dict[str, OutcomeDraws] = {}
+    if "joint" in ways:
+        drawn["joint"] = joint_draws(
+            posterior, model, work.cases, seed=work.seed_of(1), draws=draws, ess=ess,
+            max_sweeps=max_sweeps, threads=threads,
+        )  # fmt: skip
+    if "joint" in ways or "cut" in ways:
+        drawn["cut"] = work.cut(model, held)
+    steps: dict[str, ThreeSteps | None] = {}
+    stopped: dict[str, str] = {}
+    if "three_steps" in ways:
+        steps, stopped = work.three_steps(model, corrections, placement)
+    found = ClassOutcomes(
+        outcome=outcome,
+        model=model,
+        class_names=posterior.model.class_names,
+        case_names=responses.row_names,
+        drawn=drawn,
+        steps=steps,
+        answers_membership=work.membership,
+        checks=work.checks(model, drawn, interval),
+        findings=(),
+        adjusted_for=adjusted_for or "",
+        covariate_names=names,
+        count_model=chosen if kind == "count" else "",
+        placement=placement,
+        seed=seed,
+    )
+    findings = (*outcome.findings, *noticed, *counted, *outcome_findings(posterior, found, stopped))
+    return replace(found, findings=findings)
+
+
+def _check_options(
+    ways: Sequence[str],
+    count_model: str,
+    spread: str,
+    corrections: Sequence[str],
+    placement: str,
+) -> None:
+    given = [
+        *(("ways", way, WAYS) for way in ways),
+        ("count_model", count_model, COUNT_MODELS),
+        ("spread", spread, SPREADS),
+        *(("corrections", correction, CORRECTIONS) for correction in corrections),
+        ("placement", placement, PLACEMENTS),
+    ]
+    for name, value, known in given:
+        if value not in known:
+            msg = f"{name}: there is no {value!r}{near_names(str(value), known)}. "
+            raise ModelError(msg + f"Take from {', '.join(known)}.")
+    if not ways:
+        msg = f"ways is empty; take from {', '.join(WAYS)}."
+        raise ModelError(msg)
+
+
+def _covariates(
+    posterior: Posterior, data: Any, adjusted_for: str | None, **how_to_read: Any
+) -> tuple[Floats | None, tuple[str, ...], tuple[Finding, ...]]:
+    """Return the covariates' columns (N, p), their names, and what was noticed."""
+    if adjusted_for is None:
+        return None, (), ()
+    msg = "adjusted_for is not supported yet."
+    raise ModelError(msg)
+
+
+@dataclass(frozen=True, eq=False)
+class _Work:
+    """What all ways need of a measurement model and an outcome."""
+
+    posterior: Posterior
+    outcome: Outcome
+    covariate: Floats | None
+    equal_spread: bool
+    seed: int | None
+    threads: int | None
+
+    def seed_of(self, part: int) -> np.random.SeedSequence:
+        """Return the seed of one part of the work: it does not depend on which others are done."""
+        return np.random.SeedSequence(self.seed, spawn_key=(part,))
+
+    @cached_property
+    def group(self) -> Ints | None:
+        """Group of each case; None when the model has none."""
+        if self.posterior.model.groups is None:
+            return None
+        return np.asarray(self.posterior.responses.group_codes, dtype=np.int64)
+
+    @cached_property
+    def cases(self) -> CaseUnits:
+        """A unit for every case."""
+        n = self.posterior.responses.n_rows
+        group = np.zeros(n, dtype=np.int64) if self.group is None else self.group
+        return case_units(
+            self.posterior.model, self.posterior.responses, group, apart=np.arange(float(n))
+        )
+
+    def model(self, count_model: CountModel) -> OutcomeModel:
+        """Return the outcome's model."""
+        return outcome_model(
+            self.outcome.kind,
+            self.outcome.value,
+            self.posterior.model.n_classes,
+            n_levels=len(self.outcome.levels) if self.outcome.kind == "ordered" else 0,
+            covariate=self.covariate,
+            count_model=count_model,
+            equal_spread=self.equal_spread,
+        )
+
+    def cut(self, model: OutcomeModel, draws: int) -> OutcomeDraws:
+        """Draw the outcome's parameters by the cut."""
+        return cut_draws(
+            self.posterior, model, self.cases, draws=draws, seed=self.seed_of(2),
+            threads=self.threads,
+        )  # fmt: skip
+
+    @cached_property
+    def membership_draws(self) -> Floats:
+        """P(class | answers) of each case at some draws, shape (draw, N, K)."""
+        draws, table = self.posterior.draws, self.posterior.table
+        elements = draws.elements.reshape(-1, table.n_elements)
+        prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+        most = max(FIRST_STEP_DRAWS, min(1000, 40_000_000 // (elements.shape[1] + 1)))
+        size = self.cases.units.n_units * table.n_classes
+        most = int(np.clip(20_000_000 // size, FIRST_STEP_DRAWS, most))
+        at = np.linspace(0, len(elements) - 1, min(most, len(elements))).round().astype(int)
+        found = membership(table, self.cases.units, elements[at], prevalence[at])
+        return np.asarray(found[:, self.cases.unit_of_case])
+
+    @cached_property
+    def membership(self) -> Floats:
+        """P(class | answers) of each case, shape (N, K)."""
+        return np.asarray(self.membership_draws.mean(axis=0))
+
+    def three_steps(
+        self, model: OutcomeModel, corrections: Sequence[Correction], placement: Placement
+    ) -> tuple[dict[str, ThreeSteps | None], dict[str, str]]:
+        """Return the estimates by correction, and why there is none where there is none."""
+        n = len(self.membership_draws)
+        at = np.linspace(0, n - 1, min(FIRST_STEP_DRAWS, n)).round().astype(int)
+        steps: dict[str, ThreeSteps | None] = {}
+        stopped: dict[str, str] = {}
+        for correction in corrections:
+            try:
+                steps[correction] = three_steps(
+                    model,
+                    self.membership,
+                    correction=correction,
+                    class_names=self.posterior.model.class_names,
+                    membership_draws=self.membership_draws[at],
+                    by=placement,
+                    group=self.group,
+                )
+            except ModelError as error:
+                steps[correction], stopped[correction] = None, str(error)
+        return steps, stopped
+
+    def count_model(self) -> tuple[CountModel, tuple[Finding, ...]]:
+        """Choose between Poisson and negative binomial by how counts vary within classes."""
+        seen = self.outcome.seen
+        rng = np.random.default_rng(self.seed_of(3))
+        found = overdispersion(self.outcome.value[seen], self.membership[seen], rng)
+        is_over = found.p < OVERDISPERSED
+        p = "below 0.01" if found.p < 0.01 else f"{found.p:.2f}"
+        finding = Finding(
+            "counts_overdispersed" if is_over else "counts_poisson",
+            "note",
+            f"{self.outcome.text} varies {found.ratio:.2g} times as much within classes as Poisson "
+            f"counts would (these: {found.lower:.2g} to {found.upper:.2g}; p {p}), so "
+            f"{'the negative binomial' if is_over else 'the Poisson'} is used.",
+            about=(self.outcome.name,),
+            value=found.ratio,
+        )
+        return ("negative_binomial" if is_over else "poisson"), (finding,)
+
+    def checks(
+        self, model: OutcomeModel, drawn: Mapping[str, OutcomeDraws], interval: float
+    ) -> pd.DataFrame:
+        """Return the posterior predictive checks of all ways that have draws."""
+        import pandas as pd
+
+        seed = int(self.seed_of(5).generate_state(1)[0])
+        names = self.posterior.model.class_names
+        parts = []
+        for way, one in drawn.items():
+            replicates = replicated_outcomes(self.posterior, model, self.cases, one, seed=seed)
+            frame = outcome_checks(
+                self.outcome, model, replicates, self.membership, names, interval
+            )
+            frame.insert(0, "way", way)
+            parts.append(frame)
+        frame = pd.concat(parts, ignore_index=True) if parts else pd.DataFrame(columns=["way"])
+        frame.attrs["interval"] = interval
+        return frame

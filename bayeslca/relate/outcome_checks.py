@@ -1,0 +1,142 @@
+"""Posterior predictive check of an outcome: would the model have given such values.
+
+A replicate keeps each case's answers and covariates. At a draw of all parameters its class is
+drawn given the answers alone, and its outcome given the class. Statistics of single classes are
+weighted by the memberships that the answers give, the same weights on both sides.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayeslca._typing import Floats
+from bayeslca.model.probabilities import class_shares, log_joint
+from bayeslca.posterior.tables import OVERALL
+from bayeslca.relate.case_units import CaseUnits
+from bayeslca.relate.outcome_draws import OutcomeDraws, flattened
+from bayeslca.relate.outcome_model import OutcomeModel
+from bayeslca.relate.outcome_quantities import simulate_outcome
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from bayeslca.posterior.posterior import Posterior
+    from bayeslca.relate.outcome_column import Outcome
+
+REPLICATES = 1000
+MISSED = 0.01
+"""A check with a p below this is a misfit."""
+
+
+def replicated_outcomes(
+    posterior: Posterior,
+    model: OutcomeModel,
+    cases: CaseUnits,
+    drawn: OutcomeDraws,
+    *,
+    most: int = REPLICATES,
+    seed: int = 0,
+) -> Floats:
+    """Draw the outcome of all cases anew, shape (replicate, N)."""
+    rng = np.random.default_rng(seed)
+    flat = flattened(drawn, most)
+    out = np.empty((len(flat.elements), model.value.size))
+    for part, joint in log_joint(posterior.table, cases.units, flat.elements, flat.prevalence):
+        below = np.cumsum(class_shares(joint), axis=0)[:-1]  # (K - 1, U, draws)
+        for s, at in enumerate(range(len(flat.elements))[part]):
+            u = rng.random(below.shape[1])
+            classes = (u >= below[:, :, s]).sum(axis=0)[cases.unit_of_case]
+            out[at] = simulate_outcome(model, flat.by_class[at], flat.shared[at], classes, rng)
+    return out
+
+
+def statistics(
+    outcome: Outcome, value: Floats, weights: Floats, class_names: tuple[str, ...]
+) -> dict[tuple[str, str], Floats]:
+    """Return statistics (...) of outcomes (..., n), by their name and class.
+
+    Parameters
+    ----------
+    outcome : Outcome
+    value : ndarray, shape (..., n)
+    weights : ndarray, shape (n, K)
+        Memberships from the answers alone.
+    class_names : tuple of str
+    """
+    out: dict[tuple[str, str], Floats] = {}
+    mean = value.mean(axis=-1)
+    away = value - mean[..., None]
+    sd = np.sqrt((away**2).mean(axis=-1))
+    if outcome.kind in ("numeric", "count"):
+        out["mean", OVERALL] = mean
+        out["standard deviation", OVERALL] = sd
+        with np.errstate(invalid="ignore", divide="ignore"):
+            out["skewness", OVERALL] = np.nan_to_num((away**3).mean(axis=-1) / sd**3)
+        out["largest", OVERALL] = value.max(axis=-1)
+        if outcome.kind == "count":
+            out["share of zeros", OVERALL] = (value == 0.0).mean(axis=-1)
+        else:
+            out["smallest", OVERALL] = value.min(axis=-1)
+    elif outcome.kind == "binary":
+        out["share of yes", OVERALL] = mean
+    else:
+        for j, level in enumerate(outcome.levels):
+            out[f"share of {level}", OVERALL] = (value == j).mean(axis=-1)
+    name = "share of yes" if outcome.kind == "binary" else "mean"
+    shift = float(outcome.kind == "ordered")  # places are counted from 1
+    for k, latent_class in enumerate(class_names):
+        share = weights[:, k] / weights[:, k].sum()
+        centre = value @ share
+        out[name, latent_class] = centre + shift
+        if outcome.kind != "binary":
+            spread = (value - centre[..., None]) ** 2 @ share
+            out["standard deviation", latent_class] = np.sqrt(spread)
+    return out
+
+
+def outcome_checks(
+    outcome: Outcome,
+    model: OutcomeModel,
+    replicates: Floats,
+    membership: Floats,
+    class_names: tuple[str, ...],
+    interval: float = 0.95,
+) -> pd.DataFrame:
+    """Compare statistics of the outcome with those of replicates.
+
+    Returns
+    -------
+    DataFrame
+        A row per ``statistic`` and ``latent_class`` ("overall": all cases) with ``observed``,
+        ``expected``, ``lower``, ``upper`` of the replicates, and ``p``: twice the smaller of the
+        shares of replicates that are as high or as low, at most 1; ``p_mcse`` is its error.
+    """
+    import pandas as pd
+
+    seen = model.seen
+    observed = statistics(outcome, model.value[seen], membership[seen], class_names)
+    replicated = statistics(outcome, replicates[:, seen], membership[seen], class_names)
+    n = len(replicates)
+    tail = (1.0 - interval) / 2.0
+    rows = []
+    for key, found in replicated.items():
+        value = float(observed[key])
+        share = min(float((found >= value).mean()), float((found <= value).mean()))
+        lower, upper = np.quantile(found, [tail, 1.0 - tail])
+        rows.append(
+            {
+                "statistic": key[0],
+                "latent_class": key[1],
+                "observed": value,
+                "expected": float(found.mean()),
+                "lower": float(lower),
+                "upper": float(upper),
+                "p": min(1.0, 2.0 * share),
+                "p_mcse": 2.0 * float(np.sqrt(max(share * (1.0 - share), 1.0 / n) / n)),
+            }
+        )
+    frame = pd.DataFrame(rows)
+    frame.attrs["interval"] = interval
+    return frame
