@@ -15,6 +15,7 @@ Political Analysis 18, 450-469 (equations 6, 11 and 14).
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Literal
 
 import numpy as np
@@ -80,12 +81,47 @@ class ErrorMatrix:
     def log_likelihood(self) -> Floats:
         """Log of P(placed as it was | class), shape (N, K), which is held fixed in step three.
 
-        For cases placed in shares, the shares' mean of the log (Vermunt 2010).
+        Raises
+        ------
+        ModelError
+            When cases are placed in shares: each share is then a record of its own, see
+            `mean_log_mixture`.
         """
+        if np.any(self.placed.max(axis=1) < 1.0):
+            msg = "cases are placed in shares, so a case has no single log likelihood."
+            raise ModelError(msg)
+        return np.asarray(np.einsum("ns,nts->nt", self.placed, self._log_share[self.group]))
+
+    def mean_log_mixture(self, log_joint: Floats) -> Floats:
+        """Return the log likelihood of each case, averaged over where it was placed.
+
+        Parameters
+        ----------
+        log_joint : ndarray, shape (N, K)
+            log P(class) + log density of what is related to class.
+
+        Returns
+        -------
+        ndarray, shape (N,)
+            Sum over s of (share placed in s) log sum over t of P(t) density P(s | t) (Vermunt
+            2010, equation 14).
+        """
+        logs = self._log_share
+        out = np.zeros(len(log_joint))
+        for s in range(log_joint.shape[1]):
+            mine = self.placed[:, s] > 0.0
+            if mine.any():
+                terms = log_joint[mine] + logs[self.group[mine], :, s]
+                highest = terms.max(axis=1)
+                logged = highest + np.log(np.exp(terms - highest[:, None]).sum(axis=1))
+                out[mine] += self.placed[mine, s] * logged
+        return out
+
+    @cached_property
+    def _log_share(self) -> Floats:
+        """Logs of ``share``, shape (G, K true, K placed); those of 0 very small."""
         with np.errstate(divide="ignore"):
-            logs = np.log(self.share)  # (G, K true, K placed)
-        logs = np.maximum(logs, np.log(np.finfo(np.float64).tiny))
-        return np.asarray(np.einsum("ns,nts->nt", self.placed, logs[self.group]))
+            return np.maximum(np.log(self.share), np.log(np.finfo(np.float64).tiny))
 
 
 def error_matrix(

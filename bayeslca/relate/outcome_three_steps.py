@@ -213,7 +213,7 @@ class _Objective:
                 return np.asarray((weights * self.density(free)).sum(axis=1))
 
             return weighted
-        fixed, group = placed.log_likelihood, placed.group
+        group = placed.group
         n_groups, n_classes = placed.class_share.shape
         n_shares = n_groups * (n_classes - 1)
 
@@ -222,7 +222,7 @@ class _Objective:
             whole = np.concatenate([np.zeros((n_groups, 1)), logits], axis=1)
             log_share = whole - _log_sum(whole)[:, None]
             outcome = self.density(free[: free.size - n_shares])
-            return _log_sum(log_share[group] + fixed + outcome)
+            return placed.mean_log_mixture(log_share[group] + outcome)
 
         return likelihood
 

@@ -36,6 +36,20 @@ def test_placed_in_proportion() -> None:
     # share[1, 1] = (0.81 + 0.64 + 0.16 + 0.01) / 2.2
     np.testing.assert_allclose(found.share[0, 0, 0], 1.62 / 2.2)
     np.testing.assert_allclose(found.inverse_weights.sum(axis=0), [2.2, 1.8])
+    with pytest.raises(ModelError, match="placed in shares"):
+        _ = found.log_likelihood
+
+
+def test_mean_log_mixture() -> None:
+    joint = np.log([[0.3, 0.2], [0.1, 0.4], [0.2, 0.2], [0.5, 0.1]])
+    modal = error_matrix(MEMBERSHIP)
+    np.testing.assert_allclose(
+        modal.mean_log_mixture(joint),
+        np.log(np.exp(joint + modal.log_likelihood).sum(axis=1)),
+    )
+    shared = error_matrix(MEMBERSHIP, by="proportional")
+    by_hand = np.log(np.exp(joint) @ shared.share[0])  # (case, placed)
+    np.testing.assert_allclose(shared.mean_log_mixture(joint), (MEMBERSHIP * by_hand).sum(axis=1))
 
 
 def test_sure_memberships_have_no_error() -> None:
