@@ -47,8 +47,8 @@ def draw_allocated(posterior: Posterior, seed: int) -> Allocated:
     """
     rng = np.random.default_rng(seed)
     table, units, draws = posterior.table, posterior.units, posterior.draws
-    elements = draws.elements.reshape(-1, table.n_elements)
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    elements = draws.flat_elements
+    prevalence = draws.flat_prevalence
     n, n_groups, n_classes = prevalence.shape
     gave = _answers_given(posterior)
     answers = np.zeros((n, n_groups, n_classes, gave.shape[1]))

@@ -162,4 +162,4 @@ def _takes(table: Table) -> tuple[Floats, Floats] | None:
         log_constant[g, k, a] = np.log(cells[0][0])
         for element in cells[0][1]:
             takes[g, k, a, element] += 1.0
-    return takes.reshape(-1, table.n_elements), log_constant.reshape(-1)
+    return takes.reshape(log_constant.size, table.n_elements), log_constant.reshape(-1)

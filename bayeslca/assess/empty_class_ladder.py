@@ -199,7 +199,7 @@ def _log_ratio(rung: Rung) -> tuple[Floats, Floats]:
     """
     shape = rung.elements.shape[:2]
     prevalence = rung.prevalence.reshape(-1, *rung.prevalence.shape[2:])
-    elements = rung.elements.reshape(-1, rung.table.n_elements)
+    elements = rung.elements.reshape(len(prevalence), rung.table.n_elements)
     a, n_old, cases = rung.concentration, rung.n_classes - 1, rung.cases
     whole, without = _log_likelihoods(rung.table, rung.units, elements, prevalence)
     emptied = logsumexp(without - whole[:, None], axis=1) - np.log(rung.n_classes)

@@ -109,8 +109,8 @@ def replicates(posterior: Posterior, wanted: int, seed: int) -> Replicates:
     table, strata = posterior.table, strata_of(posterior.model, posterior.responses)
     draws = posterior.draws
     at = spread_draws(draws.n_draws, draws.n_chains, wanted)
-    elements = draws.elements[:, at].reshape(-1, draws.elements.shape[-1])
-    prevalence = draws.prevalence[:, at].reshape(-1, *draws.prevalence.shape[2:])
+    elements = np.concatenate(draws.elements[:, at])
+    prevalence = np.concatenate(draws.prevalence[:, at])
     measure = _Measure(table, strata, ItemPairs(strata.items) if table.n_items > 1 else None)
     size = measure.piece
     pieces = [slice(first, first + size) for first in range(0, len(elements), size)]

@@ -82,9 +82,21 @@ class ParameterDraws:
                 k = at.latent_class if latent_class is None else latent_class
                 return np.asarray(self._joint(answers, _group(group, at))[:, k])
             case MembershipTerm(latent_class, answers, group):
-                g = _group(group, at)
-                joint = self.prevalence[:, g] * self._joint(answers, g)
+                joint = self._with_answers(answers, group, at)
                 return np.asarray(joint[:, latent_class] / joint.sum(axis=1))
+
+    def _with_answers(self, answers: Sequence[Answer], group: GroupIndex, at: Instance) -> Floats:
+        """Return P(class and answers), shape (S, K); overall, a case's group is drawn by size."""
+        if group != "overall":
+            g = _group(group, at)
+            return self.prevalence[:, g] * self._joint(answers, g)
+        return sum(
+            (
+                share * self.prevalence[:, g] * self._joint(answers, g)
+                for g, share in enumerate(self.group_share)
+            ),
+            start=np.zeros(self.prevalence[:, 0].shape),
+        )
 
     def _joint(self, answers: Sequence[Answer], group: int) -> Floats:
         """Return the probability (S, K) of answers given together: a product, given the class."""

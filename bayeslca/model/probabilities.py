@@ -8,6 +8,7 @@ gives a log of minus infinity, never a wrong number.
 from __future__ import annotations
 
 from collections.abc import Iterator
+from math import prod
 
 import numpy as np
 from scipy.sparse import csr_array
@@ -176,6 +177,9 @@ def _log_sum(joint: Floats) -> Floats:
 
 def _flat(elements: Floats, prevalence: Floats) -> tuple[Floats, Floats]:
     return (
-        np.asarray(elements, dtype=np.float64).reshape(-1, elements.shape[-1]),
+        np.asarray(elements, dtype=np.float64).reshape(
+            prod(elements.shape[:-1]),
+            elements.shape[-1],  # there may be no elements at all
+        ),
         np.asarray(prevalence, dtype=np.float64).reshape(-1, *prevalence.shape[-2:]),
     )

@@ -130,14 +130,6 @@ def _relation_terms(
         for left, _, right in part.links():
             _check_bound(left, right)
             _check_bound(right, left)
-    for probability, term in terms.items():
-        if isinstance(term, MembershipTerm):
-            msg = "the probability of a class given answers cannot be constrained or tested"
-            remedy = (
-                "Ask for it as a quantity, without a comparison, or call posterior.membership() "
-                "for every case."
-            )
-            raise Refusal(msg, probability.position, remedy)
     return terms
 
 
@@ -187,6 +179,7 @@ def read_statements(texts: Sequence[str], vocabulary: Vocabulary) -> ModelStatem
             case ResolvedNamingRule():
                 rules.append(resolved)
             case ResolvedRelations():
+                _refuse_memberships(resolved)
                 constraints.append(resolved)
             case ResolvedQuantity():
                 msg = "a model assumes statements; this computes something"
@@ -194,3 +187,15 @@ def read_statements(texts: Sequence[str], vocabulary: Vocabulary) -> ModelStatem
                 raise statement_error(Refusal(msg, resolved.expression.position, remedy), text)
     check_naming_rules(rules, vocabulary)
     return ModelStatements(tuple(priors), tuple(rules), tuple(constraints))
+
+
+def _refuse_memberships(resolved: ResolvedRelations) -> None:
+    """Refuse a constraint on a class given answers: it depends on everything at once."""
+    for probability, term in resolved.terms.items():
+        if isinstance(term, MembershipTerm):
+            msg = "the probability of a class given answers cannot be constrained"
+            remedy = (
+                "Test it as a hypothesis after the fit, or constrain the probabilities that it is "
+                "made of."
+            )
+            raise statement_error(Refusal(msg, probability.position, remedy), resolved.text)

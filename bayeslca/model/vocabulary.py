@@ -241,12 +241,9 @@ class Vocabulary:
         conditions.refuse_classes()
         if not conditions.answers:
             return PrevalenceTerm(index, conditions.group)
-        if index is None or conditions.group == "overall":
+        if index is None:
             msg = "the probability of a class given answers needs one class"
             remedy = "Write P(managed | fees=yes), or call posterior.membership() for every case."
-            if index is not None:
-                msg = "the probability of a class given answers is not known overall"
-                remedy = "Give one group, or leave the group out."
             raise Refusal(msg, probability.position, remedy)
         return MembershipTerm(index, conditions.distinct_answers(), conditions.group)
 

@@ -57,8 +57,8 @@ def class_state(table: Table, unit_table: UnitTable, draws: Draws) -> ClassState
     share = membership(
         table,
         unit_table,
-        draws.elements.reshape(-1, table.n_elements)[::step],
-        draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])[::step],
+        draws.flat_elements[::step],
+        draws.flat_prevalence[::step],
     )
     expected = np.einsum("u,suk->sk", unit_table.count, share)
     empty = np.flatnonzero((expected < FEWEST_CASES).mean(axis=0) > 0.5)

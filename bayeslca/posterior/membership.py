@@ -69,8 +69,8 @@ def membership_draws(posterior: Posterior, unit_table: UnitTable) -> Iterator[tu
         Draws of all chains, one chain after another; nan where no class allows the answers.
     """
     draws, table = posterior.draws, posterior.table
-    elements = draws.elements.reshape(-1, table.n_elements)
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    elements = draws.flat_elements
+    prevalence = draws.flat_prevalence
     size = max(1, 4 * PIECE // (elements.shape[0] * table.n_classes))
     for first in range(0, unit_table.n_units, size):
         which = np.arange(first, min(first + size, unit_table.n_units))

@@ -90,8 +90,8 @@ def posterior_parameters(posterior: Posterior) -> ParameterDraws:
     draws = posterior.draws
     return ParameterDraws(
         posterior.table,
-        draws.elements.reshape(-1, draws.elements.shape[-1]),
-        draws.prevalence.reshape(-1, *draws.prevalence.shape[2:]),
+        draws.flat_elements,
+        draws.flat_prevalence,
         group_share(posterior),
     )
 

@@ -42,8 +42,8 @@ class Placement:
 def placement(posterior: Posterior) -> Placement:
     """Go through all draws once for the membership of every unit."""
     draws, units, table = posterior.draws, posterior.unit_table, posterior.table
-    elements = draws.elements.reshape(-1, table.n_elements)
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    elements = draws.flat_elements
+    prevalence = draws.flat_prevalence
     n_draws, n_classes = elements.shape[0], table.n_classes
     mean = np.zeros((n_classes, units.n_units))
     entropy = np.empty(n_draws)

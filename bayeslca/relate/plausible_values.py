@@ -102,8 +102,8 @@ def _from_answers(posterior: Posterior, number: int, rng: np.random.Generator) -
     model, draws, responses = posterior.model, posterior.draws, posterior.responses
     units = model.units(responses)
     table = compile_units(posterior.table, units)
-    elements = draws.elements.reshape(-1, posterior.table.n_elements)
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    elements = draws.flat_elements
+    prevalence = draws.flat_prevalence
     at = np.where(
         units.unit_of_row >= 0,
         units.unit_of_row,

@@ -140,8 +140,8 @@ class _Flat:
     @classmethod
     def of(cls, draws: Draws) -> _Flat:
         return cls(
-            draws.elements.reshape(-1, draws.elements.shape[-1]),
-            draws.prevalence.reshape(-1, *draws.prevalence.shape[2:]),
+            draws.flat_elements,
+            draws.flat_prevalence,
             (draws.log_likelihood + draws.log_prior).reshape(-1),
             None
             if draws.concentration is None

@@ -180,6 +180,35 @@ def test_order_named_by_a_rule_agrees_with_counting(grouped_by_rule: Posterior) 
     )
 
 
+def test_a_predictive_value_is_counted_and_equals_the_prevalence_it_stands_for() -> None:
+    # With known response probabilities P(a | fees=yes) = .9 p / (.9 p + .3 (1 - p)), which is above
+    # one half just where p > 1/4 (Bayes' theorem), in each group and overall alike.
+    rng = np.random.default_rng(8)
+    frame = pd.DataFrame(
+        {"fees": np.where(rng.random(80) < 0.45, "yes", "no"), "herd": ["A", "B"] * 40}
+    )
+    responses = Responses.from_frame(frame, items=binary("fees"), group="herd")
+    model = LatentClassModel(
+        responses.items,
+        ("a", "b"),
+        ("P(fees=yes | a) = 0.9", "P(fees=yes | b) = 0.3"),
+        groups=responses.groups,
+    )
+    posterior = model.sample(responses, seed=2, progress=False)
+    for where in ("herd=A", "overall"):
+        found = posterior.test(f"P(a | fees=yes, {where}) > 0.5")
+        same = posterior.test(f"P(a | {where}) > 0.25")
+        assert found.method == "counted"
+        error = math.hypot(found.posterior_mcse, same.posterior_mcse)
+        assert abs(found.posterior_probability - same.posterior_probability) < 4 * error + 1e-12
+        error = math.hypot(found.prior_mcse, same.prior_mcse)
+        assert abs(found.prior_probability - same.prior_probability) < 4 * error + 1e-12
+        p = posterior.prevalence_draws[..., 0]
+        p = p[..., 0] if where == "herd=A" else p @ [0.5, 0.5]
+        value = posterior.quantity(f"P(a | fees=yes, {where})").median
+        assert value == pytest.approx(np.median(0.9 * p / (0.9 * p + 0.3 * (1 - p))), rel=1e-6)
+
+
 @pytest.mark.parametrize(
     ("text", "message"),
     [
@@ -189,7 +218,7 @@ def test_order_named_by_a_rule_agrees_with_counting(grouped_by_rule: Posterior) 
         ("P(fees=yes | all) == 0.5", "="),
         ("P(fees=yes | all) > 50", "between 0 and 1"),
         ("P(fees=yes | all) - P(meets=yes | all) = 0", "equality cannot be tested"),
-        ("P(all | fees=yes) > 0.5", "cannot be constrained or tested"),
+        ("P(all | fees=yes) = 0.5", "equality cannot be tested"),
     ],
 )
 def test_what_is_no_hypothesis_is_refused(one_class: Posterior, text: str, message: str) -> None:

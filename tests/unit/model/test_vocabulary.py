@@ -209,8 +209,6 @@ REFUSED = [
     (NAMED, "P(managed=yes)", "managed", "takes no answer", "P(managed)"),
     (NAMED, "P(managed | lapsed)", "lapsed", "a class given a class", "group or answers"),
     (NAMED, "P(. | fees=yes)", "P(", "needs one class", "membership()"),
-    (NAMED, "P(managed | fees=yes, overall)", "P(", "not known overall", "one group"),
-    (NAMED, "P(managed | fees=yes) > 0.5", "P(managed", "constrained", "membership()"),
     (NAMED, "P(managed | fees=yes) ~ Beta(1, 1)", "fees", "given answers", "P(managed)"),
     (NAMED, "3 + 4", "+", "no probability", "P(fees=yes | managed)"),
     (NAMED, "P(managed) > 0.2 and 1 > 0", "1 > 0", "no probability", "P(fees=yes | managed)"),
