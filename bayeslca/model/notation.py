@@ -240,10 +240,15 @@ def _distribution(distribution: Distribution) -> str:
 
 
 def _name(name: Name) -> str:
-    if _WORD.fullmatch(name.text) and name.text not in RESERVED:
-        return name.text
-    quote = '"' if "'" in name.text and '"' not in name.text else "'"
-    return quote + name.text.replace(quote, quote * 2) + quote
+    return quoted(name.text)
+
+
+def quoted(name: str) -> str:
+    """Return a name as it stands in a statement, in quotes where it needs them."""
+    if _WORD.fullmatch(name) and name not in RESERVED:
+        return name
+    quote = '"' if "'" in name and '"' not in name else "'"
+    return quote + name.replace(quote, quote * 2) + quote
 
 
 def _number(value: float) -> str:

@@ -6,8 +6,10 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
 
+from bayeslca.exceptions import StatementError
 from bayeslca.model.naming import check_naming_rules
 from bayeslca.model.notation import parse, statement_error
+from bayeslca.model.own_examples import with_own_names
 from bayeslca.model.resolve_priors import resolve_prior
 from bayeslca.model.resolved import (
     MembershipTerm,
@@ -66,11 +68,13 @@ def resolve(text: str, vocabulary: Vocabulary) -> Resolved:
     StatementError
         When it cannot be read, or a name or a probability means nothing in this model.
     """
-    statement = parse(text)
     try:
-        return _resolved(statement, vocabulary, text)
+        return _resolved(parse(text), vocabulary, text)
     except Refusal as refusal:
-        raise statement_error(refusal, text) from None
+        error = statement_error(refusal, text)
+    except StatementError as unreadable:
+        error = unreadable
+    raise with_own_names(error, vocabulary) from None
 
 
 def _resolved(statement: Statement, vocabulary: Vocabulary, text: str) -> Resolved:

@@ -41,7 +41,10 @@ def _sheet_name(file: str, names: list[str], sheet: str | int | None) -> str:
     listed = ", ".join(repr(name) for name in names)
     if sheet is None:
         if len(names) > 1:
-            msg = f"{file}: has {len(names)} sheets ({listed}). Say which with sheet=."
+            msg = (
+                f"{file}: has {len(names)} sheets ({listed}). Name one (sheet; --sheet on the "
+                "command line)."
+            )
             raise ResponsesError(msg)
         return names[0]
     if isinstance(sheet, int):
@@ -60,7 +63,9 @@ def _table(place: str, source: str, rows: list[list[Any]], header_row: int) -> R
     while rows and not any(as_text(value) for value in rows[-1]):
         rows.pop()
     if len(rows) < header_row:
-        msg = f"{place}: has no column names in row {header_row}. Check sheet= and header_row=."
+        msg = (
+            f"{place}: has no column names in row {header_row}. Check the sheet and the header row."
+        )
         raise ResponsesError(msg)
     header, body = rows[header_row - 1], rows[header_row:]
     width = max(
@@ -72,7 +77,9 @@ def _table(place: str, source: str, rows: list[list[Any]], header_row: int) -> R
         msg = f"{place}: row {header_row} is empty. Give the row of the column names as header_row."
         raise ResponsesError(msg)
     if not body:
-        msg = f"{place}: has column names but no rows of answers. Check sheet= and header_row=."
+        msg = (
+            f"{place}: has column names but no rows of answers. Check the sheet and the header row."
+        )
         raise ResponsesError(msg)
     names = tuple(as_text(value) or f"column {i + 1}" for i, value in enumerate(header))
     return RawTable(

@@ -300,7 +300,7 @@ def _outcome(
         lines.append(content.checks.verdict)
     if steps.kept:
         n_kept, n_all = len(steps.kept), len(steps.keys)
-        lines.append(f"{n_kept} of {n_all} fits were unchanged and kept from the run before.")
+        lines.append(f"Kept from the run before, as nothing changed: {n_kept} of {n_all} fits.")
     if not trusted:
         lines.append("Not to be trusted as it stands: the report says where and why.")
     lines.append(f"Report: {place}")

@@ -158,7 +158,9 @@ def _rivals(facts: Facts) -> list[Block]:
             Subheading(f"Rival hypotheses: {name}"),
             Paragraph(
                 f"Of these, “{rivals.best}” is the best supported: it gets "
-                f"{percent(float(str(best)))} of the probability shared among them."
+                f"{percent(float(str(best)))} of the probability shared among them. "
+                "A claim's probability here is its share among the rivals, by their weights "
+                "before; in the table of hypotheses it is that under the model by itself."
             ),
             PageTable(f"Rivals: {name}", heads, rows),
         ]
