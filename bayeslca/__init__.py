@@ -28,6 +28,8 @@ _HOME = {
     "place_cases": "bayeslca.relate.placing",
     "plausible_values": "bayeslca.relate.plausible_values",
     "sample_class_count": "bayeslca.assess.unknown_count",
+    "sample_weighted": "bayeslca.relate.sample_weighted",
+    "weighted_maximum_likelihood": "bayeslca.relate.weighted_likelihood",
 }
 """Where each public name lives; loaded when first used, so that importing stays light."""
 
@@ -54,6 +56,8 @@ __all__ = [
     "place_cases",
     "plausible_values",
     "sample_class_count",
+    "sample_weighted",
+    "weighted_maximum_likelihood",
 ]
 __version__ = "0.1.0"
 

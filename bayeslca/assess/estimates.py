@@ -48,17 +48,21 @@ def estimates(blocks: AllBlocks, units: UnitTable, elements: Floats) -> Estimate
     Elements at 0 or 1, on a bound or held by an order are taken as known, and the standard
     errors of all others are given these.
     """
-    held = _held(blocks, elements)
     fixed = fixed_elements(blocks, elements)
     score = Score.of(blocks, units)
-    found = covariance(score, elements, fixed)
+    return estimates_with(score, elements, fixed, covariance(score, elements, fixed))
+
+
+def estimates_with(score: Score, elements: Floats, fixed: Bools, found: Covariance) -> Estimates:
+    """Return the tables of a solution, with standard errors from a covariance of its own."""
+    blocks = score.blocks
     prevalence = _prevalences(blocks, elements, fixed, found)
     probability = _response_probabilities(score, elements, fixed, found)
     return Estimates(
         prevalence=prevalence,
         response_probability=probability,
         boundary=_boundary(blocks.model, prevalence, probability),
-        active=tuple(blocks.names[e] for e in np.flatnonzero(held)),
+        active=tuple(blocks.names[e] for e in np.flatnonzero(_held(blocks, elements))),
         singular=found.free is None,
     )
 

@@ -11,18 +11,13 @@ import numpy as np
 from bayeslca._typing import Ints
 from bayeslca.exceptions import ResponsesError, near_names
 from bayeslca.findings import Finding
+from bayeslca.responses.design_columns import read_design
 from bayeslca.responses.item import Groups, Item, ItemSpec
 from bayeslca.responses.item_column import ItemColumn, keep_rows
 from bayeslca.responses.problems import Problems
 from bayeslca.responses.raw_table import RawColumn, RawTable
 from bayeslca.responses.role_columns import read_case_ids, read_counts, read_groups
 from bayeslca.responses.spelling import as_text, find_value
-
-NOT_YET = {
-    "weight": "sampling weights",
-    "cluster": "clusters of cases",
-    "stratum": "sampling strata",
-}
 
 
 @dataclass(frozen=True)
@@ -41,6 +36,10 @@ class Roles:
         Values that mean 'no answer' in every item and in the group column.
     merge : mapping of str to sequence
         Spellings that are one answer, in every item.
+    weight, cluster, stratum : str or None
+        Columns of the sample's design.
+    merge_lone_strata : bool
+        Join strata that have one cluster with the next by name.
     """
 
     items: Sequence[Any]
@@ -50,6 +49,10 @@ class Roles:
     keep_only: Mapping[str, Sequence[Any]] = field(default_factory=dict)
     no_answer: Sequence[Any] = ()
     merge: Mapping[str, Sequence[Any]] = field(default_factory=dict)
+    weight: str | None = None
+    cluster: str | None = None
+    stratum: str | None = None
+    merge_lone_strata: bool = False
 
     def __post_init__(self) -> None:
         for key, values in (("items", self.items), ("no_answer", self.no_answer)):
@@ -62,6 +65,12 @@ class Roles:
             _refuse_single(f"merge, {kept!r}", spellings)
 
     @property
+    def design(self) -> dict[str, str]:
+        """Columns of the sample's design by their role."""
+        said = {"weight": self.weight, "cluster": self.cluster, "stratum": self.stratum}
+        return {role: name for role, name in said.items() if name is not None}
+
+    @property
     def group_name(self) -> str | None:
         """Name of the group column."""
         return self.group.name if isinstance(self.group, Groups) else self.group
@@ -72,19 +81,6 @@ def _refuse_single(key: str, values: object) -> None:
     if isinstance(values, (str, bytes)) or not isinstance(values, Collection):
         msg = f"{key}={values!r} is not a list of values; write [{values!r}]."
         raise ResponsesError(msg)
-
-
-def refuse_not_yet(given: Mapping[str, object]) -> None:
-    """Refuse roles that are known and not supported yet."""
-    for role, value in given.items():
-        if value is not None:
-            msg = (
-                f"{role}={value!r}: {NOT_YET[role]} are not supported in this version; they are "
-                f"planned for a coming one. Take {role} out to use the answers without; the "
-                "estimates then speak of the cases at hand, not of the population they were "
-                "drawn from."
-            )
-            raise ResponsesError(msg)
 
 
 def assemble(table: RawTable, roles: Roles) -> dict[str, Any]:
@@ -120,6 +116,16 @@ def assemble(table: RawTable, roles: Roles) -> dict[str, Any]:
         groups, group_codes = read_groups(
             table, str(roles.group_name), known, rows, weights, roles.no_answer, problems, findings
         )
+    design = read_design(
+        table,
+        roles.weight,
+        roles.cluster,
+        roles.stratum,
+        rows,
+        merge_lone_strata=roles.merge_lone_strata,
+        problems=problems,
+        findings=findings,
+    )
     items, codes = _items(table, specs, rows, weights, problems, findings)
     problems.stop_if_any()
     found = set_aside_finding(codes, weights)
@@ -134,6 +140,7 @@ def assemble(table: RawTable, roles: Roles) -> dict[str, Any]:
         "findings": (*findings, *([found] if found else [])),
         "source": table.source,
         "is_table_of_patterns": roles.counts is not None,
+        "design": design,
     }
 
 
@@ -194,11 +201,40 @@ def _check_roles(table: RawTable, roles: Roles, item_names: list[str], problems:
     for name in roles.keep_only:
         if name not in table.column_names:
             problems.add(f"keep_only: {table.no_column(str(name))}")
+    _check_design_roles(table, roles, used, problems)
+
+
+def _check_design_roles(
+    table: RawTable, roles: Roles, used: Mapping[str, str], problems: Problems
+) -> None:
+    """Check the columns of the sample's design; groups may be strata or clusters as well."""
+    taken = {name: role for name, role in used.items() if role != "group"}
+    for role, name in roles.design.items():
+        if not isinstance(name, str):
+            problems.add(f"{role}={name!r} is no column name. Give the name as text.")
+        elif name not in table.column_names:
+            problems.add(f"{role}: {table.no_column(name)}")
+        elif name in taken:
+            problems.add(
+                f"column {name!r} is named as {taken[name]} and as {role}; take it out of one."
+            )
+        elif role == "weight" and name == roles.group_name:
+            problems.add(f"column {name!r} is named as group and as weight; take it out of one.")
+        taken[name] = role
+    if roles.counts is not None and roles.design:
+        named = ", ".join(f"{role}={name!r}" for role, name in roles.design.items())
+        problems.add(
+            f"counts={roles.counts!r} and {named}: a row with a count stands for several cases, "
+            "each with a weight, cluster and stratum of its own. Give a file with one row a case, "
+            "or take one of them out."
+        )
+    if roles.merge_lone_strata and roles.stratum is None:
+        problems.add("merge_lone_strata needs strata; name their column with stratum.")
 
 
 def _other_roles(roles: Roles) -> set[str]:
     """Return the columns without which no row can be read."""
-    named = {roles.case, roles.group_name, roles.counts, *roles.keep_only}
+    named = {roles.case, roles.group_name, roles.counts, *roles.keep_only, *roles.design.values()}
     return {name for name in named if name is not None}
 
 

@@ -14,8 +14,9 @@ import numpy as np
 from bayeslca._typing import Ints
 from bayeslca.exceptions import ResponsesError, near_names
 from bayeslca.findings import Finding
-from bayeslca.responses.assemble import Roles, assemble, refuse_not_yet, set_aside_finding
+from bayeslca.responses.assemble import Roles, assemble, set_aside_finding
 from bayeslca.responses.item import Groups, Item, ItemSpec
+from bayeslca.responses.sample_design import SampleDesign
 from bayeslca.responses.units import Units, collapse
 
 if TYPE_CHECKING:
@@ -52,6 +53,8 @@ class Responses:
         Where the answers came from, for the report ("committees.csv"); no folders.
     is_table_of_patterns : bool
         True when the rows came with counts.
+    design : SampleDesign or None
+        Weights, clusters and strata; None for a simple random sample.
 
     Examples
     --------
@@ -73,6 +76,7 @@ class Responses:
     findings: tuple[Finding, ...] = ()
     source: str = ""
     is_table_of_patterns: bool = False
+    design: SampleDesign | None = None
 
     def __post_init__(self) -> None:
         n_rows = len(self.codes)
@@ -88,6 +92,7 @@ class Responses:
             ("counts", self.counts),
             ("case_ids", self.case_ids),
             ("group_codes", self.group_codes),
+            ("design", None if self.design is None else self.design.weight),
         ):
             if part is not None and len(part) != n_rows:
                 msg = f"{name} has {len(part)} entries for {n_rows} rows. Give one for each row."
@@ -112,6 +117,7 @@ class Responses:
         weight: str | None = None,
         cluster: str | None = None,
         stratum: str | None = None,
+        merge_lone_strata: bool = False,
     ) -> Responses:
         """Read answers from a file.
 
@@ -136,23 +142,40 @@ class Responses:
             Spellings that are one answer, in all items: ``{"yes": ["Yes", "Y"]}``.
         sheet, header_row, encoding, separator
             How to read the file; see :func:`bayeslca.responses.reading.read_table`.
-        weight, cluster, stratum : None
-            Not supported in this version.
+        weight : str or None
+            Column with how much of the population each case stands for; positive numbers.
+        cluster : str or None
+            Column with the primary sampling unit of each case: cases drawn together.
+        stratum : str or None
+            Column with the stratum in which each cluster (or case) was drawn.
+        merge_lone_strata : bool
+            A stratum with one cluster is refused, or, when True, joined with the next by name
+            (the last with the one before).
 
         Raises
         ------
         ResponsesError
             With all that is wrong, where, and what to do.
         """
-        refuse_not_yet({"weight": weight, "cluster": cluster, "stratum": stratum})
         from bayeslca.responses.reading import read_table
 
         table = read_table(
             path, sheet=sheet, header_row=header_row, encoding=encoding, separator=separator
         )
-        return cls._from_table(
-            table, items, case, group, counts, keep_only or {}, no_answer, merge or {}
+        roles = Roles(
+            items if items is not None else (),
+            case,
+            group,
+            counts,
+            keep_only or {},
+            no_answer,
+            merge or {},
+            weight,
+            cluster,
+            stratum,
+            merge_lone_strata,
         )
+        return cls._from_table(table, roles)
 
     @classmethod
     def from_frame(
@@ -169,46 +192,39 @@ class Responses:
         weight: str | None = None,
         cluster: str | None = None,
         stratum: str | None = None,
+        merge_lone_strata: bool = False,
     ) -> Responses:
         """Take answers from a data frame (pandas, polars, pyarrow...), which is not changed.
 
         The parameters are those of :meth:`read`.
         """
-        refuse_not_yet({"weight": weight, "cluster": cluster, "stratum": stratum})
         from bayeslca.responses.frames import table_from_frame
 
-        return cls._from_table(
-            table_from_frame(frame),
-            items,
+        roles = Roles(
+            items if items is not None else (),
             case,
             group,
             counts,
             keep_only or {},
             no_answer,
             merge or {},
+            weight,
+            cluster,
+            stratum,
+            merge_lone_strata,
         )
+        return cls._from_table(table_from_frame(frame), roles)
 
     @classmethod
-    def _from_table(
-        cls,
-        table: RawTable,
-        items: Sequence[str | ItemSpec | Item] | None,
-        case: str | None,
-        group: str | Groups | None,
-        counts: str | None,
-        keep_only: Mapping[str, Sequence[Any]],
-        no_answer: Sequence[Any],
-        merge: Mapping[str, Sequence[Any]],
-    ) -> Responses:
-        if items is None or (isinstance(items, Sequence) and len(items) == 0):
+    def _from_table(cls, table: RawTable, roles: Roles) -> Responses:
+        if len(roles.items) == 0:
             from bayeslca.responses.columns import columns_like_items
 
-            others = {case, counts, group.name if isinstance(group, Groups) else group}
+            others = {roles.case, roles.counts, roles.group_name, *roles.design.values()}
             likely = [name for name in columns_like_items(table) if name not in others]
             hint = f"These columns look like items: {likely}." if likely else "No column looks so."
             msg = f"{table.title}: items is not given; say which columns are items. {hint}"
             raise ResponsesError(msg)
-        roles = Roles(items, case, group, counts, keep_only, no_answer, merge)
         return cls(**assemble(table, roles))
 
     @property

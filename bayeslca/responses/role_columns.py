@@ -67,8 +67,7 @@ def read_counts(
     refuse(
         (value >= 0) & (value % 1 != 0) & np.isfinite(value),
         "a count that is not whole",
-        "Is this a sampling weight? Weights are not supported in this version; a count is a whole "
-        "number of cases.",
+        "Is this a sampling weight? Then give it as weight; a count is a whole number of cases.",
     )
     refuse(value > _MOST_CASES, "a count beyond all measure", "Check the column.")
     if len(problems.messages) > n_before:
