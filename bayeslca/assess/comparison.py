@@ -140,7 +140,11 @@ def comparison_of(
         loo=loo,
         waic=widely,
         verdict=verdict,
-        findings=(*_findings(table, loo[best].n_cases), *_evidence_findings(evidence)),
+        findings=(
+            *_findings(table, loo[best].n_cases),
+            *_evidence_findings(evidence),
+            *_design_findings(posteriors),
+        ),
         best=best,
         evidence=evidence,
         class_counts=counts,
@@ -278,6 +282,19 @@ def _smallest_class(posterior: Posterior) -> dict[str, float]:
         "smallest_upper": float(row["upper"]),
         "smallest_cases": float(row["median"]) * float(posterior.group_cases.sum()),
     }
+
+
+def _design_findings(posteriors: Mapping[Name, Posterior]) -> tuple[Finding, ...]:
+    """Say that the sample's design plays no part here, where there is one."""
+    design = next(iter(posteriors.values())).responses.design
+    if design is None:
+        return ()
+    message = (
+        "All figures of this comparison (evidence, WAIC, leave-one-out) are unweighted: they take "
+        "the cases as they are, drawn one by one."
+    )
+    remedy = "Choose among models with that in mind; sample_weighted fits the one chosen."
+    return (Finding("comparison_unweighted", "note", message, remedy),)
 
 
 def _findings(table: pd.DataFrame, n_cases: int) -> tuple[Finding, ...]:

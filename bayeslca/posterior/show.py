@@ -53,6 +53,16 @@ def _rows(posterior: Posterior) -> tuple[list[tuple[str, str, str]], str]:
     return rows, "median (95 % interval)"
 
 
+def _unweighted(posterior: Posterior) -> list[str]:
+    if posterior.responses.design is None:
+        return []
+    text = (
+        "Unweighted: it takes the cases as they are. bayeslca.sample_weighted(model, responses) "
+        "speaks of the population."
+    )
+    return textwrap.wrap(text, WIDTH)
+
+
 def as_terminal_text(posterior: Posterior) -> str:
     """Return classes, prevalences and the verdict, at most 80 columns wide."""
     rows, of = _rows(posterior)
@@ -69,6 +79,7 @@ def as_terminal_text(posterior: Posterior) -> str:
             *lines,
             f"{of}",
             "",
+            *_unweighted(posterior),
             *textwrap.wrap(posterior.diagnostics().verdict, WIDTH),
         ]
     )
@@ -85,5 +96,6 @@ def as_html(posterior: Posterior) -> str:
         f"<p><strong>{escape(_head(posterior))}</strong><br>{escape(_sampled(posterior))}</p>"
         f"<table><thead><tr>{''.join(f'<th>{escape(head)}</th>' for head in heads)}</tr></thead>"
         f"<tbody>{body}</tbody></table>"
+        f"<p>{escape(' '.join(_unweighted(posterior)))}</p>"
         f"<p>{escape(posterior.diagnostics().verdict)}</p>"
     )

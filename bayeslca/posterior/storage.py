@@ -22,6 +22,7 @@ from bayeslca.findings import Finding
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.responses.item import Groups, Item
 from bayeslca.responses.responses import Responses
+from bayeslca.responses.sample_design import SampleDesign
 from bayeslca.sampling.draws import Draws
 from bayeslca.sampling.relabel import Relabelled
 from bayeslca.sampling.starting_points import StartingPoints
@@ -137,7 +138,14 @@ def _own_group(posterior: Posterior) -> Dataset:
     }
     if responses.case_ids is not None:
         data["case_id"] = ("row", np.asarray(responses.case_ids, dtype=object))
-    groups = responses.groups
+    groups, design = responses.groups, responses.design
+    if design is not None:
+        for name, values in (
+            ("weight", design.weight),
+            ("cluster", design.cluster),
+            ("stratum", design.stratum),
+        ):
+            data[f"design_{name}"] = ("row", values)
     about = {
         "responses": {
             "items": [asdict(item) for item in responses.items],
@@ -146,6 +154,14 @@ def _own_group(posterior: Posterior) -> Dataset:
             "findings": [asdict(finding) for finding in responses.findings],
             "source": responses.source,
             "is_table_of_patterns": responses.is_table_of_patterns,
+            "design": None
+            if design is None
+            else [
+                design.weight_name,
+                design.cluster_name,
+                design.stratum_name,
+                list(design.stratum_levels),
+            ],
         },
         "labels": {
             "names_settled": relabelled.names_settled,
@@ -264,6 +280,22 @@ def _responses(tree: DataTree, about: Mapping[str, Any]) -> Responses:
         findings=_findings(about["findings"]),
         source=about["source"],
         is_table_of_patterns=about["is_table_of_patterns"],
+        design=_design(own, about.get("design")),
+    )
+
+
+def _design(own: Any, about: list[Any] | None) -> SampleDesign | None:
+    if about is None:
+        return None
+    weight, cluster, stratum, levels = about
+    return SampleDesign(
+        own["design_weight"].to_numpy(),
+        own["design_cluster"].to_numpy().astype(np.int64),
+        own["design_stratum"].to_numpy().astype(np.int64),
+        weight,
+        cluster,
+        stratum,
+        tuple(levels),
     )
 
 

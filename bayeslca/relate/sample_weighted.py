@@ -12,10 +12,12 @@ import numpy as np
 
 from bayeslca._typing import Floats, Ints
 from bayeslca.assess.em_layout import AllBlocks
-from bayeslca.exceptions import SamplingError
+from bayeslca.exceptions import ModelError, SamplingError
 from bayeslca.relate.pseudo_samples import draw_pseudo_samples
 from bayeslca.relate.weighted_likelihood import (
     STARTS,
+    WeightedMaximumLikelihood,
+    posterior_mean,
     reference_membership,
     weighted_maximum_likelihood,
 )
@@ -95,21 +97,11 @@ def sample_weighted(
     for_points, for_data, for_chains = sequence.spawn(3)
     if unweighted is None:
         unweighted = model.sample(responses, seed=seed, threads=threads, progress=progress)
-    likelihood = weighted_maximum_likelihood(
-        model,
-        responses,
-        starting_points=STARTS,
-        seed=int(for_points.generate_state(1)[0]),
-        alike=unweighted,
-        threads=threads,
-    )
+    likelihood = _likelihood(unweighted, responses, for_points, threads)
+    at = posterior_mean(unweighted) if likelihood is None else likelihood.parameters
     blocks = AllBlocks.of(model)
     pseudo = draw_pseudo_samples(
-        blocks,
-        units,
-        blocks.elements(likelihood.parameters),
-        pseudo_samples,
-        np.random.default_rng(for_data),
+        blocks, units, blocks.elements(at), pseudo_samples, np.random.default_rng(for_data)
     )
     begin = time.perf_counter()
     kept = fit_counts(unweighted, units, pseudo.counts, draws, for_chains, threads, progress)
@@ -131,6 +123,26 @@ def sample_weighted(
         group_share=_group_shares(units, pseudo.expected, model.n_groups),
         likelihood=likelihood,
     )
+
+
+def _likelihood(
+    unweighted: Posterior,
+    responses: Responses,
+    seed: np.random.SeedSequence,
+    threads: int | None,
+) -> WeightedMaximumLikelihood | None:
+    """Fit by maximum likelihood; None where EM has no exact step for the model's constraints."""
+    try:
+        return weighted_maximum_likelihood(
+            unweighted.model,
+            responses,
+            starting_points=STARTS,
+            seed=int(seed.generate_state(1)[0]),
+            alike=unweighted,
+            threads=threads,
+        )
+    except ModelError:
+        return None
 
 
 def fit_counts(

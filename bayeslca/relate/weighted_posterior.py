@@ -47,8 +47,9 @@ class WeightedPosterior:
         comparison of models.
     group_share : ndarray, shape (pseudo-sample, group)
         Weighted share of each group of cases.
-    likelihood : WeightedMaximumLikelihood
-        Maximum likelihood under the weights, with linearised standard errors.
+    likelihood : WeightedMaximumLikelihood or None
+        Maximum likelihood under the weights, with linearised standard errors; None where no exact
+        step of EM is written for the model's constraints.
     findings : tuple of Finding
     """
 
@@ -56,7 +57,7 @@ class WeightedPosterior:
     responses: Responses
     draws: Draws
     group_share: Floats
-    likelihood: WeightedMaximumLikelihood
+    likelihood: WeightedMaximumLikelihood | None
     findings: tuple[Finding, ...] = ()
 
     @classmethod
@@ -67,7 +68,7 @@ class WeightedPosterior:
         responses: Responses,
         draws: Draws,
         group_share: Floats,
-        likelihood: WeightedMaximumLikelihood,
+        likelihood: WeightedMaximumLikelihood | None,
     ) -> WeightedPosterior:
         """Put the parts together, and look at them."""
         bare = cls(unweighted, responses, draws, group_share, likelihood)
@@ -146,7 +147,7 @@ class WeightedPosterior:
         return self._beside(
             self.prevalence(interval),
             self.unweighted.prevalence(interval),
-            self.likelihood.prevalence,
+            None if self.likelihood is None else self.likelihood.prevalence,
         )
 
     def response_probabilities_beside_unweighted(self, interval: float = 0.95) -> pd.DataFrame:
@@ -154,7 +155,7 @@ class WeightedPosterior:
         return self._beside(
             self.response_probabilities(interval),
             self.unweighted.response_probabilities(interval),
-            self.likelihood.response_probability,
+            None if self.likelihood is None else self.likelihood.response_probability,
         )
 
     @cached_property
@@ -201,7 +202,7 @@ class WeightedPosterior:
         return frame
 
     def _beside(
-        self, weighted: pd.DataFrame, unweighted: pd.DataFrame, likelihood: pd.DataFrame
+        self, weighted: pd.DataFrame, unweighted: pd.DataFrame, likelihood: pd.DataFrame | None
     ) -> pd.DataFrame:
         keys = [c for c in _KEYS if c in weighted]
         columns: dict[str, Any] = {}
@@ -210,10 +211,13 @@ class WeightedPosterior:
             columns[f"{name}_lower"] = frame["lower"].to_numpy()
             columns[f"{name}_upper"] = frame["upper"].to_numpy()
         out = weighted[keys].assign(**columns, design_effect=weighted["design_effect"])
-        renamed = likelihood.rename(columns={"design_effect": "linearised_design_effect"})
         wanted = ["estimate", "standard_error", "linearised_design_effect"]
-        shared = [c for c in keys if c in renamed]
-        out = out.merge(renamed[[*shared, *wanted]], on=shared, how="left", validate="1:1")
+        if likelihood is None:
+            out = out.assign(**dict.fromkeys(wanted, np.nan))
+        else:
+            renamed = likelihood.rename(columns={"design_effect": "linearised_design_effect"})
+            shared = [c for c in keys if c in renamed]
+            out = out.merge(renamed[[*shared, *wanted]], on=shared, how="left", validate="1:1")
         outside = (out["unweighted"] < out["weighted_lower"]) | (
             out["unweighted"] > out["weighted_upper"]
         )
@@ -227,7 +231,7 @@ _KEYS = ("group", "latent_class", "item", "category")
 
 def _findings(posterior: WeightedPosterior) -> list[Finding]:
     out = []
-    design, likelihood = posterior.design, posterior.likelihood
+    design = posterior.design
     if design.degrees_of_freedom < FEW_CLUSTERS:
         unit = "clusters" if design.cluster_name is not None else "cases"
         out.append(
@@ -258,12 +262,14 @@ def _findings(posterior: WeightedPosterior) -> list[Finding]:
                 value=drift,
             )
         )
-    out += _modes(posterior, likelihood)
-    return out
+    return [*out, *_modes(posterior)]
 
 
-def _modes(posterior: WeightedPosterior, likelihood: WeightedMaximumLikelihood) -> list[Finding]:
+def _modes(posterior: WeightedPosterior) -> list[Finding]:
     """Compare with maximum likelihood under the weights, which looks for the best of all modes."""
+    likelihood = posterior.likelihood
+    if likelihood is None:
+        return []
     draws = posterior.draws.prevalence.reshape(-1, *posterior.draws.prevalence.shape[2:])
     apart = np.abs(draws.mean(axis=0) - likelihood.parameters.prevalence)
     sd = np.maximum(draws.std(axis=0), 1e-12)

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import textwrap
-from typing import TYPE_CHECKING
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from bayeslca.relate.weighted_posterior import WeightedPosterior
@@ -30,7 +31,9 @@ def as_terminal_text(posterior: WeightedPosterior) -> str:
             f"{row[c]:.2f} ({row[f'{c}_lower']:.2f}-{row[f'{c}_upper']:.2f})"
             for c in ("weighted", "unweighted")
         ]
-        lines.append(f"{name:<{width}}  {shown[0]:>18}  {shown[1]:>18}  {row['design_effect']:13.2f}")
+        lines.append(
+            f"{name:<{width}}  {shown[0]:>18}  {shown[1]:>18}  {row['design_effect']:13.2f}"
+        )
     said = [posterior_in_words(posterior), *(f.message for f in posterior.findings)]
     wrapped = [line for text in said for line in textwrap.wrap(text, WIDTH)]
     return "\n".join([*textwrap.wrap(head, WIDTH), "", *lines, "", *wrapped])
@@ -47,15 +50,13 @@ def posterior_in_words(posterior: WeightedPosterior, interval: float = 0.95) -> 
             f"effect up to {widest:.1f})."
         )
     if moved.empty:
+        apart = (frame["weighted"] - frame["unweighted"]).abs()
+        (most,) = frame.loc[[apart.idxmax()]].to_dict("records")
         return (
-            "No unweighted share lies outside the weighted interval: the weights change little "
-            "here but the width of the intervals."
+            "Unweighted shares lie inside the weighted intervals; the furthest apart is "
+            f"{_both(most)}."
         )
-    named = [
-        f"{row['latent_class']}{_in_group(row)} {row['weighted']:.0%} weighted, "
-        f"{row['unweighted']:.0%} unweighted"
-        for row in moved.to_dict("records")
-    ]
+    named = [_both(row) for row in moved.to_dict("records")]
     shown = "; ".join(named[:4]) + (f"; and {len(named) - 4} more" if len(named) > 4 else "")
     return (
         f"The weights change the answer: {shown}. The unweighted shares describe the cases, not "
@@ -63,5 +64,13 @@ def posterior_in_words(posterior: WeightedPosterior, interval: float = 0.95) -> 
     )
 
 
-def _in_group(row: dict[str, object]) -> str:
+def _both(row: Mapping[Any, Any]) -> str:
+    name = str(row["latent_class"])
+    name = f"class {name}" if name.isdigit() else name
+    return (
+        f"{name}{_in_group(row)} {row['weighted']:.0%} weighted, {row['unweighted']:.0%} unweighted"
+    )
+
+
+def _in_group(row: Mapping[Any, Any]) -> str:
     return f" ({row['group']})" if "group" in row else ""

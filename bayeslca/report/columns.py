@@ -236,6 +236,24 @@ COLUMNS: dict[str, Column] = {
         "Adjusted statistic", "Lo, Mendell & Rubin 2001; doubted by Jeffries 2003", "number"
     ),
     "adjusted_p_value": Column("p, adjusted", "of the adjusted statistic", "share"),
+    "weighting": Column("Weighting", "unweighted: the cases are taken as they are", "text"),
+    "weighted": Column("Weighted", "median, of the population", "number"),
+    "weighted_lower": Column("Weighted from", "lower end of the interval", "number"),
+    "weighted_upper": Column("Weighted to", "upper end of the interval", "number"),
+    "unweighted": Column("Unweighted", "median, of the cases as they are", "number"),
+    "unweighted_lower": Column("Unweighted from", "lower end of the interval", "number"),
+    "unweighted_upper": Column("Unweighted to", "upper end of the interval", "number"),
+    "design_effect": Column(
+        "Design effect",
+        "variance over that of as many cases drawn at random one by one; 1 at the least",
+        "number",
+    ),
+    "linearised_design_effect": Column(
+        "Design effect, maximum likelihood", "the same from linearised standard errors", "number"
+    ),
+    "differs": Column(
+        "Differs", "the unweighted median lies outside the weighted interval", "flag"
+    ),
     "score": Column("Sum score", "yes answers, and steps up of ordered items", "count"),
     "table": Column("Table", "the table that has the column", "text"),
     "column": Column("Column", "the column's name in the files", "text"),

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from bayeslca.assess.rivals import Rivals
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.relate.placing import PlacingRule
+    from bayeslca.relate.weighted_posterior import WeightedPosterior
     from bayeslca.responses.responses import Responses
 
 
@@ -99,6 +100,9 @@ class ReportContent:
         Where each case is placed by that rule; see `bayeslca.relate.placing.place_cases`.
     plausible_values : DataFrame or None
         Drawn classes of the cases; goes into a file of its own.
+    weighted : WeightedPosterior or None
+        What is known of the population, where the sample has weights, clusters or strata; the
+        report's answer is then its.
     alternatives : mapping of str to Posterior
         Other numbers of classes that the data support as well, where the study leaves the number
         open; each is shown beside the answer. Keys are headings ("2 classes").
@@ -142,6 +146,7 @@ class ReportContent:
     placing_rule: PlacingRule | None = None
     placed: pd.DataFrame | None = None
     plausible_values: pd.DataFrame | None = None
+    weighted: WeightedPosterior | None = None
     alternatives: Mapping[str, Posterior] = field(default_factory=dict)
     diagnostic: bool = False
     interval: float = 0.95

@@ -102,6 +102,25 @@ class Facts:
         return overall_shares(self.posterior, self.content.interval)
 
     @cached_property
+    def answered(self) -> tuple[Share, ...]:
+        """The shares that answer the question: of the population where the sample has a design."""
+        weighted = self.content.weighted
+        if weighted is None:
+            return self.overall
+        rows = weighted.prevalence(self.content.interval).tail(len(self.class_names))
+        return tuple(
+            Share(name, row["median"], row["lower"], row["upper"])
+            for name, row in zip(self.class_names, rows.to_dict("records"), strict=True)
+        )
+
+    @property
+    def answered_in_words(self) -> str:
+        """A clause that says how common each class is, and of what."""
+        if self.content.weighted is None:
+            return shares_in_words(self.overall, self.n_cases)
+        return f"{WEIGHTED}, {shares_in_words(self.answered)}"
+
+    @cached_property
     def ruled(self) -> frozenset[tuple[str, str]]:
         """The (class, item) pairs that rest mostly on the prior."""
         return ruled_by_prior(self.posterior)
@@ -179,19 +198,31 @@ MOST_LISTED = 4
 """With more classes, a sentence names the largest and the smallest only."""
 
 
-def shares_in_words(shares: tuple[Share, ...], n_cases: int) -> str:
-    """Return a clause that says how common each class is, the largest first."""
+WEIGHTED = "in the population, weighted for how the cases were sampled"
+
+
+def shares_in_words(shares: tuple[Share, ...], n_cases: int | None = None) -> str:
+    """Return a clause that says how common each class is, the largest first.
+
+    Parameters
+    ----------
+    shares : tuple of Share
+    n_cases : int, optional
+        The cases that these are shares of; left out where they are of a population.
+    """
     first, *others = sorted(shares, key=lambda share: -share.median)
     which = "the largest" if first.name.isdigit() else "the largest class"
     largest = (
-        f"{which}, {called(first.name)}, holds {first.text} of the cases, "
+        f"{which}, {called(first.name)}, holds {first.text}"
+        if n_cases is None
+        else f"{which}, {called(first.name)}, holds {first.text} of the cases, "
         f"{about_of(first.median, n_cases)}"
     )
     if len(shares) > MOST_LISTED:
         last = others[-1]
         return (
             f"of {in_words(len(shares))} classes, {largest}, and the smallest, "
-            f"{called(last.name)}, {last.text}, about {whole(last.median * n_cases)}"
+            f"{called(last.name)}, {last.text}{_in_cases(last, n_cases)}"
         )
     rest = [_holds(share, n_cases) for share in others]
     if len(rest) > 1:
@@ -199,5 +230,9 @@ def shares_in_words(shares: tuple[Share, ...], n_cases: int) -> str:
     return "; ".join([largest, *rest])
 
 
-def _holds(share: Share, n_cases: int) -> str:
-    return f"{called(share.name)} holds {share.text}, about {whole(share.median * n_cases)}"
+def _holds(share: Share, n_cases: int | None) -> str:
+    return f"{called(share.name)} holds {share.text}{_in_cases(share, n_cases)}"
+
+
+def _in_cases(share: Share, n_cases: int | None) -> str:
+    return "" if n_cases is None else f", about {whole(share.median * n_cases)}"

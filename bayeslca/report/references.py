@@ -7,6 +7,15 @@ REFERENCES: dict[str, str] = {
         "Cressie, N. & Read, T. R. C. (1984). Multinomial goodness-of-fit tests. Journal of the "
         "Royal Statistical Society: Series B 46, 440-464."
     ),
+    "Binder 1983": (
+        "Binder, D. A. (1983). On the variances of asymptotically normal estimators from complex "
+        "surveys. International Statistical Review 51, 279-292."
+    ),
+    "Dong, Elliott & Raghunathan 2014": (
+        "Dong, Q., Elliott, M. R. & Raghunathan, T. E. (2014). A nonparametric method to generate "
+        "synthetic populations to adjust for complex sampling design features. Survey Methodology "
+        "40, 29-46."
+    ),
     "Freeman & Tukey 1950": (
         "Freeman, M. F. & Tukey, J. W. (1950). Transformations related to the angular and the "
         "square root. Annals of Mathematical Statistics 21, 607-611."
@@ -14,6 +23,11 @@ REFERENCES: dict[str, str] = {
     "Gelman, Meng & Stern 1996": (
         "Gelman, A., Meng, X.-L. & Stern, H. (1996). Posterior predictive assessment of model "
         "fitness via realized discrepancies. Statistica Sinica 6, 733-807."
+    ),
+    "Gunawan et al. 2020": (
+        "Gunawan, D., Panagiotelis, A., Griffiths, W. & Chotikapanich, D. (2020). Bayesian "
+        "weighted inference from surveys. Australian & New Zealand Journal of Statistics 62, "
+        "71-94."
     ),
     "Hjort, Dahl & Steinbakk 2006": (
         "Hjort, N. L., Dahl, F. A. & Steinbakk, G. H. (2006). Post-processing posterior predictive "
@@ -48,6 +62,10 @@ REFERENCES: dict[str, str] = {
     "Merkle, Furr & Rabe-Hesketh 2019": (
         "Merkle, E. C., Furr, D. & Rabe-Hesketh, S. (2019). Bayesian comparison of latent variable "
         "models: conditional versus marginal likelihoods. Psychometrika 84, 802-829."
+    ),
+    "Rao & Wu 1988": (
+        "Rao, J. N. K. & Wu, C. F. J. (1988). Resampling inference with complex survey data. "
+        "Journal of the American Statistical Association 83, 231-241."
     ),
     "Sivula et al. 2020": (
         "Sivula, T., Magnusson, M., Matamoros, A. A. & Vehtari, A. (2020). Uncertainty in Bayesian "

@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.model.prior_predictive import PriorPredictive
+    from bayeslca.relate.weighted_posterior import WeightedPosterior
     from bayeslca.report.content import ReportContent
 
 
@@ -85,6 +86,11 @@ def file_tables(
             "How well models with different numbers of classes predict",
             content.comparison.table,
         )
+        if content.weighted is not None:
+            unweighted = content.comparison.table.assign(weighting="unweighted")
+            named["class_counts"] = (named["class_counts"][0], unweighted)
+    if content.weighted is not None:
+        named |= weighted_tables(content.weighted, interval)
     if content.claims:
         named["hypotheses"] = ("What became of the study's hypotheses", hypotheses_table(content))
     for name, rivals in content.rivals.items():
@@ -102,6 +108,26 @@ def file_tables(
     named |= likelihood_tables(content)
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
+
+
+def weighted_tables(
+    weighted: WeightedPosterior, interval: float
+) -> dict[str, tuple[str, pd.DataFrame]]:
+    """Return the tables of the population that a sample with a design was drawn from."""
+    return {
+        "weighted_prevalence": (
+            "How common each class is in the population",
+            weighted.prevalence(interval),
+        ),
+        "weighted_beside_unweighted": (
+            "Shares of the population beside shares of the cases",
+            weighted.beside_unweighted(interval),
+        ),
+        "weighted_response_probabilities": (
+            "The probability of each answer in each class, weighted beside unweighted",
+            weighted.response_probabilities_beside_unweighted(interval),
+        ),
+    }
 
 
 def hypotheses_table(content: ReportContent) -> pd.DataFrame:

@@ -15,6 +15,7 @@ from bayeslca.report.sections.answer import answer_section, headline, is_to_be_t
 from bayeslca.report.sections.assumptions import assumptions_section
 from bayeslca.report.sections.class_counts import class_counts_section
 from bayeslca.report.sections.classes import classes_section
+from bayeslca.report.sections.design import design_section, marked
 from bayeslca.report.sections.fit import fit_section
 from bayeslca.report.sections.groups import groups_section
 from bayeslca.report.sections.likelihood import likelihood_section
@@ -82,6 +83,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
     """Return the sections of the page in their order."""
     sections = (
         answer_section(facts),
+        design_section(facts),
         classes_section(facts),
         prevalence_section(facts),
         class_counts_section(facts),
@@ -97,7 +99,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         methods_section(facts, versions),
         reproduce_section(facts, versions),
     )
-    return tuple(section for section in sections if section is not None)
+    return tuple(marked(section, facts) for section in sections if section is not None)
 
 
 def _notes(facts: Facts) -> list[str]:

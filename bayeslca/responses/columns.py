@@ -15,9 +15,21 @@ from bayeslca.responses.spelling import cleanest, number_of, spelling_variants
 
 ColumnKind = Literal[
     "item", "id", "group", "count", "free_text", "number", "date", "constant", "empty",
-    "too_many_categories",
+    "too_many_categories", "weight", "cluster", "stratum",
 ]  # fmt: skip
 SHOWN_VALUES = 12
+
+
+def _called(names: str) -> re.Pattern[str]:
+    return re.compile(rf"(^|[_\W])({names})([_\W](id|no))?$", re.I)
+
+
+_DESIGN_NAMES: dict[ColumnKind, re.Pattern[str]] = {
+    "weight": _called("weights?|weighting|wt|wgt|pweight|w"),
+    "cluster": _called("clusters?|psu|primary_sampling_unit"),
+    "stratum": _called("stratum|strata"),
+}
+"""How columns of a sample's design are often called."""
 _MOST_LIKELY_ITEM = 12
 _ID_NAME = re.compile(r"(^|[_\W])(id|ident|identifier|key|serial|uuid|code|nr|no|number)$", re.I)
 _COUNT_NAME = re.compile(r"^(n|count|counts|freq|frequency|frequencies|cases|n_cases)$", re.I)
@@ -38,8 +50,8 @@ class ColumnReport:
     label : str
         The column's own text, where the file has one.
     kind : str
-        "item", "id", "group", "count", "free_text", "number", "date", "constant", "empty" or
-        "too_many_categories".
+        "item", "id", "group", "count", "free_text", "number", "date", "constant", "empty",
+        "too_many_categories", "weight", "cluster" or "stratum".
     reason : str
         Why, in words.
     values : mapping of str to int
@@ -122,12 +134,26 @@ def _describe(column: RawColumn, n_rows: int) -> ColumnReport:
 
     if not counts:
         return report("empty", "no row has a value")
+    part = _part_of_design(column.name, named)
+    if part is not None:
+        return report(part, f"named like a {part} of a sample")
     if len(named) <= MOST_CATEGORIES:
         proposal = _propose(column, names, named)
         kind, reason = _few_values(column, proposal, n_rows, n_answers, len(named))
         return report(kind, reason, proposal if kind in ("item", "group") else None)
     kind, reason = _many_values(column, counts, n_rows)
     return report(kind, reason)
+
+
+def _part_of_design(name: str, named: Mapping[str, int]) -> ColumnKind | None:
+    """Return which part of a sample's design a column is named like, if any."""
+    for kind, pattern in _DESIGN_NAMES.items():
+        if not pattern.search(name) or len(named) < 2:
+            continue
+        numbers = [number_of(value) for value in named]
+        if kind != "weight" or all(number is not None and number > 0 for number in numbers):
+            return kind
+    return None
 
 
 @dataclass(frozen=True)

@@ -51,7 +51,9 @@ class SampleDesign:
             )
             raise ResponsesError(msg)
         if not np.all(np.isfinite(self.weight) & (self.weight > 0)):
-            msg = "weight holds values that are not positive numbers. Give one above 0 for each row."
+            msg = (
+                "weight holds values that are not positive numbers. Give one above 0 for each row."
+            )
             raise ResponsesError(msg)
 
     @property

@@ -15,6 +15,7 @@ from bayeslca.posterior.quantities import Quantity
 from bayeslca.study.results import open_results
 
 WIDTH = 79
+UNWEIGHTED = "Unweighted: this is of the cases as they are, not of the population."
 NOT_TRUSTED = "The sampling it rests on is not to be trusted: see the report."
 
 
@@ -30,6 +31,8 @@ def ask(folder: Path, *texts: str) -> str:
     posterior = Posterior.load(results.main_fit)
     seed = int(results.record.get("seed") or 0)  # the study's own, so that page and answer agree
     answers = [_answer(posterior, text, seed) for text in texts]
+    if posterior.responses.design is not None:
+        answers.append(_wrapped(UNWEIGHTED))
     if not posterior.diagnostics().trustworthy:
         answers.append(NOT_TRUSTED)
     return "\n".join(answers)

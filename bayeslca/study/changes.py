@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from bayeslca.report.content import Change
@@ -11,6 +12,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.posterior.posterior import Posterior
+    from bayeslca.relate.weighted_posterior import WeightedPosterior
 
 KEYS = ["group", "latent_class", "item", "category"]
 
@@ -32,6 +34,16 @@ def changes_since(
     return tuple(
         change for name, table in now.items() for change in _moved(previous.table(name), table)
     )
+
+
+def weighted_changes(
+    previous: Results | None, weighted: WeightedPosterior, interval: float
+) -> tuple[Change, ...]:
+    """List the weighted prevalences that moved since the run before."""
+    if previous is None:
+        return ()
+    found = _moved(previous.table("weighted_prevalence"), weighted.prevalence(interval))
+    return tuple(replace(change, what=f"weighted {change.what}") for change in found)
 
 
 def _moved(before: pd.DataFrame | None, now: pd.DataFrame) -> list[Change]:

@@ -98,6 +98,14 @@ def _plan(study: Study, responses: Responses) -> list[str]:
     lines = ["What `run` will do"]
     if study.model is not None:
         lines += _wrapped(f"- fit the study's model, {study.model.n_classes} classes", indent=4)
+    design = responses.design
+    if design is not None:
+        lines += _wrapped(f"- {design.in_words()}", indent=4)
+        lines += _wrapped(
+            f"- weigh: fit {study.said.sampling.pseudo_samples} pseudo-samples for the population; "
+            "everything else is unweighted",
+            indent=4,
+        )
     if counts:
         listed = ", ".join(str(n) for n in counts)
         lines += _wrapped(f"- compare models with {listed} unconstrained classes", indent=4)

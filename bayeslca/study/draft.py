@@ -109,6 +109,8 @@ def _answers(
     lines += _role("case", [r for r in reports if r.kind == "id"], active=True)
     lines += _role("group", [r for r in reports if r.kind == "group"], active=False)
     lines += _role("count", [r for r in reports if r.kind == "count"], active=False)
+    for part in ("weight", "cluster", "stratum"):
+        lines += _role(part, [r for r in reports if r.kind == part], active=False)
     lines.append("items = [")
     for report in reports:
         note = f"{KIND_IN_WORDS[report.kind]}: {report.reason}"

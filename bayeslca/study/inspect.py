@@ -22,6 +22,9 @@ KIND_IN_WORDS = {
     "constant": "constant",
     "empty": "empty",
     "too_many_categories": "too many answers",
+    "weight": "weight",
+    "cluster": "cluster",
+    "stratum": "stratum",
 }
 
 

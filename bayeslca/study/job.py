@@ -14,6 +14,7 @@ import numpy as np
 
 import bayeslca
 from bayeslca.posterior.storage import save
+from bayeslca.relate.weighted_words import posterior_in_words
 from bayeslca.report.content import ReportContent
 from bayeslca.report.sections.theory import outcome_in_words
 from bayeslca.study.changes import changes_since
@@ -25,6 +26,7 @@ from bayeslca.study.parts import Run, with_all_parts
 from bayeslca.study.placing import check_placing
 from bayeslca.study.progress import JobProgress, job_progress
 from bayeslca.study.results import RECORD, previous_results, written_aside
+from bayeslca.study.sample_design import record_of_design
 from bayeslca.study.steps import OWN_FIT, Steps, count_fit, step_key
 
 if TYPE_CHECKING:
@@ -240,6 +242,7 @@ def _write(
         "answer_rests_on": answer.rests_on,
         "headline": written.headline,
         "predictive_checks": record_of(content.checks),
+        "sample_design": record_of_design(content.weighted),
         "fits": steps.keys,
         "kept_from_the_run_before": steps.kept,
     }
@@ -286,6 +289,10 @@ def _outcome(
 ) -> Outcome:
     place = str(folder / "report.html")
     lines = [headline]
+    if content.weighted is not None:
+        lines.append(posterior_in_words(content.weighted, content.interval).replace("%", " %"))
+        lines += [finding.message for finding in content.weighted.findings]
+        lines.append("What follows is unweighted:")
     if content.comparison is not None:
         lines.append(content.comparison.verdict)
     if content.claims:

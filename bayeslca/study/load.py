@@ -18,7 +18,7 @@ from bayeslca.model.resolve import read_statements
 from bayeslca.model.vocabulary import Vocabulary
 from bayeslca.responses.item import ItemSpec
 from bayeslca.responses.responses import Responses
-from bayeslca.study.schema import NOT_YET, SourcedStatement, StudyFile
+from bayeslca.study.schema import SourcedStatement, StudyFile
 
 Place = tuple[str | int, ...]
 
@@ -57,6 +57,10 @@ class Study:
             header_row=answers.header_row,
             encoding=answers.encoding,
             separator=answers.separator,
+            weight=answers.weight,
+            cluster=answers.cluster,
+            stratum=answers.stratum,
+            merge_lone_strata=answers.merge_lone_strata,
         )
 
     def _item_spec(self, name: str) -> ItemSpec:
@@ -186,7 +190,6 @@ def load_study(path: str | Path) -> Study:
     except tomllib.TOMLDecodeError as error:
         msg = f"{path.name}: not valid TOML: {error}. Text needs quotes, and each key stands once."
         raise StudyError(msg) from None
-    _refuse_not_yet(path, text, content)
     try:
         said = StudyFile.model_validate(content)
     except ValidationError as error:
@@ -210,19 +213,6 @@ def _read_text(path: Path) -> str:
     except (UnicodeDecodeError, OSError) as error:
         msg = f"{path}: cannot be read as UTF-8 text ({error}). Save the study file as UTF-8."
         raise StudyError(msg) from None
-
-
-def _refuse_not_yet(path: Path, text: str, content: Mapping[str, Any]) -> None:
-    for place, what in NOT_YET.items():
-        inside: Any = content
-        for key in place:
-            inside = inside.get(key) if isinstance(inside, Mapping) else None
-        if inside is not None:
-            msg = (
-                f"{_where(path, text, place)}: {what} are not supported in this version; they are "
-                "planned for a coming one. Take the key out to run the rest of the study."
-            )
-            raise StudyError(msg)
 
 
 def _can_be_read(statement: str, vocabulary: Vocabulary) -> bool:

@@ -18,6 +18,7 @@ from bayeslca.study.likelihood import with_maximum_likelihood
 from bayeslca.study.load import Study
 from bayeslca.study.placing import with_placing
 from bayeslca.study.progress import JobProgress
+from bayeslca.study.sample_design import with_sample_design
 from bayeslca.study.steps import Steps
 
 
@@ -62,7 +63,12 @@ def _placing(run: Run, content: ReportContent) -> ReportContent:
     return with_placing(run.study, content, run.progress.say)
 
 
+def _sample_design(run: Run, content: ReportContent) -> ReportContent:
+    return with_sample_design(run.study, content, run.steps, run.progress)
+
+
 PARTS: tuple[Part, ...] = (
+    _sample_design,
     _group_comparison,
     _theory,
     _fit_checks,

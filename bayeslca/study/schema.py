@@ -55,6 +55,10 @@ class AnswersSection(_Section):
     case: str | None = None
     group: str | None = None
     count: str | None = None
+    weight: str | None = None
+    cluster: str | None = None
+    stratum: str | None = None
+    merge_lone_strata: StrictBool = False
     no_answer: list[Text] = []
 
     @field_validator("items")
@@ -164,6 +168,7 @@ class SamplingSection(_Section):
     ess: int = Field(default=1000, ge=100)
     r_hat: float = Field(default=1.01, gt=1, le=1.1)
     max_sweeps: int | None = Field(default=None, ge=1000)
+    pseudo_samples: int = Field(default=100, ge=20, le=10_000)
 
 
 class ReportSection(_Section):
@@ -245,11 +250,3 @@ class StudyFile(_Section):
                 )
                 raise ValueError(msg)
         return self
-
-
-NOT_YET = {
-    ("answers", "weight"): "sampling weights",
-    ("answers", "cluster"): "clusters of a complex sample",
-    ("answers", "stratum"): "strata of a complex sample",
-}
-"""Keys that are known but do not work yet, with what they stand for."""

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from bayeslca.report.blocks import Banner, Block, Bullets, Head, Lead, PageTable, Paragraph, Section
 from bayeslca.report.content import ReportContent
-from bayeslca.report.facts import Facts, Share, shares_in_words
+from bayeslca.report.facts import Facts, Share
 from bayeslca.report.plots import row_name
+from bayeslca.report.sections import design
 from bayeslca.report.sections.portraits import portrait
 from bayeslca.report.wording import (
     about_of,
@@ -43,7 +44,7 @@ def answer_section(facts: Facts) -> Section:
         blocks.append(_warning(facts))
     blocks.append(Lead(headline(facts), facts.diagnostics.trustworthy))
     if len(facts.class_names) > 1:
-        shares = sorted(facts.overall, key=lambda share: -share.median)
+        shares = sorted(facts.answered, key=lambda share: -share.median)
         blocks.append(Bullets(tuple(_entry(facts, share) for share in shares)))
     blocks.append(Paragraph(" ".join(_how_sure(facts))))
     blocks.extend(_changes(content))
@@ -63,7 +64,7 @@ def headline(facts: Facts) -> str:
             "are no kinds to tell apart"
         )
     else:
-        clause = shares_in_words(facts.overall, facts.n_cases)
+        clause = facts.answered_in_words
     clause = f"{_outside_tie(facts)}{clause}"
     if not facts.diagnostics.trustworthy:
         clause = f"not to be trusted as it stands: {clause}"
@@ -111,6 +112,8 @@ def _warning(facts: Facts) -> Banner:
 
 
 def _entry(facts: Facts, share: Share) -> tuple[str, str]:
+    if facts.content.weighted is not None:
+        return f"{called(share.name)}: {share.text} of the population.", portrait(facts, share.name)
     term = f"{called(share.name)}: {share.text}, {about_of(share.median, facts.n_cases)}."
     return term, portrait(facts, share.name)
 
@@ -124,6 +127,12 @@ def _how_sure(facts: Facts) -> list[str]:
     says = [sentence(f"the answer is for {chosen}{because}")]
     if content.comparison is not None:
         says.append(sentence(content.comparison.verdict))
+    says.append(design.moved_in_words(facts))
+    if content.weighted is not None:
+        says.append(
+            "What the classes look like, how many they are and how surely cases are placed rests "
+            "on the cases as they are, unweighted."
+        )
     if n_classes > 1:
         placed = facts.placement
         sure = placed.n_at_least(0.8)
@@ -140,7 +149,7 @@ def _how_sure(facts: Facts) -> list[str]:
         "Classes are a model's summary of the answers; how far to trust it stands under "
         "“Limits and cautions”."
     )
-    return says
+    return [said for said in says if said]
 
 
 def _changes(content: ReportContent) -> list[Block]:

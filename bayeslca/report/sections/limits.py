@@ -73,7 +73,7 @@ def _diagnostic() -> tuple[str, str]:
 
 
 def _size(facts: Facts) -> tuple[str, str]:
-    widest = max(facts.overall, key=lambda share: share.upper - share.lower)
+    widest = max(facts.answered, key=lambda share: share.upper - share.lower)
     return (
         f"{counted(facts.n_cases, 'case')} leave much open:",
         f"the {level(facts.content.interval)} interval of the share of {called(widest.name)} runs "

@@ -5,8 +5,9 @@ from __future__ import annotations
 from collections.abc import Mapping
 
 from bayeslca.report.blocks import Block, Bullets, Paragraph, Section
-from bayeslca.report.facts import Facts, shares_in_words
+from bayeslca.report.facts import Facts
 from bayeslca.report.references import cited_in
+from bayeslca.report.sections import design
 from bayeslca.report.sections.assumptions import answers_in_words, model_in_words
 from bayeslca.report.sections.sampling import starts_in_words
 from bayeslca.report.wording import (
@@ -47,6 +48,7 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
         _sampling(facts),
         _comparison(facts),
         _fit(facts),
+        design.method_in_words(facts),
         _software(versions),
     ]
     if model.n_classes > 1:
@@ -54,7 +56,7 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
             sentence(
                 "by posterior medians with equal-tailed "
                 f"{level(facts.content.interval)} intervals, "
-                f"{shares_in_words(facts.overall, facts.n_cases)}"
+                f"{facts.answered_in_words}"
             )
         )
     return " ".join(part for part in parts if part)

@@ -15,6 +15,7 @@ from bayeslca.report.sections import (
     assumptions,
     class_counts,
     classes,
+    design,
     fit,
     limits,
     membership,
@@ -34,6 +35,7 @@ _CLASSES = (classes.ANCHOR, classes.HEADING)
 _PREVALENCE = (prevalence.ANCHOR, prevalence.HEADING)
 _PLACED = (membership.ANCHOR, membership.HEADING)
 _SAMPLING = (sampling.ANCHOR, sampling.HEADING)
+_DESIGN = (design.ANCHOR, design.HEADING)
 _FIT = (fit.ANCHOR, fit.HEADING)
 _LIMITS = (limits.ANCHOR, limits.HEADING)
 _REPRODUCE = (reproduce.ANCHOR, reproduce.HEADING)
@@ -82,6 +84,7 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     )
     yield _independence(facts)
     yield _reproduced(facts)
+    yield _sampled(facts)
     yield _missing(facts)
     yield _unclear(facts)
     yield _separated(facts)
@@ -200,6 +203,25 @@ def _independence(facts: Facts) -> Answered:
         (_PRIORS,),
         _items("BARG 1B", "14a", facts),
         done=False,
+    )
+
+
+def _sampled(facts: Facts) -> Answered:
+    question = "Does the analysis allow for how the cases were sampled?"
+    if facts.content.weighted is None:
+        return Answered(
+            question,
+            "The figures are of the cases at hand, taken one by one; no weights, clusters or "
+            "strata were used.",
+            guidelines=_items("", "9", facts),
+            done=False,
+        )
+    return Answered(
+        question,
+        f"Yes, for the shares in the answer: {facts.content.weighted.design.in_words()}. "
+        f"{design.moved_in_words(facts)} Comparison of models and checks of fit are unweighted.",
+        (_DESIGN,),
+        _items("", "9", facts),
     )
 
 

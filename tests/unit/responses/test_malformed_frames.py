@@ -232,9 +232,9 @@ FRAMES: dict[str, tuple[Callable[[], Any], dict[str, Any], list[str]]] = {
         {"items": ["fees"], "counts": "n"},
         ["beyond all measure", "row 1"],
     ),
-    "weight": (_frame, {"items": ["fees"], "weight": "w"}, ["weight='w'", "sampling weights"]),
-    "cluster": (_frame, {"items": ["fees"], "cluster": "v"}, ["cluster='v'", "not supported"]),
-    "stratum": (_frame, {"items": ["fees"], "stratum": "s"}, ["stratum='s'", "not supported"]),
+    "weight": (_frame, {"items": ["fees"], "weight": "w"}, ["weight: there is no column 'w'"]),
+    "cluster": (_frame, {"items": ["fees"], "cluster": "v"}, ["cluster: there is no column 'v'"]),
+    "stratum": (_frame, {"items": ["fees"], "stratum": "s"}, ["stratum: there is no column 's'"]),
     "keep_only unknown column": (
         _frame,
         {"items": ["fees"], "keep_only": {"yaer": ["2025"]}},
