@@ -46,11 +46,14 @@ class ClassCounts:
     evidence : dict from int to Evidence
     verdict : str
         What the answers support, how strongly, and on which priors that depends.
+    covariance : ndarray, shape (n, n)
+        Of the probabilities' Monte Carlo errors; 0 for numbers that have no probability.
     """
 
     table: pd.DataFrame
     evidence: dict[int, Evidence]
     verdict: str
+    covariance: Floats
 
     def __repr__(self) -> str:
         columns = ["log_evidence", "log_evidence_mcse", "probability", "log_bayes_factor"]
@@ -82,11 +85,10 @@ def class_counts(
     counts = sorted(posteriors)
     weights = checked_prior(prior, counts)
     evidence, joined = log_evidence_of_counts(posteriors, seed=seed)
-    table = _table(counts, weights, evidence, joined)
+    table, covariance = _table(counts, weights, evidence, joined)
     stated = any(one.model.stated.priors for one in posteriors.values())
-    return ClassCounts(
-        table, evidence, evidence_in_words(table, is_uniform=prior is None, stated=stated)
-    )
+    verdict = evidence_in_words(table, is_uniform=prior is None, stated=stated)
+    return ClassCounts(table, evidence, verdict, covariance)
 
 
 def checked_prior(prior: PriorOnCount | None, counts: Sequence[int]) -> Floats:
@@ -124,7 +126,7 @@ def _has_its_rivals(counts: Sequence[int], good: Sequence[int], value: Floats) -
 
 def _table(
     counts: Sequence[int], prior: Floats, evidence: Mapping[int, Evidence], joined: Joined
-) -> pd.DataFrame:
+) -> tuple[pd.DataFrame, Floats]:
     import pandas as pd
 
     good = [k for k in counts if evidence[k].reliable]
@@ -132,9 +134,11 @@ def _table(
     covariance = joined.covariance[np.ix_(at, at)]
     value = np.array([evidence[k].log_evidence for k in good])
     chance, error = np.full(len(counts), np.nan), np.full(len(counts), np.nan)
+    of_chance = np.zeros((len(counts),) * 2)
     rows = [counts.index(k) for k in good]
     if _has_its_rivals(counts, good, value) and prior[rows].sum() > 0:
-        chance[rows], error[rows] = probabilities(value, covariance, prior[rows])
+        chance[rows], of_chance[np.ix_(rows, rows)] = probabilities(value, covariance, prior[rows])
+        error[rows] = np.sqrt(np.maximum(np.diag(of_chance)[rows], 0.0))
     steps = {}
     for k in good:
         if k - 1 in good:
@@ -155,4 +159,4 @@ def _table(
         }
         for i, k in enumerate(counts)
     ]
-    return pd.DataFrame(records, index=pd.Index(counts, name="classes"))
+    return pd.DataFrame(records, index=pd.Index(counts, name="classes")), of_chance

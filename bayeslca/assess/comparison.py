@@ -26,12 +26,15 @@ from bayeslca.assess.information_criteria import (
     waic,
 )
 from bayeslca.assess.stacking import stacking_weights
+from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.posterior.tables import OVERALL
 
 if TYPE_CHECKING:
     import pandas as pd
+
+    from bayeslca.assess.averaged import Averaged
 
 TIE = 4.0
 """A smaller difference in elpd is a tie, whatever its standard error (Sivula et al. 2020)."""
@@ -98,6 +101,22 @@ class Comparison:
     def tied(self) -> tuple[Name, ...]:
         """The rows that the answers do not tell from the best, itself among them."""
         return tuple(self.table.index[self.table["tied"]])
+
+    def averaged(self) -> Averaged:
+        """Return the posterior averaged over the number of classes, for label-free quantities.
+
+        Raises
+        ------
+        ModelError
+            When the rows are no numbers of classes, or their probabilities are not reliable.
+        """
+        from bayeslca.assess.averaged import averaged
+
+        if self.class_counts is None:
+            msg = "only numbers of classes are averaged over, and none were compared here."
+            raise ModelError(msg)
+        by_count = {n: one for n, one in self.posteriors.items() if isinstance(n, int)}
+        return averaged(self.class_counts, by_count)
 
     def __repr__(self) -> str:
         return comparison_text(self.table, self.verdict, [f.message for f in self.findings])

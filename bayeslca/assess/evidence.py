@@ -287,7 +287,7 @@ def _generator(posterior: Posterior, seed: Seed) -> np.random.Generator:
 def probabilities(
     log_evidences: Floats, covariance: Floats, prior: Floats
 ) -> tuple[Floats, Floats]:
-    """Return posterior probabilities of models and their Monte Carlo errors.
+    """Return posterior probabilities (n,) of models, and the covariance (n, n) of their errors.
 
     Parameters
     ----------
@@ -302,5 +302,4 @@ def probabilities(
     weights = np.exp(logs - logs.max())
     found = weights / weights.sum()
     slope = np.diag(found) - np.outer(found, found)  # of probabilities by log evidences
-    variance = np.einsum("ij,jk,ik->i", slope, covariance, slope)
-    return found, np.sqrt(np.maximum(variance, 0.0))
+    return found, np.asarray(slope @ covariance @ slope.T)

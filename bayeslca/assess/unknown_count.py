@@ -2,18 +2,27 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, TypeAlias
 
 import numpy as np
 
 from bayeslca._typing import Floats, Ints, Seed
+from bayeslca.assess.averaged import counts_in_words
 from bayeslca.assess.bridge_sampling import effective_draws
+from bayeslca.assess.co_membership import (
+    BATCHES,
+    MOST_TOGETHER,
+    CoMembership,
+    most_sampled,
+)
 from bayeslca.assess.empty_class_ladder import class_elements
+from bayeslca.assess.partition import point_partition
 from bayeslca.exceptions import ModelError
 from bayeslca.model.compile import compile_units
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.prevalence import DirichletPrevalence
+from bayeslca.posterior.membership import pattern_keys
 from bayeslca.sampling.threads import default_threads, on_threads
 
 if TYPE_CHECKING:
@@ -21,8 +30,10 @@ if TYPE_CHECKING:
 
     from bayeslca.responses.responses import Responses
 
-MOST_TOGETHER = 3000
-"""More distinct response patterns than this get no table of who is together with whom."""
+_Chain: TypeAlias = tuple[Ints, Ints, Floats, Floats, Ints]
+
+LOOK_EVERY = 20
+"""Sweeps from one look at who is together with whom to the next."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -34,16 +45,24 @@ class UnknownCount:
     table : DataFrame
         A row per number of classes with ``prior``, ``probability``, ``mcse`` (of the probability),
         and ``filled``, the probability that so many classes hold at least one case.
-    together : ndarray, shape (U, U), or None
-        Probability that two different cases of these units (of the model without groups, or with)
-        are in one class, averaged over the number of classes.
     effective_draws : float
         Of the number of classes; fewer than some hundreds make the table uncertain.
+    co_membership : CoMembership or None
+        Who is together with whom whatever the number of classes, and the sets of cases that
+        follow; None where it was not asked for, or there are too many distinct patterns.
+    patterns : DataFrame or None
+        How probable each response pattern is, as `Averaged.pattern_probabilities` gives it.
     """
 
     table: pd.DataFrame
-    together: Floats | None
     effective_draws: float
+    co_membership: CoMembership | None = None
+    patterns: pd.DataFrame | None = None
+
+    @property
+    def together(self) -> Floats | None:
+        """P(two different cases of these units are in one class), shape (U, U)."""
+        return None if self.co_membership is None else self.co_membership.probability
 
 
 def sample_class_count(
@@ -76,7 +95,7 @@ def sample_class_count(
     chains, draws : int
         Chains, and kept sweeps of each; a quarter as many are thrown away first.
     together : bool
-        Whether to find who is in one class with whom.
+        Whether to find who is in one class with whom, and how probable patterns are.
     threads : int, optional
 
     Raises
@@ -102,8 +121,11 @@ def sample_class_count(
     with_pairs = together and units.n_units <= MOST_TOGETHER
     sequence = np.random.default_rng(seed).spawn(chains)
 
-    def work(at: int) -> tuple[Ints, Ints, Floats, int]:
-        found: tuple[Ints, Ints, Floats, int] = telescope(
+    looks = draws // LOOK_EVERY + 1
+    split_every = max(1, looks * chains // most_sampled(units.n_units, most))
+
+    def work(at: int) -> _Chain:
+        found: _Chain = telescope(
             block_start,
             block_prior,
             units.row_start,
@@ -115,7 +137,8 @@ def sample_class_count(
             int(possible[at % possible.size]),
             draws // 4,
             draws,
-            20 if with_pairs else 0,
+            LOOK_EVERY if with_pairs else 0,
+            split_every,
             sequence[at],
         )
         return found
@@ -128,11 +151,40 @@ def sample_class_count(
     )
     counts = np.stack([one[0] for one in ran])
     filled = np.stack([one[1] for one in ran])
-    pairs = None
-    if with_pairs:
-        pairs = np.sum([one[2] for one in ran], axis=0) / sum(one[3] for one in ran)
     effective = effective_draws(counts.astype(np.float64))
-    return UnknownCount(_table(counts, filled, weights), pairs, effective)
+    found = UnknownCount(_table(counts, filled, weights), effective)
+    if not with_pairs:
+        return found
+    parts = np.concatenate([one[2] for one in ran])
+    mean = parts.mean(axis=0)
+    splits = np.concatenate([one[4] for one in ran])
+    return replace(
+        found,
+        co_membership=CoMembership(
+            model,
+            responses,
+            mean,
+            parts.std(axis=0, ddof=1) / np.sqrt(len(parts)),
+            point_partition(splits, units.count, mean),
+            basis=f"With their number sampled among {counts_in_words(possible.tolist())}",
+        ),
+        patterns=_patterns(model, responses, np.stack([one[3] for one in ran])),
+    )
+
+
+def _patterns(model: LatentClassModel, responses: Responses, probability: Floats) -> pd.DataFrame:
+    """Return the table of patterns from draws (chain, look, U) of their probabilities."""
+    units = model.units(responses)
+    frame = pattern_keys(model, units)
+    flat = probability.reshape(-1, units.n_units)
+    batches = np.stack([part.mean(axis=0) for part in np.array_split(flat, BATCHES)])
+    frame["probability"] = flat.mean(axis=0)
+    frame["mcse"] = batches.std(axis=0, ddof=1) / np.sqrt(BATCHES)
+    frame["lower"], frame["upper"] = np.quantile(flat, [0.025, 0.975], axis=0)
+    cases = np.bincount(units.group, weights=units.count)[units.group]
+    frame["expected"] = frame["probability"] * cases
+    frame.attrs["interval"] = 0.95
+    return frame
 
 
 def _table(counts: Ints, filled: Ints, prior: Floats) -> pd.DataFrame:

@@ -21,6 +21,7 @@ from bayeslca.sampling.stopping import some_units
 if TYPE_CHECKING:
     import pandas as pd
 
+    from bayeslca.model.latent_class_model import LatentClassModel
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.responses import Responses
 
@@ -103,7 +104,7 @@ def membership_table(
     found = unit_membership(posterior, compile_units(posterior.table, units), interval)
     impossible = np.asarray(np.isnan(found.mean).any(axis=1))
     if rows == "patterns":
-        frame = _pattern_keys(posterior, units)
+        frame = pattern_keys(posterior.model, units)
     else:
         frame = _case_keys(posterior, responses)
         found = _by_case(posterior, responses, units, found, interval)
@@ -147,11 +148,11 @@ def _case_keys(posterior: Posterior, responses: Responses) -> pd.DataFrame:
     return pd.DataFrame(keys)
 
 
-def _pattern_keys(posterior: Posterior, units: Units) -> pd.DataFrame:
+def pattern_keys(model: LatentClassModel, units: Units) -> pd.DataFrame:
+    """Return a row per unit: its group, where the model has groups, its answers, its count."""
     import pandas as pd
 
     keys: dict[str, Any] = {}
-    model = posterior.model
     if model.groups is not None:
         keys["group"] = np.asarray(model.groups.levels, dtype=object)[units.group]
     for j, item in enumerate(model.items):

@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
-from bayeslca._typing import Floats
+from bayeslca._typing import Floats, Seed
 from bayeslca.model.compile import compile_units
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_unit_likelihood, response_probability
@@ -33,6 +33,7 @@ if TYPE_CHECKING:
     import pandas as pd
     from xarray import DataTree
 
+    from bayeslca.assess.co_membership import CoMembership
     from bayeslca.assess.convergence import Diagnostics
     from bayeslca.assess.hypotheses import HypothesisTest
     from bayeslca.assess.leave_one_unit_out import LeaveOneUnitOut
@@ -371,6 +372,23 @@ class Posterior:
             calibrate_from=calibrate_from,
             progress=progress,
         )
+
+    def co_membership(self, *, seed: Seed = None) -> CoMembership:
+        """Return how probably two cases are in one class, and the sets of cases that follow.
+
+        Parameters
+        ----------
+        seed : int, numpy.random.Generator, numpy.random.SeedSequence or None
+            Of the sampled partitions; by default it follows from the posterior's own seed.
+
+        Raises
+        ------
+        ModelError
+            When there are too many distinct response patterns.
+        """
+        from bayeslca.assess.co_membership import co_membership
+
+        return co_membership(self, seed=seed)
 
     def diagnostics(self) -> Diagnostics:
         """Return whether the sampling is to be trusted: findings, a table, and a verdict."""

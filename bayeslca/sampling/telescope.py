@@ -22,6 +22,9 @@ from bayeslca._typing import Floats, Ints
 from bayeslca.sampling.compiled import compiled, compiled_part
 from bayeslca.sampling.split import draw_shares, split_count
 
+PARTS = 5
+"""Parts of a chain whose looks are averaged apart, so that their spread tells the error."""
+
 
 @compiled
 def telescope(
@@ -36,9 +39,10 @@ def telescope(
     n_classes: int,
     warmup: int,
     draws: int,
-    together_every: int,
+    look_every: int,
+    split_every: int,
     rng: np.random.Generator,
-) -> tuple[Ints, Ints, Floats, int]:
+) -> tuple[Ints, Ints, Floats, Floats, Ints]:
     """Run one chain.
 
     Parameters
@@ -59,17 +63,23 @@ def telescope(
         The number of classes to begin with.
     warmup, draws : int
         Sweeps thrown away, and sweeps kept.
-    together_every : int
+    look_every : int
         Kept sweeps from one look at who is in a class with whom to the next; 0 for none.
+    split_every : int
+        Looks from one partition that is kept to the next.
     rng : numpy.random.Generator
 
     Returns
     -------
     counts, filled : ndarray of int64, shape (draws,)
         Number of classes, and of those that hold cases.
-    together : ndarray, shape (U, U)
-        Sum over looks of the probability that two different cases are in one class.
-    looks : int
+    together : ndarray, shape (PARTS, U, U)
+        Probability that two different cases are in one class: mean over the looks of each part of
+        the kept sweeps.
+    probability : ndarray, shape (looks, U)
+        Of the answers of each unit.
+    splits : ndarray of int64, shape (n, U, most)
+        How many cases of each unit were in each class, at some looks.
     """
     most, n_rows, n_units = log_prior_of_count.size, block_prior.size, cases.size
     n_groups = int(group.max()) + 1
@@ -83,9 +93,16 @@ def telescope(
     membership = np.zeros((n_units, most))
     counts = np.zeros(draws, dtype=np.int64)
     filled = np.zeros(draws, dtype=np.int64)
-    size = n_units if together_every > 0 else 0
-    together = np.zeros((size, size))
-    looks = 0
+    size, n_looks, n_splits = 0, 0, 0
+    if look_every > 0:
+        size, n_looks = n_units, (draws - 1) // look_every + 1
+        n_splits = (n_looks - 1) // split_every + 1
+    together = np.zeros((PARTS, size, size))
+    probability = np.zeros((n_looks, size))
+    splits = np.zeros((n_splits, size, most), dtype=np.int64)
+    numbers = np.zeros((n_units, most), dtype=np.int64)
+    log_unit = np.zeros(n_units)
+    looks = np.zeros(PARTS)
     _draw_classes(
         block_start, block_prior, concentration, row_count, class_count, n_classes,
         elements, prevalence, rng,
@@ -93,12 +110,16 @@ def telescope(
     for sweep in range(warmup + draws):
         n_filled = _split_cases(
             row_start, row, cases, group, elements, prevalence, n_classes,
-            row_count, class_count, membership, rng,
+            row_count, class_count, membership, numbers, log_unit, rng,
         )  # fmt: skip
         kept = sweep - warmup
-        if kept >= 0 and together_every > 0 and kept % together_every == 0:
-            looks += 1
-            _add_together(membership, n_classes, together)
+        if kept >= 0 and look_every > 0 and kept % look_every == 0:
+            look, part = kept // look_every, kept * PARTS // draws
+            looks[part] += 1
+            _add_together(membership, n_classes, together[part])
+            probability[look] = np.exp(log_unit)
+            if look % split_every == 0:
+                splits[look // split_every] = numbers
         n_classes = _draw_count(log_prior_of_count, concentration, group_cases, n_filled, rng)
         _draw_classes(
             block_start, block_prior, concentration, row_count, class_count, n_classes,
@@ -107,7 +128,9 @@ def telescope(
         if kept >= 0:
             counts[kept] = n_classes
             filled[kept] = n_filled
-    return counts, filled, together, looks
+    for part in range(PARTS):
+        together[part] /= max(looks[part], 1.0)
+    return counts, filled, together, probability, splits
 
 
 @compiled_part
@@ -122,15 +145,21 @@ def _split_cases(
     row_count: Ints,
     class_count: Ints,
     membership: Floats,
+    numbers: Ints,
+    log_unit: Floats,
     rng: np.random.Generator,
 ) -> int:
-    """Split the cases over the classes; put classes that hold cases first; return their number."""
+    """Split the cases over the classes; put classes that hold cases first; return their number.
+
+    Written to are also each unit's membership and numbers in the classes as they were, and the
+    log probability of its answers.
+    """
     row_count[:] = 0
     class_count[:] = 0
     membership[:] = 0.0
+    numbers[:] = 0
     weights = np.empty(n_classes)
     cumulative = np.empty(n_classes)
-    numbers = np.empty(n_classes, dtype=np.int64)
     for u in range(cases.size):
         highest = -math.inf
         for k in range(n_classes):
@@ -143,12 +172,13 @@ def _split_cases(
             weights[k] = math.exp(weights[k] - highest)
             total += weights[k]
             cumulative[k] = total
-        split_count(cases[u], weights, cumulative, numbers, rng)
+        log_unit[u] = highest + math.log(total)
+        split_count(cases[u], weights, cumulative, numbers[u, :n_classes], rng)
         for k in range(n_classes):
             membership[u, k] = weights[k] / total
-            class_count[group[u], k] += numbers[k]
+            class_count[group[u], k] += numbers[u, k]
             for i in range(row_start[u], row_start[u + 1]):
-                row_count[k, row[i]] += numbers[k]
+                row_count[k, row[i]] += numbers[u, k]
     n_filled = 0
     for k in range(n_classes):
         if class_count[:, k].sum() > 0:

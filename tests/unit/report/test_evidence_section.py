@@ -31,7 +31,8 @@ def counts(reliable: tuple[bool, ...] = (True, True, True)) -> ClassCounts:
         },
         index=pd.Index([1, 2, 3], name="classes"),
     )
-    return ClassCounts(table, {}, evidence_in_words(table, is_uniform=True, stated=False))
+    verdict = evidence_in_words(table, is_uniform=True, stated=False)
+    return ClassCounts(table, {}, verdict, np.zeros((3, 3)))
 
 
 def compared(made: Any, found: ClassCounts) -> Any:
