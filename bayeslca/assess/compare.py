@@ -35,12 +35,16 @@ class FitProgress:
     fit, fits : int
         Which fit it is, and of how many.
     sampling : Progress
+    refitting : bool
+        True when the row is fitted and patterns (or folds) of it are refitted: ``sampling``
+        counts the sweeps of all its refits.
     """
 
     name: Name
     fit: int
     fits: int
     sampling: Progress
+    refitting: bool = False
 
 
 Show: TypeAlias = Callable[[FitProgress], None]
@@ -91,6 +95,8 @@ def compare_class_counts(
     fitted: Mapping[int, Posterior] | None = None,
     own: LatentClassModel | Posterior | None = None,
     prior_on_count: PriorOnCount | None = None,
+    exact: bool | None = None,
+    folds: int = 0,
     progress: bool | Show = True,
     **sampling: Any,
 ) -> Comparison:
@@ -115,6 +121,12 @@ def compare_class_counts(
         The study's own model; it gets the row "this study".
     prior_on_count : mapping from int to float, optional
         Prior weight of each number of classes; all equal when left out.
+    exact : bool, optional
+        True: leave-one-out by refitting without one case of each distinct pattern. False: by
+        importance sampling alone. Left out: refits where importance sampling is poor, at most
+        12 for each row.
+    folds : int
+        Compare by so many folds of cases as well (10 is usual); 0 for none.
     progress : bool or callable
         True shows a bar per fit on a terminal; a callable is given a `FitProgress`.
     **sampling
@@ -135,7 +147,8 @@ def compare_class_counts(
         entries[n] = (fitted or {}).get(n, model)
     if own is not None:
         entries[OWN] = own
-    return _compared(entries, responses, "classes", seed, progress, sampling, prior_on_count)
+    fit = _Fitting(responses, seed, progress, sampling, exact, folds)
+    return _compared(entries, "classes", fit, prior_on_count)
 
 
 def compare(
@@ -143,6 +156,8 @@ def compare(
     responses: Responses | None = None,
     *,
     seed: Seed = None,
+    exact: bool | None = None,
+    folds: int = 0,
     progress: bool | Show = True,
     **sampling: Any,
 ) -> Comparison:
@@ -154,7 +169,7 @@ def compare(
         Models are sampled on ``responses``; posteriors are taken as they are.
     responses : Responses, optional
         Needed when a model is not fitted yet.
-    seed, progress, **sampling
+    seed, exact, folds, progress, **sampling
         As in `compare_class_counts`.
 
     Raises
@@ -179,44 +194,59 @@ def compare(
             )
             raise ModelError(msg)
     entries: dict[Name, LatentClassModel | Posterior] = {n: entry for n, entry in models.items()}
-    return _compared(entries, responses, "model", seed, progress, sampling)
+    fit = _Fitting(responses, seed, progress, sampling, exact, folds)
+    return _compared(entries, "model", fit)
+
+
+@dataclass(frozen=True)
+class _Fitting:
+    """How what is compared is fitted and refitted."""
+
+    responses: Responses | None
+    seed: Seed
+    progress: bool | Show
+    sampling: Mapping[str, Any]
+    exact: bool | None
+    folds: int
 
 
 def _compared(
     entries: Mapping[Name, LatentClassModel | Posterior],
-    responses: Responses | None,
     index: str,
-    seed: Seed,
-    progress: bool | Show,
-    sampling: Mapping[str, Any],
+    how: _Fitting,
     prior: PriorOnCount | None = None,
 ) -> Comparison:
     given = {name: e.responses for name, e in entries.items() if isinstance(e, Posterior)}
-    _refuse_different_answers(given, responses)
-    return comparison_of(_fitted(entries, responses, seed, progress, sampling), index, prior)
+    _refuse_different_answers(given, how.responses)
+    names = list(entries)
+
+    def refits(name: Name) -> bool | Callable[[Progress], None]:
+        if not callable(how.progress):
+            return how.progress
+        return _one_fit(how.progress, name, names.index(name) + 1, len(names), refitting=True)
+
+    return comparison_of(
+        _fitted(entries, how), index, prior, exact=how.exact, folds=how.folds, progress=refits
+    )
 
 
 def _fitted(
-    entries: Mapping[Name, LatentClassModel | Posterior],
-    responses: Responses | None,
-    seed: Seed,
-    progress: bool | Show,
-    sampling: Mapping[str, Any],
+    entries: Mapping[Name, LatentClassModel | Posterior], how: _Fitting
 ) -> dict[Name, Posterior]:
     """Sample what is not fitted yet, each with a seed of its own."""
-    entropy = _entropy(seed)
+    entropy = _entropy(how.seed)
     to_fit = [name for name, entry in entries.items() if isinstance(entry, LatentClassModel)]
     posteriors: dict[Name, Posterior] = {}
     for name, entry in entries.items():
         if isinstance(entry, Posterior):
             posteriors[name] = entry
             continue
-        assert responses is not None  # refused before
-        show: Any = progress
-        if callable(progress):
-            show = _one_fit(progress, name, to_fit.index(name) + 1, len(to_fit))
+        assert how.responses is not None  # refused before
+        show: Any = how.progress
+        if callable(show):
+            show = _one_fit(show, name, to_fit.index(name) + 1, len(to_fit))
         posteriors[name] = entry.sample(
-            responses, seed=seed_of_row(entropy, name), progress=show, **sampling
+            how.responses, seed=seed_of_row(entropy, name), progress=show, **how.sampling
         )
     return posteriors
 
@@ -237,8 +267,10 @@ def _entropy(seed: Seed) -> int | Sequence[int]:
     return [int(part) for part in sequence.generate_state(4)]
 
 
-def _one_fit(show: Show, name: Name, fit: int, fits: int) -> Callable[[Progress], None]:
-    return lambda sampling: show(FitProgress(name, fit, fits, sampling))
+def _one_fit(
+    show: Show, name: Name, fit: int, fits: int, *, refitting: bool = False
+) -> Callable[[Progress], None]:
+    return lambda sampling: show(FitProgress(name, fit, fits, sampling, refitting))
 
 
 def _checked_counts(counts: Iterable[int]) -> list[int]:

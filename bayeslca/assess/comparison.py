@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
@@ -18,18 +18,16 @@ from bayeslca.assess.comparison_words import (
     verdict_in_words,
 )
 from bayeslca.assess.evidence import Evidence, log_evidence
-from bayeslca.assess.information_criteria import (
-    PointwiseElpd,
-    difference,
-    psis_loo,
-    relative_efficiency,
-    waic,
-)
+from bayeslca.assess.exact_loo import left_out
+from bayeslca.assess.fold_comparison import FoldComparison, compared_by_folds
+from bayeslca.assess.folds import model_unit
+from bayeslca.assess.information_criteria import PointwiseElpd, difference, waic
 from bayeslca.assess.stacking import stacking_weights
 from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.posterior.tables import OVERALL
+from bayeslca.sampling.progress import Show
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -61,6 +59,7 @@ class Comparison:
         tied                       True within 4, or within two errors, of the best
         weight                     stacking weight; they sum to 1
         pareto_k_high              cases whose leave-one-out figure is not reliable
+        refitted                   distinct patterns that were refitted without one of their cases
         waic, waic_se, p_waic      the widely applicable criterion, on the elpd scale
         smallest_class             median prevalence of the smallest class
         smallest_lower, _upper     its 95 % interval
@@ -85,6 +84,8 @@ class Comparison:
         Each row's log evidence, or why it is not reliable.
     class_counts : ClassCounts or None
         How probable each number of classes is; None where the rows are not numbers of classes.
+    folds : FoldComparison or None
+        The rows compared by K-fold; None where that was not asked for.
     """
 
     table: pd.DataFrame
@@ -96,6 +97,7 @@ class Comparison:
     best: Name
     evidence: dict[Name, Evidence] = field(default_factory=dict)
     class_counts: ClassCounts | None = None
+    folds: FoldComparison | None = None
 
     @property
     def tied(self) -> tuple[Name, ...]:
@@ -126,7 +128,13 @@ class Comparison:
 
 
 def comparison_of(
-    posteriors: dict[Name, Posterior], index: str, prior: PriorOnCount | None = None
+    posteriors: dict[Name, Posterior],
+    index: str,
+    prior: PriorOnCount | None = None,
+    *,
+    exact: bool | None = None,
+    folds: int = 0,
+    progress: Callable[[Name], bool | Show] = lambda name: False,
 ) -> Comparison:
     """Compare fitted models of the same answers.
 
@@ -137,10 +145,16 @@ def comparison_of(
         What the rows' names are: "classes" or "model".
     prior : mapping from int to float, optional
         Prior weight of each number of classes; all equal when left out.
+    exact : bool, optional
+        See `bayeslca.assess.exact_loo.leave_one_out`.
+    folds : int
+        0: no K-fold.
+    progress : callable
+        Given a row's name, returns who is told how far its refits are.
     """
-    loo, widely = {}, {}
+    loo, widely, missing = {}, {}, {}
     for name, posterior in posteriors.items():
-        loo[name], widely[name] = _criteria(posterior)
+        loo[name], widely[name], missing[name] = _criteria(posterior, exact, progress(name))
     best = max(loo, key=lambda name: loo[name].elpd)
     by_count = {name: one for name, one in posteriors.items() if isinstance(name, int)}
     counts = class_counts(by_count, prior=prior) if by_count else None
@@ -160,13 +174,14 @@ def comparison_of(
         waic=widely,
         verdict=verdict,
         findings=(
-            *_findings(table, loo[best].n_cases),
+            *_findings(table, loo[best].n_cases, missing),
             *_evidence_findings(evidence),
             *_design_findings(posteriors),
         ),
         best=best,
         evidence=evidence,
         class_counts=counts,
+        folds=compared_by_folds(posteriors, index, folds, progress) if folds else None,
     )
 
 
@@ -175,39 +190,34 @@ def is_tie(gap: float, error: float) -> bool:
     return abs(gap) < TIE or abs(gap) <= TIE_ERRORS * error
 
 
-def _criteria(posterior: Posterior) -> tuple[PointwiseElpd, PointwiseElpd]:
-    """Return leave-one-out and WAIC by unit of the responses (groups told apart)."""
-    values, counts = posterior.log_likelihood_draws, posterior.unit_table.count
-    efficiency = relative_efficiency(
-        posterior.prevalence_draws, posterior.response_probability_draws
-    )
-    of_unit = _model_unit(posterior)
-    fine = posterior.responses.units.count
-    loo = psis_loo(values, counts, relative_efficiency=efficiency)
-    return _by_fine_unit(loo, of_unit, fine), _by_fine_unit(waic(values, counts), of_unit, fine)
+def _criteria(
+    posterior: Posterior, exact: bool | None, progress: bool | Show
+) -> tuple[PointwiseElpd, PointwiseElpd, str]:
+    """Return leave-one-out and WAIC by unit of the responses (groups told apart).
 
-
-def _model_unit(posterior: Posterior) -> Ints:
-    """Return, for each unit of the responses, the unit that the model sees.
-
-    A model without groups pools those of all groups.
+    And why patterns that should have been refitted were not.
     """
-    fine, seen = posterior.responses.units, posterior.units
-    inside = np.flatnonzero(fine.unit_of_row >= 0)
-    units, first = np.unique(fine.unit_of_row[inside], return_index=True)
-    of_unit = np.empty(fine.n_units, dtype=np.int64)
-    of_unit[units] = seen.unit_of_row[inside[first]]
-    return of_unit
+    found = left_out(posterior, exact, None, None, progress, None)
+    widely = waic(posterior.log_likelihood_draws, posterior.unit_table.count)
+    of_unit, fine = model_unit(posterior), posterior.responses.units.count
+    return (
+        _by_fine_unit(found.loo, of_unit, fine),
+        _by_fine_unit(widely, of_unit, fine),
+        (found.no_refit),
+    )
 
 
 def _by_fine_unit(one: PointwiseElpd, of_unit: Ints, counts: Ints) -> PointwiseElpd:
-    k = one.pareto_k
+    """Give each unit of the responses what the model's unit has."""
     return replace(
         one,
+        counts=counts,
         pointwise=one.pointwise[of_unit],
         p_pointwise=one.p_pointwise[of_unit],
-        counts=counts,
-        pareto_k=None if k is None else k[of_unit],
+        pareto_k=None if one.pareto_k is None else one.pareto_k[of_unit],
+        weight_ess=None if one.weight_ess is None else one.weight_ess[of_unit],
+        refitted=None if one.refitted is None else one.refitted[of_unit],
+        settled=None if one.settled is None else one.settled[of_unit],
     )
 
 
@@ -236,6 +246,7 @@ def _table(
                 "tied": name == best or is_tie(gap, error),
                 "weight": float(weight),
                 "pareto_k_high": loo[name].n_unreliable,
+                "refitted": loo[name].n_refitted,
                 "waic": widely[name].elpd,
                 "waic_se": widely[name].se,
                 "p_waic": widely[name].p,
@@ -316,7 +327,9 @@ def _design_findings(posteriors: Mapping[Name, Posterior]) -> tuple[Finding, ...
     return (Finding("comparison_unweighted", "note", message, remedy),)
 
 
-def _findings(table: pd.DataFrame, n_cases: int) -> tuple[Finding, ...]:
+def _findings(
+    table: pd.DataFrame, n_cases: int, missing: Mapping[Name, str]
+) -> tuple[Finding, ...]:
     found = []
     untrusted = [name for name in table.index if not table.loc[name, "trustworthy"]]
     if untrusted:
@@ -331,18 +344,34 @@ def _findings(table: pd.DataFrame, n_cases: int) -> tuple[Finding, ...]:
                 about=tuple(str(name) for name in untrusted),
             )
         )
+    refitted = {n: int(k) for n, k in zip(table.index, table["refitted"], strict=True) if k}
+    if refitted:
+        listed = ", ".join(f"{n} of {row_in_words(name)}" for name, n in refitted.items())
+        found.append(
+            Finding(
+                kind="refitted",
+                level="note",
+                message=f"Patterns that were refitted without one of their cases: {listed}.",
+                about=tuple(str(name) for name in refitted),
+                value=float(sum(refitted.values())),
+            )
+        )
     unreliable = {n: int(k) for n, k in zip(table.index, table["pareto_k_high"], strict=True) if k}
     if unreliable:
         listed = ", ".join(f"{n} of {row_in_words(name)}" for name, n in unreliable.items())
+        why = dict.fromkeys(missing[name] for name in unreliable if missing[name])
         found.append(
             Finding(
                 kind="pareto_k_high",
                 level="warning",
                 message=(
                     f"The leave-one-out figures of some cases are not reliable: {listed} "
-                    "(Pareto k too high)."
+                    "(Pareto k too high)." + "".join(f" {words}" for words in why)
                 ),
-                remedy="Take differences of the size of those cases' figures as not known.",
+                remedy=(
+                    "Refit every pattern (exact=True), or take differences of the size of those "
+                    "cases' figures as not known."
+                ),
                 about=tuple(str(name) for name in unreliable),
                 value=float(max(unreliable.values())),
             )

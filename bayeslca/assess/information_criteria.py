@@ -8,8 +8,9 @@ share it, so everything is computed once per unit and weighted by its number of 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
-from typing import Literal
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import Literal, Protocol
 
 import numpy as np
 from scipy.special import logsumexp
@@ -19,6 +20,8 @@ from bayeslca.exceptions import SamplingError
 
 HIGH_K = 0.7
 """Pareto k above which a leave-one-out figure is not reliable (Vehtari et al. 2024)."""
+FEW_DRAWS = 100.0
+"""Weights that leave fewer effective draws than this are poor (common practice, no source)."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,6 +48,15 @@ class PointwiseElpd:
         Tail shape of each unit's importance ratios; None for WAIC.
     high_k : float
         Above it a ``pareto_k`` is too high: 0.7, less with few draws.
+    weight_ess : ndarray of float64, shape (U,), or None
+        Effective number of draws behind each unit's weighted mean; None for WAIC.
+    influence : ndarray of float64, shape (chain, draw), or None
+        What each draw adds to ``elpd`` to first order: what ``mcse`` is the error of.
+    refitted, settled : ndarray of bool, shape (U,), or None
+        Units whose figure comes from a refit without one of their cases, and those of them whose
+        refit was precise enough; None where nothing was refitted.
+    n_refitted : int
+        Number of refits: of distinct answers, as the model sees them.
     """
 
     kind: Literal["waic", "loo"]
@@ -57,6 +69,11 @@ class PointwiseElpd:
     counts: Ints
     pareto_k: Floats | None = None
     high_k: float = HIGH_K
+    weight_ess: Floats | None = None
+    influence: Floats | None = None
+    refitted: Bools | None = None
+    settled: Bools | None = None
+    n_refitted: int = 0
 
     @property
     def n_cases(self) -> int:
@@ -65,14 +82,22 @@ class PointwiseElpd:
 
     @property
     def unreliable(self) -> Bools:
-        """Which units have a Pareto k that is too high (U,)."""
+        """Which units' figures are not reliable (U,): poor weights, and no good refit."""
+        if self.refitted is None or self.settled is None:
+            return self.poorly_weighted
+        return np.asarray(np.where(self.refitted, ~self.settled, self.poorly_weighted))
+
+    @property
+    def poorly_weighted(self) -> Bools:
+        """Which units' importance weights are poor (U,): Pareto k too high, or few draws count."""
         if self.pareto_k is None:
             return np.zeros(self.counts.size, dtype=np.bool_)
-        return np.asarray(self.pareto_k > self.high_k)
+        poor = np.asarray(self.pareto_k > self.high_k)
+        return poor if self.weight_ess is None else poor | (self.weight_ess < FEW_DRAWS)
 
     @property
     def n_unreliable(self) -> int:
-        """Number of cases whose Pareto k is too high."""
+        """Number of cases whose figure is not reliable."""
         return int(self.counts[self.unreliable].sum())
 
 
@@ -127,18 +152,102 @@ def psis_loo(
     draws = _checked(log_likelihood, counts)
     n_chains, n_draws, n_units = draws.shape
     size = n_chains * n_draws
-    pointwise, pareto_k = np.empty(n_units), np.empty(n_units)
+    pointwise, pareto_k, ess = np.empty(n_units), np.empty(n_units), np.empty(n_units)
     influence = np.zeros(size)
     for u in range(n_units):
         log_p = np.ascontiguousarray(draws[:, :, u]).ravel()
-        log_weight, pareto_k[u] = _smoothed(log_p, relative_efficiency)
+        log_weight, pareto_k[u] = smoothed_weights(log_p, relative_efficiency)
         pointwise[u] = logsumexp(log_weight + log_p)
-        weight = size * np.exp(log_weight)
-        influence += counts[u] * weight * (np.exp(log_p - pointwise[u]) - 1.0)
+        influence += counts[u] * _influence(log_weight, log_p, pointwise[u])
+        ess[u] = relative_efficiency * math.exp(-logsumexp(2.0 * log_weight))
     lppd = logsumexp(draws, axis=(0, 1)) - math.log(size)
     high_k = min(1.0 - 1.0 / math.log10(size), HIGH_K)
     by_chain = influence.reshape(n_chains, n_draws)
-    return _summed("loo", pointwise, lppd - pointwise, counts, by_chain, pareto_k, high_k)
+    found = _summed("loo", pointwise, lppd - pointwise, counts, by_chain, pareto_k, high_k)
+    return replace(found, weight_ess=ess)
+
+
+class Refitted(Protocol):
+    """What is used of a refit without one case: see `bayeslca.assess.refits.Refit`."""
+
+    @property
+    def log_density(self) -> Floats:
+        """Log predictive density of the case, (1,)."""
+        ...
+
+    @property
+    def mcse(self) -> Floats:
+        """Its Monte Carlo standard error from the refit's own draws, (1,)."""
+        ...
+
+    @property
+    def given(self) -> Floats | None:
+        """What each draw of the posterior of all cases adds to it, (chain, draw)."""
+        ...
+
+    @property
+    def settled(self) -> bool:
+        """Whether it is precise enough."""
+        ...
+
+
+def with_refits(
+    loo: PointwiseElpd,
+    log_likelihood: Floats,
+    which: Ints,
+    refits: Sequence[Refitted],
+    *,
+    relative_efficiency: float = 1.0,
+) -> PointwiseElpd:
+    """Put the figures of refits in the place of those of importance sampling.
+
+    Parameters
+    ----------
+    loo : PointwiseElpd
+        By importance sampling, from ``log_likelihood``.
+    log_likelihood : ndarray, shape (chain, draw, U) or (S, U)
+        log p(answers of one case of the unit | parameters), class summed out.
+    which : ndarray of int, shape (n,)
+        The refitted units.
+    refits : sequence of Refitted
+        One for each of them.
+    relative_efficiency : float
+        As it was given to `psis_loo`.
+
+    Notes
+    -----
+    All units share the draws of the posterior of all cases, so what these add is summed before
+    its error is taken; the draws of each refit are its own, and their errors add up as squares.
+    """
+    draws = _checked(log_likelihood, loo.counts)
+    assert loo.influence is not None
+    influence, pointwise = loo.influence.copy(), loo.pointwise.copy()
+    is_refitted = np.zeros(loo.counts.size, dtype=np.bool_)
+    is_settled = np.zeros(loo.counts.size, dtype=np.bool_)
+    for u, one in zip(which.tolist(), refits, strict=True):
+        log_p = np.ascontiguousarray(draws[:, :, u]).ravel()
+        log_weight, _ = smoothed_weights(log_p, relative_efficiency)
+        gone = _influence(log_weight, log_p, loo.pointwise[u]).reshape(influence.shape)
+        added = 0.0 if one.given is None else one.given
+        influence += loo.counts[u] * (added - gone)
+        pointwise[u], is_refitted[u], is_settled[u] = one.log_density[0], True, one.settled
+    p = loo.p_pointwise + loo.pointwise - pointwise
+    found = _summed("loo", pointwise, p, loo.counts, influence, loo.pareto_k, loo.high_k)
+    own = [loo.counts[u] * one.mcse[0] for u, one in zip(which, refits, strict=True)]
+    return replace(
+        found,
+        mcse=math.hypot(found.mcse, *own),
+        weight_ess=loo.weight_ess,
+        refitted=is_refitted,
+        settled=is_settled,
+        n_refitted=int(which.size),
+    )
+
+
+def _influence(log_weight: Floats, log_p: Floats, log_mean: float) -> Floats:
+    """Return what each draw adds to a log weighted mean, to first order (S,)."""
+    weight = log_p.size * np.exp(log_weight)
+    return np.asarray(weight * (np.exp(log_p - log_mean) - 1.0))
 
 
 def relative_efficiency(*quantities: Floats) -> float:
@@ -207,16 +316,18 @@ def _summed(
         elpd=float(np.dot(counts, pointwise)),
         se=standard_error(pointwise, counts),
         p=float(np.dot(counts, p)),
-        mcse=_mcse_of_mean(influence),
+        mcse=mcse_of_mean(influence),
         pointwise=pointwise,
         p_pointwise=p,
         counts=counts,
         pareto_k=pareto_k,
         high_k=high_k,
+        influence=influence,
     )
 
 
-def _mcse_of_mean(values: Floats) -> float:
+def mcse_of_mean(values: Floats) -> float:
+    """Return the Monte Carlo standard error of the mean of draws (chain, draw)."""
     from arviz_stats.base import array_stats
 
     if not np.ptp(values) > 1e-12 * max(1.0, float(np.abs(values).max())):
@@ -224,7 +335,7 @@ def _mcse_of_mean(values: Floats) -> float:
     return float(array_stats.mcse(values, method="mean"))
 
 
-def _smoothed(log_p: Floats, efficiency: float) -> tuple[Floats, float]:
+def smoothed_weights(log_p: Floats, efficiency: float) -> tuple[Floats, float]:
     """Return normalised log weights for leaving out a case, and their Pareto k.
 
     Ratios that have no tail, because the largest are all equal, need no smoothing; their k is 0.

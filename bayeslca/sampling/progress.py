@@ -96,26 +96,29 @@ class Meter:
 
 
 @contextmanager
-def shown(progress: bool | Show) -> Iterator[Show]:
+def shown(
+    progress: bool | Show, title: str = "Sampling", first: str = "looking for starting points"
+) -> Iterator[Show]:
     """Give the callback that shows progress: the caller's own, a bar, or nothing at all.
 
-    The bar is drawn only when standard error is a terminal.
+    The bar is drawn only when standard error is a terminal; ``first`` stands in it until there
+    are figures.
     """
     if callable(progress):
         yield progress
     elif progress and sys.stderr.isatty():
-        yield from _bar()
+        yield from _bar(title, first)
     else:
         yield lambda _progress: None
 
 
-def _bar() -> Iterator[Show]:
+def _bar(title: str, first: str) -> Iterator[Show]:
     from rich.console import Console
     from rich.progress import BarColumn, TextColumn, TimeElapsedColumn
     from rich.progress import Progress as RichProgress
 
     bar = RichProgress(
-        TextColumn("Sampling"),
+        TextColumn(title),
         BarColumn(bar_width=None),
         TextColumn("{task.fields[text]}"),
         TimeElapsedColumn(),
@@ -123,7 +126,7 @@ def _bar() -> Iterator[Show]:
         transient=True,
     )
     with bar:
-        task = bar.add_task("sampling", total=None, text="looking for starting points")
+        task = bar.add_task("sampling", total=None, text=first)
 
         def show(progress: Progress) -> None:
             total = progress.planned or None

@@ -40,8 +40,13 @@ class JobProgress:
 
     def of_comparison(self, fit: FitProgress) -> None:
         """Take note of how far the comparison of class counts is."""
+        name = "1 class" if fit.name == 1 else f"{fit.name} classes"
+        name = name if isinstance(fit.name, int) else str(fit.name)
+        if fit.refitting:
+            self.tell(f"Refits of {name}", 1.0, in_words(fit.sampling))
+            return
         self.done = max(self.done, self.fits - fit.fits + fit.fit - 1)
-        self._show("1 class" if fit.name == 1 else f"{fit.name} classes", fit.sampling)
+        self._show(name, fit.sampling)
 
     def finished(self, fits: int) -> None:
         """Count fits that are finished, or were kept from the run before."""
