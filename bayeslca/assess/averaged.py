@@ -67,6 +67,8 @@ class Averaged:
         Of the weights' Monte Carlo errors.
     verdict : str
         What is averaged over, what is left out and why.
+    caveat : str
+        The part of it that must be known; empty when nothing is left out and all is sound.
     trustworthy : bool
         False where the sampling of a number that weighs more than 1 % is not to be trusted.
     """
@@ -75,6 +77,7 @@ class Averaged:
     weight: Floats
     covariance: Floats
     verdict: str
+    caveat: str
     trustworthy: bool
 
     @property
@@ -259,11 +262,16 @@ def averaged(counts: ClassCounts, posteriors: Mapping[int, Posterior]) -> Averag
         for k, w in zip(kept, weight, strict=True)
         if w > 0.01 and not kept[k].diagnostics().trustworthy
     ]
+    basis = (
+        f"Averaged over {counts_in_words(list(kept))} by the probability of each given the answers."
+    )
+    caveat = _caveat(unknown, doubtful)
     return Averaged(
         kept,
         weight,
         counts.covariance[np.ix_(rows, rows)],
-        _verdict(list(kept), unknown, doubtful),
+        verdict=f"{basis} {caveat}".rstrip(),
+        caveat=caveat,
         trustworthy=not doubtful,
     )
 
@@ -287,11 +295,11 @@ def shared_out(weight: Floats, n: int) -> list[int]:
     return [int(s) for s in share]
 
 
-def _verdict(kept: list[int], unknown: list[int], doubtful: list[int]) -> str:
-    text = f"Averaged over {counts_in_words(kept)} by the probability of each given the answers."
+def _caveat(unknown: list[int], doubtful: list[int]) -> str:
+    text = ""
     if unknown:
         text += (
-            f" What {counts_in_words(unknown)} would say is left out: the evidence is not "
+            f"What {counts_in_words(unknown)} would say is left out: the evidence is not "
             "reliable there."
         )
     if doubtful:
@@ -299,7 +307,7 @@ def _verdict(kept: list[int], unknown: list[int], doubtful: list[int]) -> str:
             f" The sampling of {counts_in_words(doubtful)} is not to be trusted, and so neither "
             "is the average."
         )
-    return text
+    return text.strip()
 
 
 def _unit_probability(

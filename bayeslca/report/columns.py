@@ -129,6 +129,16 @@ COLUMNS: dict[str, Column] = {
         "reliable",
         "share",
     ),
+    "set": Column("Set", "cases that go together; A is the largest", "text"),
+    "patterns": Column("Patterns", "number of distinct response patterns", "count"),
+    "together_within": Column(
+        "Together", "mean probability that two of the set's cases are in one class", "share"
+    ),
+    "together_between": Column(
+        "With others",
+        "mean probability that a case of the set and one of another are in one class",
+        "share",
+    ),
     "tied": Column("Tie", "too close to the best to tell", "flag"),
     "claim": Column("Claim", "the hypothesis as the study words it", "text"),
     "planned": Column("Planned", "whether it was stated before the answers were seen", "flag"),

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     import pandas as pd
 
+    from bayeslca.assess.co_membership import CoMembership
     from bayeslca.assess.compare import Comparison
     from bayeslca.assess.criteria_beside import CriteriaBeside
     from bayeslca.assess.hypotheses import HypothesisTest
@@ -76,6 +77,11 @@ class ReportContent:
     study_row : int, str or None
         The row of ``comparison.table`` that is the model the answer rests on; None when it has
         no row there.
+    together : CoMembership or None
+        Who is together with whom whatever the number of classes; None when not asked for, or not
+        possible: ``together_why_not`` then says why.
+    together_why_not : str
+        Why it is missing, or not averaged over every number of classes; empty when it is.
     group_comparison : Comparison or None
         Of response probabilities that all groups share against ones that differ by group, rows
         "alike in all groups" and "free by group"; None when not done.
@@ -135,6 +141,8 @@ class ReportContent:
     chosen_because: str = ""
     comparison: Comparison | None = None
     study_row: int | str | None = None
+    together: CoMembership | None = None
+    together_why_not: str = ""
     group_comparison: Comparison | None = None
     claims: tuple[Claim, ...] = ()
     rivals: Mapping[str, Rivals] = field(default_factory=dict)

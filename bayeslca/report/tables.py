@@ -11,6 +11,7 @@ import numpy as np
 from bayeslca.report.columns import column
 from bayeslca.report.priors import priors_table
 from bayeslca.report.sections.likelihood import likelihood_tables
+from bayeslca.report.sections.together import sets_table
 from bayeslca.report.wording import level
 
 if TYPE_CHECKING:
@@ -89,6 +90,11 @@ def file_tables(
         if content.weighted is not None:
             unweighted = content.comparison.table.assign(weighting="unweighted")
             named["class_counts"] = (named["class_counts"][0], unweighted)
+    if content.together is not None:
+        named["sets"] = (
+            "Sets of cases that go together whatever the number of classes",
+            sets_table(content.together),
+        )
     if content.weighted is not None:
         named |= weighted_tables(content.weighted, interval)
     if content.claims:

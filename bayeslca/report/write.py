@@ -27,6 +27,7 @@ from bayeslca.report.sections.reproduce import reproduce_section, software_versi
 from bayeslca.report.sections.reviewer import reviewer_section
 from bayeslca.report.sections.sampling import sampling_section
 from bayeslca.report.sections.theory import theory_section
+from bayeslca.report.sections.together import together_section
 from bayeslca.report.tables import FileTable, file_tables
 from bayeslca.report.wording import sentence
 from bayeslca.report.workbook import write_workbook
@@ -87,6 +88,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         classes_section(facts),
         prevalence_section(facts),
         class_counts_section(facts),
+        together_section(facts),
         groups_section(facts),
         fit_section(facts),
         likelihood_section(facts),

@@ -166,6 +166,7 @@ def _compared(
         seed=study.said.sampling.seed,
         fitted=fitted,
         own=named,
+        prior_on_count=study.said.class_count.prior_on_count,
         progress=progress.of_comparison,
         **sampling,
     )

@@ -20,6 +20,7 @@ from bayeslca.study.placing import with_placing
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.sample_design import with_sample_design
 from bayeslca.study.steps import Steps
+from bayeslca.study.together import with_together
 
 
 @dataclass(frozen=True)
@@ -67,8 +68,13 @@ def _sample_design(run: Run, content: ReportContent) -> ReportContent:
     return with_sample_design(run.study, content, run.steps, run.progress)
 
 
+def _together(run: Run, content: ReportContent) -> ReportContent:
+    return with_together(run.study, content, run.progress.say)
+
+
 PARTS: tuple[Part, ...] = (
     _sample_design,
+    _together,
     _group_comparison,
     _theory,
     _fit_checks,

@@ -110,6 +110,8 @@ class ClassCountSection(_Section):
     """Which numbers of classes are compared."""
 
     compare: list[Annotated[int, Field(ge=1, le=20)]] = [1, 2, 3, 4, 5, 6]
+    prior: Literal["uniform"] | dict[str, float] = "uniform"
+    together: StrictBool = True
 
     @field_validator("compare")
     @classmethod
@@ -118,6 +120,34 @@ class ClassCountSection(_Section):
             msg = "names a number of classes more than once"
             raise ValueError(msg)
         return sorted(compare)
+
+    @model_validator(mode="after")
+    def _prior_is_a_distribution(self) -> ClassCountSection:
+        if isinstance(self.prior, str):
+            return self
+        compared, given = [str(n) for n in self.compare], list(self.prior)
+        strange = [name for name in given if name not in compared]
+        missing = [name for name in compared if name not in given]
+        what = ""
+        if strange:
+            what = f"names {strange[0]!r}, which [class_count] compare does not list"
+        elif missing:
+            what = f"says nothing of {missing[0]} classes; write {missing[0]} = 0 to rule it out"
+        elif any(not weight >= 0 for weight in self.prior.values()):
+            what = "has a probability below 0"
+        elif abs(sum(self.prior.values()) - 1.0) > 1e-6:
+            what = f"adds up to {sum(self.prior.values()):g}, not to 1"
+        if what:
+            msg = f"[class_count] prior {what}"
+            raise ValueError(msg)
+        return self
+
+    @property
+    def prior_on_count(self) -> dict[int, float] | None:
+        """The prior probability of each number of classes; None when all are alike."""
+        if isinstance(self.prior, str):
+            return None
+        return {int(name): weight for name, weight in self.prior.items()}
 
 
 class GroupsSection(_Section):

@@ -102,6 +102,18 @@ WRONG = [
     ("compare = [1, 2]", "compare = [0, 2]", ["[class_count] compare", "0", "or equal to 1"]),
     ("compare = [1, 2]", "compare = [2, 2]", ["[class_count] compare", "more than once"]),
     ("compare = [1, 2]", "compare = 2", ["[class_count] compare", "list"]),
+    (
+        "compare = [1, 2]",
+        "compare = [1, 2]\nprior = { 1 = 0.5, 2 = 0.2, 3 = 0.3 }",
+        ["prior names '3'", "compare does not list"],
+    ),
+    ("compare = [1, 2]", "compare = [1, 2]\nprior = { 1 = 1 }", ["prior says nothing of 2"]),
+    ("compare = [1, 2]", "compare = [1, 2]\nprior = { 1 = 1.5, 2 = -0.5 }", ["prior", "below 0"]),
+    (
+        "compare = [1, 2]",
+        "compare = [1, 2]\nprior = { 1 = 0.5, 2 = 0.4 }",
+        ["prior adds up to 0.9, not to 1"],
+    ),
     ('classes = ["managed", "lapsed"]', "classes = 0", ["[model] classes", "from 1 up"]),
     ('classes = ["managed", "lapsed"]', "classes = []", ["[model] classes", "list of names"]),
     ('classes = ["managed", "lapsed"]\n', "", ["line", "[model] statements", "Name the classes"]),
