@@ -147,7 +147,7 @@ def _heavy_priors(model: LatentClassModel, responses: Responses) -> Iterable[Fin
     heavy = [weight for weight in prior_weights(model, responses) if weight.heavy]
     for items in dict.fromkeys(weight.items for weight in heavy):
         ours = [weight for weight in heavy if weight.items == items]
-        heaviest = max(ours, key=lambda weight: weight.share or 0.0)
+        heaviest = max(ours, key=lambda weight: weight.ratio or 0.0)
         classes = tuple(dict.fromkeys(name for weight in ours for name in weight.classes))
         yield Finding(
             kind="heavy_prior",
@@ -163,7 +163,7 @@ def _heavy_priors(model: LatentClassModel, responses: Responses) -> Iterable[Fin
                 else "Say in the report that this rests on the prior, or state a weaker one."
             ),
             about=(*items, *classes),
-            value=heaviest.share,
+            value=heaviest.ratio,
         )
 
 

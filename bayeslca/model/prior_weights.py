@@ -37,9 +37,11 @@ class PriorWeight:
     weight : float
         Their sum: as many cases as the prior counts for.
     expected : float or None
-        Answers expected to bear on the block under the prior prevalences; None without responses.
+        Answers expected to bear on the block; None without responses.
     shared : bool
         True where a statement made the block: it stands in several places, or in a part of one.
+    places : tuple of (int, int, int)
+        Response group, item and class of each place where the block stands.
     """
 
     block: str
@@ -50,22 +52,32 @@ class PriorWeight:
     weight: float
     expected: float | None
     shared: bool = False
+    places: tuple[tuple[int, int, int], ...] = ()
 
     @property
-    def share(self) -> float | None:
-        """Weight as a share of the expected answers; None without responses."""
+    def ratio(self) -> float | None:
+        """Weight by the expected answers; None without responses."""
         if self.expected is None:
             return None
         return self.weight / self.expected if self.expected else float("inf")
 
     @property
+    def share(self) -> float | None:
+        """Part of the result that the prior makes: weight over weight plus expected answers."""
+        if self.expected is None:
+            return None
+        return self.weight / (self.weight + self.expected)
+
+    @property
     def heavy(self) -> bool:
         """True when the prior weighs more than a fifth of the expected answers."""
-        return self.share is not None and self.share > HEAVY
+        return self.ratio is not None and self.ratio > HEAVY
 
 
 def prior_weights(
-    model: LatentClassModel, responses: Responses | None = None
+    model: LatentClassModel,
+    responses: Responses | None = None,
+    class_shares: Floats | None = None,
 ) -> tuple[PriorWeight, ...]:
     """Weigh the prior of every block of response probabilities.
 
@@ -74,9 +86,12 @@ def prior_weights(
     model : LatentClassModel
     responses : Responses, optional
         The data to weigh against.
+    class_shares : ndarray, shape (U, K), optional
+        P(class | answers) of each unit of the responses, once the model is fitted; before, cases
+        are expected in the classes by the mean of the prevalences' prior.
     """
     table = model.table
-    answers = None if responses is None else _expected_answers(model, responses)
+    answers = None if responses is None else _expected_answers(model, responses, class_shares)
     places = _places(model)
     out = []
     for b, name in enumerate(block_names(model)):
@@ -94,6 +109,7 @@ def prior_weights(
                 shared=bool(model.response_assumptions.tied.reasons[b]),
                 weight=sum(concentration),
                 expected=expected,
+                places=tuple(at),
             )
         )
     return tuple(out)
@@ -121,14 +137,17 @@ def _places(model: LatentClassModel) -> list[list[tuple[int, int, int]]]:
     return [list(at) for at in places]
 
 
-def _expected_answers(model: LatentClassModel, responses: Responses) -> Floats:
-    """Return the answers (response groups, J, K) expected under the prior mean prevalences."""
+def _expected_answers(
+    model: LatentClassModel, responses: Responses, class_shares: Floats | None
+) -> Floats:
+    """Return the answers (response groups, J, K) expected of the cases of each class."""
     table, units = model.table, model.units(responses)
-    a = model.prevalence_source.concentration
-    share = a / a.sum(axis=1, keepdims=True)
+    if class_shares is None:
+        a = model.prevalence_source.concentration
+        class_shares = (a / a.sum(axis=1, keepdims=True))[units.group]
     out = np.zeros((table.n_response_groups, table.n_items, table.n_classes))
     answered = (units.pattern != MISSING) * units.count[:, None]  # (U, J)
     for g in range(table.n_prevalence_rows):
-        in_group = answered[units.group == g].sum(axis=0)
-        out[table.response_group[g]] += in_group[:, None] * share[g]
+        mine = units.group == g
+        out[table.response_group[g]] += answered[mine].T @ class_shares[mine]
     return out

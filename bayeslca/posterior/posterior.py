@@ -38,6 +38,8 @@ if TYPE_CHECKING:
     from bayeslca.assess.hypotheses import HypothesisTest
     from bayeslca.assess.leave_one_unit_out import LeaveOneUnitOut
     from bayeslca.assess.predictive_checks import PredictiveChecks
+    from bayeslca.assess.prior_sensitivity import PriorSensitivity
+    from bayeslca.posterior.prior_overlap import PriorMarks
 
 Rows = Literal["cases", "patterns"]
 
@@ -333,6 +335,49 @@ class Posterior:
         from bayeslca.assess.leave_one_unit_out import leave_one_unit_out
 
         return leave_one_unit_out(self, refit=refit, seed=seed)
+
+    def prior_sensitivity(
+        self,
+        *,
+        quantities: Mapping[str, str] | Sequence[str] = (),
+        hypotheses: Mapping[str, Sequence[str]] | Sequence[str] = (),
+        refit: Sequence[str] | None = None,
+        seed: int = 0,
+        progress: Callable[[str], None] | None = None,
+    ) -> PriorSensitivity:
+        """Return what the priors do: how much rests on them, and what moves under others.
+
+        Parameters
+        ----------
+        quantities : mapping from a name to str, or sequence of str
+            Such as ``"P(fees=yes | managed) - P(fees=yes | lapsed)"``.
+        hypotheses : mapping from a claim to statements, or sequence of str
+        refit : sequence of str, optional
+            Priors to fit the model under again, of "half as strong", "twice as strong",
+            "uniform", "Jeffreys"; when not given, those of the first two for which importance
+            weights are not reliable.
+        seed : int
+            Of the refits, and of draws that Bayes factors need.
+        progress : callable, optional
+            Called with what is being done, in words.
+        """
+        from bayeslca.assess.prior_sensitivity import prior_sensitivity
+
+        return prior_sensitivity(
+            self,
+            quantities=quantities,
+            hypotheses=hypotheses,
+            refit=refit,
+            seed=seed,
+            progress=progress,
+        )
+
+    @cached_property
+    def prior_marks(self) -> PriorMarks:
+        """What rests mostly on the prior, row by row of the posterior's own tables."""
+        from bayeslca.posterior.prior_overlap import prior_marks
+
+        return prior_marks(self)
 
     def predictive_checks(
         self,

@@ -48,7 +48,8 @@ def test_weights_are_pseudo_cases_against_the_expected_answers():
     assert first.origin == PRIOR
     assert first.weight == 11.0
     assert first.expected == pytest.approx(40.0)
-    assert first.share == pytest.approx(11 / 40)
+    assert first.ratio == pytest.approx(11 / 40)
+    assert first.share == pytest.approx(11 / 51)
     assert first.heavy
     assert weights[1].expected == pytest.approx(20.0)
     assert not weights[1].heavy
