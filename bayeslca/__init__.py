@@ -7,6 +7,7 @@ from typing import Any
 
 _HOME = {
     "ClassOutcomes": "bayeslca.relate.class_outcomes",
+    "ClassPredictors": "bayeslca.relate.predictors",
     "Comparison": "bayeslca.assess.compare",
     "GibbsStep": "bayeslca.sampling.pymc_step",
     "Groups": "bayeslca.responses.item",
@@ -17,6 +18,7 @@ _HOME = {
     "Responses": "bayeslca.responses.responses",
     "class_count_test": "bayeslca.assess.likelihood_ratio",
     "class_outcomes": "bayeslca.relate.class_outcomes",
+    "class_predictors": "bayeslca.relate.predictors",
     "compare": "bayeslca.assess.compare",
     "compare_class_counts": "bayeslca.assess.compare",
     "compare_rivals": "bayeslca.assess.rivals",
@@ -38,6 +40,7 @@ _HOME = {
 
 __all__ = [
     "ClassOutcomes",
+    "ClassPredictors",
     "Comparison",
     "GibbsStep",
     "Groups",
@@ -48,6 +51,7 @@ __all__ = [
     "Responses",
     "class_count_test",
     "class_outcomes",
+    "class_predictors",
     "compare",
     "compare_class_counts",
     "compare_rivals",

@@ -33,6 +33,8 @@ KERNEL_FILES = (
     "slice_step",
     "outcome_regression",
     "outcome_draws",
+    "polya_gamma",
+    "logistic_kernel",
 )
 
 

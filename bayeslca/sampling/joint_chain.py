@@ -8,6 +8,7 @@ import time
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from itertools import combinations
+from typing import cast
 
 import numpy as np
 
@@ -19,13 +20,15 @@ from bayeslca.model.table import Table, UnitTable
 from bayeslca.sampling.bounds_layout import Bounded, bounded
 from bayeslca.sampling.chain import MOVES_EVERY, Stopped
 from bayeslca.sampling.layout import Layout, arrange, workspace
-from bayeslca.sampling.steps import OutcomeStep, SourceStep
+from bayeslca.sampling.steps import OutcomeStep, SourceStep, WholeSweeps
 
 MakeSource = Callable[[np.random.Generator], SourceStep]
 MakeOutcome = Callable[[np.random.Generator], OutcomeStep]
 
 LOOK_SECONDS = 0.05
 """A chain looks at the stop flag about so often."""
+MOST_AT_ONCE = 50
+"""Sweeps of one call into compiled code, at most."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -174,6 +177,8 @@ class JointChain:
         self.elements = np.array(elements, dtype=np.float64)
         self.source = task.make_source(rng)
         self.outcome = None if task.make_outcome is None else task.make_outcome(rng)
+        alone = self.outcome is None and isinstance(self.source, WholeSweeps)
+        self._whole = cast(WholeSweeps, self.source) if alone else None
         self.prevalence = np.empty((task.n_rows, task.table.n_classes))
         self.source.prevalence(self.prevalence)
         self.sweeps = 0
@@ -218,10 +223,9 @@ class JointChain:
             swaps = 0
             if held is not None:
                 self.elements[:] = held[draw]
-            for step in range(thin):
-                if step == thin - 1:
-                    self._keep(kept, draw, held is None)
-                swaps += self._sweep(held is not None)
+            swaps += self._sweeps(thin - 1, held is not None)
+            self._keep(kept, draw, held is None)
+            swaps += self._sweeps(1, held is not None)
             kept.log_likelihood[draw] = self._log_likelihood
             kept.swaps[draw] = swaps
             since += thin
@@ -235,31 +239,54 @@ class JointChain:
             report(since)
         return kept
 
-    def _sweep(self, is_held: bool) -> int:
+    def _sweeps(self, n: int, is_held: bool) -> int:
+        """Do n sweeps; return how many label moves were accepted."""
+        swaps = 0
+        while n > 0:
+            moves = not is_held and self.task.permutations.shape[0] > 0
+            if moves and self.sweeps % MOVES_EVERY == 0:
+                swaps += self._swap_labels()
+            if self._whole is None:
+                done = 1
+                found = self._sweep(is_held)
+            else:
+                # No further than to the next move, or to where the stop flag is looked at.
+                done = min(n, MOVES_EVERY - self.sweeps % MOVES_EVERY if moves else MOST_AT_ONCE)
+                state = (self.elements, self.prevalence)
+                found = self._whole.sweeps(
+                    self._layout, self._work, self.task.bounds, is_held, *state, done, self.rng
+                )
+            if math.isnan(found):
+                msg = (
+                    "some answers have probability 0 in every class; check the fixed probabilities."
+                )
+                raise SamplingError(msg)
+            self._log_likelihood = found
+            self.sweeps += done
+            n -= done
+        return swaps
+
+    def _sweep(self, is_held: bool) -> float:
         from bayeslca.sampling import joint_kernel as kernel
 
-        task, swaps = self.task, 0
-        self.sweeps += 1
-        if not is_held and task.permutations.shape[0] and self.sweeps % MOVES_EVERY == 0:
-            swaps = self._swap_labels()
         if self.outcome is not None:
             self._renew_weights(self.outcome)
         state = (self.elements, self.prevalence, self.rng)
         if is_held:
             found = kernel.classes_only(self._layout, self._work, *state)
         elif self._is_bounded:
-            found = kernel.classes_and_bounded_blocks(self._layout, self._work, task.bounds, *state)
+            found = kernel.classes_and_bounded_blocks(
+                self._layout, self._work, self.task.bounds, *state
+            )
         else:
             found = kernel.classes_and_blocks(self._layout, self._work, *state)
         if math.isnan(found):
-            msg = "some answers have probability 0 in every class; check the fixed probabilities."
-            raise SamplingError(msg)
-        self._log_likelihood = found + self._owed
+            return found
         self.source.draw(self._work.class_count, self.prevalence, self.rng)
         if self.outcome is not None:
             self._unit_count[self._layout.unit] = self._work.unit_count
             self.outcome.draw(self._unit_count, self.rng)
-        return swaps
+        return found + self._owed
 
     def _renew_weights(self, outcome: OutcomeStep) -> None:
         from bayeslca.sampling.joint_kernel import renew_weights

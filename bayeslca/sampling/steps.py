@@ -8,11 +8,13 @@ given the classes: a `SourceStep` those behind the prevalences (coefficients, un
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import Protocol
+from typing import Protocol, runtime_checkable
 
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
+from bayeslca.sampling.bounds_layout import Bounded
+from bayeslca.sampling.layout import Layout, Workspace
 
 
 class SourceStep(Protocol):
@@ -50,6 +52,34 @@ class SourceStep(Protocol):
 
     def log_prior(self) -> float:
         """Return the normalised log prior density of the current parameters."""
+        ...
+
+
+@runtime_checkable
+class WholeSweeps(Protocol):
+    """What a `SourceStep` may offer besides: whole sweeps in compiled code, several at a time.
+
+    The driver takes them where there is no outcome: threads then meet less often.
+    """
+
+    def sweeps(
+        self,
+        layout: Layout,
+        work: Workspace,
+        bounds: Bounded,
+        is_held: bool,
+        elements: Floats,
+        prevalence: Floats,
+        n: int,
+        rng: np.random.Generator,
+    ) -> float:
+        """Do n sweeps in place: classes, blocks unless they are held, the source's parameters.
+
+        Returns
+        -------
+        float
+            Log likelihood of the state before the last sweep; nan when a unit is impossible.
+        """
         ...
 
 

@@ -1,0 +1,123 @@
+"""Predictors of class: tables, options, findings, refusals."""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+import pytest
+
+import bayeslca as lca
+from bayeslca.exceptions import ModelError, ResponsesError
+from bayeslca.relate.separation import find_separation
+
+
+def test_odds_ratios_of_all_ways_in_one_table(predictors):
+    table = predictors.odds_ratios(against="second")
+    assert table["way"].unique().tolist() == ["joint", "cut", "three_steps"]
+    age = table[table["covariate"] == "age"]
+    assert (age["odds_ratio_lower"] > 1.0).all()
+    assert np.allclose(np.log(table["odds_ratio"]), table["median"])
+    drawn = table[table["way"] != "three_steps"]
+    assert (drawn["r_hat"] < 1.02).all()
+    assert table.attrs["interval"] == 0.95
+
+
+def test_no_class_is_the_reference(predictors):
+    """Odds ratios against one class are the inverse of those against the other."""
+    one, two = (predictors.odds_ratios(against=name) for name in ("first", "second"))
+    assert np.allclose(one["odds_ratio"] * two["odds_ratio"], 1.0)
+    assert np.allclose(one["odds_ratio_lower"] * two["odds_ratio_upper"], 1.0)
+
+
+def test_a_seed_gives_the_same_draws(sharp_frame, sharp_posterior, predictors):
+    again = lca.class_predictors(
+        sharp_posterior, sharp_frame, "age + district", ways=("cut",), seed=3, draws=300
+    )
+    assert np.array_equal(again.coefficients["cut"], predictors.coefficients["cut"])
+    assert again.ways == ("cut",)
+    assert again.main_way == "cut"
+
+
+def test_marginal_effects_sum_to_nought_over_the_classes(predictors):
+    table = predictors.marginal_effects(way="joint")
+    assert set(table["change"]) == {
+        f"a rise by {predictors.design.spread_of('age'):.3g}",
+        *(f"{one} against hill" for one in ("lake", "plain")),
+    }
+    sums = table.groupby("change")["mean"].sum()
+    assert np.allclose(sums, 0.0, atol=1e-12)
+
+
+def test_probabilities_along_a_covariate(predictors, sharp_frame):
+    table = predictors.class_probabilities(along="age", points=5)
+    assert np.allclose(table.groupby("value")["mean"].sum(), 1.0)
+    assert table["value"].min() == sharp_frame["age"].min()
+    first = table[table["latent_class"] == "first"]["median"].to_numpy()
+    assert np.all(np.diff(first) > 0)
+    by_district = predictors.class_probabilities(along="district")
+    assert by_district["value"].unique().tolist() == ["hill", "lake", "plain"]
+    with pytest.raises(ModelError, match=r"no covariate 'agee' \(near names: 'age'\)"):
+        predictors.class_probabilities(along="agee")
+
+
+def test_prediction_for_new_cases(predictors):
+    new = pd.DataFrame({"age": [2.0, 20.0], "district": ["lake", "hill"]})
+    table = predictors.predict(new)
+    first = table[table["latent_class"] == "first"]
+    assert first["median"].iloc[0] < 0.2 < 0.8 < first["median"].iloc[1]
+    with pytest.raises(ModelError, match="'valley' was not among the cases"):
+        predictors.predict(new.assign(district="valley"))
+
+
+def test_words_say_what_is_clear(predictors):
+    text = str(predictors)
+    assert "first is more probable by" in text
+    assert "for age" in text
+
+
+def test_direct_effects_have_a_row_for_each_item_and_column(predictors):
+    table = predictors.direct_effects()
+    assert len(table) == 6 * 3
+    assert (table["p_adjusted"] >= table["p_value"]).all()
+
+
+@pytest.mark.parametrize(
+    ("options", "message"),
+    [
+        ({"formula": "agee"}, r"no column 'agee' \(near names: 'age'"),
+        ({"ways": ("both",)}, "name one or more of joint, cut, three_steps"),
+        ({"prior_scale": 0.0}, "both are above 0"),
+        ({"correction": "bch"}, "known are fixed_error_likelihood and inverse_error_matrix"),
+    ],
+)
+def test_wrong_options_are_named(sharp_frame, sharp_posterior, options, message):
+    given = {"formula": "age", "ways": ("three_steps",)} | options
+    with pytest.raises((ModelError, ResponsesError), match=message):
+        lca.class_predictors(sharp_posterior, sharp_frame, **given)
+
+
+def test_separation_is_found_and_what_separates_is_named():
+    """Albert & Anderson (1984): complete, partial, and none."""
+    x = np.array([-2.0, -1.0, -0.5, 0.5, 1.0, 2.0])
+    design = np.column_stack([np.ones(6), x, [1, -1, 1, -1, 1, -1]])
+    names = ["intercept", "age", "noise"]
+    complete = find_separation(design, (x > 0).astype(int), names, 2)
+    assert complete.complete
+    assert "age" in complete.columns
+    tied = np.array([0, 0, 0, 1, 1, 1])
+    ties = np.column_stack([np.ones(6), [-1, -1, 0, 0, 1, 1]])
+    partial = find_separation(ties, tied, names[:2], 2)
+    assert not partial.complete
+    assert partial.columns == ("age",)
+    mixed = find_separation(design[:, :2], np.array([0, 1, 0, 1, 0, 1]), names[:2], 2)
+    assert mixed is None
+
+
+def test_separation_is_a_finding(sharp_frame, sharp_posterior):
+    frame = sharp_frame.assign(size=sharp_frame["is_first"] * 5.0 + sharp_frame["age"] / 100)
+    found = lca.class_predictors(
+        sharp_posterior, frame, "size", ways=("cut", "three_steps"), seed=1
+    )
+    kinds = {finding.kind for finding in found.findings}
+    assert {"covariates_separate_classes", "three_steps_failed"} <= kinds
+    assert found.three_steps is None
