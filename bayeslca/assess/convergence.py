@@ -16,7 +16,7 @@ from bayeslca.assess.convergence_table import (
     worst_of,
 )
 from bayeslca.assess.convergence_words import convergence_html, convergence_text, verdict_in_words
-from bayeslca.assess.modes import ChainAgreement, chain_agreement
+from bayeslca.assess.modes import SAME_MEMBERSHIP, ChainAgreement, chain_agreement
 from bayeslca.findings import Finding
 from bayeslca.model.simulate import Parameters
 from bayeslca.posterior.class_state import ClassState, class_state
@@ -28,8 +28,6 @@ if TYPE_CHECKING:
 
 APART = 1.05
 """R-hat above which chains with different memberships are said to be in different modes."""
-SAME_MEMBERSHIP = 0.005
-"""Kullback-Leibler divergence per case below which chains place cases alike."""
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -183,12 +181,29 @@ def _about_starts(posterior: Posterior) -> Iterator[Finding]:
     starts = posterior.draws.starts
     if starts is None:
         return
-    if starts.n_modes > 1:
+    if starts.shares:
+        shares = " and ".join(
+            f"{100 * share:.1f} % (± {100 * error:.1f})"
+            for share, error in zip(starts.shares, starts.share_errors, strict=True)
+        )
+        yield Finding(
+            kind="modes_mixed",
+            level="warning",
+            message=(
+                f"chains stayed in {len(starts.shares)} modes of the posterior; by their "
+                f"evidence these hold {shares} of it, and the draws mix them in that proportion "
+                f"({starts.in_words()})"
+            ),
+            remedy="A summary of several modes may describe none of them: look at both.",
+            value=float(starts.n_modes),
+        )
+    elif starts.n_modes > 1:
+        why = f" ({starts.why_unweighed})" if starts.why_unweighed else ""
         yield Finding(
             kind="several_modes",
             level="problem",
             message=(
-                f"several modes, weights unknown: short runs found {starts.n_modes} modes within "
+                f"several modes, weights unknown{why}: there are {starts.n_modes} modes within "
                 f"{starts.reach:g} nats of the best, and chains do not move between them"
             ),
             remedy=(
@@ -197,7 +212,7 @@ def _about_starts(posterior: Posterior) -> Iterator[Finding]:
             ),
             value=float(starts.n_modes),
         )
-    if starts.dropped:
+    if starts.dropped and not starts.shares:
         yield Finding(
             kind="modes_dropped",
             level="note",

@@ -10,7 +10,7 @@ from bayeslca.findings import Finding
 
 SAID = (
     "empty_class", "duplicate_classes", "names_not_settled", "classes_not_matched",
-    "not_identified",
+    "not_identified", "weakly_identified", "modes_mixed",
     "limit_reached", "modes_dropped",
 )  # fmt: skip
 """Findings that the verdict tells even where the sampling is to be trusted."""

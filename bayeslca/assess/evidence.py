@@ -21,8 +21,8 @@ from bayeslca.assess.join import Joined, join
 from bayeslca.assess.mode_evidence import (
     MOST_R_HAT,
     ModeEvidence,
-    chains_of_modes,
     evidence_of_modes,
+    number_of_modes,
     summed,
 )
 from bayeslca.assess.model_evidence import SIZES, Estimate
@@ -172,7 +172,7 @@ def _steps(
     if not neighbours:
         return {}
     rungs = {
-        k: rung_of(posterior) if len(chains_of_modes(posterior)) == 1 else None
+        k: rung_of(posterior) if number_of_modes(posterior) == 1 else None
         for k, posterior in posteriors.items()
     }
     steps = {}
@@ -238,7 +238,7 @@ def _why_not(
 ) -> str:
     if refused:
         return refused
-    starts, n_modes = posterior.draws.starts, len(chains_of_modes(posterior))
+    starts, n_modes = posterior.draws.starts, number_of_modes(posterior)
     r_hat = largest_r_hat(posterior.draws.log_likelihood[:, :, None])
     if n_modes == 1 and r_hat > MOST_R_HAT:
         return f"the chains disagree (R-hat of the log likelihood {r_hat:.2f})"

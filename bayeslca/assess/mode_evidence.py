@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from bayeslca._typing import Ints
 from bayeslca.assess.model_evidence import Estimate, model_estimates
 from bayeslca.assess.modes import largest_r_hat
 
@@ -31,7 +32,7 @@ class ModeEvidence:
     Attributes
     ----------
     chains : tuple of int
-        The chains that began in it.
+        The chains that began in it; empty where the draws of modes were mixed since.
     estimates : tuple of Estimate
         Of the log evidence of this mode alone.
     share : float
@@ -46,18 +47,30 @@ class ModeEvidence:
     mcse: float
 
 
+def number_of_modes(posterior: Posterior) -> int:
+    """Return the number of modes that the draws are of, as far as is known."""
+    starts = posterior.draws.starts
+    if starts is not None and starts.shares:
+        return len(starts.shares)
+    return len(chains_of_modes(posterior))
+
+
 def chains_of_modes(posterior: Posterior) -> tuple[tuple[int, ...], ...]:
     """Return the chains of each mode within reach, the best mode first; one set if there is one."""
     starts, n_chains = posterior.draws.starts, posterior.draws.n_chains
     everything = (tuple(range(n_chains)),)
-    if starts is None or starts.n_modes < 2 or starts.kept.size != n_chains:
+    if starts is None or starts.shares or starts.n_modes < 2 or starts.kept.size != n_chains:
         return everything
     mode = starts.mode[starts.kept]
     return tuple(tuple(np.flatnonzero(mode == m).tolist()) for m in sorted(set(mode.tolist())))
 
 
 def evidence_of_modes(
-    posterior: Posterior, rng: np.random.Generator, *, size: int = 0
+    posterior: Posterior,
+    rng: np.random.Generator,
+    *,
+    size: int = 0,
+    chains: tuple[tuple[int, ...], ...] | None = None,
 ) -> tuple[ModeEvidence, ...]:
     """Return the evidence of each mode that chains were kept in.
 
@@ -67,8 +80,13 @@ def evidence_of_modes(
     rng : numpy.random.Generator
     size : int
         See `bayeslca.assess.model_evidence.model_estimates`.
+    chains : tuple of tuple of int, optional
+        The chains of each mode; by default as the short runs before them were sorted.
     """
-    chains = chains_of_modes(posterior)
+    starts = posterior.draws.starts
+    if starts is not None and starts.shares:
+        return _of_mixed(posterior, rng, starts.shares, starts.share_errors, size=size)
+    chains = chains_of_modes(posterior) if chains is None else chains
     estimates = []
     for some in chains:
         part = only_chains(posterior, some)
@@ -89,6 +107,44 @@ def evidence_of_modes(
         ModeEvidence(some, found, float(weight), float(error))
         for some, found, weight, error in zip(chains, estimates, share, spread, strict=True)
     )
+
+
+def _of_mixed(
+    posterior: Posterior,
+    rng: np.random.Generator,
+    shares: tuple[float, ...],
+    errors: tuple[float, ...],
+    *,
+    size: int,
+) -> tuple[ModeEvidence, ...]:
+    """Return the evidence of modes whose draws were mixed: of the largest, and by shares of it."""
+    largest = int(np.argmax(shares))
+    found = model_estimates(only_mode(posterior, largest), rng, size=size)
+    out = []
+    for mode, (share, error) in enumerate(zip(shares, errors, strict=True)):
+        if mode == largest:
+            out.append(ModeEvidence((), found, share, error))
+            continue
+        # The log of share / largest share; errors of both shares are one error, seen twice.
+        apart = error / max(share, 1e-300) + errors[largest] / shares[largest]
+        of_mode = tuple(
+            replace(
+                one,
+                value=one.value + float(np.log(max(share, 1e-300) / shares[largest])),
+                mcse=float(np.hypot(one.mcse, apart)),
+            )
+            for one in found
+        )
+        out.append(ModeEvidence((), of_mode, share, error))
+    return tuple(out)
+
+
+def only_mode(posterior: Posterior, mode: int) -> Posterior:
+    """Return the posterior with the draws of one mode, as many of every chain."""
+    draws = posterior.draws
+    of_mode = [np.flatnonzero(row == mode) for row in draws.statistics["mode"]]
+    at = np.arange(draws.n_chains)[:, None], np.stack(of_mode)
+    return _with_draws(posterior, at)
 
 
 def summed(modes: tuple[ModeEvidence, ...]) -> tuple[Estimate, ...]:
@@ -114,19 +170,27 @@ def summed(modes: tuple[ModeEvidence, ...]) -> tuple[Estimate, ...]:
 
 def only_chains(posterior: Posterior, chains: tuple[int, ...]) -> Posterior:
     """Return the posterior with some of its chains."""
-    draws, at = posterior.draws, list(chains)
-    if len(at) == draws.n_chains:
+    if len(chains) == posterior.draws.n_chains:
         return posterior
+    every = np.arange(posterior.draws.n_draws)
+    return _with_draws(posterior, (np.array(chains)[:, None], every[None, :]))
+
+
+def _with_draws(posterior: Posterior, at: tuple[Ints, Ints]) -> Posterior:
+    """Return the posterior with the draws ``[chain, draw]`` at some places."""
+    draws = posterior.draws
     some = replace(
         draws,
         elements=draws.elements[at],
         prevalence=draws.prevalence[at],
         log_likelihood=draws.log_likelihood[at],
         log_prior=draws.log_prior[at],
+        concentration=None if draws.concentration is None else draws.concentration[at],
         statistics={name: values[at] for name, values in draws.statistics.items()},
         starts=None,
     )
-    permutations = posterior.relabelled.permutations[at]
+    relabelled = posterior.relabelled
     return replace(
-        posterior, relabelled=replace(posterior.relabelled, draws=some, permutations=permutations)
+        posterior,
+        relabelled=replace(relabelled, draws=some, permutations=relabelled.permutations[at]),
     )

@@ -18,6 +18,8 @@ MOST_NUMBERS = 20_000_000
 """Membership probabilities held at once (160 MB); fewer draws are used when units are many."""
 MOST_DRAWS = 250
 """Draws per chain whose memberships are averaged."""
+SAME_MEMBERSHIP = 0.005
+"""Kullback-Leibler divergence per case below which chains place cases alike."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,13 +86,40 @@ def _before_relabelling(posterior: Posterior) -> Floats:
     return np.take_along_axis(posterior.prevalence_draws, np.argsort(permutations, axis=-1), -1)
 
 
+def modes_of_chains(posterior: Posterior) -> tuple[tuple[int, ...], ...]:
+    """Return the chains of each mode, told by how they place cases, the best mode first.
+
+    Two chains are in one mode when their mean memberships, after relabelling, diverge from their
+    common mean by no more than `SAME_MEMBERSHIP` nats a case, or are linked through such pairs.
+    """
+    draws, n_chains = posterior.draws, posterior.draws.n_chains
+    if n_chains == 1 or posterior.model.n_classes == 1:
+        return (tuple(range(n_chains)),)
+    mean = _mean_membership(posterior)
+    mode = np.arange(n_chains)
+    for a in range(n_chains):
+        for b in range(a):
+            pair = mean[[a, b]]
+            if _per_case(pair, pair.mean(axis=0), posterior) <= SAME_MEMBERSHIP:
+                mode[mode == mode[a]] = mode[b]
+    height = (draws.log_likelihood + draws.log_prior).mean(axis=1)
+    ranked = sorted(set(mode.tolist()), key=lambda m: -float(height[mode == m].max()))
+    return tuple(tuple(np.flatnonzero(mode == m).tolist()) for m in ranked)
+
+
 def _divergence(posterior: Posterior) -> float:
-    draws, units, n_classes = posterior.draws, posterior.unit_table, posterior.model.n_classes
-    if draws.n_chains == 1 or n_classes == 1:
+    if posterior.draws.n_chains == 1 or posterior.model.n_classes == 1:
         return 0.0
+    mean = _mean_membership(posterior)
+    return _per_case(mean, mean.mean(axis=0), posterior)
+
+
+def _mean_membership(posterior: Posterior) -> Floats:
+    """Return the mean membership (chain, U, K) of each chain."""
+    draws, units, n_classes = posterior.draws, posterior.unit_table, posterior.model.n_classes
     fitting = MOST_NUMBERS // max(1, units.n_units * n_classes)
     step = max(1, draws.n_draws // max(1, min(MOST_DRAWS, fitting)))
-    mean = np.stack(
+    return np.stack(
         [
             membership(
                 posterior.table, units, draws.elements[c, ::step], draws.prevalence[c, ::step]
@@ -98,7 +127,11 @@ def _divergence(posterior: Posterior) -> float:
             for c in range(draws.n_chains)
         ]
     )
-    pooled = mean.mean(axis=0)
+
+
+def _per_case(mean: Floats, pooled: Floats, posterior: Posterior) -> float:
+    """Return the largest divergence per case of memberships (n, U, K) from common ones (U, K)."""
+    units = posterior.unit_table
     with np.errstate(invalid="ignore", divide="ignore"):
         by_unit = xlogy(mean, mean / pooled).sum(axis=2)
     return float(np.max(np.nan_to_num(by_unit) @ units.count) / units.n_cases)

@@ -113,7 +113,15 @@ def fit(
             progress=progress,
             watch=watch,
         )
-    return Posterior(model, responses, watch.relabelled(drawn))
+    found = Posterior(model, responses, watch.relabelled(drawn))
+    if not drawn.limit_reached:
+        return found  # the chains agree: there is one mode
+    from bayeslca.assess.mode_mixing import with_modes_mixed
+
+    mixed = with_modes_mixed(found, drawn)
+    if mixed is drawn:
+        return found
+    return Posterior(model, responses, relabel(model, units, mixed))
 
 
 class _Watch:

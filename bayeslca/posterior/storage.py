@@ -184,6 +184,9 @@ def _starts_to_dict(starts: StartingPoints | None) -> dict[str, Any] | None:
         "dropped": [int(mode) for mode in starts.dropped],
         "best": float(starts.best),
         "reach": float(starts.reach),
+        "shares": [float(share) for share in starts.shares],
+        "share_errors": [float(error) for error in starts.share_errors],
+        "why_unweighed": starts.why_unweighed,
     }
 
 
@@ -198,6 +201,9 @@ def _starts_from_dict(values: Mapping[str, Any] | None) -> StartingPoints | None
         dropped=tuple(values["dropped"]),
         best=values["best"],
         reach=values["reach"],
+        shares=tuple(values.get("shares", ())),
+        share_errors=tuple(values.get("share_errors", ())),
+        why_unweighed=values.get("why_unweighed", ""),
     )
 
 

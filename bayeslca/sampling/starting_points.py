@@ -52,6 +52,11 @@ class StartingPoints:
         Log posterior of the best mode.
     reach : float
         Modes at most so many nats below the best keep a chain.
+    shares, share_errors : tuple of float
+        Where chains stayed in several modes and these were weighed: the share of the posterior
+        that each holds, and its Monte Carlo error. Empty otherwise.
+    why_unweighed : str
+        Why modes that chains stayed in were not weighed; empty where they were, or there is one.
     """
 
     log_posterior: Floats
@@ -61,6 +66,9 @@ class StartingPoints:
     dropped: tuple[int, ...]
     best: float
     reach: float = REACH
+    shares: tuple[float, ...] = ()
+    share_errors: tuple[float, ...] = ()
+    why_unweighed: str = ""
 
     @property
     def n_runs(self) -> int:

@@ -16,6 +16,7 @@ import pandas as pd
 import pytest
 from scipy.special import betaln, gammaln
 
+from bayeslca.assess import mode_mixing
 from bayeslca.assess.empty_class_ladder import can_be_joined, ladder_step, rung_of
 from bayeslca.assess.evidence import log_evidence, log_evidence_of_counts
 from bayeslca.assess.proposal import Labels
@@ -398,7 +399,7 @@ def test_an_order_that_only_picks_labels_changes_nothing() -> None:
     assert abs(found.log_evidence - reference(CARCINOMA)[2][0]) < 4 * found.mcse
 
 
-def test_two_modes_are_weighed_by_their_evidence() -> None:
+def test_two_modes_are_weighed_by_their_evidence(monkeypatch: pytest.MonkeyPatch) -> None:
     # The order keeps the labels of one item only: with this table the swapped labelling has a mode
     # of its own some 10 nats lower, in which a chain is kept. Together they are the free model.
     responses = published(STOUFFER)
@@ -406,6 +407,12 @@ def test_two_modes_are_weighed_by_their_evidence() -> None:
     model = LatentClassModel(
         responses.items, ("high", "low"), (f"P({first}=1 | high) > P({first}=1 | low)",)
     )
+    mixed = log_evidence(model.sample(responses, seed=1, max_sweeps=20_000, **QUICK))
+    assert mixed.reliable, mixed.reason
+    assert abs(mixed.log_evidence - reference(STOUFFER)[2][0]) < 4 * mixed.mcse
+    assert mixed.modes[0].share > 0.999
+    # The same where the chains are left as they are.
+    monkeypatch.setattr(mode_mixing, "MOST_SHARE_ERROR", -1.0)
     posterior = model.sample(responses, seed=1, max_sweeps=20_000, **QUICK)
     found = log_evidence(posterior)
     assert [len(mode.chains) for mode in found.modes] == [3, 1]
