@@ -261,6 +261,10 @@ COLUMNS: dict[str, Column] = {
     "linearised_design_effect": Column(
         "Design effect, maximum likelihood", "the same from linearised standard errors", "number"
     ),
+    "estimate": Column("Estimate", "by maximum likelihood", "number"),
+    "standard_error": Column(
+        "Standard error", "of the estimate; none where it lies at 0 or 1", "number"
+    ),
     "differs": Column(
         "Differs", "the unweighted median lies outside the weighted interval", "flag"
     ),
