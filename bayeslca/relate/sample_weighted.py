@@ -13,6 +13,8 @@ import numpy as np
 from bayeslca._typing import Floats, Ints
 from bayeslca.assess.em_layout import AllBlocks
 from bayeslca.exceptions import ModelError, SamplingError
+from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
+from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.relate.pseudo_samples import draw_pseudo_samples
 from bayeslca.relate.weighted_likelihood import (
     STARTS,
@@ -90,6 +92,13 @@ def sample_weighted(
         msg = (
             f"pseudo_samples={pseudo_samples}, draws={draws}: take at least {FEWEST} pseudo-"
             "samples and 4 draws of each. The usual values are 100 and 40."
+        )
+        raise SamplingError(msg)
+    if not isinstance(model.prevalence_source, DirichletPrevalence | ConstrainedPrevalence):
+        msg = (
+            f"prevalences come from {type(model.prevalence_source).__name__}; weights, clusters "
+            "and strata are worked in for prevalences of their own in each group only. Take such "
+            "a model, with the units or covariates as cluster or stratum where they are that."
         )
         raise SamplingError(msg)
     units = WeightedUnits.of(model, responses)

@@ -40,14 +40,19 @@ UNWEIGHTED = {
     "theory": "probabilities of hypotheses and quantities are of the cases as they are",
     "membership": "it is the cases that are placed",
 }
-"""Sections whose figures take the cases as they are, by anchor, and what of them does."""
+"""What of a section takes the cases as they are, by its anchor."""
+NOT_MARKED = frozenset(
+    {"answer", "design", "assumptions", "sampling", "reviewer", "limits", "methods", "reproduce"}
+)
+"""Sections that say themselves what they speak of, or hold no estimates."""
 
 
 def marked(section: Section, facts: Facts) -> Section:
     """Say at the head of a section that it is unweighted, where the sample has a design."""
-    if facts.content.weighted is None or section.anchor not in UNWEIGHTED:
+    if facts.content.weighted is None or section.anchor in NOT_MARKED:
         return section
-    text = f"Unweighted: {UNWEIGHTED[section.anchor]}. Weighted figures stand under “{HEADING}”."
+    what = UNWEIGHTED.get(section.anchor, "the figures are of the cases as they are")
+    text = f"Unweighted: {what}. Weighted figures stand under “{HEADING}”."
     return replace(section, blocks=(Paragraph(text), *section.blocks))
 
 
