@@ -150,6 +150,11 @@ class PooledPrevalence:
         return pm.Dirichlet(name, a=total * mean, shape=(self.n_rows, self.n_classes), dims=dims)
 
 
+def new_unit_name(group_name: str) -> str:
+    """Return what rows about a unit that was not observed are called: ``a new district``."""
+    return f"a new {group_name}"
+
+
 def spread_of(concentration: Floats) -> Floats:
     """Return the spread (...) of concentrations (..., K)."""
     return np.asarray((1.0 + concentration.sum(axis=-1)) ** -0.5)

@@ -15,6 +15,7 @@ import numpy as np
 from bayeslca._typing import Bools, Floats, Ints, Seed
 from bayeslca.exceptions import ModelError
 from bayeslca.model.evaluate import ParameterDraws
+from bayeslca.model.pooled_prevalence import new_unit_name
 from bayeslca.model.prior_draws import draw_prior
 from bayeslca.model.simulate import draw_answers, draw_classes, group_sizes
 from bayeslca.responses.item import Item
@@ -248,8 +249,11 @@ def _prevalence_table(model: LatentClassModel, draws: ParameterDraws) -> pd.Data
     rows: list[dict[str, object]] = [{}]
     if model.groups is not None:
         overall = np.einsum("g,sgk->sk", draws.group_share, values)[:, None]
+        levels = model.groups.levels
+        if model.pooled:  # units are alike beforehand: one stands for all
+            values, levels = values[:, :1], (new_unit_name(model.groups.name),)
         values = np.concatenate([values, overall], axis=1)
-        rows = [{"group": level} for level in (*model.groups.levels, OVERALL)]
+        rows = [{"group": level} for level in (*levels, OVERALL)]
     keys = [{**row, "latent_class": name} for row in rows for name in model.class_names]
     return _table(keys, _interchanged(model, values, axis=2))
 

@@ -27,11 +27,6 @@ SPREAD, CONCENTRATION = "spread between units", "concentration"
 MEAN, SD = "mean prevalence", "standard deviation between units"
 
 
-def new_unit_name(group_name: str) -> str:
-    """Return what rows about a unit that was not observed are called: ``a new district``."""
-    return f"a new {group_name}"
-
-
 def pooled_concentration(posterior: Posterior) -> Floats:
     """Return concentration times mean (chain, draw, K).
 

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats
-from bayeslca.posterior.partial_pooling import new_unit_draws, new_unit_name
+from bayeslca.model.pooled_prevalence import new_unit_name
+from bayeslca.posterior.partial_pooling import new_unit_draws
 from bayeslca.posterior.summary import Quantities, summary_frame
 
 if TYPE_CHECKING:

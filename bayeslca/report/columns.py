@@ -269,6 +269,20 @@ COLUMNS: dict[str, Column] = {
         "Differs", "the unweighted median lies outside the weighted interval", "flag"
     ),
     "score": Column("Sum score", "yes answers, and steps up of ordered items", "count"),
+    "alone": Column(
+        "Alone",
+        "share that the unit's own cases are most probable under; empty without cases",
+        "share",
+    ),
+    "borrowed": Column(
+        "Borrowed", "part of the estimate that comes from all units together, at least", "share"
+    ),
+    "largest_change": Column(
+        "Largest change", "by which any unit's mean prevalence would move", "share"
+    ),
+    "draws_that_count": Column(
+        "Draws that count", "effective number of draws after weighing them anew", "count"
+    ),
     "table": Column("Table", "the table that has the column", "text"),
     "column": Column("Column", "the column's name in the files", "text"),
     "words": Column("Head", "the column's head on the page", "text"),

@@ -58,6 +58,22 @@ class Claim:
     planned: bool = False
 
 
+@dataclass(frozen=True, eq=False)
+class UnitComparison:
+    """Models compared by how well they predict a unit that they have not seen.
+
+    Attributes
+    ----------
+    table : DataFrame
+        See `bayeslca.assess.leave_one_unit_out.compare_units`.
+    posteriors : mapping of str to Posterior
+        By the rows' names: "pooled", "each alone", "all as one".
+    """
+
+    table: pd.DataFrame
+    posteriors: Mapping[str, Posterior]
+
+
 @dataclass(frozen=True, kw_only=True)
 class ReportContent:
     """Everything a report is written from.
@@ -85,6 +101,8 @@ class ReportContent:
     group_comparison : Comparison or None
         Of response probabilities that all groups share against ones that differ by group, rows
         "alike in all groups" and "free by group"; None when not done.
+    units : UnitComparison or None
+        Of pooled units against units with a prior each and no units at all; None when not done.
     claims : tuple of Claim
         Hypotheses of the study, as tested.
     rivals : mapping of str to Rivals
@@ -144,6 +162,7 @@ class ReportContent:
     together: CoMembership | None = None
     together_why_not: str = ""
     group_comparison: Comparison | None = None
+    units: UnitComparison | None = None
     claims: tuple[Claim, ...] = ()
     rivals: Mapping[str, Rivals] = field(default_factory=dict)
     quantities: pd.DataFrame | None = None

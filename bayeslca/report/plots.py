@@ -118,6 +118,9 @@ def plot_prevalence(
 ) -> Axes:
     """Plot how common each class is, with its interval; a row for each group where there are any.
 
+    Of pooled units the rows are a unit that was not observed and all cases together; each unit is
+    shown by `bayeslca.report.unit_plots.plot_units`.
+
     Parameters
     ----------
     posterior : Posterior
@@ -128,7 +131,7 @@ def plot_prevalence(
     -------
     matplotlib Axes
     """
-    frame = posterior.prevalence(interval=interval)
+    frame = without_pooled_units(posterior, posterior.prevalence(interval=interval))
     names = posterior.model.class_names
     groups = list(dict.fromkeys(frame["group"])) if "group" in frame else [None]
     height = 1.1 + 0.36 * len(names) * len(groups)
@@ -144,6 +147,14 @@ def plot_prevalence(
     ax.set_ylim(len(labels) - 0.5, -0.5)
     percent_axis(ax, f"Share of the cases ({level(interval)} interval)")
     return ax
+
+
+def without_pooled_units(posterior: Posterior, frame: pd.DataFrame) -> pd.DataFrame:
+    """Leave out the rows of single units where units are pooled: they have a place of their own."""
+    model = posterior.model
+    if not model.pooled or model.groups is None:
+        return frame
+    return frame[~frame["group"].isin(model.groups.levels)]
 
 
 def plot_class_counts(

@@ -10,6 +10,7 @@ import numpy as np
 
 from bayeslca._typing import Floats
 from bayeslca.model.places import ResponseVector
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.priors import DEFAULT
 
 if TYPE_CHECKING:
@@ -126,7 +127,11 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
     model = posterior.model
     units = posterior.units
     rows: list[dict[str, object]] = []
-    for g, concentration in enumerate(model.prevalence_source.concentration):
+    source = model.prevalence_source
+    pooled = isinstance(source, PooledPrevalence)
+    if isinstance(source, PooledPrevalence):
+        rows += _pooled_rows(model, source)
+    for g, concentration in enumerate(() if pooled else source.concentration):
         cases = float(units.count[units.group == g].sum())
         share = float(concentration.sum() / (concentration.sum() + cases))
         group = {"group": model.groups.levels[g]} if model.groups else {}
@@ -152,6 +157,20 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
                 | {"constraints": "; ".join(weight.constraints)}
             )
     return pd.DataFrame(rows)
+
+
+def _pooled_rows(model: LatentClassModel, source: PooledPrevalence) -> list[dict[str, object]]:
+    """Return rows of the units' mean; it weighs against the units, not against their cases."""
+    assert model.groups is not None  # pooled units are groups
+    mean = source.mean_prior
+    return [
+        {"group": f"mean over each {model.groups.name}", "latent_class": name}
+        | {"item": "", "category": ""}
+        | _summary(mean, k, distribution(mean), float("nan"))
+        | _stated(model, model.priors.prevalence_origin[0])
+        | {"constraints": ""}
+        for k, name in enumerate(model.class_names)
+    ]
 
 
 def _on_prevalences(model: LatentClassModel) -> tuple[str, ...]:

@@ -20,6 +20,10 @@ REFERENCES: dict[str, str] = {
         "Freeman, M. F. & Tukey, J. W. (1950). Transformations related to the angular and the "
         "square root. Annals of Mathematical Statistics 21, 607-611."
     ),
+    "Gelman et al. (2013)": (
+        "Gelman, A., Carlin, J. B., Stern, H. S., Dunson, D. B., Vehtari, A. & Rubin, D. B. "
+        "(2013). Bayesian Data Analysis, 3rd ed. CRC Press, section 5.3."
+    ),
     "Gelman, Meng & Stern 1996": (
         "Gelman, A., Meng, X.-L. & Stern, H. (1996). Posterior predictive assessment of model "
         "fitness via realized discrepancies. Statistica Sinica 6, 733-807."

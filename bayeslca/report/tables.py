@@ -97,6 +97,24 @@ def file_tables(
         )
     if content.weighted is not None:
         named |= weighted_tables(content.weighted, interval)
+    if posterior.model.pooled:
+        named["units"] = (
+            "How common each class is, unit by unit",
+            posterior.partial_pooling(interval=interval),
+        )
+        named["between_units"] = (
+            "How much units differ",
+            posterior.between_units(interval=interval),
+        )
+        named["spread_sensitivity"] = (
+            "What other priors on the spread between units would have given",
+            posterior.spread_sensitivity(interval=interval),
+        )
+    if content.units is not None:
+        named["units_left_out"] = (
+            "How well models predict a unit that they have not seen",
+            content.units.table,
+        )
     if content.claims:
         named["hypotheses"] = ("What became of the study's hypotheses", hypotheses_table(content))
     for name, rivals in content.rivals.items():

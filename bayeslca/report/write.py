@@ -28,6 +28,7 @@ from bayeslca.report.sections.reviewer import reviewer_section
 from bayeslca.report.sections.sampling import sampling_section
 from bayeslca.report.sections.theory import theory_section
 from bayeslca.report.sections.together import together_section
+from bayeslca.report.sections.units import units_section
 from bayeslca.report.tables import FileTable, file_tables
 from bayeslca.report.wording import sentence
 from bayeslca.report.workbook import write_workbook
@@ -89,6 +90,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         prevalence_section(facts),
         class_counts_section(facts),
         together_section(facts),
+        units_section(facts),
         groups_section(facts),
         fit_section(facts),
         likelihood_section(facts),

@@ -16,6 +16,7 @@ from bayeslca.responses.responses import Responses
 from bayeslca.study.claims import check_theory
 from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
+from bayeslca.study.unit_comparison import unit_models
 
 WIDTH = 79
 _REFUSED = ("What `run` will do", "- refuse to sample until what is marked !! is put right")
@@ -47,10 +48,16 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
     responses = study.responses
     model = study.model
     checked = model or LatentClassModel(
-        responses.items, 2, statements=study.shared_statements, groups=responses.groups
+        responses.items,
+        2,
+        statements=study.shared_statements,
+        groups=responses.groups,
+        **study.pooling(2),
     )
     if study.said.groups.compare_free:
         group_models(study, checked)
+    if study.said.groups.compare_pooled and checked.n_classes > 1:
+        unit_models(study, checked)
     findings = [*responses.findings, *checked.findings(responses)]
     refused = any(finding.level == "problem" for finding in findings)
     parts = [
@@ -111,6 +118,11 @@ def _plan(study: Study, responses: Responses) -> list[str]:
         lines += _wrapped(f"- compare models with {listed} unconstrained classes", indent=4)
     if study.said.groups.compare_free:
         lines += _wrapped("- compare groups that answer alike with groups that do not", indent=4)
+    if study.said.groups.compare_pooled:
+        lines += _wrapped(
+            "- compare pooled units with units alone and all as one, leaving one unit out",
+            indent=4,
+        )
     n_claims, n_quantities = len(study.said.hypotheses), len(study.said.quantities)
     if n_claims or n_quantities:
         asked = [counted(n_claims, "hypothesis", "hypotheses")] if n_claims else []

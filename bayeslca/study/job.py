@@ -27,7 +27,7 @@ from bayeslca.study.placing import check_placing
 from bayeslca.study.progress import JobProgress, job_progress
 from bayeslca.study.results import RECORD, previous_results, written_aside
 from bayeslca.study.sample_design import record_of_design
-from bayeslca.study.steps import OWN_FIT, Steps, count_fit, step_key
+from bayeslca.study.steps import OWN_FIT, UNIT_FITS, Steps, count_fit, step_key
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -84,7 +84,7 @@ def run_study(
     check_placing(study)
     steps = Steps(previous)
     fits = len(study.said.class_count.compare) + (study.model is not None)
-    fits += 2 * study.said.groups.compare_free
+    fits += 2 * study.said.groups.compare_free + 2 * study.said.groups.compare_pooled
     with job_progress(fits, quiet=quiet) as progress:
         own = _own_posterior(study, steps, progress)
         comparison = _compared(study, steps, own, progress)
@@ -152,7 +152,12 @@ def _compared(
     sampling = study.sampling_options
     fitted = {}
     for n_classes in counts:
-        model = class_count_model(study.responses, n_classes, statements=study.shared_statements)
+        model = class_count_model(
+            study.responses,
+            n_classes,
+            statements=study.shared_statements,
+            **study.pooling(n_classes),
+        )
         key = step_key(study.responses, model, sampling, study.said.sampling.seed)
         kept = steps.take(count_fit(n_classes), key)
         if kept is not None:
@@ -163,6 +168,7 @@ def _compared(
         study.responses,
         counts,
         statements=study.shared_statements,
+        **study.pooling(max(counts)),
         seed=study.said.sampling.seed,
         fitted=fitted,
         own=named,
@@ -270,6 +276,10 @@ def _fits(study: Study, content: ReportContent, answer: _Answer) -> dict[str, Po
     if content.group_comparison is not None:
         for name, file in GROUP_FITS.items():
             fits[file] = content.group_comparison.posteriors[name]
+    if content.units is not None:
+        for name, file in UNIT_FITS.items():
+            if name in content.units.posteriors and content.units.posteriors[name] != answer.main:
+                fits[file] = content.units.posteriors[name]
     return fits
 
 

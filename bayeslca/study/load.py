@@ -83,6 +83,13 @@ class Study:
         free = self.said.model.free_by_group
         return free if isinstance(free, bool) else tuple(free)
 
+    def pooling(self, n_classes: int) -> dict[str, Any]:
+        """Return how a model of so many classes pools its units: with one class not at all."""
+        said = self.said.model
+        if not said.pooled or n_classes == 1:
+            return {}
+        return {"pooled": True, "spread_prior": said.spread_prior}
+
     @property
     def statements(self) -> tuple[str, ...]:
         """The model's statements as text."""
@@ -116,6 +123,7 @@ class Study:
                 groups=responses.groups,
                 statement_sources=self.statement_sources,
                 free_by_group=self.free_by_group,
+                **self.pooling(classes if isinstance(classes, int) else len(classes)),
             )
         except StatementError as error:
             problem = f"{self._where_stated(error.statement)}: {error.problem}"

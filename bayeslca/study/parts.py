@@ -21,6 +21,7 @@ from bayeslca.study.progress import JobProgress
 from bayeslca.study.sample_design import with_sample_design
 from bayeslca.study.steps import Steps
 from bayeslca.study.together import with_together
+from bayeslca.study.unit_comparison import with_unit_comparison
 
 
 @dataclass(frozen=True)
@@ -60,6 +61,10 @@ def _maximum_likelihood(run: Run, content: ReportContent) -> ReportContent:
     return with_maximum_likelihood(run.study, content, run.progress.say)
 
 
+def _units(run: Run, content: ReportContent) -> ReportContent:
+    return with_unit_comparison(run.study, content, run.steps, run.progress)
+
+
 def _placing(run: Run, content: ReportContent) -> ReportContent:
     return with_placing(run.study, content, run.progress.say)
 
@@ -76,6 +81,7 @@ PARTS: tuple[Part, ...] = (
     _sample_design,
     _together,
     _group_comparison,
+    _units,
     _theory,
     _fit_checks,
     _maximum_likelihood,

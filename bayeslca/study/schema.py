@@ -96,6 +96,10 @@ class ModelSection(_Section):
     chosen_because: str = ""
     statements: list[str | SourcedStatement] = []
     free_by_group: StrictBool | list[str] = False
+    pooled: StrictBool = False
+    spread_prior: tuple[
+        Annotated[float, Field(gt=0, lt=1e6)], Annotated[float, Field(gt=0, lt=1e6)]
+    ] = (1.0, 1.0)
 
     @field_validator("classes")
     @classmethod
@@ -154,6 +158,7 @@ class GroupsSection(_Section):
     """What is asked about the groups."""
 
     compare_free: StrictBool = False
+    compare_pooled: StrictBool = False
 
 
 class HypothesisSection(_Section):
@@ -239,12 +244,25 @@ class StudyFile(_Section):
     def _groups_are_declared(self) -> StudyFile:
         asked = {
             "[groups] compare_free": self.groups.compare_free,
+            "[groups] compare_pooled": self.groups.compare_pooled,
             "[model] free_by_group": self.model.free_by_group,
+            "[model] pooled": self.model.pooled,
         }
         for key, value in asked.items():
             if value and self.answers.group is None:
                 msg = f"{key} needs groups; name their column with [answers] group"
                 raise ValueError(msg)
+        return self
+
+    @model_validator(mode="after")
+    def _the_spread_is_of_pooled_units(self) -> StudyFile:
+        pools = self.model.pooled or self.groups.compare_pooled
+        if self.model.spread_prior != (1.0, 1.0) and not pools:
+            msg = (
+                "[model] spread_prior is about pooled units; set [model] pooled = true, or leave "
+                "it out"
+            )
+            raise ValueError(msg)
         return self
 
     @model_validator(mode="after")

@@ -28,6 +28,12 @@ def count_fit(n_classes: int) -> str:
 
 ALIKE_FIT, FREE_FIT = "fits/groups-alike.nc", "fits/groups-free.nc"
 """Files of the models whose groups answer alike, or each in its own way."""
+UNIT_FITS = {
+    "pooled": "fits/units-pooled.nc",
+    "each alone": "fits/units-alone.nc",
+    "all as one": "fits/units-one.nc",
+}
+"""Files of the models that are compared by leaving units out, by the names of their rows."""
 
 
 def step_key(

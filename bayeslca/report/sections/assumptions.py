@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -65,7 +66,15 @@ def model_in_words(facts: Facts) -> str:
         "Within a class, the answers to different items are independent of each other, and every "
         "case of the class has the same probability of each answer."
     )
-    if model.groups:
+    if model.groups and model.pooled:
+        name = model.groups.name
+        text += (
+            f" Each of {counted(len(model.groups.levels), 'unit')} ({name}) has its own "
+            "prevalences, drawn from one Dirichlet distribution whose mean and concentration are "
+            f"estimated with everything else, so that a {name} with few cases borrows from the "
+            "others (partial pooling)."
+        )
+    elif model.groups:
         text += (
             f" Each group of {model.groups.name} ({listed(model.groups.levels)}) has its own "
             "prevalences; the classes look the same in all groups."
@@ -171,12 +180,19 @@ def _source(source: str | None, *, is_rule: bool) -> str:
 
 def _weights_table(facts: Facts) -> PageTable:
     model = facts.posterior.model
+    source = model.prevalence_source
+    pooled = isinstance(source, PooledPrevalence)
     rows = [
         ("Prevalences" if not model.groups else f"Prevalences, {model.groups.levels[g]}", "",
          distribution(concentration) if model.n_classes > 1 else "none: one class",
          significant(float(concentration.sum())), "")
-        for g, concentration in enumerate(model.prevalence_source.concentration)
+        for g, concentration in enumerate(() if pooled else source.concentration)
     ]  # fmt: skip
+    if isinstance(source, PooledPrevalence):
+        mean, spread = source.mean_prior, source.spread_prior
+        rows.append(("Mean prevalences over units", "", distribution(mean),
+                     significant(float(mean.sum())), ""))  # fmt: skip
+        rows.append(("Spread between units", "", distribution(spread), "", ""))
     rows += [
         (_item_text(facts, weight), called(weight.latent_class), _held(facts, weight),
          significant(weight.weight), percent(weight.share))

@@ -121,6 +121,15 @@ def _small_groups(facts: Facts) -> list[tuple[str, str]]:
     groups = facts.posterior.model.groups
     if groups is None:
         return []
+    if facts.posterior.model.pooled:
+        return [
+            (
+                f"Each {groups.name} borrows from the others:",
+                "estimates of units with few cases lie near the mean of all, as they should where "
+                "units are of one kind. They are no ranking, and no judgement of a single "
+                f"{groups.name}; one that is known to be unlike the others does not belong here.",
+            )
+        ]
     fewest = CASES_PER_CLASS * len(facts.class_names)
     sizes = zip(groups.levels, facts.posterior.group_cases, strict=True)
     small = [f"{level} ({whole(size)})" for level, size in sizes if size < fewest]

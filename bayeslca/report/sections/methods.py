@@ -65,7 +65,7 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
 def _priors(facts: Facts) -> str:
     model = facts.posterior.model
     if not model.statements:
-        return "All priors were uniform."
+        return f"All priors were uniform.{_spread(facts)}"
     rules = [rule.text for rule in model.naming_rules]
     constraints = [constraint.text for constraint in model.stated.constraints]
     priors = [prior.text for prior in model.stated.priors]
@@ -83,7 +83,19 @@ def _priors(facts: Facts) -> str:
         )
     if rules:
         text += f" Classes were named by rule: {listed(rules)}."
-    return text
+    return text + _spread(facts)
+
+
+def _spread(facts: Facts) -> str:
+    """Return what the prior on the spread between pooled units was."""
+    model = facts.posterior.model
+    if not model.pooled:
+        return ""
+    a, b = model.spread_prior
+    return (
+        f" The spread between units, (1 + c)^(-1/2) for a concentration of c, had the prior "
+        f"Beta({a:g}, {b:g}), after Gelman et al. (2013)."
+    )
 
 
 def _sampling(facts: Facts) -> str:

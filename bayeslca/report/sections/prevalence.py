@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import math
+from typing import Any
+
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
 from bayeslca.report.facts import Facts, shares_in_words
 from bayeslca.report.figures import WIDTH, draw
-from bayeslca.report.plots import plot_prevalence
+from bayeslca.report.plots import plot_prevalence, without_pooled_units
 from bayeslca.report.wording import (
+    NOTHING,
     called,
     counted,
     level,
@@ -28,7 +32,10 @@ def prevalence_section(facts: Facts) -> Section:
         return Section(ANCHOR, HEADING, (Paragraph(text),))
     interval = facts.content.interval
     groups = facts.posterior.model.groups
-    n_rows = len(facts.class_names) * (len(groups.levels) + 1 if groups else 1)
+    of_each = 1
+    if groups is not None:
+        of_each = 2 if facts.posterior.model.pooled else len(groups.levels) + 1
+    n_rows = len(facts.class_names) * of_each
     figure = draw(
         "prevalence",
         lambda drawing: plot_prevalence(facts.posterior, interval=interval, ax=drawing.subplots()),
@@ -60,16 +67,24 @@ def _in_words(facts: Facts) -> str:
     return text
 
 
+def _in_cases(row: dict[Any, Any]) -> str:
+    """Return a share in cases; of a unit that was not observed there are none."""
+    if not math.isfinite(row["cases"]):
+        return NOTHING
+    low, high = whole(row["cases_lower"]), whole(row["cases_upper"])
+    return f"{whole(row['cases'])} ({low} to {high})"
+
+
 def _table(facts: Facts) -> PageTable:
     frame = facts.posterior.prevalence(interval=facts.content.interval)
+    frame = without_pooled_units(facts.posterior, frame)
     groups = facts.posterior.model.groups
     rows = []
     for name in facts.class_names:
         for row in frame[frame["latent_class"] == name].to_dict("records"):
             share = percent_interval(row["median"], row["lower"], row["upper"])
-            low, high = whole(row["cases_lower"]), whole(row["cases_upper"])
             where = [str(row["group"])] if groups else []
-            rows.append((called(name), *where, share, f"{whole(row['cases'])} ({low} to {high})"))
+            rows.append((called(name), *where, share, _in_cases(row)))
     heads = (
         Head("Class", "the class that the row is about", numeric=False),
         *([Head("Group", "the group of cases", numeric=False)] if groups else []),

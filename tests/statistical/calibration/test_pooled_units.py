@@ -27,7 +27,7 @@ from bayeslca.sampling.starting_points import find_starting_points
 
 SEED = 20261211
 LEVEL = 1e-3
-DRAWS, THIN = 99, 60
+DRAWS, THIN = 99, 61
 ITEMS = tuple(Item(f"item {j}", ("no", "yes")) for j in range(4))
 
 

@@ -131,9 +131,7 @@ def test_without_groups_all_districts_share_one_prevalence(answers, fits):
     expected += np.log((no.sum() - no + 1) / (no.sum() + 1))
     found = leave_one_unit_out(fits["one"], refit=True, seed=2)
     assert found.unreliable == ()
-    assert np.all(
-        np.abs(found.table["elpd"] - expected) < 5 * found.table["elpd_mcse"] + 0.02
-    )
+    assert np.all(np.abs(found.table["elpd"] - expected) < 5 * found.table["elpd_mcse"] + 0.02)
 
 
 def test_models_are_compared_by_new_units_only_on_the_same_answers(answers, fits):
