@@ -179,7 +179,7 @@ def spread_sensitivity(posterior: Posterior, interval: float = 0.95) -> pd.DataF
                 "median": median,
                 "lower": lower,
                 "upper": upper,
-                "largest_change": float(np.abs(weight @ units - stated).max()),
+                "largest_change": float(np.abs(weight @ units - stated).max()) if rows else 0.0,
                 "draws_that_count": float(1.0 / np.sum(weight**2)),
             }
         )

@@ -70,7 +70,7 @@ def as_terminal_text(posterior: Posterior) -> str:
     name_width = max(len("class"), *(len(row[0]) for row in shown))
     share_width = max(len("prevalence"), *(len(row[1]) for row in shown))
     lines = [f"{'class':<{name_width}}  {'prevalence':<{share_width}}  cases"]
-    lines += [f"{a:<{name_width}}  {b:<{share_width}}  {c}" for a, b, c in shown]
+    lines += [f"{a:<{name_width}}  {b:<{share_width}}  {c}".rstrip() for a, b, c in shown]
     return "\n".join(
         [
             *textwrap.wrap(_head(posterior), WIDTH),

@@ -30,7 +30,7 @@ from bayeslca.report.wording import (
 if TYPE_CHECKING:
     import pandas as pd
 
-ANCHOR = "units"
+ANCHOR, HEADING = "units", "How common each class is, unit by unit"
 MOST_SHOWN = 40
 """Units in the figure at the most: those with most cases; the table holds all."""
 FEW_DRAWS = 200
@@ -38,9 +38,7 @@ FEW_DRAWS = 200
 
 def heading(facts: Facts) -> str:
     """Return the section's heading: ``How common each class is, district by district``."""
-    groups = facts.posterior.model.groups
-    name = groups.name if groups else "unit"
-    return f"How common each class is, {name} by {name}"
+    return HEADING.replace("unit", _name(facts))
 
 
 def units_section(facts: Facts) -> Section | None:

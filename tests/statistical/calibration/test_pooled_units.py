@@ -187,3 +187,31 @@ def test_each_experiment_alone_is_its_own_share_of_ill_rats(tumours):
     np.testing.assert_array_equal(alone["cases"], n)
     between = np.abs(alone["mean"] - 0.144) < np.abs(alone["alone"] - 0.144) + 0.01
     assert between.all()  # every estimate is drawn towards the mean
+
+
+def test_when_labels_move_mean_and_prevalences_move_together():
+    """One class holds most cases everywhere: whichever name it has, its mean must be the larger.
+
+    Fails when the move leaves mean and concentration where they were.
+    """
+    model, rng = NEARLY_ALIKE, np.random.default_rng(SEED)
+    yes = np.where(rng.random((60, 1)) < 0.85, 0.9, 0.1)
+    codes = (rng.random((60, 4)) < yes).astype(np.int16)
+    responses = Responses(
+        items=ITEMS,
+        codes=np.asfortranarray(codes),
+        counts=np.ones(60, dtype=np.int64),
+        groups=model.groups,
+        group_codes=np.repeat(np.arange(5), 12).astype(np.int32),
+    )
+    table = compile_units(model.table, responses.units)
+    task = make_task(model.table, table, model.prevalence_source, model.symmetry)
+    start = find_starting_points(
+        task, np.random.SeedSequence(SEED), chains=1, threads=1, stop=Event(), runs=2
+    )
+    kept = start[1][0].run(6000, 1)
+    first_larger = kept.prevalence.mean(axis=1)[:, 0] > 0.5
+    assert kept.swaps.sum() > 10
+    assert 0.01 < first_larger.mean() < 0.99
+    mean_larger = kept.concentration[:, 0] > kept.concentration[:, 1]
+    assert np.mean(first_larger == mean_larger) > 0.99
