@@ -167,7 +167,7 @@ def spread_sensitivity(posterior: Posterior, interval: float = 0.95) -> pd.DataF
     }
     tail = (1.0 - interval) / 2.0
     stated = units.mean(axis=0)
-    rows = []
+    rows: list[dict[str, object]] = []
     for name, parameters in asked.items():
         logs = beta.logpdf(spread, *parameters) - beta.logpdf(spread, a, b)
         weight = np.exp(logs - logs.max())

@@ -127,7 +127,7 @@ def test_the_stated_prior_is_that_of_the_mean():
     said = model(classes=("a", "b"), statements=("P(a, b) ~ Dirichlet(3, 1)",))
     np.testing.assert_array_equal(said.prevalence_source.mean_prior, [3.0, 1.0])
     draws = said.prior_predictive(30, draws=4000, seed=SEED).prevalence
-    north = draws[(draws["group"] == "north") & (draws["latent_class"] == "a")]
+    north = draws[(draws["group"] == "a new district") & (draws["latent_class"] == "a")]
     assert float(north["mean"].iloc[0]) == pytest.approx(0.75, abs=0.03)
 
 
