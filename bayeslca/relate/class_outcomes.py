@@ -17,7 +17,7 @@ from bayeslca.relate import outcome_tables as tables
 from bayeslca.relate.case_units import CaseUnits, case_units
 from bayeslca.relate.error_matrix import PLACEMENTS, Placement
 from bayeslca.relate.match_labels import refuse_unmatched_groups
-from bayeslca.relate.outcome_checks import outcome_checks, replicated_outcomes
+from bayeslca.relate.outcome_checks import distribution, outcome_checks, replicated_outcomes
 from bayeslca.relate.outcome_column import Outcome, OutcomeKind, read_outcome
 from bayeslca.relate.outcome_cut import CUT_DRAWS, cut_draws
 from bayeslca.relate.outcome_draws import OutcomeDraws
@@ -36,6 +36,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.posterior.posterior import Posterior
+    from bayeslca.responses.responses import Responses
 
 Way = Literal["joint", "cut", "three_steps"]
 WAYS: tuple[Way, ...] = ("joint", "cut", "three_steps")
@@ -69,6 +70,8 @@ class ClassOutcomes:
         P(class | answers) of the measurement model.
     checks : DataFrame
         Posterior predictive check by ``way``; see `bayeslca.relate.outcome_checks`.
+    distribution : DataFrame
+        Share of cases with each of some ``values``, observed and in replicates, by ``way``.
     findings : tuple of Finding
     adjusted_for : str
         Formula of the covariates; empty when there are none.
@@ -87,6 +90,7 @@ class ClassOutcomes:
     steps: Mapping[str, ThreeSteps | None]
     answers_membership: Floats
     checks: pd.DataFrame
+    distribution: pd.DataFrame
     findings: tuple[Finding, ...]
     adjusted_for: str = ""
     covariate_names: tuple[str, ...] = ()
@@ -148,8 +152,8 @@ class ClassOutcomes:
         Returns
         -------
         DataFrame
-            A row per ``way`` that has draws: ``probability``, its ``mcse``, and
-            ``prior_probability``, that of any order of so many classes.
+            A row per ``way`` that has draws: ``posterior_probability``, its ``posterior_mcse``,
+            and ``prior_probability``, that of any order of so many classes.
         """
         return tables.order_table(self, text)
 
@@ -256,14 +260,17 @@ def class_outcomes(
     from bayeslca.relate.outcome_words import outcome_findings
 
     _check_options(ways, count_model, spread, corrections, placement)
+    if posterior.model.n_classes == 1:
+        msg = "the model has one class, so nothing can follow from class. Fit two or more."
+        raise ModelError(msg)
     refuse_unmatched_groups(posterior)
     responses = posterior.responses
     outcome = read_outcome(
         responses, data, column, kind, case=case, levels=levels, yes=yes, label=label,
         no_answer=no_answer, **how_to_read,
     )  # fmt: skip
-    covariate, names, noticed = _covariates(
-        posterior, data, adjusted_for, case=case, no_answer=no_answer, **how_to_read
+    covariate, names, noticed = read_covariates(
+        responses, data, adjusted_for, case=case, no_answer=no_answer, **how_to_read
     )
     work = _Work(posterior, outcome, covariate, spread == "equal", seed, threads)
     chosen: CountModel = "negative_binomial" if count_model == "check" else count_model
@@ -283,6 +290,7 @@ def class_outcomes(
     stopped: dict[str, str] = {}
     if "three_steps" in ways:
         steps, stopped = work.three_steps(model, corrections, placement)
+    checks, values = work.checks(model, drawn, interval)
     found = ClassOutcomes(
         outcome=outcome,
         model=model,
@@ -291,7 +299,8 @@ def class_outcomes(
         drawn=drawn,
         steps=steps,
         answers_membership=work.membership,
-        checks=work.checks(model, drawn, interval),
+        checks=checks,
+        distribution=values,
         findings=(),
         adjusted_for=adjusted_for or "",
         covariate_names=names,
@@ -300,7 +309,7 @@ def class_outcomes(
         seed=seed,
     )
     findings = (*outcome.findings, *noticed, *counted, *outcome_findings(posterior, found, stopped))
-    return replace(found, findings=findings)
+    return replace(found, findings=tuple(dict.fromkeys(findings)))
 
 
 def _check_options(
@@ -326,14 +335,22 @@ def _check_options(
         raise ModelError(msg)
 
 
-def _covariates(
-    posterior: Posterior, data: Any, adjusted_for: str | None, **how_to_read: Any
+def read_covariates(
+    responses: Responses, data: Any, adjusted_for: str | None, **how_to_read: Any
 ) -> tuple[Floats | None, tuple[str, ...], tuple[Finding, ...]]:
-    """Return the covariates' columns (N, p), their names, and what was noticed."""
+    """Return the covariates' columns (N, p), nan where missing, their names, and findings."""
     if adjusted_for is None:
         return None, (), ()
-    msg = "adjusted_for is not supported yet."
-    raise ModelError(msg)
+    from bayeslca.relate.case_table import read_case_table
+    from bayeslca.relate.covariates import design_of
+    from bayeslca.relate.formula import read_formula
+
+    formula = read_formula(adjusted_for)
+    design = design_of(read_case_table(responses, data, formula.columns, **how_to_read), formula)
+    out = np.full((responses.n_rows, design.matrix.shape[1] - 1), np.nan)
+    out[design.used] = design.matrix[:, 1:]
+    noticed = tuple(one for one in design.findings if one.kind != "covariates_missing")
+    return out, tuple(column.name for column in design.columns[1:]), noticed
 
 
 @dataclass(frozen=True, eq=False)
@@ -435,10 +452,10 @@ class _Work:
         is_over = found.p < OVERDISPERSED
         p = "below 0.01" if found.p < 0.01 else f"{found.p:.2f}"
         finding = Finding(
-            "counts_overdispersed" if is_over else "counts_poisson",
-            "note",
-            f"{self.outcome.text} varies {found.ratio:.2g} times as much within classes as Poisson "
-            f"counts would (these: {found.lower:.2g} to {found.upper:.2g}; p {p}), so "
+            kind="counts_overdispersed" if is_over else "counts_poisson",
+            level="note",
+            message=f"{self.outcome.text} varies {found.ratio:.2g} times as much within classes as "
+            f"Poisson counts would (these: {found.lower:.2g} to {found.upper:.2g}; p {p}), so "
             f"{'the negative binomial' if is_over else 'the Poisson'} is used.",
             about=(self.outcome.name,),
             value=found.ratio,
@@ -447,20 +464,24 @@ class _Work:
 
     def checks(
         self, model: OutcomeModel, drawn: Mapping[str, OutcomeDraws], interval: float
-    ) -> pd.DataFrame:
-        """Return the posterior predictive checks of all ways that have draws."""
+    ) -> tuple[pd.DataFrame, pd.DataFrame]:
+        """Return the predictive checks of all ways that have draws, and the distributions."""
         import pandas as pd
 
         seed = int(self.seed_of(5).generate_state(1)[0])
         names = self.posterior.model.class_names
-        parts = []
+        frames: tuple[list[pd.DataFrame], list[pd.DataFrame]] = ([], [])
         for way, one in drawn.items():
             replicates = replicated_outcomes(self.posterior, model, self.cases, one, seed=seed)
-            frame = outcome_checks(
-                self.outcome, model, replicates, self.membership, names, interval
+            both = (
+                outcome_checks(self.outcome, model, replicates, self.membership, names, interval),
+                distribution(self.outcome, model, replicates, interval),
             )
-            frame.insert(0, "way", way)
-            parts.append(frame)
-        frame = pd.concat(parts, ignore_index=True) if parts else pd.DataFrame(columns=["way"])
-        frame.attrs["interval"] = interval
-        return frame
+            for frame, frames_of_kind in zip(both, frames, strict=True):
+                frame.insert(0, "way", way)
+                frames_of_kind.append(frame)
+        nothing = pd.DataFrame({"way": pd.Series(dtype=object)})
+        joined = [pd.concat(kind, ignore_index=True) if kind else nothing for kind in frames]
+        for frame in joined:
+            frame.attrs["interval"] = interval
+        return joined[0], joined[1]

@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     from bayeslca.relate.outcome_column import Outcome
 
 REPLICATES = 1000
+MOST_RANGES = 10
 MISSED = 0.01
 """A check with a p below this is a misfit."""
 
@@ -109,7 +110,7 @@ def outcome_checks(
     Returns
     -------
     DataFrame
-        A row per ``statistic`` and ``latent_class`` ("overall": all cases) with ``observed``,
+        A row per ``feature`` and ``latent_class`` ("overall": all cases) with ``observed``,
         ``expected``, ``lower``, ``upper`` of the replicates, and ``p``: twice the smaller of the
         shares of replicates that are as high or as low, at most 1; ``p_mcse`` is its error.
     """
@@ -127,7 +128,7 @@ def outcome_checks(
         lower, upper = np.quantile(found, [tail, 1.0 - tail])
         rows.append(
             {
-                "statistic": key[0],
+                "feature": key[0],
                 "latent_class": key[1],
                 "observed": value,
                 "expected": float(found.mean()),
@@ -140,3 +141,62 @@ def outcome_checks(
     frame = pd.DataFrame(rows)
     frame.attrs["interval"] = interval
     return frame
+
+
+def distribution(
+    outcome: Outcome, model: OutcomeModel, replicates: Floats, interval: float = 0.95
+) -> pd.DataFrame:
+    """Return the share of cases in ranges of values, observed and in replicates.
+
+    Returns
+    -------
+    DataFrame
+        A row per ``values`` ("0 to 9", a category): ``observed``, and ``expected``, ``lower``,
+        ``upper`` of the replicates.
+    """
+    import pandas as pd
+
+    seen = model.seen
+    names, edges = _ranges(outcome, model.value[seen])
+    shares = [
+        (values[..., None, :] >= edges[:-1, None]) & (values[..., None, :] < edges[1:, None])
+        for values in (model.value[seen], replicates[:, seen])
+    ]
+    observed, replicated = (share.mean(axis=-1) for share in shares)
+    tail = (1.0 - interval) / 2.0
+    lower, upper = np.quantile(replicated, [tail, 1.0 - tail], axis=0)
+    frame = pd.DataFrame(
+        {
+            "values": names,
+            "observed": observed,
+            "expected": replicated.mean(axis=0),
+            "lower": lower,
+            "upper": upper,
+        }
+    )
+    frame.attrs["interval"] = interval
+    return frame
+
+
+def _ranges(outcome: Outcome, value: Floats) -> tuple[list[str], Floats]:
+    """Return names (n,) and edges (n + 1,) of ranges; the first and the last are open."""
+    if outcome.levels:
+        return list(outcome.levels), np.arange(len(outcome.levels) + 1.0) - 0.5
+    low, high = np.quantile(value, [0.0 if outcome.kind == "count" else 0.02, 0.96])
+    step = _round_step((high - low) / MOST_RANGES)
+    if outcome.kind == "count":
+        step = max(1.0, np.ceil(step))
+    inner = np.arange(np.floor(low / step) + 1.0, np.floor(high / step) + 1.5) * step
+    is_whole = outcome.kind == "count"
+    last = [f"{edge - 1:g}" if is_whole else f"{edge:g}" for edge in inner]
+    names = [f"up to {last[0]}"]
+    for begin, end in zip(inner[:-1], last[1:], strict=True):
+        names.append(f"{begin:g}" if f"{begin:g}" == end else f"{begin:g} to {end}")
+    names.append(f"{inner[-1]:g} or more")
+    return names, np.concatenate([[-np.inf], inner, [np.inf]])
+
+
+def _round_step(step: float) -> float:
+    """Return the next of 1, 2, 5, 10, ... above a step."""
+    power = 10.0 ** np.floor(np.log10(max(step, 1e-300)))
+    return float(next(m * power for m in (1.0, 2.0, 5.0, 10.0) if m * power >= step * (1 - 1e-9)))

@@ -274,10 +274,10 @@ def _missing(outcome: Outcome, names: Sequence[str]) -> tuple[Finding, ...]:
     cases = tuple(names[i] for i in gone.tolist())
     return (
         Finding(
-            "outcome_missing",
-            "note",
-            f"{gone.size:,} of {len(names):,} cases have no value of {outcome.text}. They keep "
-            "their answers, and say nothing of the outcome.",
+            kind="outcome_missing",
+            level="note",
+            message=f"{gone.size:,} of {len(names):,} cases have no value of {outcome.text}. "
+            "They keep their answers, and say nothing of the outcome.",
             remedy="If values are missing for reasons that have to do with them, means are biased.",
             about=cases,
             value=float(gone.size),

@@ -221,12 +221,23 @@ def order_table(found: ClassOutcomes, text: str) -> pd.DataFrame:
             {
                 "way": way,
                 "order": text,
-                "probability": float(holds.mean()),
-                "mcse": 0.0 if np.isnan(error) else error,
+                "posterior_probability": float(holds.mean()),
+                "posterior_mcse": 0.0 if np.isnan(error) else error,
                 "prior_probability": prior,
             }
         )
     return pd.DataFrame(rows)
+
+
+def likeliest_order(found: ClassOutcomes, way: str) -> tuple[str, float]:
+    """Return the order of class means that most draws have, and its posterior probability."""
+    drawn = found.drawn[way]
+    means = class_means(found.model, drawn.by_class, drawn.shared)
+    orders = np.argsort(means.reshape(-1, means.shape[-1]), axis=1)
+    distinct, times = np.unique(orders, axis=0, return_counts=True)
+    best = distinct[times.argmax()]
+    text = " < ".join(found.class_names[k] for k in best.tolist())
+    return text, float(times.max() / times.sum())
 
 
 def read_order(text: str, class_names: tuple[str, ...]) -> list[int]:

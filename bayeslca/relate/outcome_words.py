@@ -68,9 +68,9 @@ def _about_covariates(found: ClassOutcomes) -> Iterator[Finding]:
     if gone.any():
         names = tuple(found.case_names[i] for i in np.flatnonzero(gone).tolist())
         yield Finding(
-            "covariate_missing",
-            "warning",
-            f"{len(names):,} cases have {found.outcome.text} but miss a covariate of "
+            kind="covariate_missing",
+            level="warning",
+            message=f"{len(names):,} cases have {found.outcome.text} but miss a covariate of "
             f"{found.adjusted_for!r}. They keep their answers, and say nothing of the outcome.",
             remedy="Fill the covariates in, or adjust for fewer.",
             about=names,
@@ -82,10 +82,10 @@ def _about_classes(posterior: Posterior, found: ClassOutcomes) -> Iterator[Findi
     few = found.expected_cases < FEWEST
     for k in np.flatnonzero(few).tolist():
         yield Finding(
-            "few_cases_in_class",
-            "warning",
-            f"about {found.expected_cases[k]:.1f} cases with {found.outcome.text} are in class "
-            f"{found.class_names[k]}: its mean rests on the prior as much as on them.",
+            kind="few_cases_in_class",
+            level="warning",
+            message=f"about {found.expected_cases[k]:.1f} cases with {found.outcome.text} are in "
+            f"class {found.class_names[k]}: its mean rests on the prior as much as on them.",
             remedy="Read it with its interval, or join classes.",
             about=(found.class_names[k],),
             value=float(found.expected_cases[k]),
@@ -93,10 +93,10 @@ def _about_classes(posterior: Posterior, found: ClassOutcomes) -> Iterator[Findi
     state = class_state(posterior.table, posterior.unit_table, posterior.draws)
     for a, b in state.twins:
         yield Finding(
-            "outcome_of_twins",
-            "warning",
-            f"classes {found.class_names[a]} and {found.class_names[b]} claim the same cases, so "
-            "what follows from one cannot be told from what follows from the other.",
+            kind="outcome_of_twins",
+            level="warning",
+            message=f"classes {found.class_names[a]} and {found.class_names[b]} claim the same "
+            "cases, so what follows from one cannot be told from what follows from the other.",
             remedy="Fewer classes would do; read them as one.",
             about=(found.class_names[a], found.class_names[b]),
         )
@@ -106,10 +106,10 @@ def _about_sampling(found: ClassOutcomes) -> Iterator[Finding]:
     joint = found.drawn.get("joint")
     if joint is not None and joint.limit_reached:
         yield Finding(
-            "outcome_not_converged",
-            "problem",
-            f"the joint model of answers and {found.outcome.text} did not reach the stopping rule "
-            f"in {joint.sweeps:,} sweeps of each chain.",
+            kind="outcome_not_converged",
+            level="problem",
+            message=f"the joint model of answers and {found.outcome.text} did not reach the "
+            f"stopping rule in {joint.sweeps:,} sweeps of each chain.",
             remedy="Rely on the cut, or raise max_sweeps.",
             about=(found.outcome.name,),
         )
@@ -130,11 +130,12 @@ def _about_joint(found: ClassOutcomes) -> Iterator[Finding]:
     if apart[worst] > APART or share > MANY_MOVED:
         name = found.class_names[worst]
         yield Finding(
-            "outcome_shapes_classes",
-            "warning",
-            f"{found.outcome.text} changes the classes in the joint way: {100 * share:.0f} % of "
-            f"cases are placed in another class than by the cut, and the {_mean(found)} of {name} "
-            f"differs by {gap[worst]:.2g} ({apart[worst]:.1f} standard deviations).",
+            kind="outcome_shapes_classes",
+            level="warning",
+            message=f"{found.outcome.text} changes the classes in the joint way: "
+            f"{100 * share:.0f} % of cases are placed in another class than by the cut, "
+            f"and the {_mean(found)} of {name} differs by {gap[worst]:.2g} "
+            f"({apart[worst]:.1f} standard deviations).",
             remedy=(
                 "Report the cut, unless the outcome is meant to define the classes; a misfit of "
                 "the outcome's distribution does this too (see the check)."
@@ -156,11 +157,12 @@ def _about_density(found: ClassOutcomes) -> Iterator[Finding]:
     worst = int(apart.argmax())
     if apart[worst] > FAR_APART:
         yield Finding(
-            "ways_disagree",
-            "warning",
-            f"the {_mean(found)} of {found.outcome.text} in class {found.class_names[worst]} "
-            f"differs by {gap[worst]:.3g} between the cut and the three steps with the inverse "
-            "error matrix, which trusts no distribution of the outcome.",
+            kind="ways_disagree",
+            level="warning",
+            message=f"the {_mean(found)} of {found.outcome.text} in class "
+            f"{found.class_names[worst]} differs by {gap[worst]:.3g} between the cut and the "
+            "three steps with the inverse error matrix, which trusts no distribution of "
+            "the outcome.",
             remedy="The outcome's distribution is probably wrong: see its check.",
             about=(found.outcome.name, found.class_names[worst]),
             value=float(apart[worst]),
@@ -172,19 +174,20 @@ def _about_three_steps(
 ) -> Iterator[Finding]:
     for correction, why in stopped.items():
         yield Finding(
-            "three_steps_stopped",
-            "warning",
-            f"{WAY_WORDS[correction]}: {why}",
+            kind="three_steps_stopped",
+            level="warning",
+            message=f"{WAY_WORDS[correction]}: {why}",
             about=(found.outcome.name, correction),
         )
     if found.steps:
         entropy = float(posterior.separation()["mean"].iloc[0])
         if entropy < WEAK:
             yield Finding(
-                "weak_separation",
-                "warning",
-                f"classes are weakly separated (relative entropy {entropy:.2f}): three-step "
-                "estimates are then biased towards each other and their intervals too short.",
+                kind="weak_separation",
+                level="warning",
+                message=f"classes are weakly separated (relative entropy {entropy:.2f}): "
+                "three-step estimates are then biased towards each other and their "
+                "intervals too short.",
                 remedy="Report the cut.",
                 value=entropy,
             )
@@ -204,10 +207,10 @@ def _about_checks(found: ClassOutcomes) -> Iterator[Finding]:
             "count": "Take the negative binomial, or treat the outcome as ordered.",
         }.get(found.outcome.kind, "See the table of checks.")
         yield Finding(
-            "outcome_misfit",
-            "warning",
-            f"the model of {found.outcome.text} does not give values like those observed: "
-            f"{worst['statistic']}{where} is {worst['observed']:.3g}, replicates have "
+            kind="outcome_misfit",
+            level="warning",
+            message=f"the model of {found.outcome.text} does not give values like those observed: "
+            f"{worst['feature']}{where} is {worst['observed']:.3g}, replicates have "
             f"{worst['lower']:.3g} to {worst['upper']:.3g}.",
             remedy=remedy,
             about=(found.outcome.name,),

@@ -268,6 +268,30 @@ COLUMNS: dict[str, Column] = {
     "differs": Column(
         "Differs", "the unweighted median lies outside the weighted interval", "flag"
     ),
+    "way": Column(
+        "Way",
+        "joint: the outcome helps to shape the classes; cut: it cannot; the others: three steps, "
+        "by their correction",
+        "text",
+    ),
+    "other_class": Column("Compared with", "the class whose mean is taken off", "text"),
+    "probability_larger": Column(
+        "Probability that it is larger", "that the first class has the larger mean", "share"
+    ),
+    "effect": Column(
+        "Effect",
+        "numeric: difference in standard deviations; binary: odds ratio; count: ratio of means; "
+        "ordered: chance that a case of the first class has the higher value",
+        "number",
+    ),
+    "effect_lower": Column("Effect from", "lower end of its interval", "number"),
+    "effect_upper": Column("Effect to", "upper end of its interval", "number"),
+    "feature": Column("Feature", "of the outcome's values, that is compared", "text"),
+    "values": Column("Values", "a range of the outcome's values, or a category", "text"),
+    "parameter": Column(
+        "Parameter", "standard deviation, size of the negative binomial, or slope", "text"
+    ),
+    "order": Column("Order", "of class means", "text"),
     "score": Column("Sum score", "yes answers, and steps up of ordered items", "count"),
     "alone": Column(
         "Alone",

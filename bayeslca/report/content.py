@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from bayeslca.assess.predictive_checks import PredictiveChecks
     from bayeslca.assess.rivals import Rivals
     from bayeslca.posterior.posterior import Posterior
+    from bayeslca.relate.class_outcomes import ClassOutcomes
     from bayeslca.relate.placing import PlacingRule
     from bayeslca.relate.weighted_posterior import WeightedPosterior
     from bayeslca.responses.responses import Responses
@@ -127,6 +128,10 @@ class ReportContent:
     weighted : WeightedPosterior or None
         What is known of the population, where the sample has weights, clusters or strata; the
         report's answer is then its.
+    outcomes : tuple of ClassOutcomes
+        What follows from class, an outcome each.
+    outcome_orders : mapping of str to tuple of str
+        Orders of class means that the study asks for, by the outcome's column.
     alternatives : mapping of str to Posterior
         Other numbers of classes that the data support as well, where the study leaves the number
         open; each is shown beside the answer. Keys are headings ("2 classes").
@@ -174,6 +179,8 @@ class ReportContent:
     placed: pd.DataFrame | None = None
     plausible_values: pd.DataFrame | None = None
     weighted: WeightedPosterior | None = None
+    outcomes: tuple[ClassOutcomes, ...] = ()
+    outcome_orders: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     alternatives: Mapping[str, Posterior] = field(default_factory=dict)
     diagnostic: bool = False
     interval: float = 0.95

@@ -3,6 +3,21 @@
 from __future__ import annotations
 
 REFERENCES: dict[str, str] = {
+    "Vermunt 2010": (
+        "Vermunt, J. K. (2010). Latent class modeling with covariates: two improved three-step "
+        "approaches. Political Analysis 18, 450-469."
+    ),
+    "Plummer 2015": (
+        "Plummer, M. (2015). Cuts in Bayesian graphical models. Statistics and Computing 25, 37-43."
+    ),
+    "Bolck et al. 2004": (
+        "Bolck, A., Croon, M. & Hagenaars, J. (2004). Estimating latent structure models with "
+        "categorical variables: one-step versus three-step estimators. Political Analysis 12, 3-27."
+    ),
+    "Bakk & Vermunt 2016": (
+        "Bakk, Z. & Vermunt, J. K. (2016). Robustness of stepwise latent class modeling with "
+        "continuous distal outcomes. Structural Equation Modeling 23, 20-31."
+    ),
     "Cressie & Read 1984": (
         "Cressie, N. & Read, T. R. C. (1984). Multinomial goodness-of-fit tests. Journal of the "
         "Royal Statistical Society: Series B 46, 440-464."

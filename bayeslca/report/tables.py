@@ -12,6 +12,7 @@ from bayeslca.report.columns import column
 from bayeslca.report.priors import priors_table
 from bayeslca.report.sections.likelihood import likelihood_tables
 from bayeslca.report.sections.together import sets_table
+from bayeslca.report.sections.outcomes import outcome_tables
 from bayeslca.report.wording import level
 
 if TYPE_CHECKING:
@@ -130,6 +131,7 @@ def file_tables(
         }
         named |= {name: table for name, table in fit.items() if not table[1].empty}
     named |= likelihood_tables(content)
+    named |= outcome_tables(content)
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
 

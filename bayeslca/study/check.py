@@ -17,6 +17,7 @@ from bayeslca.study.claims import check_theory
 from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
 from bayeslca.study.unit_comparison import unit_models
+from bayeslca.study.outcomes import check_outcomes
 
 WIDTH = 79
 _REFUSED = ("What `run` will do", "- refuse to sample until what is marked !! is put right")
@@ -45,6 +46,7 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
     """
     study = load_study(path)
     check_theory(study)
+    check_outcomes(study)
     responses = study.responses
     model = study.model
     checked = model or LatentClassModel(
@@ -128,6 +130,9 @@ def _plan(study: Study, responses: Responses) -> list[str]:
         asked = [counted(n_claims, "hypothesis", "hypotheses")] if n_claims else []
         asked += [counted(n_quantities, "quantity", "quantities")] if n_quantities else []
         lines += _wrapped(f"- put {' and '.join(asked)} to the posterior", indent=4)
+    for outcome in study.said.outcomes:
+        name = outcome.label or outcome.column
+        lines += _wrapped(f"- relate the {outcome.kind} outcome {name} to class", indent=4)
     lines += _wrapped(f"- {_expected_time(study, responses)}", indent=4)
     return lines
 

@@ -16,12 +16,14 @@ import bayeslca
 from bayeslca.posterior.storage import save
 from bayeslca.relate.weighted_words import posterior_in_words
 from bayeslca.report.content import ReportContent
+from bayeslca.report.sections.outcomes import outcome_lead
 from bayeslca.report.sections.theory import outcome_in_words
 from bayeslca.study.changes import changes_since
 from bayeslca.study.claims import check_theory
 from bayeslca.study.fit_checks import record_of
 from bayeslca.study.group_comparison import FILES as GROUP_FITS
 from bayeslca.study.load import Study, load_study
+from bayeslca.study.outcomes import check_outcomes, memberships_moved
 from bayeslca.study.parts import Run, with_all_parts
 from bayeslca.study.placing import check_placing
 from bayeslca.study.progress import JobProgress, job_progress
@@ -81,6 +83,7 @@ def run_study(
     previous = previous_results(folder, replace=replace)
     study = load_study(path)
     check_theory(study)
+    check_outcomes(study)
     check_placing(study)
     steps = Steps(previous)
     fits = len(study.said.class_count.compare) + (study.model is not None)
@@ -234,6 +237,8 @@ def _write(
     _membership(content).to_csv(folder / "membership.csv", index=False)
     if content.plausible_values is not None:
         content.plausible_values.to_csv(folder / "plausible_values.csv", index=False)
+    for file, moved in memberships_moved(content).items():
+        moved.to_csv(folder / file, index=False)
     (folder / "fits").mkdir()
     for file, posterior in _fits(study, content, answer).items():
         _keep_fit(folder, file, posterior, steps)
@@ -313,6 +318,7 @@ def _outcome(
             f"{row['quantity']}: {row['median']:.3g} ({row['lower']:.3g} to {row['upper']:.3g})"
             for row in content.quantities.to_dict("records")
         ]
+    lines += [outcome_lead(found) for found in content.outcomes]
     lines.append(content.posterior.diagnostics().verdict)
     if content.checks is not None and not content.checks.reproduces:
         lines.append(content.checks.verdict)

@@ -16,6 +16,7 @@ from bayeslca.study.fit_checks import with_fit_checks
 from bayeslca.study.group_comparison import with_group_comparison
 from bayeslca.study.likelihood import with_maximum_likelihood
 from bayeslca.study.load import Study
+from bayeslca.study.outcomes import with_outcomes
 from bayeslca.study.placing import with_placing
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.sample_design import with_sample_design
@@ -75,6 +76,8 @@ def _sample_design(run: Run, content: ReportContent) -> ReportContent:
 
 def _together(run: Run, content: ReportContent) -> ReportContent:
     return with_together(run.study, content, run.progress.say)
+def _outcomes(run: Run, content: ReportContent) -> ReportContent:
+    return with_outcomes(run.study, content, run.progress.say)
 
 
 PARTS: tuple[Part, ...] = (
@@ -86,6 +89,7 @@ PARTS: tuple[Part, ...] = (
     _fit_checks,
     _maximum_likelihood,
     _placing,
+    _outcomes,
 )
 """All parts, in the order in which they are done."""
 

@@ -171,6 +171,23 @@ class HypothesisSection(_Section):
     weight: float = Field(default=1.0, gt=0)
 
 
+class OutcomeSection(_Section):
+    """One outcome that may follow from class."""
+
+    column: str
+    kind: Literal["numeric", "binary", "count", "ordered"]
+    label: str = ""
+    file: str | None = None
+    adjusted_for: str = ""
+    levels: list[Text] | None = None
+    yes: Text | None = None
+    no_answer: list[Text] = []
+    count_model: Literal["check", "poisson", "negative_binomial"] = "check"
+    spread: Literal["by_class", "equal"] = "by_class"
+    ways: list[Literal["joint", "cut", "three_steps"]] = ["joint", "cut", "three_steps"]
+    orders: list[str] = []
+
+
 class FitSection(_Section):
     """Whether the model is checked against the answers, and how closely."""
 
@@ -224,6 +241,7 @@ class StudyFile(_Section):
     groups: GroupsSection = GroupsSection()
     hypotheses: list[HypothesisSection] = []
     quantities: dict[str, str] = {}
+    outcomes: list[OutcomeSection] = []
     fit: FitSection = FitSection()
     maximum_likelihood: MaximumLikelihoodSection | None = None
     assignment: AssignmentSection | None = None
@@ -285,6 +303,25 @@ class StudyFile(_Section):
                 raise ValueError(msg)
             if said.weight != 1.0 and not said.rivals:
                 msg = f"[[hypotheses]] gives {said.claim!r} a weight, but no rivals to weigh it by"
+                raise ValueError(msg)
+        return self
+
+    @model_validator(mode="after")
+    def _outcomes_can_be_related(self) -> StudyFile:
+        columns = [said.column for said in self.outcomes]
+        for said in self.outcomes:
+            where = f"[[outcomes]] {said.column!r}"
+            if columns.count(said.column) > 1:
+                msg = f"{where} stands twice; name each column once"
+                raise ValueError(msg)
+            if said.column in self.answers.items:
+                msg = f"{where} is an item of [answers]: it already makes the classes; leave it out"
+                raise ValueError(msg)
+            if not said.ways:
+                msg = f"{where}: ways is empty; leave it out for all three ways"
+                raise ValueError(msg)
+            if said.orders and not isinstance(self.model.classes, list):
+                msg = f"{where}: orders speak of classes by name; name them with [model] classes"
                 raise ValueError(msg)
         return self
 

@@ -19,6 +19,7 @@ from bayeslca.report.sections import (
     fit,
     limits,
     membership,
+    outcomes,
     prevalence,
     prior_predictive,
     reproduce,
@@ -37,6 +38,7 @@ _PLACED = (membership.ANCHOR, membership.HEADING)
 _SAMPLING = (sampling.ANCHOR, sampling.HEADING)
 _DESIGN = (design.ANCHOR, design.HEADING)
 _FIT = (fit.ANCHOR, fit.HEADING)
+_OUTCOMES = (outcomes.ANCHOR, outcomes.HEADING)
 _LIMITS = (limits.ANCHOR, limits.HEADING)
 _REPRODUCE = (reproduce.ANCHOR, reproduce.HEADING)
 
@@ -88,6 +90,8 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     yield _missing(facts)
     yield _unclear(facts)
     yield _separated(facts)
+    if facts.content.outcomes:
+        yield _treated_as_known(facts)
     yield _estimates(facts)
     yield _size(facts)
     yield _software(facts, versions)
@@ -257,6 +261,16 @@ def _separated(facts: Facts) -> Answered:
         f"{counted(facts.placement.n_cases, 'case')} has a probability below 80 %."
     )
     return Answered(question, text, (_PLACED,))
+
+
+def _treated_as_known(facts: Facts) -> Answered:
+    moved = [text for found in facts.content.outcomes if (text := outcomes.moved_in_words(found))]
+    return Answered(
+        "Was the most probable class treated as if it were known?",
+        "No. Outcomes are related to class with the uncertainty of every case's class, by the cut, "
+        f"jointly, or with a correction for the error of placing. {' '.join(moved[:1])}".strip(),
+        (_OUTCOMES,),
+    )
 
 
 def _estimates(facts: Facts) -> Answered:
