@@ -32,6 +32,8 @@ if TYPE_CHECKING:
 CountModel = Literal["poisson", "negative_binomial"]
 WIDE = 2.5
 """Standard deviations of the outcome within which class means lie, about, before the data."""
+WIDE_LOG = 1.5
+"""The same of the log of rates: means of classes lie within a factor of 20 of all cases', about."""
 SIZE_SD = 1.5
 """Of the log of the negative binomial's size around 0: sizes of 0.05 to 19 in 95 %."""
 
@@ -272,7 +274,8 @@ def _form(kind: OutcomeKind, is_adjusted: bool, count_model: CountModel) -> int:
 def _weak_prior(form: int, value: Floats, x: Floats, n_levels: int) -> OutcomePrior:
     mean, variance = float(value.mean()), float(value.var(ddof=1))
     scale = math.sqrt(variance) if form == NORMAL else 1.0
-    slope_sd = np.asarray(WIDE * scale / x.std(axis=0, ddof=1)) if x.shape[1] else np.zeros(0)
+    wide = WIDE_LOG if form in (LOG_POISSON, LOG_NEGATIVE_BINOMIAL) else WIDE
+    slope_sd = np.asarray(wide * scale / x.std(axis=0, ddof=1)) if x.shape[1] else np.zeros(0)
     if form == NORMAL:
         return OutcomePrior((mean, WIDE * scale), (1.0, variance / 4.0), slope_sd=slope_sd)
     if form == CATEGORICAL:
@@ -283,7 +286,7 @@ def _weak_prior(form: int, value: Floats, x: Floats, n_levels: int) -> OutcomePr
         return OutcomePrior((float(logit((value.sum() + 0.5) / (value.size + 1.0))), WIDE),
                             slope_sd=slope_sd)  # fmt: skip
     if form in (LOG_POISSON, LOG_NEGATIVE_BINOMIAL):
-        return OutcomePrior((math.log(mean), WIDE), (0.0, SIZE_SD), slope_sd=slope_sd)
+        return OutcomePrior((math.log(mean), wide), (0.0, SIZE_SD), slope_sd=slope_sd)
     if form == CUMULATIVE:
         counts = np.bincount(value.astype(np.int64), minlength=n_levels) + 0.5
         below = np.cumsum(counts)[:-1] / counts.sum()

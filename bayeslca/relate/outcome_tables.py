@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from itertools import combinations
 from typing import TYPE_CHECKING, Literal
 
@@ -42,7 +42,7 @@ def way_table(
     keys: pd.DataFrame,
     function: Function,
     interval: float,
-    scale: Scale = "identity",
+    scale: Scale | Sequence[Scale] = "identity",
 ) -> pd.DataFrame:
     """Return the summary of some quantities, way by way.
 
@@ -53,6 +53,7 @@ def way_table(
     import pandas as pd
 
     check_interval(interval)
+    scales: Sequence[Scale] = [scale] * len(keys) if isinstance(scale, str) else scale
     parts = []
     for way, drawn in found.drawn.items():
         summary = Quantities(function(found.model, drawn.by_class, drawn.shared)).summary(interval)
@@ -61,7 +62,7 @@ def way_table(
         estimate, error = np.full(len(keys), np.nan), np.full(len(keys), np.nan)
         if steps is not None:
             estimate, error = steps.quantities(function)
-        parts.append(_keyed(way, keys, _normal_summary(estimate, error, interval, scale)))
+        parts.append(_keyed(way, keys, _normal_summary(estimate, error, interval, scales)))
     frame = pd.concat(parts, ignore_index=True)
     frame.attrs["interval"] = interval
     return frame
@@ -74,29 +75,27 @@ def _keyed(way: str, keys: pd.DataFrame, summary: Mapping[str, Floats]) -> pd.Da
 
 
 def _normal_summary(
-    estimate: Floats, error: Floats, interval: float, scale: Scale
+    estimate: Floats, error: Floats, interval: float, scales: Sequence[Scale]
 ) -> dict[str, Floats]:
-    lower, upper = _ends(estimate, float(norm.ppf(0.5 + interval / 2.0)) * error, scale)
+    half = float(norm.ppf(0.5 + interval / 2.0)) * error
+    ends = [_ends(*one) for one in zip(estimate, half, scales, strict=True)]
+    lower, upper = np.array(ends, dtype=np.float64).reshape(-1, 2).T
     nothing = np.full(estimate.size, np.nan)
     values = {"median": estimate, "mean": estimate, "sd": error, "lower": lower, "upper": upper}
     return {name: values.get(name, nothing) for name in SUMMARY_COLUMNS}
 
 
-def _ends(estimate: Floats, half: Floats, scale: Scale) -> tuple[Floats, Floats]:
+def _ends(estimate: float, half: float, scale: Scale) -> tuple[float, float]:
     """Return the ends of an interval, made where the estimate may go anywhere."""
     if scale == "identity":
         return estimate - half, estimate + half
-    with np.errstate(invalid="ignore", divide="ignore"):
-        if scale == "log":
-            inside = estimate > EDGE
-            away = half / estimate
-            lower, upper = estimate * np.exp(-away), estimate * np.exp(away)
-        else:
-            inside = (estimate > EDGE) & (estimate < 1.0 - EDGE)
-            away = half / (estimate * (1.0 - estimate))
-            at = logit(estimate)
-            lower, upper = expit(at - away), expit(at + away)
-    return np.where(inside, lower, np.nan), np.where(inside, upper, np.nan)
+    if not estimate > EDGE or (scale == "logit" and not estimate < 1.0 - EDGE):
+        return np.nan, np.nan
+    if scale == "log":
+        away = half / estimate
+        return estimate * float(np.exp(-away)), estimate * float(np.exp(away))
+    away, at = half / (estimate * (1.0 - estimate)), float(logit(estimate))
+    return float(expit(at - away)), float(expit(at + away))
 
 
 def _scale_of_mean(found: ClassOutcomes) -> Scale:
@@ -203,7 +202,11 @@ def parameters_table(found: ClassOutcomes, interval: float) -> pd.DataFrame:
             parts.insert(0, np.full(by_class.shape[:-1], np.nan))
         return np.concatenate(parts, axis=-1)
 
-    return way_table(found, frame, flat, interval)
+    n_slopes = len(found.covariate_names)
+    of_spread: Scale = "log"
+    of_slope: Scale = "identity"
+    scales = [of_spread] * (len(frame) - n_slopes) + [of_slope] * n_slopes
+    return way_table(found, frame, flat, interval, scales)
 
 
 def order_table(found: ClassOutcomes, text: str) -> pd.DataFrame:

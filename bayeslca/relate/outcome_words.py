@@ -70,8 +70,9 @@ def _about_covariates(found: ClassOutcomes) -> Iterator[Finding]:
         yield Finding(
             kind="covariate_missing",
             level="warning",
-            message=f"{len(names):,} cases have {found.outcome.text} but miss a covariate of "
-            f"{found.adjusted_for!r}. They keep their answers, and say nothing of the outcome.",
+            message=f"{len(names):,} of {len(found.case_names):,} cases have "
+            f"{found.outcome.text} but miss a covariate of {found.adjusted_for!r}: they keep their "
+            "answers, and say nothing of the outcome.",
             remedy="Fill the covariates in, or adjust for fewer.",
             about=names,
             value=float(len(names)),
