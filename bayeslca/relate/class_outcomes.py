@@ -16,7 +16,6 @@ from bayeslca.model.probabilities import membership
 from bayeslca.relate import outcome_tables as tables
 from bayeslca.relate.case_units import CaseUnits, case_units
 from bayeslca.relate.error_matrix import PLACEMENTS, Placement
-from bayeslca.relate.match_labels import refuse_unmatched_groups
 from bayeslca.relate.outcome_checks import distribution, outcome_checks, replicated_outcomes
 from bayeslca.relate.outcome_column import Outcome, OutcomeKind, read_outcome
 from bayeslca.relate.outcome_cut import CUT_DRAWS, cut_draws
@@ -31,6 +30,7 @@ from bayeslca.relate.outcome_three_steps import (
     three_steps,
 )
 from bayeslca.relate.overdispersion import overdispersion
+from bayeslca.relate.same_classes import refuse_classes_apart
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -263,7 +263,7 @@ def class_outcomes(
     if posterior.model.n_classes == 1:
         msg = "the model has one class, so nothing can follow from class. Fit two or more."
         raise ModelError(msg)
-    refuse_unmatched_groups(posterior)
+    refuse_classes_apart(posterior)
     responses = posterior.responses
     outcome = read_outcome(
         responses, data, column, kind, case=case, levels=levels, yes=yes, label=label,

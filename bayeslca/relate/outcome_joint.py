@@ -12,11 +12,11 @@ from bayeslca._typing import Floats, Ints, Seed
 from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.probabilities import class_shares, log_joint, membership
 from bayeslca.relate.case_units import CaseUnits
-from bayeslca.relate.match_labels import LabelMatch
 from bayeslca.relate.outcome_cut import case_of_unit
 from bayeslca.relate.outcome_draws import MOST_FOR_MEMBERSHIP, OutcomeDraws, flattened
 from bayeslca.relate.outcome_model import OutcomeModel
 from bayeslca.relate.outcome_quantities import class_means
+from bayeslca.relate.same_classes import same_classes
 from bayeslca.sampling.joint_draws import JointDraws
 from bayeslca.sampling.outcome_step import BY_CLASS, SHARED, OutcomeGibbs
 from bayeslca.sampling.steps import DirichletStep, SourceStep
@@ -55,7 +55,6 @@ def joint_draws(
     from bayeslca.sampling.joint_gibbs import sample_joint
 
     begin = time.perf_counter()
-    match = LabelMatch(posterior)
     order = case_of_unit(cases)
     share = _shares(posterior, cases)
 
@@ -82,7 +81,7 @@ def joint_draws(
     )
 
     def watch(so_far: JointDraws) -> Mapping[str, Floats]:
-        found = _matched(match, so_far)
+        found = _matched(posterior, so_far)
         means = class_means(outcome, found.by_class, found.shared)
         return {f"mean of class {k + 1}": means[..., k] for k in range(means.shape[-1])}
 
@@ -97,7 +96,7 @@ def joint_draws(
         threads=threads,
         watch=watch,
     )
-    named = _matched(match, drawn)
+    named = _matched(posterior, drawn)
     return OutcomeDraws(
         by_class=named.by_class,
         shared=named.shared,
@@ -116,20 +115,17 @@ def _shares(posterior: Posterior, cases: CaseUnits) -> Floats:
     return membership(posterior.table, cases.units, draws.elements[0, -1], draws.prevalence[0, -1])
 
 
-def _matched(match: LabelMatch, drawn: JointDraws) -> OutcomeDraws:
+def _matched(posterior: Posterior, drawn: JointDraws) -> OutcomeDraws:
     """Return the draws with the measurement model's names of classes."""
-    by_class, elements, prevalence = drawn.parameters[BY_CLASS], drawn.elements, drawn.prevalence
-    if match.is_needed:
-        flat = elements.reshape(-1, elements.shape[-1])
-        flat_prevalence = prevalence.reshape(-1, *prevalence.shape[2:])
-        found = match.permutations(flat, flat_prevalence)
-        flat, flat_prevalence = match.applied(flat, flat_prevalence, found)
-        elements = flat.reshape(elements.shape)
-        prevalence = flat_prevalence.reshape(prevalence.shape)
-        at = found.reshape(*by_class.shape[:3], 1)
-        by_class = np.take_along_axis(by_class, at, axis=2)
-    none = np.zeros((0, by_class.shape[2]))
-    return OutcomeDraws(by_class, drawn.parameters[SHARED], elements, prevalence, none)
+    named = same_classes(posterior, drawn)
+    by_class = named.parameter(BY_CLASS)
+    return OutcomeDraws(
+        by_class,
+        drawn.parameters[SHARED],
+        named.draws.elements,
+        named.draws.prevalence,
+        np.zeros((0, by_class.shape[2])),
+    )
 
 
 def joint_membership(

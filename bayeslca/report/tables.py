@@ -11,8 +11,8 @@ import numpy as np
 from bayeslca.report.columns import column
 from bayeslca.report.priors import priors_table
 from bayeslca.report.sections.likelihood import likelihood_tables
-from bayeslca.report.sections.together import sets_table
 from bayeslca.report.sections.outcomes import outcome_tables
+from bayeslca.report.sections.together import sets_table
 from bayeslca.report.wording import level
 
 if TYPE_CHECKING:

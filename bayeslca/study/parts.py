@@ -76,6 +76,8 @@ def _sample_design(run: Run, content: ReportContent) -> ReportContent:
 
 def _together(run: Run, content: ReportContent) -> ReportContent:
     return with_together(run.study, content, run.progress.say)
+
+
 def _outcomes(run: Run, content: ReportContent) -> ReportContent:
     return with_outcomes(run.study, content, run.progress.say)
 

@@ -51,14 +51,22 @@ def posterior(data: pd.DataFrame) -> lca.Posterior:
     model = lca.LatentClassModel(
         responses.items, CLASSES, statements=["P(i0=yes | kept) > P(i0=yes | left)"]
     )
-    return model.sample(responses, seed=1, progress=False, draws=300, ess=300)
+    return model.sample(responses, seed=1, progress=False, draws=300, ess=300, r_hat=1.05)
 
 
 @pytest.fixture(scope="module")
 def cost(posterior: lca.Posterior, data: pd.DataFrame) -> lca.ClassOutcomes:
     shuffled = data.sample(frac=1.0, random_state=2)
     return lca.class_outcomes(
-        posterior, shuffled, "cost", kind="numeric", seed=3, draws=250, ess=200, held=400
+        posterior,
+        shuffled,
+        "cost",
+        kind="numeric",
+        seed=3,
+        draws=250,
+        ess=200,
+        held=400,
+        max_sweeps=4000,
     )
 
 
@@ -142,7 +150,7 @@ def test_other_kinds(
     posterior: lca.Posterior, data: pd.DataFrame, column: str, kind: str, within: tuple[float, ...]
 ) -> None:
     found = lca.class_outcomes(
-        posterior, data, column, kind=kind, seed=3, draws=100, ess=50, held=200  # type: ignore[arg-type]
+        posterior, data, column, kind=kind, seed=3, draws=100, ess=50, held=200, max_sweeps=1200  # type: ignore[arg-type]
     )  # fmt: skip
     means = found.means()
     for way in ("joint", "cut", "fixed_error_likelihood"):
@@ -164,7 +172,16 @@ def test_same_seed_same_numbers_whatever_the_threads(
 ) -> None:
     one, two = (
         lca.class_outcomes(
-            posterior, data, "paid", kind="binary", seed=5, draws=50, ess=20, held=100, threads=n
+            posterior,
+            data,
+            "paid",
+            kind="binary",
+            seed=5,
+            draws=50,
+            ess=20,
+            held=100,
+            max_sweeps=800,
+            threads=n,
         ).means()
         for n in (1, 2)
     )
@@ -174,7 +191,7 @@ def test_same_seed_same_numbers_whatever_the_threads(
 def test_exploratory_classes_keep_the_measurement_models_names(data: pd.DataFrame) -> None:
     responses = lca.Responses.from_frame(data, items=[f"i{j}" for j in range(5)], case="case")
     posterior = lca.LatentClassModel(responses.items, 2).sample(
-        responses, seed=1, progress=False, draws=200, ess=100
+        responses, seed=1, progress=False, draws=200, ess=100, r_hat=1.1
     )
     # The other names: class 1 is what was class 2.
     flipped = posterior.relabelled.draws
@@ -188,7 +205,16 @@ def test_exploratory_classes_keep_the_measurement_models_names(data: pd.DataFram
     )
     means = [
         lca.class_outcomes(
-            one, data, "cost", kind="numeric", ways=["joint"], seed=2, draws=100, ess=50, held=100
+            one,
+            data,
+            "cost",
+            kind="numeric",
+            ways=["joint"],
+            seed=2,
+            draws=100,
+            ess=50,
+            held=100,
+            max_sweeps=1200,
         )
         .means()
         .query("way == 'joint'")["mean"]
@@ -210,7 +236,7 @@ def test_what_cannot_be_asked(posterior: lca.Posterior, data: pd.DataFrame) -> N
     with pytest.raises(ModelError, match="corrections: there is no 'none'"):
         ask(corrections=["none"])
     one_class = lca.LatentClassModel(posterior.model.items, 1).sample(
-        posterior.responses, seed=1, progress=False, draws=50, ess=20
+        posterior.responses, seed=1, progress=False, draws=50, ess=20, r_hat=1.1
     )
     with pytest.raises(ModelError, match="one class"):
         lca.class_outcomes(one_class, data, "cost", kind="numeric")
@@ -222,7 +248,7 @@ def test_few_cases_in_a_class_are_named() -> None:
     responses = lca.Responses.from_frame(frame, items=[f"i{j}" for j in range(5)], case="case")
     posterior = lca.LatentClassModel(
         responses.items, CLASSES, statements=["P(i0=yes | kept) > P(i0=yes | left)"]
-    ).sample(responses, seed=1, progress=False, draws=100, ess=50)
+    ).sample(responses, seed=1, progress=False, draws=100, ess=50, r_hat=1.1)
     found = lca.class_outcomes(
         posterior, frame, "cost", kind="numeric", ways=["cut"], seed=1, held=100
     )
