@@ -16,8 +16,8 @@ from bayeslca.responses.responses import Responses
 from bayeslca.study.claims import check_theory
 from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
-from bayeslca.study.unit_comparison import unit_models
 from bayeslca.study.outcomes import check_outcomes
+from bayeslca.study.unit_comparison import unit_models
 
 WIDTH = 79
 _REFUSED = ("What `run` will do", "- refuse to sample until what is marked !! is put right")
