@@ -74,15 +74,20 @@ class Quantity:
     def __repr__(self) -> str:
         level = f"{100 * self.interval:g} %"
         known = (
-            f"{self.text} is {self.median:.3g} "
-            f"({level} interval {self.lower:.3g} to {self.upper:.3g})"
+            f"{self.text} is {_digits(self.median)} "
+            f"({level} interval {_digits(self.lower)} to {_digits(self.upper)})"
         )
         if np.isnan(self.prior_median):
             return f"{known}."
         return (
-            f"{known}; before the data it was {self.prior_median:.3g} "
-            f"({self.prior_lower:.3g} to {self.prior_upper:.3g})."
+            f"{known}; before the data it was {_digits(self.prior_median)} "
+            f"({_digits(self.prior_lower)} to {_digits(self.prior_upper)})."
         )
+
+
+def _digits(value: float) -> str:
+    """Return a number with three digits; one that is nearly 0 as 0.0000, without an exponent."""
+    return f"{value:.4f}" if 0 < abs(value) < 1e-3 else f"{value:.3g}"
 
 
 def posterior_parameters(posterior: Posterior) -> ParameterDraws:

@@ -77,7 +77,12 @@ def _outcome(claim: Claim) -> str:
 
 
 def _verdict(test: HypothesisTest) -> str:
-    grade = test.grade
+    """Say where the claim stands: the evidence may favour what is still improbable."""
+    grade, after = test.grade, test.posterior_probability
+    if grade.endswith("for it") and after < 0.5:
+        return f"is more probable than it was ({grade.removesuffix(' for it')}), yet improbable"
+    if grade.endswith("against it") and after > 0.5:
+        return f"is less probable than it was ({grade.removesuffix(' against it')}), yet probable"
     if grade.endswith("for it"):
         return f"is supported, with {grade.removesuffix(' for it')}"
     if grade.endswith("against it"):

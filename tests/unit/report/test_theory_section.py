@@ -96,6 +96,11 @@ def test_rivals_and_quantities_have_their_tables(section: Section) -> None:
     ("test", "said"),
     [
         (made_test(-4.0, after=0.1), "is contradicted, with strong evidence against it"),
+        (
+            made_test(2.0, after=0.31),
+            "more probable than it was (positive evidence), yet improbable",
+        ),
+        (made_test(-2.0, after=0.8), "less probable than it was (positive evidence), yet probable"),
         (made_test(0.5), "is neither supported nor contradicted"),
         (made_test(6.0, bound="above"), "(Bayes factor above 403 against its opposite)"),
         (made_test(-6.0, bound="below"), "(Bayes factor below 0.00248 against its opposite)"),
