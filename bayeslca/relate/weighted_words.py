@@ -40,8 +40,8 @@ def as_terminal_text(posterior: WeightedPosterior) -> str:
 
 
 def posterior_in_words(posterior: WeightedPosterior, interval: float = 0.95) -> str:
-    """Say which prevalences the design moves, in a sentence or two."""
-    frame = posterior.beside_unweighted(interval)
+    """Say which prevalences the design moves, all groups together, in a sentence or two."""
+    frame = posterior.beside_unweighted(interval).tail(posterior.unweighted.model.n_classes)
     moved = frame[frame["differs"]]
     if not posterior.design.is_weighted:
         widest = frame["design_effect"].max()
@@ -67,10 +67,4 @@ def posterior_in_words(posterior: WeightedPosterior, interval: float = 0.95) -> 
 def _both(row: Mapping[Any, Any]) -> str:
     name = str(row["latent_class"])
     name = f"class {name}" if name.isdigit() else name
-    return (
-        f"{name}{_in_group(row)} {row['weighted']:.0%} weighted, {row['unweighted']:.0%} unweighted"
-    )
-
-
-def _in_group(row: Mapping[Any, Any]) -> str:
-    return f" ({row['group']})" if "group" in row else ""
+    return f"{name} {row['weighted']:.0%} weighted, {row['unweighted']:.0%} unweighted"

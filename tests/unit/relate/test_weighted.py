@@ -67,19 +67,23 @@ def test_separate_classes_are_a_weighted_proportion_with_its_textbook_error() ->
     assert row["design_effect"] == pytest.approx(error**2 / (mean * (1 - mean) / 400), rel=1e-4)
 
 
-def test_pooled_draws_have_the_textbook_error_too() -> None:
+@pytest.mark.parametrize("roles", [DESIGN, {"weight": "w"}], ids=["all", "weights alone"])
+def test_pooled_draws_have_the_textbook_error_too(roles: dict[str, str]) -> None:
     frame, member = clustered(1.0)
-    responses, model = fitted(frame, **DESIGN)
+    responses, model = fitted(frame, **roles)
+    df = 36
+    if roles == {"weight": "w"}:  # cases are their own clusters, in one stratum
+        frame, df = frame.assign(c=range(400), s=0), 399
     mean, error = linearised(member.astype(float), frame)
     n = 400
     found = sample_weighted(model, responses, pseudo_samples=n, seed=2, progress=False)
     row = found.prevalence().iloc[0]
     near = mean + (0.5 - mean) * 2 / 402  # the uniform prior adds a case to each class
     assert abs(row["mean"] - near) < 4 * row["mcse"]
-    # Between pseudo-samples Student's t with 36 degrees of freedom: their variance is larger by
-    # 36/34. The standard deviation of n is known to 1/sqrt(2 (n - 1)), a little more for t.
+    # Between pseudo-samples Student's t with clusters less strata for its degrees of freedom. The
+    # standard deviation of n is known to 1/sqrt(2 (n - 1)), a little more for t.
     within = (mean * (1 - mean) / 402) ** 0.5
-    expected = (within**2 + (error**2 - within**2) * 36 / 34) ** 0.5
+    expected = (within**2 + (error**2 - within**2) * df / (df - 2)) ** 0.5
     assert row["sd"] == pytest.approx(expected, rel=4 * 1.1 / (2 * (n - 1)) ** 0.5)
     assert row["design_effect"] == pytest.approx(row["sd"] ** 2 / within**2, rel=0.05)
 
