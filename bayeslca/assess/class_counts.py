@@ -10,7 +10,7 @@ import numpy as np
 
 from bayeslca._typing import Floats, Seed
 from bayeslca.assess.class_count_words import evidence_in_words
-from bayeslca.assess.evidence import Evidence, log_evidence_of_counts, probabilities
+from bayeslca.assess.evidence import Evidence, Tell, log_evidence_of_counts, probabilities
 from bayeslca.assess.join import Joined
 from bayeslca.exceptions import ModelError
 
@@ -65,6 +65,7 @@ def class_counts(
     *,
     prior: PriorOnCount | None = None,
     seed: Seed = None,
+    tell: Tell | None = None,
 ) -> ClassCounts:
     """Return how probable each number of classes is, given the answers.
 
@@ -76,6 +77,8 @@ def class_counts(
         Prior weight of each number; all equal when left out. Weights need not sum to 1.
     seed : int, numpy.random.Generator, numpy.random.SeedSequence or None
         Of the evidences; by default it follows from the posteriors' seeds.
+    tell : callable, optional
+        Told how much, 0 to 1, is done.
 
     Raises
     ------
@@ -84,7 +87,7 @@ def class_counts(
     """
     counts = sorted(posteriors)
     weights = checked_prior(prior, counts)
-    evidence, joined = log_evidence_of_counts(posteriors, seed=seed)
+    evidence, joined = log_evidence_of_counts(posteriors, seed=seed, tell=tell)
     table, covariance = _table(counts, weights, evidence, joined)
     stated = any(one.model.stated.priors for one in posteriors.values())
     verdict = evidence_in_words(table, is_uniform=prior is None, stated=stated)

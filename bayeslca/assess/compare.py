@@ -3,51 +3,23 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any, TypeAlias
+from typing import Any
 
 import numpy as np
 
 from bayeslca._typing import Seed
 from bayeslca.assess.class_counts import PriorOnCount, checked_prior
 from bayeslca.assess.comparison import Comparison, comparison_of
+from bayeslca.assess.comparison_progress import ComparisonMeter, FitProgress, Show, shown
 from bayeslca.assess.comparison_words import OWN, Name
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses
 
-if TYPE_CHECKING:
-    from bayeslca.sampling.progress import Progress
-
 __all__ = ["Comparison", "FitProgress", "class_count_model", "compare", "compare_class_counts"]
-
-
-@dataclass(frozen=True, slots=True)
-class FitProgress:
-    """How far the fits of a comparison have come.
-
-    Attributes
-    ----------
-    name : int or str
-        The row that is being fitted.
-    fit, fits : int
-        Which fit it is, and of how many.
-    sampling : Progress
-    refitting : bool
-        True when the row is fitted and patterns (or folds) of it are refitted: ``sampling``
-        counts the sweeps of all its refits.
-    """
-
-    name: Name
-    fit: int
-    fits: int
-    sampling: Progress
-    refitting: bool = False
-
-
-Show: TypeAlias = Callable[[FitProgress], None]
 
 
 def class_count_model(
@@ -128,7 +100,8 @@ def compare_class_counts(
     folds : int
         Compare by so many folds of cases as well (10 is usual); 0 for none.
     progress : bool or callable
-        True shows a bar per fit on a terminal; a callable is given a `FitProgress`.
+        True shows one bar on a terminal, over all fits, refits and evidences; a callable is given
+        a `FitProgress`.
     **sampling
         Options of ``model.sample``: chains, draws, ess, r_hat, max_sweeps, sampler, threads.
     """
@@ -218,35 +191,40 @@ def _compared(
 ) -> Comparison:
     given = {name: e.responses for name, e in entries.items() if isinstance(e, Posterior)}
     _refuse_different_answers(given, how.responses)
-    names = list(entries)
-
-    def refits(name: Name) -> bool | Callable[[Progress], None]:
-        if not callable(how.progress):
-            return how.progress
-        return _one_fit(how.progress, name, names.index(name) + 1, len(names), refitting=True)
-
-    return comparison_of(
-        _fitted(entries, how), index, prior, exact=how.exact, folds=how.folds, progress=refits
-    )
+    classes = {
+        name: (entry.model if isinstance(entry, Posterior) else entry).n_classes
+        for name, entry in entries.items()
+    }
+    to_fit = {n: classes[n] for n, entry in entries.items() if isinstance(entry, LatentClassModel)}
+    with shown(how.progress) as show:
+        meter = ComparisonMeter(show, to_fit, classes)
+        return comparison_of(
+            _fitted(entries, how, meter),
+            index,
+            prior,
+            exact=how.exact,
+            folds=how.folds,
+            progress=meter.of_refits,
+            tell=meter.of_evidence,
+        )
 
 
 def _fitted(
-    entries: Mapping[Name, LatentClassModel | Posterior], how: _Fitting
+    entries: Mapping[Name, LatentClassModel | Posterior], how: _Fitting, meter: ComparisonMeter
 ) -> dict[Name, Posterior]:
     """Sample what is not fitted yet, each with a seed of its own."""
     entropy = _entropy(how.seed)
-    to_fit = [name for name, entry in entries.items() if isinstance(entry, LatentClassModel)]
     posteriors: dict[Name, Posterior] = {}
     for name, entry in entries.items():
         if isinstance(entry, Posterior):
             posteriors[name] = entry
             continue
         assert how.responses is not None  # refused before
-        show: Any = how.progress
-        if callable(show):
-            show = _one_fit(show, name, to_fit.index(name) + 1, len(to_fit))
         posteriors[name] = entry.sample(
-            how.responses, seed=seed_of_row(entropy, name), progress=show, **how.sampling
+            how.responses,
+            seed=seed_of_row(entropy, name),
+            progress=meter.of_fit(name),
+            **how.sampling,
         )
     return posteriors
 
@@ -265,12 +243,6 @@ def _entropy(seed: Seed) -> int | Sequence[int]:
         return [int(part) for part in seed.integers(2**63, size=4)]
     sequence = seed if isinstance(seed, np.random.SeedSequence) else np.random.SeedSequence(seed)
     return [int(part) for part in sequence.generate_state(4)]
-
-
-def _one_fit(
-    show: Show, name: Name, fit: int, fits: int, *, refitting: bool = False
-) -> Callable[[Progress], None]:
-    return lambda sampling: show(FitProgress(name, fit, fits, sampling, refitting))
 
 
 def _checked_counts(counts: Iterable[int]) -> list[int]:

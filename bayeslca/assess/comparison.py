@@ -17,7 +17,7 @@ from bayeslca.assess.comparison_words import (
     row_in_words,
     verdict_in_words,
 )
-from bayeslca.assess.evidence import Evidence, log_evidence
+from bayeslca.assess.evidence import Evidence, Tell, log_evidence
 from bayeslca.assess.exact_loo import left_out
 from bayeslca.assess.fold_comparison import FoldComparison, compared_by_folds
 from bayeslca.assess.folds import model_unit
@@ -135,6 +135,7 @@ def comparison_of(
     exact: bool | None = None,
     folds: int = 0,
     progress: Callable[[Name], bool | Show] = lambda name: False,
+    tell: Tell | None = None,
 ) -> Comparison:
     """Compare fitted models of the same answers.
 
@@ -151,13 +152,15 @@ def comparison_of(
         0: no K-fold.
     progress : callable
         Given a row's name, returns who is told how far its refits are.
+    tell : callable, optional
+        Told how much of the evidences, 0 to 1, is done.
     """
     loo, widely, missing = {}, {}, {}
     for name, posterior in posteriors.items():
         loo[name], widely[name], missing[name] = _criteria(posterior, exact, progress(name))
     best = max(loo, key=lambda name: loo[name].elpd)
     by_count = {name: one for name, one in posteriors.items() if isinstance(name, int)}
-    counts = class_counts(by_count, prior=prior) if by_count else None
+    counts = class_counts(by_count, prior=prior, tell=tell) if by_count else None
     joined = {} if counts is None else counts.evidence
     evidence: dict[Name, Evidence] = {
         name: joined[name] if isinstance(name, int) else log_evidence(posterior)

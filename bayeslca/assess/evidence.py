@@ -11,7 +11,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import partial
 from itertools import pairwise
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, TypeAlias
 
 import numpy as np
 
@@ -39,6 +39,9 @@ WANTED_ERROR = 0.15
 """Bridges take larger proposals until the joined error is below this."""
 WORTH_IT = 0.8
 """A still larger proposal is tried where the last one took the error down to this share of it."""
+PHASES = ((0.0, 0.5), (0.6, 0.8), (0.8, 1.0))
+"""Where the rounds of weighing begin and end in the whole; the ladder lies after the first."""
+Tell: TypeAlias = Callable[[float], None]
 GUARD_ERRORS = 4.0
 """Standard errors by which a guarding estimate may differ."""
 
@@ -99,7 +102,7 @@ def log_evidence(posterior: Posterior, *, seed: Seed = None) -> Evidence:
 
 
 def log_evidence_of_counts(
-    posteriors: Mapping[int, Posterior], *, seed: Seed = None
+    posteriors: Mapping[int, Posterior], *, seed: Seed = None, tell: Tell | None = None
 ) -> tuple[dict[int, Evidence], Joined]:
     """Return the log evidence of models with different numbers of classes, joined.
 
@@ -108,6 +111,8 @@ def log_evidence_of_counts(
     posteriors : mapping from int to Posterior
         Of the same answers, under the same priors.
     seed : int, numpy.random.Generator, numpy.random.SeedSequence or None
+    tell : callable, optional
+        Told how much, 0 to 1, is done.
 
     Returns
     -------
@@ -117,13 +122,14 @@ def log_evidence_of_counts(
     """
     rng = _generator(next(iter(posteriors.values())), seed)
     neighbours = [(a, b) for a, b in pairwise(sorted(posteriors)) if b == a + 1]
-    return _evidences(dict(sorted(posteriors.items())), neighbours, rng)
+    return _evidences(dict(sorted(posteriors.items())), neighbours, rng, tell)
 
 
 def _evidences(
     posteriors: Mapping[int, Posterior],
     neighbours: Sequence[tuple[int, int]],
     rng: np.random.Generator,
+    tell: Tell | None = None,
 ) -> tuple[dict[int, Evidence], Joined]:
     streams = dict(zip(posteriors, rng.spawn(len(posteriors)), strict=True))
     modes: dict[int, tuple[ModeEvidence, ...]] = {}
@@ -135,18 +141,20 @@ def _evidences(
         except ModelError as error:
             refused[k] = str(error)
 
-    _on_threads(weigh, list(posteriors))
+    _on_threads(weigh, list(posteriors), tell, PHASES[0])
     estimates = {k: summed(modes[k]) if k in modes else () for k in posteriors}
     steps = _steps(posteriors, neighbours, rng)
     joined = _joined(estimates, steps)
     vague = _too_vague(estimates, joined)
     for size in range(1, len(SIZES)):
         before = {k: estimates[k][0].mcse for k in vague}
-        _on_threads(partial(weigh, size=size), vague)
+        _on_threads(partial(weigh, size=size), vague, tell, PHASES[size])
         estimates |= {k: summed(modes[k]) for k in vague}
         joined = _joined(estimates, steps)
         helped = {k for k in vague if estimates[k][0].mcse < WORTH_IT * before[k]}
         vague = [k for k in _too_vague(estimates, joined) if k in helped]
+    if tell is not None:
+        tell(1.0)
     found = {
         k: _judged(k, posterior, estimates[k], steps, joined, refused.get(k, ""))
         for k, posterior in posteriors.items()
@@ -157,10 +165,26 @@ def _evidences(
     return found, joined
 
 
-def _on_threads(work: Callable[[int], None], counts: Sequence[int]) -> None:
+def _on_threads(
+    work: Callable[[int], None],
+    counts: Sequence[int],
+    tell: Tell | None,
+    phase: tuple[float, float],
+) -> None:
     """Do the work for every count: most of it lets other threads run."""
-    stop = threading.Event()
-    on_threads(work, counts, threads=default_threads(), stop=stop)
+    stop, done = threading.Event(), []  # appending is atomic
+
+    def counted(k: int) -> None:
+        work(k)
+        done.append(k)
+
+    def look() -> None:
+        if tell is not None:
+            first, last = phase
+            tell(first + (last - first) * sum(done) / max(sum(counts), 1))
+
+    on_threads(counted, counts, threads=default_threads(), stop=stop, look=look)
+    look()
 
 
 def _steps(

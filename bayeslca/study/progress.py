@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import math
 import sys
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
+from bayeslca.assess.comparison_progress import left_in_words
 from bayeslca.sampling.progress import Progress, in_words
 
 if TYPE_CHECKING:
-    from bayeslca.assess.compare import FitProgress
+    from bayeslca.assess.comparison_progress import FitProgress
 
 Tell = Callable[[str, float, str], None]
 """Takes what is done now, how much of the whole is done (0 to 1), and figures."""
@@ -33,6 +35,7 @@ class JobProgress:
     tell: Tell
     fits: int
     done: int = 0
+    _before_comparison: int | None = None
 
     def of_model(self, name: str) -> Callable[[Progress], None]:
         """Return what takes note of how far a model is."""
@@ -42,11 +45,24 @@ class JobProgress:
         """Take note of how far the comparison of class counts is."""
         name = "1 class" if fit.name == 1 else f"{fit.name} classes"
         name = name if isinstance(fit.name, int) else str(fit.name)
-        if fit.refitting:
-            self.tell(f"Refits of {name}", 1.0, in_words(fit.sampling))
-            return
-        self.done = max(self.done, self.fits - fit.fits + fit.fit - 1)
-        self._show(name, fit.sampling)
+        before = self._before(fit)
+        if fit.weighing or fit.refitting:
+            what = "Weighing the evidence" if fit.weighing else f"Refits of {name}"
+        else:
+            self.done = max(self.done, before + fit.fit - 1)
+            what = f"Fit {min(self.done + 1, self.fits)} of {self.fits}, {name}"
+        figures = [left_in_words(fit)]
+        if fit.sampling is not None:  # the time left is that of the whole, not of the fit
+            figures.insert(0, in_words(replace(fit.sampling, seconds_left=math.nan)))
+        share = (before + fit.share * (self.fits - before)) / max(self.fits, 1)
+        self.tell(what, min(share, 1.0), ", ".join(part for part in figures if part))
+
+    def _before(self, fit: FitProgress) -> int:
+        """Return the fits that were done before the comparison began."""
+        if self._before_comparison is None:
+            fitting = not (fit.weighing or fit.refitting)
+            self._before_comparison = self.fits - fit.fits if fitting else self.done
+        return self._before_comparison
 
     def finished(self, fits: int) -> None:
         """Count fits that are finished, or were kept from the run before."""

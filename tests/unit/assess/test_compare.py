@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import replace
 from functools import cache
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -150,7 +151,13 @@ def test_progress_tells_which_fit_is_running() -> None:
     seen: list[FitProgress] = []
     compare_class_counts(responses(), [1, 2], seed=7, **{**QUICK, "progress": seen.append})
     assert {(one.name, one.fit, one.fits) for one in seen} == {(1, 1, 2), (2, 2, 2)}
-    assert all(one.sampling.seconds >= 0 for one in seen)
+    assert all(one.weighing or one.sampling.seconds >= 0 for one in seen)
+    shares = [one.share for one in seen]
+    assert all(b >= a for a, b in pairwise(shares))  # the evidences are part of the whole
+    assert shares[-1] == pytest.approx(1.0)
+    assert seen[-1].weighing
+    assert seen[-1].seconds_left == pytest.approx(0.0, abs=1e-6)
+    assert all(one.seconds_left >= 0 for one in seen if one.share > 0.05)
 
 
 def test_interrupting_keeps_nothing() -> None:
