@@ -14,6 +14,7 @@ from bayeslca.assess.class_counts import PriorOnCount, checked_prior
 from bayeslca.assess.comparison import Comparison, comparison_of
 from bayeslca.assess.comparison_progress import ComparisonMeter, FitProgress, Show, shown
 from bayeslca.assess.comparison_words import OWN, Name
+from bayeslca.assess.folds import refuse_folds
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
@@ -191,6 +192,8 @@ def _compared(
 ) -> Comparison:
     given = {name: e.responses for name, e in entries.items() if isinstance(e, Posterior)}
     _refuse_different_answers(given, how.responses)
+    if how.folds:
+        refuse_folds((how.responses or next(iter(given.values()))).units, how.folds)
     classes = {
         name: (entry.model if isinstance(entry, Posterior) else entry).n_classes
         for name, entry in entries.items()

@@ -22,6 +22,7 @@ from bayeslca.assess.exact_loo import left_out
 from bayeslca.assess.fold_comparison import FoldComparison, compared_by_folds
 from bayeslca.assess.folds import model_unit
 from bayeslca.assess.information_criteria import PointwiseElpd, difference, waic
+from bayeslca.assess.refits import why_no_refit
 from bayeslca.assess.stacking import stacking_weights
 from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
@@ -200,6 +201,7 @@ def _criteria(
 
     And why patterns that should have been refitted were not.
     """
+    exact = None if exact and why_no_refit(posterior) else exact  # then said where it matters
     found = left_out(posterior, exact, None, None, progress, None)
     widely = waic(posterior.log_likelihood_draws, posterior.unit_table.count)
     of_unit, fine = model_unit(posterior), posterior.responses.units.count

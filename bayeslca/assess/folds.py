@@ -116,12 +116,7 @@ def k_fold(
         On Ctrl-C, when all refits have stopped.
     """
     units = posterior.responses.units
-    if not 2 <= folds <= units.n_cases:
-        msg = (
-            f"folds={folds} for {units.n_cases} cases. Give a number from 2 to the number of "
-            "cases; 10 is usual."
-        )
-        raise ModelError(msg)
+    refuse_folds(units, folds)
     root = seed if seed is not None else posterior.draws.seed or 0
     counts = fold_counts(units, folds, root)
     meaning = (
@@ -181,6 +176,16 @@ def leave_one_group_out(
     names = [responses.groups.levels[int(g)] for g in present]
     root = seed if seed is not None else posterior.draws.seed or 0
     return _left_out(posterior, "group", names, counts, meaning, GROUP, root, threads, progress)
+
+
+def refuse_folds(units: Units, folds: int) -> None:
+    """Refuse a number of folds that the cases cannot be dealt out to."""
+    if not 2 <= folds <= units.n_cases:
+        msg = (
+            f"folds={folds} for {units.n_cases} cases. Give a number from 2 to the number of "
+            "cases; 10 is usual."
+        )
+        raise ModelError(msg)
 
 
 def fold_counts(units: Units, folds: int, seed: int) -> Ints:

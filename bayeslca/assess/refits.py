@@ -44,12 +44,14 @@ LEAST_SWEEPS = 10_000
 PRECISION = 0.05
 """Monte Carlo error, in nats of the sum over the cases left out, at which a refit ends."""
 LEAST_ESS = 200.0
+SUMMARY_ESS = 400.0
+"""Of each quantity that is asked for besides: an error of a twentieth of its spread."""
 FEWEST_ESS = 50.0
 """With a smaller effective sample size, or a larger R-hat than the next, a refit does not count."""
 R_HAT, WORST_R_HAT = 1.02, 1.05
 
 Summarise: TypeAlias = Callable[[Floats, Floats], Floats]
-"""Makes a summary of the refit's elements (chain, draw, E) and prevalences (.., groups, K)."""
+"""Makes quantities (chain, draw, ...) of a refit's elements (chain, draw, E) and prevalences."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -99,7 +101,7 @@ class Refit:
     given : ndarray of float64, shape (chain, draw), or None
         What each draw of the posterior of all cases adds to ``log_density``, to first order;
         None where these draws were not used.
-    summary : ndarray or None
+    summary : ndarray of float64, shape (chain, draw, ...), or None
         What was asked for besides.
     """
 
@@ -146,7 +148,7 @@ def refit_without(
     progress : bool or callable
         True shows a bar on a terminal; a callable is given a `Progress` ten times a second.
     summarise : callable, optional
-        Makes ``summary`` of each refit.
+        Makes ``summary`` of each refit; it is made precise as well.
 
     Returns
     -------
@@ -235,8 +237,9 @@ class _Run:
         while True:
             found = self._look(stacked(kept), emptied, warmup + thin * DRAWS)
             precise = found.total_mcse <= PRECISION and found.ess >= LEAST_ESS
-            if (precise and found.r_hat <= R_HAT) or warmup + 2 * thin * DRAWS > limit:
-                return self._summarised(found, kept)
+            precise = precise and found.r_hat <= R_HAT and _is_precise(found.summary)
+            if precise or warmup + 2 * thin * DRAWS > limit:
+                return found
             thin *= 2
             newer = DRAWS - DRAWS // 2
             self.meter.plan(newer * thin * len(chains))
@@ -244,12 +247,6 @@ class _Run:
                 thinned(older, chain.run(newer, thin, self.stop, self.meter.add))
                 for older, chain in zip(kept, chains, strict=True)
             ]
-
-    def _summarised(self, found: Refit, kept: list[Kept]) -> Refit:
-        if self.summarise is None:
-            return found
-        together = stacked(kept)
-        return replace(found, summary=self.summarise(together.elements, together.prevalence))
 
     def _without(self) -> Task:
         """Return the task without the cases that are left out."""
@@ -308,7 +305,19 @@ class _Run:
             sweeps=sweeps,
             settled=bool(settled and ess >= FEWEST_ESS and r_hat <= WORST_R_HAT),
             given=given,
+            summary=self.summarise(kept.elements, kept.prevalence) if self.summarise else None,
         )
+
+
+def _is_precise(summary: Floats | None) -> bool:
+    """Tell whether the means of all quantities asked for (chain, draw, ...) are precise."""
+    from arviz_stats.base import array_stats
+
+    if summary is None:
+        return True
+    flat = summary.reshape(*summary.shape[:2], -1)
+    moving = [flat[..., i] for i in range(flat.shape[-1]) if np.ptp(flat[..., i]) > 1e-12]
+    return all(float(array_stats.ess(one, method="mean")) >= SUMMARY_ESS for one in moving)
 
 
 def _densities(log_p: Floats, given: Floats | None) -> tuple[Floats, Floats, Floats | None, bool]:

@@ -27,6 +27,7 @@ from bayeslca.posterior.versions import versions_now
 from bayeslca.responses.responses import Responses
 from bayeslca.responses.units import Units
 from bayeslca.sampling.draws import Draws
+from bayeslca.sampling.progress import Progress
 from bayeslca.sampling.relabel import Relabelled
 
 if TYPE_CHECKING:
@@ -36,6 +37,7 @@ if TYPE_CHECKING:
     from bayeslca.assess.co_membership import CoMembership
     from bayeslca.assess.convergence import Diagnostics
     from bayeslca.assess.hypotheses import HypothesisTest
+    from bayeslca.assess.influence import Influence
     from bayeslca.assess.leave_one_unit_out import LeaveOneUnitOut
     from bayeslca.assess.predictive_checks import PredictiveChecks
     from bayeslca.assess.prior_sensitivity import PriorSensitivity
@@ -434,6 +436,31 @@ class Posterior:
         from bayeslca.assess.co_membership import co_membership
 
         return co_membership(self, seed=seed)
+
+    def influence(
+        self,
+        *,
+        exact: bool | None = None,
+        seed: int | None = None,
+        threads: int | None = None,
+        progress: bool | Callable[[Progress], None] = True,
+    ) -> Influence:
+        """Find the cases that stand out: improbable answers, and those that much rests on.
+
+        Parameters
+        ----------
+        exact : bool, optional
+            True refits every distinct pattern without one of its cases, False none; left out,
+            those whose importance weights are poor, at most 12.
+        seed : int, optional
+            Of refits and replicates; that of the fit when left out.
+        threads : int, optional
+        progress : bool or callable
+            Of the refits.
+        """
+        from bayeslca.assess.influence import influence
+
+        return influence(self, exact=exact, seed=seed, threads=threads, progress=progress)
 
     def diagnostics(self) -> Diagnostics:
         """Return whether the sampling is to be trusted: findings, a table, and a verdict."""

@@ -103,6 +103,28 @@ COLUMNS: dict[str, Column] = {
     "pareto_k_high": Column(
         "Unreliable cases", "cases whose leave-one-out figure is not reliable (k too high)", "count"
     ),
+    "refitted": Column(
+        "Refitted", "patterns that were refitted without one of their cases", "count"
+    ),
+    "reliable": Column("Reliable", "whether the refits were precise enough", "flag"),
+    "rows": Column("Rows", "of the data, from 1, with these answers", "text"),
+    "log_density": Column(
+        "Log probability", "of the answers of one such case, given all other cases", "number"
+    ),
+    "log_density_mcse": Column(
+        "Simulation error of it", "Monte Carlo error; empty where it was not refitted", "number"
+    ),
+    "p_new_case": Column(
+        "p",
+        "probability that a new case of the group that answered the same items is as improbable",
+        "share",
+    ),
+    "p_replicate": Column(
+        "Replicates", "share of replicates of the data that hold a case as improbable", "share"
+    ),
+    "pareto_k": Column("Pareto k", "of importance weights; above 0.7 they are poor", "number"),
+    "largest": Column("Largest change", "of a prevalence, in its posterior sd", "number"),
+    "largest_mcse": Column("Simulation error of it", "Monte Carlo error", "number"),
     "waic": Column(
         "WAIC", "accuracy by the widely applicable criterion, on the same scale", "number"
     ),
@@ -313,7 +335,16 @@ COLUMNS: dict[str, Column] = {
     "meaning": Column("Meaning", "what the column holds", "text"),
 }
 
+BY_CLASS = {
+    "change_": ("Change of", "prevalence without one such case less that with all, in points"),
+    "sd_": ("Change in sd of", "the same in posterior standard deviations"),
+}
+"""Columns of which each class has one, by how their names start."""
+
 
 def column(name: str) -> Column:
     """Return what a column means; a column that nobody described is called by its name."""
+    for start, (words, gloss) in BY_CLASS.items():
+        if name.startswith(start) and name not in COLUMNS:
+            return Column(f"{words} {name.removeprefix(start)}", gloss, "number")
     return COLUMNS.get(name, Column(name.replace("_", " "), "", "text"))

@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from bayeslca.assess.compare import Comparison
     from bayeslca.assess.criteria_beside import CriteriaBeside
     from bayeslca.assess.hypotheses import HypothesisTest
+    from bayeslca.assess.influence import Influence
     from bayeslca.assess.likelihood_ratio import LikelihoodRatioTest
     from bayeslca.assess.predictive_checks import PredictiveChecks
     from bayeslca.assess.rivals import Rivals
@@ -114,6 +115,8 @@ class ReportContent:
         Whether the model reproduces the answers; None when not checked.
     checks_by_count : mapping of int to PredictiveChecks
         The same of the models of ``comparison``.
+    influence : Influence or None
+        Cases that stand out, and what rests on each; None when not asked for.
     criteria : CriteriaBeside or None
         Maximum likelihood of the models of ``comparison`` (of the one model, where there is no
         comparison); None when not asked for.
@@ -173,6 +176,7 @@ class ReportContent:
     quantities: pd.DataFrame | None = None
     checks: PredictiveChecks | None = None
     checks_by_count: Mapping[int, PredictiveChecks] = field(default_factory=dict)
+    influence: Influence | None = None
     criteria: CriteriaBeside | None = None
     one_class_fewer: tuple[LikelihoodRatioTest, ...] = ()
     placing_rule: PlacingRule | None = None

@@ -10,6 +10,8 @@ import numpy as np
 
 from bayeslca.report.columns import column
 from bayeslca.report.priors import priors_table
+from bayeslca.report.sections.influence import influence_tables
+from bayeslca.report.sections.left_out import fold_tables
 from bayeslca.report.sections.likelihood import likelihood_tables
 from bayeslca.report.sections.outcomes import outcome_tables
 from bayeslca.report.sections.together import sets_table
@@ -116,6 +118,8 @@ def file_tables(
             "How well models predict a unit that they have not seen",
             content.units.table,
         )
+    named |= fold_tables(content)
+    named |= influence_tables(content)
     if content.claims:
         named["hypotheses"] = ("What became of the study's hypotheses", hypotheses_table(content))
     for name, rivals in content.rivals.items():

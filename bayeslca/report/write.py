@@ -18,6 +18,7 @@ from bayeslca.report.sections.classes import classes_section
 from bayeslca.report.sections.design import design_section, marked
 from bayeslca.report.sections.fit import fit_section
 from bayeslca.report.sections.groups import groups_section
+from bayeslca.report.sections.influence import influence_section
 from bayeslca.report.sections.likelihood import likelihood_section
 from bayeslca.report.sections.limits import limits_section
 from bayeslca.report.sections.membership import membership_section
@@ -94,6 +95,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         units_section(facts),
         groups_section(facts),
         fit_section(facts),
+        influence_section(facts),
         likelihood_section(facts),
         theory_section(facts),
         membership_section(facts),

@@ -52,4 +52,4 @@ def with_group_comparison(
             study.responses, seed=seed, progress=progress.of_model(f"groups {name}"), **sampling
         )
         progress.finished(1)
-    return replace(content, group_comparison=compare(fitted))
+    return replace(content, group_comparison=compare(fitted, progress=False))

@@ -176,6 +176,8 @@ def _compared(
         fitted=fitted,
         own=named,
         prior_on_count=study.said.class_count.prior_on_count,
+        exact=study.said.class_count.exact,
+        folds=study.said.class_count.folds,
         progress=progress.of_comparison,
         **sampling,
     )
@@ -322,6 +324,8 @@ def _outcome(
     lines.append(content.posterior.diagnostics().verdict)
     if content.checks is not None and not content.checks.reproduces:
         lines.append(content.checks.verdict)
+    if content.influence is not None and content.influence.findings:
+        lines.append(content.influence.verdict)
     if steps.kept:
         n_kept, n_all = len(steps.kept), len(steps.keys)
         lines.append(f"Kept from the run before, as nothing changed: {n_kept} of {n_all} fits.")

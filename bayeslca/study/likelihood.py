@@ -30,7 +30,7 @@ def with_maximum_likelihood(study: Study, content: ReportContent, say: Say) -> R
     said, seed = study.said.maximum_likelihood, study.said.sampling.seed
     if said is None:
         return content
-    comparison = content.comparison or compare({"this study": content.posterior})
+    comparison = content.comparison or compare({"this study": content.posterior}, progress=False)
     criteria = criteria_beside(
         comparison,
         starting_points=said.starting_points,

@@ -14,6 +14,7 @@ from bayeslca.report.content import ReportContent
 from bayeslca.study.claims import with_theory
 from bayeslca.study.fit_checks import with_fit_checks
 from bayeslca.study.group_comparison import with_group_comparison
+from bayeslca.study.influence import with_influence
 from bayeslca.study.likelihood import with_maximum_likelihood
 from bayeslca.study.load import Study
 from bayeslca.study.outcomes import with_outcomes
@@ -58,6 +59,10 @@ def _fit_checks(run: Run, content: ReportContent) -> ReportContent:
     return with_fit_checks(run.study, content, run.progress.say)
 
 
+def _influence(run: Run, content: ReportContent) -> ReportContent:
+    return with_influence(run.study, content, run.progress)
+
+
 def _maximum_likelihood(run: Run, content: ReportContent) -> ReportContent:
     return with_maximum_likelihood(run.study, content, run.progress.say)
 
@@ -89,6 +94,7 @@ PARTS: tuple[Part, ...] = (
     _units,
     _theory,
     _fit_checks,
+    _influence,
     _maximum_likelihood,
     _placing,
     _outcomes,

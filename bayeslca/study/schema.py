@@ -116,6 +116,16 @@ class ClassCountSection(_Section):
     compare: list[Annotated[int, Field(ge=1, le=20)]] = [1, 2, 3, 4, 5, 6]
     prior: Literal["uniform"] | dict[str, float] = "uniform"
     together: StrictBool = True
+    exact: StrictBool | None = None
+    folds: int = Field(default=0, ge=0, le=1000)
+
+    @field_validator("folds")
+    @classmethod
+    def _none_or_some(cls, folds: int) -> int:
+        if folds == 1:
+            msg = "must be 0 (none) or a number from 2; 10 is usual"
+            raise ValueError(msg)
+        return folds
 
     @field_validator("compare")
     @classmethod
@@ -193,6 +203,7 @@ class FitSection(_Section):
 
     check: StrictBool = True
     calibrate: int = Field(default=0, ge=0, le=10_000)
+    influence: StrictBool = True
 
 
 class AssignmentSection(_Section):

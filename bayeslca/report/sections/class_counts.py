@@ -10,6 +10,7 @@ from bayeslca.report.evidence_plot import plot_count_probabilities
 from bayeslca.report.facts import Facts
 from bayeslca.report.figures import WIDTH, draw
 from bayeslca.report.plots import plot_class_counts, row_name
+from bayeslca.report.sections.left_out import left_out_blocks
 from bayeslca.report.wording import (
     NOTHING,
     counted_in_words,
@@ -51,10 +52,7 @@ def class_counts_section(facts: Facts) -> Section:
         *_evidence_figure(comparison),
         Picture(figure),
         _table(facts),
-        Paragraph(
-            "Predictive accuracy is of a case's answers with its class summed out, left out one "
-            "case at a time. Differences below 4, or within two standard errors, are called ties."
-        ),
+        *left_out_blocks(comparison),
         *_about_evidence(comparison),
     ]
     return Section(ANCHOR, HEADING, tuple(blocks))

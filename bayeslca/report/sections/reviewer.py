@@ -17,6 +17,7 @@ from bayeslca.report.sections import (
     classes,
     design,
     fit,
+    influence,
     limits,
     membership,
     outcomes,
@@ -39,6 +40,7 @@ _SAMPLING = (sampling.ANCHOR, sampling.HEADING)
 _DESIGN = (design.ANCHOR, design.HEADING)
 _FIT = (fit.ANCHOR, fit.HEADING)
 _OUTCOMES = (outcomes.ANCHOR, outcomes.HEADING)
+_INFLUENCE = (influence.ANCHOR, influence.HEADING)
 _LIMITS = (limits.ANCHOR, limits.HEADING)
 _REPRODUCE = (reproduce.ANCHOR, reproduce.HEADING)
 
@@ -86,6 +88,7 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     )
     yield _independence(facts)
     yield _reproduced(facts)
+    yield _single_cases(facts)
     yield _sampled(facts)
     yield _missing(facts)
     yield _unclear(facts)
@@ -208,6 +211,13 @@ def _independence(facts: Facts) -> Answered:
         _items("BARG 1B", "14a", facts),
         done=False,
     )
+
+
+def _single_cases(facts: Facts) -> Answered:
+    question, found = "Do the results rest on a few odd cases?", facts.content.influence
+    if found is None:
+        return Answered(question, NOT_DONE, done=False)
+    return Answered(question, influence.influence_in_words(found), (_INFLUENCE,))
 
 
 def _sampled(facts: Facts) -> Answered:
