@@ -168,9 +168,10 @@ def leave_one_group_out(
     meaning = "Each group was predicted from the others."
     if posterior.model.groups is not None:
         free = ", and so were its own response probabilities" if posterior.model.free_items else ""
+        over = "how they differ between units" if posterior.model.pooled else "their prior"
         meaning = (
             "Each group was predicted from the others: its prevalences were integrated over "
-            f"their prior{free}."
+            f"{over}{free}."
         )
     meaning += " This is not leave-one-case-out, and the two figures are not comparable."
     names = [responses.groups.levels[int(g)] for g in present]
