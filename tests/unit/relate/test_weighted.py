@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import threading
 from functools import cache
 from typing import Any
 
@@ -251,3 +252,22 @@ def test_comparisons_say_that_they_are_unweighted() -> None:
     _, _, ordinary = middling()
     found = lca.compare({"this": ordinary})
     assert [f.kind for f in found.findings if "unweighted" in f.kind] == ["comparison_unweighted"]
+
+
+def test_interrupting_ends_all_threads() -> None:
+    one, before = weighted(), threading.active_count()
+
+    def interrupt(_: object) -> None:
+        raise KeyboardInterrupt
+
+    with pytest.raises(KeyboardInterrupt):
+        sample_weighted(
+            one.unweighted.model,
+            one.responses,
+            pseudo_samples=500,
+            draws=4000,
+            seed=9,
+            unweighted=one.unweighted,
+            progress=interrupt,
+        )
+    assert threading.active_count() == before
