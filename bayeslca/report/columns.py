@@ -161,6 +161,28 @@ COLUMNS: dict[str, Column] = {
         "mean probability that a case of the set and one of another are in one class",
         "share",
     ),
+    "way": Column(
+        "Way", "joint, cut, or three_steps: how classes and other variables were related", "text"
+    ),
+    "covariate": Column("Covariate", "the covariate, or a column of the regression", "text"),
+    "covariate_value": Column("Value", "value of the covariate", "text"),
+    "step": Column("Step", "what a step of 1 in the covariate is", "text"),
+    "change": Column("Change", "how the covariate changes", "text"),
+    "against": Column("Against", "the class of comparison", "text"),
+    "class_odds_ratio": Column(
+        "Odds ratio", "of the class against the class of comparison, for one step", "number"
+    ),
+    "class_odds_ratio_lower": Column("Odds ratio from", "lower end of its interval", "number"),
+    "class_odds_ratio_upper": Column("Odds ratio to", "upper end of its interval", "number"),
+    "probability_above_1": Column(
+        "Above 1", "posterior probability that the odds ratio is above 1", "share"
+    ),
+    "log_odds": Column(
+        "Log odds", "change in the log odds of the answer with the covariate, class given", "number"
+    ),
+    "z": Column("z", "estimate over its standard error", "number"),
+    "p_one_test": Column("p, one test", "of this test alone", "share"),
+    "p_adjusted": Column("p, all tests", "adjusted for the number of tests (Holm 1979)", "share"),
     "tied": Column("Tie", "too close to the best to tell", "flag"),
     "claim": Column("Claim", "the hypothesis as the study words it", "text"),
     "planned": Column("Planned", "whether it was stated before the answers were seen", "flag"),

@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.relate.class_outcomes import ClassOutcomes
     from bayeslca.relate.placing import PlacingRule
+    from bayeslca.relate.predictors import ClassPredictors
     from bayeslca.relate.weighted_posterior import WeightedPosterior
     from bayeslca.responses.responses import Responses
 
@@ -122,6 +123,10 @@ class ReportContent:
         comparison); None when not asked for.
     one_class_fewer : tuple of LikelihoodRatioTest
         Bootstrap tests of one class fewer, as far as asked for.
+    predictors : ClassPredictors or None
+        Class regressed on covariates; None when not done.
+    predictors_against : str or None
+        The class that the page compares the others with; the first one when None.
     placing_rule : PlacingRule or None
         When a case is placed in a class; None when the study does not say.
     placed : DataFrame or None
@@ -179,6 +184,8 @@ class ReportContent:
     influence: Influence | None = None
     criteria: CriteriaBeside | None = None
     one_class_fewer: tuple[LikelihoodRatioTest, ...] = ()
+    predictors: ClassPredictors | None = None
+    predictors_against: str | None = None
     placing_rule: PlacingRule | None = None
     placed: pd.DataFrame | None = None
     plausible_values: pd.DataFrame | None = None

@@ -14,6 +14,7 @@ from bayeslca.report.sections.influence import influence_tables
 from bayeslca.report.sections.left_out import fold_tables
 from bayeslca.report.sections.likelihood import likelihood_tables
 from bayeslca.report.sections.outcomes import outcome_tables
+from bayeslca.report.sections.predictors import predictor_tables
 from bayeslca.report.sections.together import sets_table
 from bayeslca.report.wording import level
 
@@ -136,6 +137,8 @@ def file_tables(
         named |= {name: table for name, table in fit.items() if not table[1].empty}
     named |= likelihood_tables(content)
     named |= outcome_tables(content)
+    if content.predictors is not None:
+        named |= predictor_tables(content.predictors, content.predictors_against, interval)
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
 

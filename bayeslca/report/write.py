@@ -24,6 +24,7 @@ from bayeslca.report.sections.limits import limits_section
 from bayeslca.report.sections.membership import membership_section
 from bayeslca.report.sections.methods import methods_section
 from bayeslca.report.sections.outcomes import outcomes_section
+from bayeslca.report.sections.predictors import predictors_section
 from bayeslca.report.sections.prevalence import prevalence_section
 from bayeslca.report.sections.reproduce import reproduce_section, software_versions
 from bayeslca.report.sections.reviewer import reviewer_section
@@ -99,6 +100,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         likelihood_section(facts),
         theory_section(facts),
         membership_section(facts),
+        predictors_section(facts),
         outcomes_section(facts),
         assumptions_section(facts),
         sampling_section(facts),

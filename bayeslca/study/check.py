@@ -17,6 +17,7 @@ from bayeslca.study.claims import check_theory
 from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
 from bayeslca.study.outcomes import check_outcomes
+from bayeslca.study.predictors import check_predictors
 from bayeslca.study.unit_comparison import unit_models
 
 WIDTH = 79
@@ -47,6 +48,7 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
     study = load_study(path)
     check_theory(study)
     check_outcomes(study)
+    covariates = check_predictors(study)
     responses = study.responses
     model = study.model
     checked = model or LatentClassModel(
@@ -61,6 +63,7 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
     if study.said.groups.compare_pooled and checked.n_classes > 1:
         unit_models(study, checked)
     findings = [*responses.findings, *checked.findings(responses)]
+    findings += covariates.findings if covariates is not None else ()
     refused = any(finding.level == "problem" for finding in findings)
     parts = [
         f"{study.said.study.title} ({study.path.name})",
@@ -133,6 +136,10 @@ def _plan(study: Study, responses: Responses) -> list[str]:
     for outcome in study.said.outcomes:
         name = outcome.label or outcome.column
         lines += _wrapped(f"- relate the {outcome.kind} outcome {name} to class", indent=4)
+    if study.said.predictors is not None:
+        said = study.said.predictors
+        ways = ", ".join(way.replace("_", " ") for way in said.ways)
+        lines += _wrapped(f"- relate class to {said.formula} ({ways})", indent=4)
     lines += _wrapped(f"- {_expected_time(study, responses)}", indent=4)
     return lines
 

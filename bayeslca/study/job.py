@@ -26,6 +26,7 @@ from bayeslca.study.load import Study, load_study
 from bayeslca.study.outcomes import check_outcomes, memberships_moved
 from bayeslca.study.parts import Run, with_all_parts
 from bayeslca.study.placing import check_placing
+from bayeslca.study.predictors import check_predictors
 from bayeslca.study.progress import JobProgress, job_progress
 from bayeslca.study.results import RECORD, previous_results, written_aside
 from bayeslca.study.sample_design import record_of_design
@@ -85,6 +86,7 @@ def run_study(
     check_theory(study)
     check_outcomes(study)
     check_placing(study)
+    check_predictors(study)
     steps = Steps(previous)
     fits = len(study.said.class_count.compare) + (study.model is not None)
     fits += 2 * study.said.groups.compare_free + 2 * study.said.groups.compare_pooled

@@ -19,6 +19,7 @@ from bayeslca.study.likelihood import with_maximum_likelihood
 from bayeslca.study.load import Study
 from bayeslca.study.outcomes import with_outcomes
 from bayeslca.study.placing import with_placing
+from bayeslca.study.predictors import with_predictors
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.sample_design import with_sample_design
 from bayeslca.study.steps import Steps
@@ -75,6 +76,10 @@ def _placing(run: Run, content: ReportContent) -> ReportContent:
     return with_placing(run.study, content, run.progress.say)
 
 
+def _predictors(run: Run, content: ReportContent) -> ReportContent:
+    return with_predictors(run.study, content, run.progress.say)
+
+
 def _sample_design(run: Run, content: ReportContent) -> ReportContent:
     return with_sample_design(run.study, content, run.steps, run.progress)
 
@@ -98,6 +103,7 @@ PARTS: tuple[Part, ...] = (
     _maximum_likelihood,
     _placing,
     _outcomes,
+    _predictors,
 )
 """All parts, in the order in which they are done."""
 

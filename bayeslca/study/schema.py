@@ -214,6 +214,23 @@ class AssignmentSection(_Section):
     plausible_values: int = Field(default=0, ge=0, le=10_000)
 
 
+class PredictorsSection(_Section):
+    """What class is regressed on, and how."""
+
+    formula: str
+    file: str | None = None
+    case: str | None = None
+    categories: list[str] = []
+    no_answer: list[Text] = []
+    missing: Literal["leave_out", "refuse"] = "leave_out"
+    against: str | None = None
+    ways: list[Literal["joint", "cut", "three_steps"]] = Field(
+        default=["joint", "cut", "three_steps"], min_length=1
+    )
+    correction: Literal["fixed_error_likelihood", "inverse_error_matrix"] = "fixed_error_likelihood"
+    prior_scale: float = Field(default=1.5, gt=0, allow_inf_nan=False)
+
+
 class MaximumLikelihoodSection(_Section):
     """Maximum likelihood beside the posterior, for readers who ask for it."""
 
@@ -256,6 +273,7 @@ class StudyFile(_Section):
     fit: FitSection = FitSection()
     maximum_likelihood: MaximumLikelihoodSection | None = None
     assignment: AssignmentSection | None = None
+    predictors: PredictorsSection | None = None
     sampling: SamplingSection = SamplingSection()
     report: ReportSection = ReportSection()
 

@@ -21,6 +21,7 @@ from bayeslca.report.sections import (
     limits,
     membership,
     outcomes,
+    predictors,
     prevalence,
     prior_predictive,
     reproduce,
@@ -42,6 +43,7 @@ _FIT = (fit.ANCHOR, fit.HEADING)
 _OUTCOMES = (outcomes.ANCHOR, outcomes.HEADING)
 _INFLUENCE = (influence.ANCHOR, influence.HEADING)
 _LIMITS = (limits.ANCHOR, limits.HEADING)
+_PREDICTORS = (predictors.ANCHOR, predictors.HEADING)
 _REPRODUCE = (reproduce.ANCHOR, reproduce.HEADING)
 
 _FOR_THE_AUTHORS = (
@@ -96,6 +98,8 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     if facts.content.outcomes:
         yield _treated_as_known(facts)
     yield _estimates(facts)
+    if facts.content.predictors is not None:
+        yield _predicted(facts)
     yield _size(facts)
     yield _software(facts, versions)
     yield _same_again(facts)
@@ -106,6 +110,18 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
         "The section on limits names them with the numbers that make them matter here.",
         (_LIMITS,),
         _items("BARG 4E", "26", facts),
+    )
+
+
+def _predicted(facts: Facts) -> Answered:
+    found = facts.content.predictors
+    assert found is not None  # asked for by the caller
+    ways = listed([way.replace("_", " ") for way in found.ways])
+    return Answered(
+        "Was class related to covariates without treating the most probable class as data?",
+        f"Yes: {listed(found.design.covariates)}, {ways}; "
+        "classes were drawn given the covariates, or the error of placement undone.",
+        (_PREDICTORS,),
     )
 
 
