@@ -161,9 +161,6 @@ COLUMNS: dict[str, Column] = {
         "mean probability that a case of the set and one of another are in one class",
         "share",
     ),
-    "way": Column(
-        "Way", "joint, cut, or three_steps: how classes and other variables were related", "text"
-    ),
     "covariate": Column("Covariate", "the covariate, or a column of the regression", "text"),
     "covariate_value": Column("Value", "value of the covariate", "text"),
     "step": Column("Step", "what a step of 1 in the covariate is", "text"),
@@ -314,8 +311,8 @@ COLUMNS: dict[str, Column] = {
     ),
     "way": Column(
         "Way",
-        "joint: the outcome helps to shape the classes; cut: it cannot; the others: three steps, "
-        "by their correction",
+        "joint: the other variables help to shape the classes; cut: they cannot; others: three "
+        "steps, by their correction",
         "text",
     ),
     "other_class": Column("Compared with", "the class whose mean is taken off", "text"),
