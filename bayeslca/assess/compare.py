@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -15,6 +14,7 @@ from bayeslca.assess.comparison import Comparison, comparison_of
 from bayeslca.assess.comparison_progress import ComparisonMeter, FitProgress, Show, shown
 from bayeslca.assess.comparison_words import OWN, Name
 from bayeslca.assess.folds import refuse_folds
+from bayeslca.assess.seeds_of_rows import entropy_of, seed_of_row
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
@@ -216,7 +216,7 @@ def _fitted(
     entries: Mapping[Name, LatentClassModel | Posterior], how: _Fitting, meter: ComparisonMeter
 ) -> dict[Name, Posterior]:
     """Sample what is not fitted yet, each with a seed of its own."""
-    entropy = _entropy(how.seed)
+    entropy = entropy_of(how.seed)
     posteriors: dict[Name, Posterior] = {}
     for name, entry in entries.items():
         if isinstance(entry, Posterior):
@@ -230,22 +230,6 @@ def _fitted(
             **how.sampling,
         )
     return posteriors
-
-
-def seed_of_row(entropy: int | Sequence[int], name: Name) -> int:
-    """Return the seed of one row: it depends on the whole's seed and the row's name alone."""
-    key = name
-    if not isinstance(key, int):
-        key = int.from_bytes(hashlib.sha256(str(name).encode()).digest()[:4], "little") + 2**31
-    child = np.random.SeedSequence(entropy, spawn_key=(key,))
-    return int(child.generate_state(1, np.uint64)[0] >> np.uint64(1))
-
-
-def _entropy(seed: Seed) -> int | Sequence[int]:
-    if isinstance(seed, np.random.Generator):
-        return [int(part) for part in seed.integers(2**63, size=4)]
-    sequence = seed if isinstance(seed, np.random.SeedSequence) else np.random.SeedSequence(seed)
-    return [int(part) for part in sequence.generate_state(4)]
 
 
 def _checked_counts(counts: Iterable[int]) -> list[int]:

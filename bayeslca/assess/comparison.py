@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from bayeslca._typing import Ints
+from bayeslca._typing import Ints, Seed
 from bayeslca.assess.class_counts import ClassCounts, PriorOnCount, class_counts
 from bayeslca.assess.comparison_words import (
     Name,
@@ -34,6 +34,8 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.assess.averaged import Averaged
+    from bayeslca.assess.comparison_progress import FitProgress
+    from bayeslca.assess.counts_under_other_priors import CountsUnderOtherPriors
 
 TIE = 4.0
 """A smaller difference in elpd is a tie, whatever its standard error (Sivula et al. 2020)."""
@@ -120,6 +122,35 @@ class Comparison:
             raise ModelError(msg)
         by_count = {n: one for n, one in self.posteriors.items() if isinstance(n, int)}
         return averaged(self.class_counts, by_count)
+
+    def under_other_priors(
+        self,
+        names: Sequence[str] = ("half as strong", "twice as strong"),
+        *,
+        seed: Seed = None,
+        progress: bool | Callable[[FitProgress], None] = True,
+        **sampling: Any,
+    ) -> CountsUnderOtherPriors:
+        """Return how probable each number of classes is under other priors; all are refitted.
+
+        Parameters
+        ----------
+        names : sequence of str
+            Of "half as strong", "twice as strong", "uniform", "Jeffreys".
+        seed, progress, **sampling
+            As in `bayeslca.compare_class_counts`.
+
+        Raises
+        ------
+        ModelError
+            When the rows are no numbers of classes, or a prior is not known.
+        """
+        from bayeslca.assess.counts_under_other_priors import counts_of, counts_under_other_priors
+
+        by_count = {n: one for n, one in self.posteriors.items() if isinstance(n, int)}
+        return counts_under_other_priors(
+            counts_of(self.class_counts), by_count, names, seed=seed, progress=progress, **sampling
+        )
 
     def __repr__(self) -> str:
         return comparison_text(self.table, self.verdict, [f.message for f in self.findings])

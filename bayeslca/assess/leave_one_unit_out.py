@@ -24,9 +24,9 @@ from scipy.special import logsumexp
 
 from bayeslca._typing import Floats, Ints
 from bayeslca.assess.bridge import ess
-from bayeslca.assess.compare import seed_of_row
 from bayeslca.assess.comparison import is_tie
 from bayeslca.assess.information_criteria import psis_loo, standard_error
+from bayeslca.assess.seeds_of_rows import seed_of_row
 from bayeslca.assess.unit_likelihood import log_likelihood_of_unit
 from bayeslca.exceptions import ModelError
 from bayeslca.model.compile import compile_units

@@ -151,6 +151,11 @@ COLUMNS: dict[str, Column] = {
         "reliable",
         "share",
     ),
+    "probability_mcse": Column(
+        "± of probability", "Monte Carlo standard error of the probability", "number"
+    ),
+    "reliable": Column("Reliable", "whether the evidence is to be trusted", "flag"),
+    "reason": Column("Why not", "why the evidence is not to be trusted", "text"),
     "set": Column("Set", "cases that go together; A is the largest", "text"),
     "patterns": Column("Patterns", "number of distinct response patterns", "count"),
     "together_within": Column(

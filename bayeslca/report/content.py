@@ -12,6 +12,7 @@ if TYPE_CHECKING:
 
     from bayeslca.assess.co_membership import CoMembership
     from bayeslca.assess.compare import Comparison
+    from bayeslca.assess.counts_under_other_priors import CountsUnderOtherPriors
     from bayeslca.assess.criteria_beside import CriteriaBeside
     from bayeslca.assess.hypotheses import HypothesisTest
     from bayeslca.assess.influence import Influence
@@ -96,6 +97,8 @@ class ReportContent:
     study_row : int, str or None
         The row of ``comparison.table`` that is the model the answer rests on; None when it has
         no row there.
+    counts_under_other_priors : CountsUnderOtherPriors or None
+        The numbers of classes weighed again under other priors; None when not asked for.
     together : CoMembership or None
         Who is together with whom whatever the number of classes; None when not asked for, or not
         possible: ``together_why_not`` then says why.
@@ -172,6 +175,7 @@ class ReportContent:
     chosen_because: str = ""
     comparison: Comparison | None = None
     study_row: int | str | None = None
+    counts_under_other_priors: CountsUnderOtherPriors | None = None
     together: CoMembership | None = None
     together_why_not: str = ""
     group_comparison: Comparison | None = None

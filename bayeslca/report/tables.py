@@ -94,6 +94,11 @@ def file_tables(
         if content.weighted is not None:
             unweighted = content.comparison.table.assign(weighting="unweighted")
             named["class_counts"] = (named["class_counts"][0], unweighted)
+    if content.counts_under_other_priors is not None:
+        named["class_counts_other_priors"] = (
+            "How probable each number of classes is, prior by prior",
+            content.counts_under_other_priors.table,
+        )
     if content.together is not None:
         named["sets"] = (
             "Sets of cases that go together whatever the number of classes",

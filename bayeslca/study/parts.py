@@ -17,6 +17,7 @@ from bayeslca.study.group_comparison import with_group_comparison
 from bayeslca.study.influence import with_influence
 from bayeslca.study.likelihood import with_maximum_likelihood
 from bayeslca.study.load import Study
+from bayeslca.study.other_counts import with_counts_under_other_priors
 from bayeslca.study.outcomes import with_outcomes
 from bayeslca.study.placing import with_placing
 from bayeslca.study.predictors import with_predictors
@@ -84,6 +85,10 @@ def _sample_design(run: Run, content: ReportContent) -> ReportContent:
     return with_sample_design(run.study, content, run.steps, run.progress)
 
 
+def _other_counts(run: Run, content: ReportContent) -> ReportContent:
+    return with_counts_under_other_priors(run.study, content, run.progress)
+
+
 def _together(run: Run, content: ReportContent) -> ReportContent:
     return with_together(run.study, content, run.progress.say)
 
@@ -94,6 +99,7 @@ def _outcomes(run: Run, content: ReportContent) -> ReportContent:
 
 PARTS: tuple[Part, ...] = (
     _sample_design,
+    _other_counts,
     _together,
     _group_comparison,
     _units,

@@ -57,6 +57,13 @@ class JobProgress:
         share = (before + fit.share * (self.fits - before)) / max(self.fits, 1)
         self.tell(what, min(share, 1.0), ", ".join(part for part in figures if part))
 
+    def of_other_priors(self, fit: FitProgress) -> None:
+        """Take note of how far the class counts under other priors are."""
+        what = f"Fit {fit.fit} of {fit.fits} under other priors"
+        if fit.weighing:
+            what = "Weighing the evidence under other priors"
+        self.tell(what, fit.share, left_in_words(fit))
+
     def _before(self, fit: FitProgress) -> int:
         """Return the fits that were done before the comparison began."""
         if self._before_comparison is None:

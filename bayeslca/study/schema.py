@@ -115,6 +115,7 @@ class ClassCountSection(_Section):
 
     compare: list[Annotated[int, Field(ge=1, le=20)]] = [1, 2, 3, 4, 5, 6]
     prior: Literal["uniform"] | dict[str, float] = "uniform"
+    also_under: list[Literal["half as strong", "twice as strong", "uniform", "Jeffreys"]] = []
     together: StrictBool = True
     exact: StrictBool | None = None
     folds: int = Field(default=0, ge=0, le=1000)

@@ -5,7 +5,17 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from bayeslca.assess.comparison_words import verdict_in_words
-from bayeslca.report.blocks import Block, Bullets, Head, PageTable, Paragraph, Picture, Section
+from bayeslca.assess.counts_under_other_priors import AS_STATED
+from bayeslca.report.blocks import (
+    Block,
+    Bullets,
+    Head,
+    PageTable,
+    Paragraph,
+    Picture,
+    Section,
+    Subheading,
+)
 from bayeslca.report.evidence_plot import plot_count_probabilities
 from bayeslca.report.facts import Facts
 from bayeslca.report.figures import WIDTH, draw
@@ -54,6 +64,7 @@ def class_counts_section(facts: Facts) -> Section:
         _table(facts),
         *left_out_blocks(comparison),
         *_about_evidence(comparison),
+        *_under_other_priors(facts),
     ]
     return Section(ANCHOR, HEADING, tuple(blocks))
 
@@ -101,6 +112,27 @@ def _about_evidence(comparison: Comparison) -> list[Block]:
         "classes are kinds that exist outside the model."
     )
     return [Paragraph(text)]
+
+
+def _under_other_priors(facts: Facts) -> list[Block]:
+    """Return the numbers of classes weighed again, where the study asked for it."""
+    found = facts.content.counts_under_other_priors
+    if found is None:
+        return []
+    numbers = found.by_prior[AS_STATED].table.index
+    heads = (
+        Head("Priors", "strength: all prior counts times 1/2 or 2", numeric=False),
+        *(Head(row_name(int(k))) for k in numbers),
+    )
+    rows = tuple(
+        (name, *(percent(float(p)) for p in one.table["probability"]))
+        for name, one in found.by_prior.items()
+    )
+    return [
+        Subheading("The same under other priors"),
+        Paragraph(sentence(found.verdict)),
+        PageTable("Probability of each number of classes, prior by prior", heads, rows),
+    ]
 
 
 def _in_words(facts: Facts) -> str:
