@@ -31,6 +31,8 @@ if TYPE_CHECKING:
 
 Method = Literal["weights", "refit"]
 PRIOR_DRAWS = 10_000
+FEWEST_SWEEPS = 20_000
+"""A refit may take twice the sweeps of the original, and at least so many."""
 FEWEST_HOLDING = 20
 """With fewer prior draws in which a hypothesis holds, weights give it no Bayes factor."""
 SAME_PLACES = 0.9
@@ -147,14 +149,18 @@ def refit_under(
     """
     from bayeslca.posterior.fit import fit
     from bayeslca.sampling.align import align
+    from bayeslca.sampling.run import MAX_SWEEPS
 
     draws = posterior.draws
+    chains, kept = max(2, draws.n_chains), draws.n_draws
     again = fit(
         other,
         posterior.responses,
         seed=seed,
-        chains=max(2, draws.n_chains),
-        draws=draws.n_draws,
+        chains=chains,
+        draws=kept,
+        ess=min(1000.0, chains * kept / 2.0),
+        max_sweeps=min(MAX_SWEEPS, max(FEWEST_SWEEPS, 2 * draws.sweeps)),
         progress=False,
     )
     before = mean_membership(posterior)

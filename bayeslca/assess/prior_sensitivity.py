@@ -32,7 +32,13 @@ from bayeslca.model.alternative_priors import (
     check_alternatives,
     distinct_alternatives,
 )
-from bayeslca.posterior.prior_overlap import PriorMarks, mostly_prior, overlap, prior_draws
+from bayeslca.posterior.prior_overlap import (
+    PriorMarks,
+    density,
+    mostly_prior,
+    overlap,
+    prior_draws,
+)
 from bayeslca.posterior.summary import Quantities
 
 if TYPE_CHECKING:
@@ -40,6 +46,8 @@ if TYPE_CHECKING:
 
     from bayeslca.posterior.posterior import Posterior
 
+MOST_DRAWN, GRID_POINTS = 6, 201
+"""Quantities whose densities are kept, and points of each."""
 FAR = 1.0
 """A quantity that moves by more of its posterior standard deviations is marked."""
 
@@ -53,9 +61,10 @@ class PriorSensitivity:
     table : DataFrame
         A row per quantity: ``kind``, ``quantity``, ``mean``, ``sd``, ``own_prior`` ("flat",
         "partly flat" or "informative": power scaling cannot see a flat prior),
-        ``prior_sensitivity`` and ``likelihood_sensitivity`` by power scaling (nan where every
-        prior is flat, or the quantity never varies), ``prior_overlap`` (0 to 1), ``prior_share``,
-        ``mostly_prior`` and ``diagnosis`` in words.
+        ``prior_median``, ``prior_lower`` and ``prior_upper`` (95 %), ``prior_sensitivity`` and
+        ``likelihood_sensitivity`` by power scaling (nan where every prior is flat, or the
+        quantity never varies), ``prior_overlap`` (0 to 1), ``prior_share``, ``mostly_prior`` and
+        ``diagnosis`` in words.
     moved : DataFrame
         A row per quantity, other prior and method ("weights" or "refit"): ``mean_before``,
         ``mean``, ``sd``, ``moved`` (change of the mean in posterior standard deviations of the
@@ -69,6 +78,9 @@ class PriorSensitivity:
         Other priors that were not tried, and why.
     scaling : PowerScaling
         Holds the Pareto k of the weights behind the power scaling.
+    densities : DataFrame
+        Of the quantities that rest most on their priors: ``quantity``, ``value``, and the
+        densities ``prior`` and ``posterior`` there, a row a point.
     findings : tuple of Finding
     verdict : str
     """
@@ -79,6 +91,7 @@ class PriorSensitivity:
     priors: pd.DataFrame
     left_out: Mapping[str, str]
     scaling: PowerScaling
+    densities: pd.DataFrame
     findings: tuple[Finding, ...]
     verdict: str
 
@@ -114,7 +127,8 @@ def prior_sensitivity(
     asked = None if refit is None else check_alternatives(refit)
     after = after_the_data(posterior, texts, claims)
     scaling = power_scaling(posterior, after)
-    table = _table(posterior, after, texts, claims, scaling)
+    before = followed(posterior, prior_draws(posterior), texts, claims)
+    table = _table(posterior, after, before, scaling)
     found, left_out = distinct_alternatives(posterior.model, (HALF, TWICE, *(asked or ())))
     moved: list[Moved] = []
     weighed = _as_stated(posterior, claims, seed)
@@ -137,6 +151,7 @@ def prior_sensitivity(
         priors=_priors_table(moved),
         left_out=left_out,
         scaling=scaling,
+        densities=_densities(table, after, before),
         findings=findings,
         verdict=verdict_in_words(table, frame, moved, left_out),
     )
@@ -151,14 +166,13 @@ def _is_asked(name: str, asked: Sequence[str], left_out: Mapping[str, str]) -> b
 def _table(
     posterior: Posterior,
     after: Sequence[Followed],
-    texts: Mapping[str, str],
-    claims: Mapping[str, Sequence[str]],
+    before: Sequence[Followed],
     scaling: PowerScaling,
 ) -> pd.DataFrame:
     import pandas as pd
 
     marks = posterior.prior_marks
-    before = followed(posterior, prior_draws(posterior), texts, claims)
+    named = not posterior.model.exploratory
     rows = []
     for at, (one, earlier) in enumerate(zip(after, before, strict=True)):
         lies, share = _marks_of(posterior, marks, one, earlier)
@@ -170,6 +184,7 @@ def _table(
                 "mean": float(one.values.mean()) if finite else np.nan,
                 "sd": float(one.values.std(ddof=1)) if finite else np.nan,
                 "own_prior": one.own_prior,
+                **_before_the_data(earlier, named or one.kind != "quantity"),
                 "prior_sensitivity": scaling.prior[at],
                 "likelihood_sensitivity": scaling.likelihood[at],
                 "prior_overlap": lies,
@@ -202,6 +217,38 @@ def _marks_of(
         return np.nan, np.nan
     effective = Quantities(one.values.reshape(shape)).monte_carlo()["ess_bulk"][0]
     return overlap(before.values, one.values, float(effective)), np.nan
+
+
+def _before_the_data(before: Followed, told: bool) -> dict[str, float]:
+    """Return median and 95 % interval of the prior; nan where it does not tell classes apart."""
+    columns = ("prior_median", "prior_lower", "prior_upper")
+    if not told or before.kind == "hypothesis" or not np.all(np.isfinite(before.values)):
+        return dict.fromkeys(columns, np.nan)
+    found = np.quantile(before.values, [0.5, 0.025, 0.975])
+    return dict(zip(columns, found.tolist(), strict=True))
+
+
+def _densities(
+    table: pd.DataFrame, after: Sequence[Followed], before: Sequence[Followed]
+) -> pd.DataFrame:
+    """Return prior and posterior densities of the quantities with the largest overlaps."""
+    import pandas as pd
+
+    columns = ["quantity", "value", "prior", "posterior"]
+    ranked = table["prior_overlap"].dropna().sort_values(ascending=False, kind="stable")
+    parts = []
+    for at in ranked.index[:MOST_DRAWN]:
+        draws = before[at].values, after[at].values
+        low = min(0.0, *(float(x.min()) for x in draws))
+        high = max(1.0, *(float(x.max()) for x in draws))
+        values = np.linspace(low, high, GRID_POINTS)
+        curves = (density(x, values) for x in draws)
+        parts.append(
+            pd.DataFrame(
+                dict(zip(columns, (table.loc[at, "quantity"], values, *curves), strict=True))
+            )
+        )
+    return pd.concat(parts, ignore_index=True) if parts else pd.DataFrame(columns=columns)
 
 
 def _as_stated(

@@ -160,6 +160,20 @@ def overlap(before: Floats, after: Floats, effective: float) -> float:
     return float(np.minimum(smooth, 1.0 / GRID).sum())
 
 
+def density(draws: Floats, at: Floats) -> Floats:
+    """Return the smoothed density of draws at the points of an even grid that holds them all."""
+    from scipy.ndimage import gaussian_filter1d
+
+    step = float(at[1] - at[0])
+    edges = np.append(at - step / 2.0, at[-1] + step / 2.0)
+    share, _ = np.histogram(draws, bins=edges)
+    first, third = np.quantile(draws, [0.25, 0.75])
+    spread = min(float(draws.std()), float(third - first) / 1.34) or float(draws.std())
+    width = 0.9 * spread * min(draws.size, 2000) ** -0.2
+    smooth = gaussian_filter1d(share / (draws.size * step), max(width / step, 0.5), mode="reflect")
+    return np.asarray(smooth)
+
+
 def beta_overlap(before: tuple[float, float], after: tuple[float, float]) -> float:
     """Return the overlap of two Beta densities."""
     from scipy.stats import beta

@@ -82,6 +82,44 @@ COLUMNS: dict[str, Column] = {
         "weight over weight plus the expected cases that answered; above half, the prior rules",
         "share",
     ),
+    "prior_overlap": Column(
+        "Overlap with the prior",
+        "area that the densities before and after the data share: 1 when the answers changed "
+        "nothing, near 0 when they settled the matter",
+        "share",
+    ),
+    "mostly_prior": Column(
+        "Mostly prior",
+        "overlap of 0.75 or more, or a prior that weighs as much as the expected cases",
+        "flag",
+    ),
+    "kind": Column("Kind", "prevalence, response probability, quantity or hypothesis", "text"),
+    "own_prior": Column(
+        "Own prior",
+        "flat: power scaling cannot see it; informative; partly flat where several play a part",
+        "text",
+    ),
+    "prior_sensitivity": Column(
+        "Moves with the priors",
+        "power scaling of all stated priors (Kallioinen et al. 2024); 0.05 or more is a sign; "
+        "empty where every prior is flat",
+        "number",
+    ),
+    "likelihood_sensitivity": Column(
+        "Moves with the data", "power scaling of the likelihood; below 0.05 is a sign", "number"
+    ),
+    "diagnosis": Column("In words", "what the figures say", "text"),
+    "mean_before": Column("Mean as stated", "posterior mean under the study's priors", "number"),
+    "moved": Column(
+        "Moved",
+        "change of the mean in posterior standard deviations under the study's priors",
+        "number",
+    ),
+    "moved_mcse": Column("± of moved", "Monte Carlo error of it", "number"),
+    "far": Column("Far", "moved by more than one posterior standard deviation", "flag"),
+    "same_places": Column(
+        "Same class", "share of the cases whose most probable class stayed", "share"
+    ),
     "constraints": Column(
         "Held to", "statements that keep it equal, known, bounded or ordered", "text"
     ),
@@ -106,7 +144,9 @@ COLUMNS: dict[str, Column] = {
     "refitted": Column(
         "Refitted", "patterns that were refitted without one of their cases", "count"
     ),
-    "reliable": Column("Reliable", "whether the refits were precise enough", "flag"),
+    "reliable": Column(
+        "Reliable", "weights with a Pareto k up to 0.7, refits that were precise enough", "flag"
+    ),
     "rows": Column("Rows", "of the data, from 1, with these answers", "text"),
     "log_density": Column(
         "Log probability", "of the answers of one such case, given all other cases", "number"

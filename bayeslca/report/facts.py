@@ -7,9 +7,9 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
+from bayeslca.posterior.tables import OVERALL
 from bayeslca.report.content import ReportContent
 from bayeslca.report.placement import Placement, placement
-from bayeslca.report.priors import ruled_by_prior
 from bayeslca.report.wording import about_of, called, in_words, percent_interval, whole
 
 if TYPE_CHECKING:
@@ -121,9 +121,33 @@ class Facts:
         return f"{WEIGHTED}, {shares_in_words(self.answered)}"
 
     @cached_property
-    def ruled(self) -> frozenset[tuple[str, str]]:
-        """The (class, item) pairs that rest mostly on the prior."""
-        return ruled_by_prior(self.posterior)
+    def marked_answers(self) -> frozenset[tuple[str, str, str, str]]:
+        """The (group or "", class, item, answer) that rest mostly on the prior."""
+        frame = self.probabilities
+        groups = frame["group"] if "group" in frame else [""] * len(frame)
+        keys = zip(groups, frame["latent_class"], frame["item"], frame["category"], strict=True)
+        marked = self.posterior.prior_marks.answers
+        return frozenset(key for key, mark in zip(keys, marked, strict=True) if mark)
+
+    @cached_property
+    def marked_prevalences(self) -> frozenset[tuple[str, str]]:
+        """The (group or "", class) whose prevalence rests mostly on the prior."""
+        frame = self.posterior.prevalence()
+        groups = frame["group"] if "group" in frame else [""] * len(frame)
+        keys = zip(groups, frame["latent_class"], strict=True)
+        marked = self.posterior.prior_marks.prevalence
+        return frozenset(key for key, mark in zip(keys, marked, strict=True) if mark)
+
+    @property
+    def marked_classes(self) -> tuple[str, ...]:
+        """Classes whose share of all cases rests mostly on the prior."""
+        group = "" if self.posterior.model.groups is None else OVERALL
+        return tuple(name for name in self.class_names if (group, name) in self.marked_prevalences)
+
+    @property
+    def undetermined(self) -> bool:
+        """True when the answers cannot determine all of the model, however many there are."""
+        return any(finding.kind == "not_identified" for finding in self.diagnostics.findings)
 
     @cached_property
     def prior_predictive(self) -> PriorPredictive:

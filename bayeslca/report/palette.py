@@ -25,6 +25,9 @@ INK = "#222222"
 FAINT = "#D9D9D9"
 BAND = "#F4F4F2"
 
+PRIOR_MARK = "†"
+"""Put beside a number, or a marker, that rests mostly on the prior."""
+
 
 def class_colour(index: int) -> str:
     """Return the colour of a class."""

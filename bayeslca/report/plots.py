@@ -17,6 +17,7 @@ from bayeslca.report.ordered_plot import chosen_items, plot_ordered_item
 from bayeslca.report.palette import (
     BAND,
     INK,
+    PRIOR_MARK,
     class_colour,
     class_marker,
     plain,
@@ -67,6 +68,8 @@ def plot_profile(
 ) -> Axes:
     """Plot what each class looks like: the probability of each answer, with its interval.
 
+    A dagger stands beside what rests mostly on the prior.
+
     Parameters
     ----------
     posterior : Posterior
@@ -86,7 +89,8 @@ def plot_profile(
     chosen = chosen_items(posterior, items)
     rows = profile_rows(chosen)
     ax = ax if ax is not None else new_axes(7.0, profile_height(posterior, chosen))
-    table = _keyed(_one_group(posterior.response_probabilities(interval=interval), group))
+    frame = posterior.response_probabilities(interval=interval)
+    table = _keyed(_one_group(frame.assign(marked=posterior.prior_marks.answers), group))
     names = posterior.model.class_names
     offsets = dodge(len(names))
     for at in range(0, len(rows), 2):
@@ -131,7 +135,9 @@ def plot_prevalence(
     -------
     matplotlib Axes
     """
-    frame = without_pooled_units(posterior, posterior.prevalence(interval=interval))
+    frame = posterior.prevalence(interval=interval)
+    frame = frame.assign(marked=posterior.prior_marks.prevalence)
+    frame = without_pooled_units(posterior, frame)
     names = posterior.model.class_names
     groups = list(dict.fromkeys(frame["group"])) if "group" in frame else [None]
     height = 1.1 + 0.36 * len(names) * len(groups)
@@ -270,6 +276,9 @@ def _points(
         fmt=class_marker(k), markersize=6, color=class_colour(k), markeredgecolor=INK,
         markeredgewidth=0.5, elinewidth=1.6, label=label, clip_on=False, zorder=3,
     )  # fmt: skip
+    for cell, value, place in zip(cells, median, places, strict=True):
+        if cell["marked"]:
+            _beside(ax, PRIOR_MARK, (value, place), (4, 2))
 
 
 def _one_group(frame: pd.DataFrame, group: str | None) -> pd.DataFrame:
@@ -280,7 +289,7 @@ def _one_group(frame: pd.DataFrame, group: str | None) -> pd.DataFrame:
 
 def _keyed(frame: pd.DataFrame) -> dict[tuple[str, str, str], dict[str, float]]:
     keys = zip(frame["latent_class"], frame["item"], frame["category"], strict=True)
-    cells = frame[["median", "lower", "upper"]].to_dict("records")
+    cells = frame[["median", "lower", "upper", "marked"]].to_dict("records")
     return {
         (str(a), str(b), str(c)): {str(name): float(value) for name, value in cell.items()}
         for (a, b, c), cell in zip(keys, cells, strict=True)

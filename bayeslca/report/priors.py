@@ -17,25 +17,25 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.model.latent_class_model import LatentClassModel
+    from bayeslca.model.prior_weights import PriorWeight
     from bayeslca.posterior.posterior import Posterior
 
-HEAVY = 0.2
-"""Share of the prior from which a reader is told."""
-RULING = 0.5
-"""Share of the prior from which a result rests mostly on it, and is marked."""
+HEAVY_WORDS = "a fifth"
+"""From which part of the expected cases a reader is told: `bayeslca.model.prior_weights.HEAVY`."""
 
 
 @dataclass(frozen=True)
-class PriorWeight:
+class ItemPrior:
     """What the prior of one item in one class weighs.
 
     Attributes
     ----------
     latent_class, item : str
     parameters : ndarray of float64, shape (category,)
-        Its Dirichlet parameters.
-    cases : float
-        Expected number of cases of the class that answered the item.
+        Its Dirichlet parameters, as stated or by default.
+    heaviest : PriorWeight or None
+        The block behind it, against the answers that the fit expects; of several (groups, split
+        answers) the one whose prior rules most; None where all is known.
     origin : str
         The statement that set the prior, or ``"default"``.
     constraints : tuple of str
@@ -45,43 +45,47 @@ class PriorWeight:
     latent_class: str
     item: str
     parameters: Floats
-    cases: float
+    heaviest: PriorWeight | None
     origin: str
     constraints: tuple[str, ...] = ()
 
     @property
     def weight(self) -> float:
-        """The number of cases that the prior counts for."""
-        return float(self.parameters.sum())
+        """The number of cases that the prior counts for; 0 where all is known."""
+        return 0.0 if self.heaviest is None else self.heaviest.weight
 
     @property
     def share(self) -> float:
         """Part of the result that the prior makes: weight over weight plus cases."""
-        return self.weight / (self.weight + self.cases)
+        if self.heaviest is None or self.heaviest.share is None:
+            return float("nan")
+        return self.heaviest.share
+
+    @property
+    def heavy(self) -> bool:
+        """True when the prior weighs more than a fifth of the expected cases."""
+        return self.heaviest is not None and self.heaviest.heavy
 
 
-def prior_weights(posterior: Posterior) -> tuple[PriorWeight, ...]:
+def item_priors(posterior: Posterior) -> tuple[ItemPrior, ...]:
     """Return what the prior of each item in each class weighs against the answers."""
     model = posterior.model
-    units = posterior.units
-    share = np.asarray(posterior.prevalence_draws).mean(axis=(0, 1))
-    weights: list[PriorWeight] = []
-    for j, item in enumerate(model.items):
-        answered = np.where(units.pattern[:, j] >= 0, units.count, 0)
-        by_group = np.bincount(units.group, weights=answered, minlength=share.shape[0])
-        expected = by_group @ share
-        weights.extend(
-            PriorWeight(
-                name,
-                item.name,
-                model.priors.response[0][j][k],
-                float(expected[k]),
-                model.response_prior_origin(0, j, k),
-                _constraints(model, j, k),
-            )
-            for k, name in enumerate(model.class_names)
+    at: dict[tuple[int, int], list[PriorWeight]] = {}
+    for weight in posterior.prior_marks.weights:
+        for j, k in dict.fromkeys((j, k) for _, j, k in weight.places):
+            at.setdefault((j, k), []).append(weight)
+    return tuple(
+        ItemPrior(
+            name,
+            item.name,
+            model.priors.response[0][j][k],
+            max(at.get((j, k), ()), key=lambda weight: weight.share or 0.0, default=None),
+            model.response_prior_origin(0, j, k),
+            _constraints(model, j, k),
         )
-    return tuple(weights)
+        for j, item in enumerate(model.items)
+        for k, name in enumerate(model.class_names)
+    )
 
 
 def _constraints(model: LatentClassModel, item: int, latent_class: int) -> tuple[str, ...]:
@@ -94,15 +98,6 @@ def _constraints(model: LatentClassModel, item: int, latent_class: int) -> tuple
         and (place.vector.item, place.vector.latent_class) == (item, latent_class)
     ]
     return tuple(dict.fromkeys(found))
-
-
-def ruled_by_prior(posterior: Posterior) -> frozenset[tuple[str, str]]:
-    """Return the (class, item) pairs whose probabilities rest mostly on the prior."""
-    return frozenset(
-        (weight.latent_class, weight.item)
-        for weight in prior_weights(posterior)
-        if weight.share >= RULING
-    )
 
 
 def distribution(parameters: Sequence[float] | Floats) -> str:
@@ -143,7 +138,7 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
                 | {"constraints": "; ".join(_on_prevalences(model))}
             )
     items = {item.name: item for item in model.items}
-    for weight in prior_weights(posterior):
+    for weight in item_priors(posterior):
         item = items[weight.item]
         group = {"group": ""} if model.groups else {}
         for c, category in enumerate(item.categories):

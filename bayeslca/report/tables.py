@@ -64,10 +64,19 @@ def file_tables(
     """
     posterior, interval = content.posterior, content.interval
     named: dict[str, tuple[str, pd.DataFrame]] = {
-        "prevalence": ("How common each class is", posterior.prevalence(interval=interval)),
+        "prevalence": (
+            "How common each class is",
+            posterior.prevalence(interval=interval).assign(
+                prior_overlap=posterior.prior_marks.prevalence_overlap,
+                mostly_prior=posterior.prior_marks.prevalence,
+            ),
+        ),
         "response_probabilities": (
             "The probability of each answer in each class",
-            posterior.response_probabilities(interval=interval),
+            posterior.response_probabilities(interval=interval).assign(
+                prior_overlap=posterior.prior_marks.answer_overlap,
+                mostly_prior=posterior.prior_marks.answers,
+            ),
         ),
         "assignment_error": (
             "Of the cases of each class, the share whose most probable class is each class",
@@ -142,8 +151,18 @@ def file_tables(
         named |= {name: table for name, table in fit.items() if not table[1].empty}
     named |= likelihood_tables(content)
     named |= outcome_tables(content)
+<<<<<<< HEAD
     if content.predictors is not None:
         named |= predictor_tables(content.predictors, content.predictors_against, interval)
+=======
+    if content.sensitivity is not None:
+        done = content.sensitivity
+        named["prior_sensitivity"] = ("How much of each result rests on its prior", done.table)
+        named["other_priors"] = ("What other priors would have given", done.moved)
+        named["other_priors_tried"] = ("Which other priors were tried, and how", done.priors)
+        if len(done.hypotheses):
+            named["hypotheses_by_prior"] = ("The hypotheses under other priors", done.hypotheses)
+>>>>>>> a3ca577 (Report and study file: what the priors did, with marks where a result rests mostly on one)
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
 

@@ -29,6 +29,7 @@ from bayeslca.report.sections.prevalence import prevalence_section
 from bayeslca.report.sections.reproduce import reproduce_section, software_versions
 from bayeslca.report.sections.reviewer import reviewer_section
 from bayeslca.report.sections.sampling import sampling_section
+from bayeslca.report.sections.sensitivity import sensitivity_section
 from bayeslca.report.sections.theory import theory_section
 from bayeslca.report.sections.together import together_section
 from bayeslca.report.sections.units import units_section
@@ -103,6 +104,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         predictors_section(facts),
         outcomes_section(facts),
         assumptions_section(facts),
+        sensitivity_section(facts),
         sampling_section(facts),
         reviewer_section(facts, versions),
         limits_section(facts),

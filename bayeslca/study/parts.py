@@ -20,7 +20,11 @@ from bayeslca.study.load import Study
 from bayeslca.study.other_counts import with_counts_under_other_priors
 from bayeslca.study.outcomes import with_outcomes
 from bayeslca.study.placing import with_placing
+<<<<<<< HEAD
 from bayeslca.study.predictors import with_predictors
+=======
+from bayeslca.study.prior_sensitivity import with_prior_sensitivity
+>>>>>>> a3ca577 (Report and study file: what the priors did, with marks where a result rests mostly on one)
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.sample_design import with_sample_design
 from bayeslca.study.steps import Steps
@@ -73,6 +77,10 @@ def _units(run: Run, content: ReportContent) -> ReportContent:
     return with_unit_comparison(run.study, content, run.steps, run.progress)
 
 
+def _priors(run: Run, content: ReportContent) -> ReportContent:
+    return with_prior_sensitivity(run.study, content, run.progress.say)
+
+
 def _placing(run: Run, content: ReportContent) -> ReportContent:
     return with_placing(run.study, content, run.progress.say)
 
@@ -106,6 +114,7 @@ PARTS: tuple[Part, ...] = (
     _theory,
     _fit_checks,
     _influence,
+    _priors,
     _maximum_likelihood,
     _placing,
     _outcomes,

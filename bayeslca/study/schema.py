@@ -18,6 +18,8 @@ from pydantic import (
     model_validator,
 )
 
+from bayeslca.exceptions import near_names
+
 
 def _as_text(value: Any) -> Any:
     """Let whole numbers and truth values stand for category names, as TOML writes them."""
@@ -28,6 +30,10 @@ def _as_text(value: Any) -> Any:
 
 Text = Annotated[str, BeforeValidator(_as_text)]
 """A category or a code: text, or a whole number read as its digits."""
+
+
+OTHER_PRIORS = ("half as strong", "twice as strong", "uniform", "Jeffreys")
+"""Names of `bayeslca.model.alternative_priors.ALTERNATIVES`, which a study file may ask for."""
 
 
 class _Section(BaseModel):
@@ -207,6 +213,25 @@ class FitSection(_Section):
     influence: StrictBool = True
 
 
+class PriorsSection(_Section):
+    """Whether it is looked at what the priors do, and which others are tried."""
+
+    sensitivity: StrictBool = True
+    refit: list[str] | None = None
+
+    @field_validator("refit")
+    @classmethod
+    def _known(cls, refit: list[str] | None) -> list[str] | None:
+        unknown = [name for name in refit or [] if name not in OTHER_PRIORS]
+        if unknown:
+            msg = (
+                f"has {unknown[0]!r}{near_names(unknown[0], OTHER_PRIORS)}; take some of "
+                f"{', '.join(OTHER_PRIORS)}"
+            )
+            raise ValueError(msg)
+        return refit
+
+
 class AssignmentSection(_Section):
     """When a case is placed in a class, and whether classes are drawn for other programs."""
 
@@ -272,6 +297,7 @@ class StudyFile(_Section):
     quantities: dict[str, str] = {}
     outcomes: list[OutcomeSection] = []
     fit: FitSection = FitSection()
+    priors: PriorsSection = PriorsSection()
     maximum_likelihood: MaximumLikelihoodSection | None = None
     assignment: AssignmentSection | None = None
     predictors: PredictorsSection | None = None

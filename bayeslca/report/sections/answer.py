@@ -5,9 +5,10 @@ from __future__ import annotations
 from bayeslca.report.blocks import Banner, Block, Bullets, Head, Lead, PageTable, Paragraph, Section
 from bayeslca.report.content import ReportContent
 from bayeslca.report.facts import Facts, Share
+from bayeslca.report.palette import PRIOR_MARK
 from bayeslca.report.plots import row_name
 from bayeslca.report.sections import design
-from bayeslca.report.sections.portraits import portrait
+from bayeslca.report.sections.portraits import PRIOR_LEGEND, portrait
 from bayeslca.report.wording import (
     about_of,
     called,
@@ -54,8 +55,8 @@ def answer_section(facts: Facts) -> Section:
 def headline(facts: Facts) -> str:
     """Return the sentence that answers the question with numbers.
 
-    It says first that it is not to be trusted, or that the study's own model predicts worse than
-    others, where that is so.
+    It says first that it is not to be trusted, that it rests on the priors, or that the study's
+    own model predicts worse than others, where that is so.
     """
     n_classes = len(facts.class_names)
     if n_classes == 1:
@@ -65,10 +66,23 @@ def headline(facts: Facts) -> str:
         )
     else:
         clause = facts.answered_in_words
-    clause = f"{_outside_tie(facts)}{clause}"
+    clause = f"{rests_on_priors(facts)}{_outside_tie(facts)}{clause}"
     if not facts.diagnostics.trustworthy:
         clause = f"not to be trusted as it stands: {clause}"
     return sentence(clause)
+
+
+def rests_on_priors(facts: Facts) -> str:
+    """Return how a sentence begins whose figures the answers do not settle; else nothing."""
+    if facts.undetermined:
+        return (
+            f"{PRIOR_MARK} resting on the priors too, as the answers cannot determine all of the "
+            "model: "
+        )
+    if facts.marked_classes:
+        names = listed([called(name) for name in facts.marked_classes])
+        return f"{PRIOR_MARK} with what is said of {names} resting mostly on the prior: "
+    return ""
 
 
 def is_to_be_trusted(facts: Facts) -> bool:
@@ -112,9 +126,11 @@ def _warning(facts: Facts) -> Banner:
 
 
 def _entry(facts: Facts, share: Share) -> tuple[str, str]:
+    mark = f" {PRIOR_MARK}" if share.name in facts.marked_classes else ""
     if facts.content.weighted is not None:
-        return f"{called(share.name)}: {share.text} of the population.", portrait(facts, share.name)
-    term = f"{called(share.name)}: {share.text}, {about_of(share.median, facts.n_cases)}."
+        term = f"{called(share.name)}: {share.text}{mark} of the population."
+        return term, portrait(facts, share.name)
+    term = f"{called(share.name)}: {share.text}{mark}, {about_of(share.median, facts.n_cases)}."
     return term, portrait(facts, share.name)
 
 
@@ -145,6 +161,8 @@ def _how_sure(facts: Facts) -> list[str]:
         for finding in facts.diagnostics.findings
         if finding.kind in UNDETERMINED
     ]
+    if facts.marked_answers or facts.marked_prevalences:
+        says.append(PRIOR_LEGEND)
     says.append(
         "Classes are a model's summary of the answers; how far to trust it stands under "
         "“Limits and cautions”."

@@ -14,7 +14,7 @@ from bayeslca.report.blocks import (
     Verbatim,
 )
 from bayeslca.report.facts import Facts
-from bayeslca.report.priors import HEAVY, PriorWeight, distribution, prior_weights
+from bayeslca.report.priors import HEAVY_WORDS, ItemPrior, distribution, item_priors
 from bayeslca.report.sections.prior_predictive import prior_blocks
 from bayeslca.report.wording import (
     called,
@@ -106,19 +106,19 @@ def answers_in_words(facts: Facts) -> str:
 
 def weights_in_words(facts: Facts) -> str:
     """Return how heavy the priors are, and where they matter."""
-    heavy = [weight for weight in prior_weights(facts.posterior) if weight.share >= HEAVY]
+    heavy = [one for one in item_priors(facts.posterior) if one.heavy]
     text = (
         "A prior counts as if so many cases of the class had been seen before; its share is that "
-        "number over itself plus the cases expected in the class. Priors pull probabilities near "
-        "0 or 100 % a little inward."
+        "number over itself plus the cases that the fit expects in the class. Priors pull "
+        "probabilities near 0 or 100 % a little inward."
     )
     if not heavy:
-        return f"{text} No prior makes up as much as {percent(HEAVY)} of any result."
-    worst = max(heavy, key=lambda weight: weight.share)
+        return f"{text} No prior weighs as much as {HEAVY_WORDS} of the cases of its class."
+    worst = max(heavy, key=lambda one: one.share)
     return (
-        f"{text} In {counted(len(heavy), 'place')} the prior makes up {percent(HEAVY)} or more "
-        f"of the result, most in {_item_text(facts, worst)} of {called(worst.latent_class)} "
-        f"({percent(worst.share)})."
+        f"{text} In {counted(len(heavy), 'place')} the prior weighs more than {HEAVY_WORDS} of "
+        f"the cases, most in {_item_text(facts, worst)} of {called(worst.latent_class)} (its share "
+        f"of the result is {percent(worst.share)})."
     )
 
 
@@ -196,7 +196,7 @@ def _weights_table(facts: Facts) -> PageTable:
     rows += [
         (_item_text(facts, weight), called(weight.latent_class), _held(facts, weight),
          significant(weight.weight), percent(weight.share))
-        for weight in prior_weights(facts.posterior)
+        for weight in item_priors(facts.posterior)
     ]  # fmt: skip
     heads = (
         Head("Of", "the prevalences, or an item", numeric=False),
@@ -212,11 +212,11 @@ def _weights_table(facts: Facts) -> PageTable:
     return PageTable("The priors and their weight", heads, tuple(rows), folded=len(rows) > 12)
 
 
-def _held(facts: Facts, weight: PriorWeight) -> str:
+def _held(facts: Facts, weight: ItemPrior) -> str:
     return _written(facts, weight) + (" *" if weight.constraints else "")
 
 
-def _written(facts: Facts, weight: PriorWeight) -> str:
+def _written(facts: Facts, weight: ItemPrior) -> str:
     item = next(item for item in facts.posterior.model.items if item.name == weight.item)
     if item.n_categories > 2:
         return distribution(weight.parameters)
@@ -224,5 +224,5 @@ def _written(facts: Facts, weight: PriorWeight) -> str:
     return distribution([weight.parameters[yes], weight.parameters[1 - yes]])
 
 
-def _item_text(facts: Facts, weight: PriorWeight) -> str:
+def _item_text(facts: Facts, weight: ItemPrior) -> str:
     return next(item.text for item in facts.posterior.model.items if item.name == weight.item)

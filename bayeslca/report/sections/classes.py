@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Sequence
-from typing import TYPE_CHECKING
+from collections.abc import Iterator, Mapping, Sequence
+from typing import TYPE_CHECKING, Any
 
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section, Subheading
 from bayeslca.report.facts import Facts, overall_shares, shares_in_words
 from bayeslca.report.figures import WIDTH, Figure, draw
+from bayeslca.report.palette import PRIOR_MARK
 from bayeslca.report.plots import plot_ordered_item, plot_profile, profile_rows, row_height
-from bayeslca.report.sections.portraits import PRIOR_MARK, portrait
+from bayeslca.report.sections.portraits import PRIOR_LEGEND, portrait
 from bayeslca.report.wording import (
     called,
     counted_in_words,
@@ -81,7 +82,7 @@ def response_table(facts: Facts) -> PageTable:
         }
         for item, category in profile_rows(facts.posterior.model.items):
             shown = [
-                _cell(facts, name, item.name, cells[(name, item.name, category)])
+                _cell(facts, (str(group or ""), name, item.name, category), cells)
                 for name in facts.class_names
             ]
             where = [] if group is None else [str(group)]
@@ -94,18 +95,19 @@ def response_table(facts: Facts) -> PageTable:
           for name in facts.class_names),
     ]  # fmt: skip
     ruled = any(PRIOR_MARK in cell for row in rows for cell in row)
-    notes = (
-        [f"{PRIOR_MARK} rests mostly on the prior: it weighs more than the expected cases."]
-        if ruled
-        else []
-    )
+    notes = [PRIOR_LEGEND] if ruled else []
     return PageTable(
         "The probability of each answer in each class", tuple(heads), tuple(rows), tuple(notes)
     )
 
 
-def _cell(facts: Facts, latent_class: str, item: str, row: dict[object, float]) -> str:
-    mark = f" {PRIOR_MARK}" if (latent_class, item) in facts.ruled else ""
+def _cell(
+    facts: Facts,
+    key: tuple[str, str, str, str],
+    cells: Mapping[tuple[str, str, str], Mapping[Any, float]],
+) -> str:
+    row = cells[key[1:]]
+    mark = f" {PRIOR_MARK}" if key in facts.marked_answers else ""
     return percent_interval(row["median"], row["lower"], row["upper"]) + mark
 
 
@@ -163,7 +165,7 @@ def _profile(
         caption=(
             f"The probability of each answer in each class{part}{_in_group(group)}: a marker at "
             f"the median, a line over the {level(interval)} interval. Each class has a colour and "
-            "a marker of its own."
+            "a marker of its own." + (f" {PRIOR_LEGEND}" if facts.marked_answers else "")
         ),
         alt="Profile plot. "
         + " ".join(f"{called(k)}: {portrait(facts, k)}" for k in facts.class_names),

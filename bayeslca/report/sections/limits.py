@@ -154,11 +154,12 @@ def _small_or_ruled(facts: Facts) -> list[tuple[str, str]]:
                 "what is said of so small a class rests on little.",
             )
         )
-    if facts.ruled:
+    n_marked = len(facts.marked_answers) + len(facts.marked_prevalences)
+    if n_marked:
         entries.append(
             (
                 "Some numbers rest mostly on the prior",
-                f"({counted(len(facts.ruled), 'place')}); they are marked † where they stand.",
+                f"({counted(n_marked, 'place')}); they are marked † where they stand.",
             )
         )
     return entries

@@ -6,6 +6,7 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from typing import Any, NamedTuple
 
 from bayeslca.report.facts import Facts
+from bayeslca.report.palette import PRIOR_MARK
 from bayeslca.report.wording import listed, listed_up_to, percent
 from bayeslca.responses.item import Item
 
@@ -13,8 +14,10 @@ USUAL, SELDOM = 0.8, 0.2
 FEW_ITEMS = 10
 """Up to so many items, a portrait names them all."""
 MOST_NAMED = 4
-PRIOR_MARK = "†"
-"""Put beside a number that rests mostly on the prior."""
+PRIOR_LEGEND = (
+    f"{PRIOR_MARK} rests mostly on the prior: the answers have moved it little, or the prior "
+    "weighs more than the cases."
+)
 
 
 def portrait(facts: Facts, latent_class: str) -> str:
@@ -50,14 +53,19 @@ class _Named(NamedTuple):
 
 def _named(facts: Facts, latent_class: str, item: Item) -> _Named:
     cells = class_cells(facts, latent_class)
-    mark = PRIOR_MARK if (latent_class, item.name) in facts.ruled else ""
+    group = facts.response_groups[0] if facts.response_groups else ""
+
+    def mark(answer: str) -> str:
+        marked = (group, latent_class, item.name, answer) in facts.marked_answers
+        return PRIOR_MARK if marked else ""
+
     if item.n_categories > 2:
         best = max(item.categories, key=lambda name: cells[(item.name, name)]["median"])
         share = float(cells[(item.name, best)]["median"])
-        return _Named("", share, f"{item.text}: most often “{best}” ({percent(share)}{mark})")
+        return _Named("", share, f"{item.text}: most often “{best}” ({percent(share)}{mark(best)})")
     yes = item.yes or item.categories[-1]
     share = float(cells[(item.name, yes)]["median"])
-    return _Named(yes, share, f"{item.text} ({percent(share)}{mark})")
+    return _Named(yes, share, f"{item.text} ({percent(share)}{mark(yes)})")
 
 
 def _by_answer(

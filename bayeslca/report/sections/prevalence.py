@@ -8,7 +8,9 @@ from typing import Any
 from bayeslca.report.blocks import Block, Head, PageTable, Paragraph, Picture, Section
 from bayeslca.report.facts import Facts, shares_in_words
 from bayeslca.report.figures import WIDTH, draw
+from bayeslca.report.palette import PRIOR_MARK
 from bayeslca.report.plots import plot_prevalence, without_pooled_units
+from bayeslca.report.sections.portraits import PRIOR_LEGEND
 from bayeslca.report.wording import (
     NOTHING,
     called,
@@ -43,6 +45,7 @@ def prevalence_section(facts: Facts) -> Section:
         caption=(
             f"The share of the cases in each class{' by group' if groups else ''}: a marker at the "
             f"median, a line over the {level(interval)} interval."
+            + (f" {PRIOR_LEGEND}" if facts.marked_prevalences else "")
         ),
         alt=sentence(shares_in_words(facts.overall, facts.n_cases)),
     )
@@ -84,6 +87,8 @@ def _table(facts: Facts) -> PageTable:
         for row in frame[frame["latent_class"] == name].to_dict("records"):
             share = percent_interval(row["median"], row["lower"], row["upper"])
             where = [str(row["group"])] if groups else []
+            if (where[0] if where else "", name) in facts.marked_prevalences:
+                share += f" {PRIOR_MARK}"
             rows.append((called(name), *where, share, _in_cases(row)))
     heads = (
         Head("Class", "the class that the row is about", numeric=False),
@@ -91,4 +96,5 @@ def _table(facts: Facts) -> PageTable:
         Head("Share", f"of the cases, median ({level(facts.content.interval)} interval)"),
         Head("In cases", "the share times the cases that gave an answer"),
     )
-    return PageTable("The share of the cases in each class", heads, tuple(rows))
+    notes = (PRIOR_LEGEND,) if facts.marked_prevalences else ()
+    return PageTable("The share of the cases in each class", heads, tuple(rows), notes)

@@ -26,6 +26,7 @@ from bayeslca.report.sections import (
     prior_predictive,
     reproduce,
     sampling,
+    sensitivity,
 )
 from bayeslca.report.wording import counted, counted_in_words, decimal, listed, sentence, whole
 
@@ -84,10 +85,7 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     yield _converged(facts)
     yield _priors(facts)
     yield _implied(facts)
-    yield _open(
-        "Would other priors have changed the answer?",
-        _items("BARG 5A-5C; WAMBS 7-9", "14b", facts),
-    )
+    yield _other_priors(facts)
     yield _independence(facts)
     yield _reproduced(facts)
     yield _single_cases(facts)
@@ -192,6 +190,16 @@ def _priors(facts: Facts) -> Answered:
         (_PRIORS,),
         _items("BARG 1C; WAMBS 1", "14b", facts),
     )
+
+
+def _other_priors(facts: Facts) -> Answered:
+    question = "Would other priors have changed the answer?"
+    items = _items("BARG 5A-5C; WAMBS 7-9", "14b", facts)
+    done = facts.content.sensitivity
+    if done is None:
+        return _open(question, items)
+    here = (sensitivity.ANCHOR, sensitivity.HEADING)
+    return Answered(question, done.verdict, (here,), items)
 
 
 def _implied(facts: Facts) -> Answered:
