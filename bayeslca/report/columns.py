@@ -145,7 +145,9 @@ COLUMNS: dict[str, Column] = {
         "Refitted", "patterns that were refitted without one of their cases", "count"
     ),
     "reliable": Column(
-        "Reliable", "weights with a Pareto k up to 0.7, refits that were precise enough", "flag"
+        "Reliable",
+        "weights with a Pareto k up to 0.7, refits or evidence that can be trusted",
+        "flag",
     ),
     "rows": Column("Rows", "of the data, from 1, with these answers", "text"),
     "log_density": Column(
@@ -194,7 +196,6 @@ COLUMNS: dict[str, Column] = {
     "probability_mcse": Column(
         "± of probability", "Monte Carlo standard error of the probability", "number"
     ),
-    "reliable": Column("Reliable", "whether the evidence is to be trusted", "flag"),
     "reason": Column("Why not", "why the evidence is not to be trusted", "text"),
     "set": Column("Set", "cases that go together; A is the largest", "text"),
     "patterns": Column("Patterns", "number of distinct response patterns", "count"),

@@ -127,15 +127,12 @@ class ReportContent:
         comparison); None when not asked for.
     one_class_fewer : tuple of LikelihoodRatioTest
         Bootstrap tests of one class fewer, as far as asked for.
-<<<<<<< HEAD
     predictors : ClassPredictors or None
         Class regressed on covariates; None when not done.
     predictors_against : str or None
         The class that the page compares the others with; the first one when None.
-=======
     sensitivity : PriorSensitivity or None
         What the priors do, and what moves under others; None when not looked at.
->>>>>>> a3ca577 (Report and study file: what the priors did, with marks where a result rests mostly on one)
     placing_rule : PlacingRule or None
         When a case is placed in a class; None when the study does not say.
     placed : DataFrame or None
@@ -194,12 +191,9 @@ class ReportContent:
     influence: Influence | None = None
     criteria: CriteriaBeside | None = None
     one_class_fewer: tuple[LikelihoodRatioTest, ...] = ()
-<<<<<<< HEAD
     predictors: ClassPredictors | None = None
     predictors_against: str | None = None
-=======
     sensitivity: PriorSensitivity | None = None
->>>>>>> a3ca577 (Report and study file: what the priors did, with marks where a result rests mostly on one)
     placing_rule: PlacingRule | None = None
     placed: pd.DataFrame | None = None
     plausible_values: pd.DataFrame | None = None

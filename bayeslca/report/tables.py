@@ -151,10 +151,8 @@ def file_tables(
         named |= {name: table for name, table in fit.items() if not table[1].empty}
     named |= likelihood_tables(content)
     named |= outcome_tables(content)
-<<<<<<< HEAD
     if content.predictors is not None:
         named |= predictor_tables(content.predictors, content.predictors_against, interval)
-=======
     if content.sensitivity is not None:
         done = content.sensitivity
         named["prior_sensitivity"] = ("How much of each result rests on its prior", done.table)
@@ -162,7 +160,6 @@ def file_tables(
         named["other_priors_tried"] = ("Which other priors were tried, and how", done.priors)
         if len(done.hypotheses):
             named["hypotheses_by_prior"] = ("The hypotheses under other priors", done.hypotheses)
->>>>>>> a3ca577 (Report and study file: what the priors did, with marks where a result rests mostly on one)
     tables = [FileTable(name, title, _flat(frame)) for name, (title, frame) in named.items()]
     return (*tables, _columns_table(tables, interval))
 

@@ -20,11 +20,8 @@ from bayeslca.study.load import Study
 from bayeslca.study.other_counts import with_counts_under_other_priors
 from bayeslca.study.outcomes import with_outcomes
 from bayeslca.study.placing import with_placing
-<<<<<<< HEAD
 from bayeslca.study.predictors import with_predictors
-=======
 from bayeslca.study.prior_sensitivity import with_prior_sensitivity
->>>>>>> a3ca577 (Report and study file: what the priors did, with marks where a result rests mostly on one)
 from bayeslca.study.progress import JobProgress
 from bayeslca.study.sample_design import with_sample_design
 from bayeslca.study.steps import Steps
