@@ -27,11 +27,14 @@ class CaseUnits:
         Unit of each row of the responses, -1 for rows that were left out.
     group_of_unit : ndarray of int64, shape (U,)
         The model's group.
+    pattern : ndarray of int16, shape (U, item)
+        The answers.
     """
 
     units: UnitTable
     unit_of_case: Ints
     group_of_unit: Ints
+    pattern: Ints
 
 
 def case_units(
@@ -96,4 +99,4 @@ def case_units(
         prevalence_row=np.asarray(prevalence_row, dtype=np.int64)[rows],
         log_weight=compiled.log_weight,
     )
-    return CaseUnits(units, unit_of_case, group_of_unit)
+    return CaseUnits(units, unit_of_case, group_of_unit, responses.codes[rows])

@@ -265,6 +265,7 @@ def class_predictors(
     *,
     ways: Sequence[Way] = WAYS,
     correction: Correction = "fixed_error_likelihood",
+    sampler: Literal["gibbs", "nuts"] = "gibbs",
     prior_scale: float = PRIOR_SCALE,
     intercept_scale: float = INTERCEPT_SCALE,
     missing: Missing = "leave_out",
@@ -294,6 +295,8 @@ def class_predictors(
         measurement model alone; or placement in classes is regressed on and its error undone.
     correction : {"fixed_error_likelihood", "inverse_error_matrix"}
         Of the three steps.
+    sampler : {"gibbs", "nuts"}
+        Of the joint way. NUTS samples the same posterior as a PyMC model, some ten times slower.
     prior_scale, intercept_scale : float
         Standard deviations of coefficients and intercepts of each class.
     missing : {"leave_out", "refuse"}
@@ -321,6 +324,9 @@ def class_predictors(
     if unknown or not ways:
         msg = f"ways={list(ways)}: name one or more of {', '.join(WAYS)}."
         raise ModelError(msg)
+    if sampler not in ("gibbs", "nuts"):
+        msg = f"sampler={sampler!r}: the joint way is sampled by 'gibbs' or 'nuts'."
+        raise ModelError(msg)
     if not prior_scale > 0.0 or not intercept_scale > 0.0:
         msg = f"prior_scale={prior_scale}, intercept_scale={intercept_scale}: both are above 0."
         raise ModelError(msg)
@@ -337,8 +343,8 @@ def class_predictors(
     found: dict[str, WayDraws] = {}
     seconds: dict[str, float] = {}
     runs: dict[Way, Callable[[], WayDraws]] = {
-        "joint": lambda: jointly(
-            posterior, relation, seed=sequence["joint"], draws=draws, ess=ess, threads=threads
+        "joint": lambda: _joint(
+            posterior, relation, sampler, sequence["joint"], draws, ess, threads
         ),
         "cut": lambda: by_cut(
             posterior, relation, seed=sequence["cut"], draws=max(draws // 2, 1), threads=threads
@@ -363,6 +369,22 @@ def class_predictors(
         seconds["three_steps"] = time.perf_counter() - begin
     findings = predictor_findings(posterior, design, prior_sd, found, steps, failure)
     return ClassPredictors(posterior, design, prior_sd, found, steps, findings, seconds, seed)
+
+
+def _joint(
+    posterior: Posterior,
+    relation: Regression,
+    sampler: Literal["gibbs", "nuts"],
+    seed: np.random.SeedSequence,
+    draws: int,
+    ess: float,
+    threads: int | None,
+) -> WayDraws:
+    if sampler == "nuts":
+        from bayeslca.relate.predictor_nuts import jointly_by_nuts
+
+        return jointly_by_nuts(posterior, relation, seed=seed, draws=draws, threads=threads)
+    return jointly(posterior, relation, seed=seed, draws=draws, ess=ess, threads=threads)
 
 
 def _design(

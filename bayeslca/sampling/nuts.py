@@ -251,7 +251,7 @@ class _Run:
 
     def __call__(self, draws: int, sequence: np.random.SeedSequence) -> _Kept:
         seeds = [int(s) for s in sequence.spawn(1)[0].generate_state(len(self.starts))]
-        with _quiet():
+        with quiet_pymc():
             tree = as_tree(
                 self._nutpie(draws, seeds) if self.backend == "nutpie" else self._pymc(draws, seeds)
             )
@@ -348,7 +348,7 @@ def _label_free(parts: Parts, kept: _Kept) -> dict[str, Floats]:
 
 
 @contextmanager
-def _quiet() -> Iterator[None]:
+def quiet_pymc() -> Iterator[None]:
     """Keep PyMC's log lines and warnings back: what matters of them is in the draws."""
     loggers = [logging.getLogger(name) for name in ("pymc", "pytensor")]
     levels = [logger.level for logger in loggers]
