@@ -210,6 +210,7 @@ def comparison_of(
         verdict=verdict,
         findings=(
             *_findings(table, loo[best].n_cases, missing),
+            *_known_units(posteriors),
             *_evidence_findings(evidence),
             *_design_findings(posteriors),
         ),
@@ -335,6 +336,25 @@ def _evidence_findings(evidence: Mapping[Name, Evidence]) -> tuple[Finding, ...]
                 )
             )
     return tuple(found)
+
+
+def _known_units(posteriors: Mapping[Name, Posterior]) -> tuple[Finding, ...]:
+    """Say what is left out where units are pooled: a case, not its unit."""
+    pooled = [one.model for one in posteriors.values() if one.model.pooled]
+    if not pooled or pooled[0].groups is None:
+        return ()
+    name = pooled[0].groups.name
+    return (
+        Finding(
+            kind="known_units",
+            level="note",
+            message=(
+                f"Accuracy here is for a new case of a known {name}, given that {name}'s "
+                "prevalences."
+            ),
+            remedy=f"For a new {name}, leave out one {name} at a time: compare_units.",
+        ),
+    )
 
 
 def _smallest_class(posterior: Posterior) -> dict[str, float]:

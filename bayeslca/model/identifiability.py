@@ -8,15 +8,16 @@ parameters, at random points and, when there is one, at an estimate (Goodman 197
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import sqrt
 
 import numpy as np
 
-from bayeslca._typing import Bools, Floats
+from bayeslca._typing import Bools, Floats, Ints
 from bayeslca.model.blocks import BlockArrays
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.pattern_derivatives import free_directions, n_other_cells, scaled_derivatives
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import PrevalenceSource
 from bayeslca.model.simulate import Parameters
 from bayeslca.model.table import Table
@@ -29,6 +30,8 @@ UNIFORM_SD = 1 / sqrt(12)
 """Standard deviation of a uniform prior on a probability: data with a larger standard error
 say less than it does."""
 N_POINTS = 3
+MOST_UNITS = 8
+"""Of more pooled units only those with most cases are looked at."""
 
 
 @dataclass(frozen=True)
@@ -93,6 +96,18 @@ def identifiability(
     """
     rng = np.random.default_rng(seed)
     masks = _observed_masks(table, units)
+    left_out = 0
+    many = table.n_prevalence_rows > MOST_UNITS and table.n_response_groups == 1
+    if isinstance(source, PooledPrevalence) and many:
+        # What some units determine of the classes, they determine for all; each of the others
+        # adds its own prevalences, which follow from the classes.
+        rows = _largest_units(table, units)
+        left_out = (table.n_prevalence_rows - rows.size) * (table.n_classes - 1)
+        masks = [masks[g] for g in rows]
+        names = (names[0], [names[1][g] for g in rows])
+        table = replace(table, response_group=table.response_group[rows])
+        if estimate is not None:
+            estimate = Parameters(estimate.elements, estimate.prevalence[rows])
     n_cells = sum(n_other_cells(table, mask) for group in masks for mask in group)
     free = free_directions(table, source)
     free_names = _free_names(free, names)
@@ -116,6 +131,7 @@ def identifiability(
         n_cases = units.n_cases
         small = values * sqrt(n_cases) < 1 / UNIFORM_SD
         weak, weak_names = bool(small.any()), _named(free_names, vectors[small], share=0.1)
+    n_free, rank = n_free + left_out, rank + left_out
     return Identifiability(
         n_free=n_free,
         n_cells=n_cells,
@@ -126,6 +142,15 @@ def identifiability(
         weak_parameters=weak_names,
         message=_message(n_free, n_cells, rank, not_identified, weak, weak_names),
     )
+
+
+def _largest_units(table: Table, units: Units | None) -> Ints:
+    """Return the pooled units with most cases, in their order."""
+    n = table.n_prevalence_rows
+    if units is None:
+        return np.arange(MOST_UNITS)
+    cases = np.bincount(units.group, weights=units.count, minlength=n)
+    return np.sort(np.argsort(-cases, kind="stable")[:MOST_UNITS])
 
 
 def count_free(table: Table, source: PrevalenceSource | None = None) -> int:

@@ -19,6 +19,7 @@ from bayeslca.responses.responses import Responses
 from bayeslca.sampling.draws import Draws
 from bayeslca.sampling.relabel import Relabelled, relabel
 from bayeslca.sampling.run import MAX_SWEEPS, draw_posterior
+from bayeslca.sampling.stopping import SOME_UNITS, some_rows
 
 SAMPLERS = ("auto", "gibbs", "nuts")
 
@@ -161,7 +162,8 @@ def reported_quantities(
     unsteady = class_state(model.table, units, named).unsteady
     out: dict[str, Floats] = {}
     steady = [k for k in range(model.n_classes) if k not in unsteady]
-    for g in range(named.prevalence.shape[2]):
+    n_rows = named.prevalence.shape[2]
+    for g in range(n_rows) if named.concentration is None else some_rows(n_rows, SOME_UNITS):
         for k in steady:
             out[f"prevalence of {model.class_names[k]} in group {g + 1}"] = named.prevalence[
                 :, :, g, k

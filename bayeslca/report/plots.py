@@ -24,6 +24,7 @@ from bayeslca.report.palette import (
 )
 from bayeslca.report.placement import placement
 from bayeslca.report.sampling_plots import plot_ranks, plot_traces
+from bayeslca.report.unit_plots import plot_units
 from bayeslca.report.wording import called, decimal, level
 
 if TYPE_CHECKING:
@@ -42,6 +43,7 @@ __all__ = [
     "plot_profile",
     "plot_ranks",
     "plot_traces",
+    "plot_units",
 ]
 
 

@@ -22,6 +22,9 @@ COMMONEST = 5
 
 TAIL = (0.05, 0.95)
 
+FEW_UNITS, SOME_UNITS = 4, 30
+"""Pooled units whose sorted prevalences, and whose reported ones, are watched."""
+
 
 @dataclass(frozen=True, slots=True)
 class StoppingRule:
@@ -119,7 +122,9 @@ def label_free(
     """
     quantities = {"log likelihood": log_likelihood}
     ranked = np.sort(prevalence, axis=-1)[..., ::-1]
-    for g in range(ranked.shape[2]):
+    # Pooled units may be many, and are of one kind: their mean and spread are watched, and some.
+    every = range(ranked.shape[2])
+    for g in every if concentration is None else some_rows(ranked.shape[2], FEW_UNITS):
         for k in range(ranked.shape[3]):
             quantities[f"prevalence of rank {k + 1} in group {g + 1}"] = ranked[:, :, g, k]
     if concentration is not None:
@@ -131,6 +136,11 @@ def label_free(
     for u in range(patterns.shape[-1]):
         quantities[f"probability of watched pattern {u + 1}"] = patterns[..., u]
     return quantities
+
+
+def some_rows(n: int, most: int) -> list[int]:
+    """Return all rows, or some that are spread evenly over them."""
+    return sorted(set(np.linspace(0, n - 1, min(n, most)).astype(int).tolist()))
 
 
 def watched_units(units: UnitTable, most: int = COMMONEST) -> UnitTable:

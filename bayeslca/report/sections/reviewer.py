@@ -27,8 +27,17 @@ from bayeslca.report.sections import (
     reproduce,
     sampling,
     sensitivity,
+    units,
 )
-from bayeslca.report.wording import counted, counted_in_words, decimal, listed, sentence, whole
+from bayeslca.report.wording import (
+    counted,
+    counted_in_words,
+    decimal,
+    listed,
+    number_interval,
+    sentence,
+    whole,
+)
 
 ANCHOR, HEADING = "reviewer", "What a reviewer will ask"
 NOT_DONE = "Not done in this study."
@@ -92,6 +101,8 @@ def _all(facts: Facts, versions: Mapping[str, str]) -> Iterator[Answered]:
     yield _sampled(facts)
     yield _missing(facts)
     yield _unclear(facts)
+    if facts.posterior.model.groups is not None:
+        yield _nested(facts)
     yield _separated(facts)
     if facts.content.outcomes:
         yield _treated_as_known(facts)
@@ -216,6 +227,29 @@ def _reproduced(facts: Facts) -> Answered:
     if checks is None:
         return _open(question, "BARG 3A")
     return Answered(question, fit.reproduced_in_words(checks), (_FIT,), "BARG 3A")
+
+
+def _nested(facts: Facts) -> Answered:
+    model = facts.posterior.model
+    assert model.groups is not None  # asked only where there are groups
+    name = model.groups.name
+    question = f"Do cases of one {name} go together, and was that taken into account?"
+    if not model.pooled:
+        return Answered(
+            question,
+            f"Each {name} has prevalences of its own, with a prior of its own; nothing is learnt "
+            f"about one {name} from the others.",
+            (_PREVALENCE,),
+        )
+    table = facts.posterior.between_units(interval=facts.content.interval)
+    row = table.to_dict("records")[0]
+    spread = number_interval(row["median"], row["lower"], row["upper"])
+    return Answered(
+        question,
+        f"Units are pooled: each {name} has prevalences of its own, drawn from one distribution. "
+        f"The spread between units is {spread}, from 0 (all alike) to 1 (each of one class).",
+        ((units.ANCHOR, units.heading(facts)),),
+    )
 
 
 def _independence(facts: Facts) -> Answered:
