@@ -279,7 +279,9 @@ def class_outcomes(
         chosen, counted = work.count_model()
     model = work.model(chosen)
     drawn: dict[str, OutcomeDraws] = {}
-    if "joint" in ways:
+    if "joint" in ways and posterior.model.pooled:
+        counted = (*counted, _not_written())
+    elif "joint" in ways:
         drawn["joint"] = joint_draws(
             posterior, model, work.cases, seed=work.seed_of(1), draws=draws, ess=ess,
             max_sweeps=max_sweeps, threads=threads,
@@ -333,6 +335,14 @@ def _check_options(
     if not ways:
         msg = f"ways is empty; take from {', '.join(WAYS)}."
         raise ModelError(msg)
+
+
+def _not_written() -> Finding:
+    return Finding(
+        kind="joint_not_written",
+        level="note",
+        message="Units are pooled, for which the joint way is not written: the cut is shown alone.",
+    )
 
 
 def read_covariates(

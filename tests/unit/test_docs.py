@@ -224,7 +224,8 @@ def test_every_finding_about_model_and_sampling_is_explained() -> None:
     text = "".join(page.read_text(encoding="utf-8") for page in PAGES)
     sources = [
         "model/cautions.py", "sampling/nuts.py", "sampling/relabel.py", "assess/convergence.py",
-        "assess/comparison.py", "assess/influence_words.py",
+        "assess/comparison.py", "relate/outcome_words.py", "relate/class_outcomes.py",
+        "relate/outcome_column.py", "assess/influence_words.py",
     ]  # fmt: skip
     kinds = {
         kind
