@@ -6,6 +6,7 @@ from importlib import import_module
 from typing import Any
 
 _HOME = {
+    "AnsweredTogether": "bayeslca.model.answered_together",
     "ClassOutcomes": "bayeslca.relate.class_outcomes",
     "ClassPredictors": "bayeslca.relate.predictors",
     "Comparison": "bayeslca.assess.compare",
@@ -39,6 +40,7 @@ _HOME = {
 """Where each public name lives; loaded when first used, so that importing stays light."""
 
 __all__ = [
+    "AnsweredTogether",
     "ClassOutcomes",
     "ClassPredictors",
     "Comparison",

@@ -99,7 +99,7 @@ def collapse(model: LatentClassModel) -> Collapsed | None:
     orders form rings or bind several answers of one item.
     """
     table, source = model.table, model.prevalence_source
-    if table.pair_item.size:
+    if table.joint_set.size:
         return None
     takes = _takes(table)
     response_orders = forest(table) if table.is_bounded else None

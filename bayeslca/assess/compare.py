@@ -16,6 +16,7 @@ from bayeslca.assess.comparison_words import OWN, Name
 from bayeslca.assess.folds import refuse_folds
 from bayeslca.assess.seeds_of_rows import entropy_of, seed_of_row
 from bayeslca.exceptions import ModelError
+from bayeslca.model.answered_together import AnsweredTogether, checked_together
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses
@@ -31,6 +32,7 @@ def class_count_model(
     groups: bool = True,
     pooled: bool = False,
     spread_prior: tuple[float, float] = (1.0, 1.0),
+    answered_together: Sequence[AnsweredTogether | Sequence[str]] = (),
 ) -> LatentClassModel:
     """Return the model of a number of classes that a comparison of class counts fits.
 
@@ -45,6 +47,8 @@ def class_count_model(
     pooled, spread_prior
         Whether these are pooled, and the prior on their spread; see `LatentClassModel`. With one
         class there is nothing to pool.
+    answered_together : sequence of AnsweredTogether
+        Items that may go together within every class.
     """
     return LatentClassModel(
         responses.items,
@@ -53,6 +57,7 @@ def class_count_model(
         groups=responses.groups if groups else None,
         pooled=pooled and n_classes > 1,
         spread_prior=spread_prior if pooled and n_classes > 1 else (1.0, 1.0),
+        answered_together=checked_together(answered_together),
     )
 
 
@@ -64,6 +69,7 @@ def compare_class_counts(
     groups: bool = True,
     pooled: bool = False,
     spread_prior: tuple[float, float] = (1.0, 1.0),
+    answered_together: Sequence[AnsweredTogether | Sequence[str]] = (),
     seed: Seed = None,
     fitted: Mapping[int, Posterior] | None = None,
     own: LatentClassModel | Posterior | None = None,
@@ -86,6 +92,8 @@ def compare_class_counts(
         Whether groups that the responses have get prevalences of their own.
     pooled, spread_prior
         As in `class_count_model`.
+    answered_together : sequence of AnsweredTogether
+        Items that may go together within every class, in every model.
     seed : int, numpy.random.Generator, numpy.random.SeedSequence or None
         Each count has a stream of its own, so that its row does not depend on the others.
     fitted : mapping from int to Posterior, optional
@@ -117,6 +125,7 @@ def compare_class_counts(
             groups=groups,
             pooled=pooled,
             spread_prior=spread_prior,
+            answered_together=answered_together,
         )
         entries[n] = (fitted or {}).get(n, model)
     if own is not None:

@@ -166,10 +166,13 @@ def conditional_parameters(
 def log_evidence_of_one_class(free: FreeParameters, units: UnitTable) -> float | None:
     """Return the exact log evidence where the class of every case is known and cells are single.
 
-    None where it has no closed form: two classes or more, bounds, sums of cells.
+    None where it has no closed form: two classes or more, bounds, answers that are sums of cells
+    (one answer of a set that is answered together).
     """
     table = free.table
-    if table.n_classes > 1 or free.is_bounded or np.any(np.diff(table.cell_start) > 1):
+    if table.n_classes > 1 or free.is_bounded:
+        return None
+    if np.any(np.diff(table.cell_start)[np.unique(units.row)] > 1):
         return None
     total = 0.0
     counts = np.zeros_like(free.prior)

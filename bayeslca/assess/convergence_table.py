@@ -70,6 +70,9 @@ def diagnostics_table(posterior: Posterior, state: ClassState) -> pd.DataFrame:
     if posterior.model.n_classes > 1:
         parts.append(posterior.separation().assign(quantity="separation").drop(columns="note"))
     parts.append(posterior.response_probabilities().assign(quantity="response probability"))
+    if posterior.model.item_sets:
+        joint = posterior.joint_answers().rename(columns={"joint_answer": "category"})
+        parts.append(joint.rename(columns={"items": "item"}).assign(quantity="joint answer"))
     for part in parts:
         part.attrs.clear()  # pandas compares the attributes of what it joins
         for key in set(KEYS) - set(part.columns):
@@ -108,6 +111,8 @@ def _name(row: Iterable[str]) -> str:
         return f"P({latent_class}{where})"
     if quantity == "response probability":
         return f"P({item}={category} | {latent_class}{', ' + group if group else ''})"
+    if quantity == "joint answer":
+        return f"P({category} | {latent_class}{', ' + group if group else ''})"
     return quantity
 
 

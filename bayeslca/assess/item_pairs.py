@@ -18,6 +18,8 @@ from itertools import combinations
 import numpy as np
 
 from bayeslca._typing import Bools, Floats, Ints
+from bayeslca.model.joint_answers import joints
+from bayeslca.model.pair_measures import answer_scores, concordance, direction, has_order
 from bayeslca.model.table import Table
 from bayeslca.responses.item import Item
 
@@ -116,14 +118,16 @@ class ItemPairs:
         return out
 
     def _joint_rows(self, table: Table) -> Ints:
-        """Row of joint answers of pairs that are answered together, -1 elsewhere."""
+        """Row of joint answers of pairs of a set that is answered together, -1 elsewhere."""
         out = np.full((table.n_response_groups, self.n_cells), -1, dtype=np.int64)
-        for pair, (first, second) in enumerate(table.pair_item.tolist()):
-            rows = table.pair_row[:, table.pair_start[pair] : table.pair_start[pair + 1]]
+        for joint in joints(table):
+            if len(joint.items) != 2:
+                continue
+            first, second = joint.items
+            rows = table.joint_row[:, joint.columns]
             low, high = min(first, second), max(first, second)
             if first > second:
-                shape = (len(rows), self.items[first].n_categories, -1)
-                rows = rows.reshape(shape).swapaxes(1, 2).reshape(len(rows), -1)
+                rows = rows.reshape(len(rows), *joint.sizes).swapaxes(1, 2).reshape(len(rows), -1)
             at = self.pairs.index((low, high))
             out[:, self.start[at] : self.start[at + 1]] = rows
         return out
@@ -211,32 +215,9 @@ class ItemPairs:
                 shape = (self.items[i].n_categories, self.items[j].n_categories)
                 table = counts[..., self.start[p] : self.start[p + 1]]
                 table = table.reshape(*table.shape[:-1], *shape)
-                table = table[..., :: _direction(self.items[i]), :: _direction(self.items[j])]
-                out[..., p] = _concordance(table)
+                table = table[..., :: direction(self.items[i]), :: direction(self.items[j])]
+                out[..., p] = concordance(table)
         return out
-
-
-def has_order(item: Item) -> bool:
-    """Tell whether an item's answers can be counted up: two answers, or declared as ordered."""
-    return item.ordered or item.n_categories == 2
-
-
-def answer_scores(items: tuple[Item, ...]) -> Ints:
-    """Return what each answer counts for, shape (A,).
-
-    An item with two answers counts 1 for the one that means yes (the last where nothing was
-    declared), an ordered item the place of its answer from 0, any other item nothing.
-    """
-    out: list[int] = []
-    for item in items:
-        places = list(range(item.n_categories))[:: _direction(item)]
-        out += places if has_order(item) else [0] * item.n_categories
-    return np.array(out, dtype=np.int64)
-
-
-def _direction(item: Item) -> int:
-    """Return -1 where the first of two answers means yes, else 1."""
-    return -1 if item.n_categories == 2 and item.yes == item.categories[0] else 1
 
 
 def with_sum(values: Floats) -> Floats:
@@ -247,16 +228,3 @@ def with_sum(values: Floats) -> Floats:
 def _in_errors(moved: Floats, variance: Floats) -> Floats:
     varies = variance > NO_SPREAD
     return np.where(varies, moved / np.sqrt(np.where(varies, variance, 1.0)), 0.0)
-
-
-def _concordance(tables: Floats) -> Floats:
-    """Return concordant over discordant pairs of tables (..., R, C)."""
-    after = np.zeros_like(tables)  # cases higher on both items
-    across = np.zeros_like(tables)  # cases higher on the first, lower on the second
-    n_rows, n_columns = tables.shape[-2:]
-    for a in range(n_rows):
-        for b in range(n_columns):
-            after[..., a, b] = tables[..., a + 1 :, b + 1 :].sum(axis=(-2, -1))
-            across[..., a, b] = tables[..., a + 1 :, :b].sum(axis=(-2, -1))
-    with np.errstate(divide="ignore", invalid="ignore"):
-        return np.asarray((tables * after).sum(axis=(-2, -1)) / (tables * across).sum((-2, -1)))

@@ -29,6 +29,7 @@ from bayeslca.assess.bridge_sampling import (
     effective_draws,
 )
 from bayeslca.assess.conditionals import (
+    SMALLEST,
     FreeParameters,
     conditional_parameters,
     log_evidence_of_one_class,
@@ -210,7 +211,8 @@ def _ordinate(
     values, errors, effective = [], [], np.inf
     for mine, theirs in (halves, halves[::-1]):
         conditionals, shape = _conditionals(posterior, free, mine, ORDINATE_DRAWS, rng)
-        at = np.argsort(theirs.log_posterior, axis=None)[-ORDINATE_POINTS:]
+        at = np.argsort(theirs.log_posterior + _spikes(free, theirs.values), axis=None)
+        at = at[-ORDINATE_POINTS:]
         points = theirs.values.reshape(-1, free.prior.size)[at]
         terms = Proposal(free, labels, conditionals.reshape(-1, free.prior.size)).log_terms(points)
         logs = logsumexp(terms - theirs.log_posterior.ravel()[at][:, None], axis=0)
@@ -225,6 +227,16 @@ def _ordinate(
     why_not = "few draws decide" if effective < LEAST_EFFECTIVE else ""
     error = float(np.hypot(errors[0], errors[1])) / 2.0
     return Estimate("ordinate", float(np.mean(values)), error, why_not)
+
+
+def _spikes(free: FreeParameters, values: Floats) -> Floats:
+    """Return what takes the spikes at 0 out of the log prior of parameters (..., F).
+
+    Below a Dirichlet parameter of 1 the density has no bound, and its highest points are ones
+    where some probability happens to be next to 0: no good points to compare densities at.
+    """
+    below = np.maximum(1.0 - free.prior, 0.0)
+    return np.asarray(np.log(np.maximum(values, SMALLEST)) @ below)
 
 
 def _conditionals(

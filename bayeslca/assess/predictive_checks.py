@@ -18,6 +18,7 @@ from bayeslca.assess.replicates import replicates as drawn_replicates
 from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
 from bayeslca.posterior.summary import check_interval
+from bayeslca.responses.test_results import look_like_tests
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -134,6 +135,8 @@ def predictive_checks(
         pairs=pairs_table(found, interval),
         sum_scores=scores_table(found, interval),
         patterns=patterns_table(posterior, found.strata),
+        are_tests=look_like_tests(posterior.model.items),
+        together=tuple(frozenset(one.items) for one in posterior.model.answered_together),
     )
     if calibrate:
         from bayeslca.assess.calibrated_p import calibrated

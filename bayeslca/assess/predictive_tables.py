@@ -8,10 +8,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from bayeslca._typing import Floats
-from bayeslca.assess.item_pairs import answer_scores
 from bayeslca.assess.posterior_p import PosteriorP, posterior_p, two_sided_p
 from bayeslca.assess.replicates import Both, Replicates
 from bayeslca.assess.strata import Strata, stratum_sizes
+from bayeslca.model.pair_measures import answer_scores
 from bayeslca.model.probabilities import log_unit_likelihood
 from bayeslca.posterior.tables import OVERALL
 

@@ -40,21 +40,62 @@ _REMEDIES = {
     ),
     **dict.fromkeys(PATTERN_CHECKS, "Try one more class; see which pair of items misses most."),
 }
-_PAIR_REMEDY = (
-    "Try one more class; leave out one of two items that ask nearly the same. Items answered "
-    "together within a class will come in a later version."
+_OF_TESTS = (
+    "Two tests may miss the same cases, or be misled by the same ones: see which pair misses most, "
+    "and let it go together within a class (answered_together) before adding a class."
 )
+"""What to do where the items are diagnostic tests: more classes are seldom what is missing."""
 
 
 @dataclass(frozen=True, eq=False)
 class Tables:
-    """The tables that the words are about."""
+    """The tables that the words are about.
+
+    Attributes
+    ----------
+    overall, margins, pairs, sum_scores, patterns : DataFrame
+    are_tests : bool
+        Whether the items look like diagnostic tests.
+    together : tuple of frozenset of str
+        Items that are answered together in some class.
+    """
 
     overall: pd.DataFrame
     margins: pd.DataFrame
     pairs: pd.DataFrame
     sum_scores: pd.DataFrame
     patterns: pd.DataFrame
+    are_tests: bool = False
+    together: tuple[frozenset[str], ...] = ()
+
+    def remedy(self, check: str) -> str:
+        """Return what to do where a check is missed."""
+        if self.are_tests and check in (*PATTERN_CHECKS, "sum_scores"):
+            return _OF_TESTS
+        return _REMEDIES[check]
+
+    def pair_remedy(self, one: str, two: str) -> str:
+        """Return what to do where a pair of items is missed."""
+        if any({one, two} <= items for items in self.together):
+            return (
+                "They go together in some classes already: let them in all, or try one more class."
+            )
+        set_of_two = f'answered_together = [["{one}", "{two}"]]'
+        in_a_set = [items for items in self.together if items & {one, two}]
+        if in_a_set:
+            whole = sorted(frozenset().union({one, two}, *in_a_set))
+            listed = ", ".join(f'"{name}"' for name in whole)
+            set_of_two = f"answered_together = [[{listed}]]"
+        if self.are_tests:
+            return (
+                f"Let the two go together within a class, {set_of_two}: two tests may miss the "
+                "same cases, or be misled by the same ones. Another class is seldom what is "
+                "missing."
+            )
+        return (
+            f"Let the two go together within a class, {set_of_two}; or try one more class; or "
+            "leave out one of two items that ask nearly the same."
+        )
 
 
 def p_text(p: float, replicates: int) -> str:
@@ -200,7 +241,7 @@ def _checks_missed(tables: Tables, replicates: int) -> Iterator[Finding]:
             kind=f"{check}_missed",
             level="warning" if judged_p(row) < MISSED else "note",
             message=f"{CHECKS[check]}: {said}",
-            remedy=_REMEDIES[check],
+            remedy=tables.remedy(check),
             about=(check,),
             value=judged_p(row),
         )
@@ -223,7 +264,7 @@ def _pairs_missed(tables: Tables, replicates: int) -> Iterator[Finding]:
             kind="pair_missed",
             level="warning" if together < MISSED else "note",
             message=_pair(row, replicates),
-            remedy=_PAIR_REMEDY,
+            remedy=tables.pair_remedy(row["item_1"], row["item_2"]),
             about=(row["item_1"], row["item_2"]),
             value=float(row["pair_residual"]),
         )

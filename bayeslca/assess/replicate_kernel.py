@@ -28,9 +28,8 @@ def replicate(
     field: Ints,
     answer_start: Ints,
     answer_row: Ints,
-    first: Ints,
-    second: Ints,
-    second_size: Ints,
+    field_item: Ints,
+    field_size: Ints,
     item_start: Ints,
     pair_start: Ints,
     points: Ints,
@@ -47,7 +46,7 @@ def replicate(
 ) -> None:
     """Draw one replicate for each draw of the parameters, and count it.
 
-    The first ten arrays are those of ``Strata`` and its ``Fields``.
+    The first nine arrays are those of ``Strata`` and its ``Fields``.
 
     Parameters
     ----------
@@ -144,11 +143,10 @@ def replicate(
                     code += mark[at]
                     total_points += points[at]
                     category = at - answer_start[f]
-                    if second[f] < 0:
-                        answer[first[f]] = category
-                    else:
-                        answer[first[f]] = category // second_size[f]
-                        answer[second[f]] = category % second_size[f]
+                    for back in range(field_item.shape[1] - 1, -1, -1):
+                        if field_item[f, back] >= 0:
+                            answer[field_item[f, back]] = category % field_size[f, back]
+                            category //= field_size[f, back]
                 key[case] = code
                 for i in range(n_items):
                     a = answer[i]

@@ -8,8 +8,9 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.assess.item_pairs import ItemPairs, answer_scores, with_sum
+from bayeslca.assess.item_pairs import ItemPairs, with_sum
 from bayeslca.assess.strata import Strata, strata_of, stratum_sizes
+from bayeslca.model.pair_measures import answer_scores
 from bayeslca.model.probabilities import PIECE, log_unit_likelihood, row_probability
 from bayeslca.model.table import Table
 
@@ -228,12 +229,13 @@ class _Measure:
     def _points(self) -> Ints:
         """What each answer of each field adds to a sum score."""
         fields, start = self.strata.fields, self.table.item_start
-        field = np.repeat(np.arange(fields.first.size), np.diff(fields.start))
+        field = np.repeat(np.arange(len(fields.item)), np.diff(fields.start))
         place = np.arange(fields.row.size) - fields.start[field]
-        one, two = np.divmod(place, fields.second_size[field])
-        out = self.score[start[fields.first[field]] + one]
-        both = fields.second[field] >= 0
-        out[both] += self.score[start[fields.second[field[both]]] + two[both]]
+        out = np.zeros(place.size, dtype=np.int64)
+        for item, size in zip(fields.item.T[::-1], fields.size.T[::-1], strict=True):
+            place, category = np.divmod(place, size[field])
+            there = item[field] >= 0
+            out[there] += self.score[start[item[field[there]]] + category[there]]
         return out
 
     def _observe(self) -> _Observed:
@@ -306,7 +308,7 @@ class _Measure:
         expected = np.zeros(scores.shape)
         replicate(
             strata.size, strata.group, strata.prevalence_row, strata.field_start, strata.field,
-            fields.start, fields.row, fields.first, fields.second, fields.second_size, start,
+            fields.start, fields.row, fields.item, fields.size, start,
             pair_start, self._points,
             rng.integers(1 << 63, size=fields.row.size, dtype=np.uint64) * np.uint64(2),
             POWER, np.ascontiguousarray(rows), np.ascontiguousarray(prevalence), rng,

@@ -12,8 +12,9 @@ from functools import cached_property
 
 import numpy as np
 
-from bayeslca._typing import Floats, Ints
+from bayeslca._typing import Bools, Floats, Ints
 from bayeslca.model.compile import compile_units
+from bayeslca.model.joint_answers import given_jointly, joint_of, joints
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.table import Table, UnitTable
 from bayeslca.responses.item import Item
@@ -23,7 +24,7 @@ from bayeslca.responses.units import Units
 
 @dataclass(frozen=True, eq=False)
 class Fields:
-    """What a case can be asked: an item, or a pair of items that is answered together.
+    """What a case can be asked: an item, or items that are answered together.
 
     Attributes
     ----------
@@ -31,17 +32,16 @@ class Fields:
         Answers of field f are ``row[start[f]:start[f + 1]]``.
     row : ndarray of int64
         The row of the model's table of each answer.
-    first, second : ndarray of int64, shape (F,)
-        The field's item, and its other one (-1 where there is none).
-    second_size : ndarray of int64, shape (F,)
-        Categories of the other item (1 where there is none): it changes fastest.
+    item : ndarray of int64, shape (F, widest)
+        The field's items, -1 beyond.
+    size : ndarray of int64, shape (F, widest)
+        Categories of each item, 1 beyond; the last item's category changes fastest.
     """
 
     start: Ints
     row: Ints
-    first: Ints
-    second: Ints
-    second_size: Ints
+    item: Ints
+    size: Ints
 
 
 @dataclass(frozen=True, eq=False)
@@ -132,48 +132,51 @@ def strata_of(model: LatentClassModel, responses: Responses) -> Strata:
 
 def _fields(table: Table, rows: Ints, masks: Ints) -> tuple[Fields, Ints, Ints]:
     """Return all fields, and those of each stratum (its row of prevalences and mask given)."""
-    known: dict[tuple[int, int, int], int] = {}
-    listed: list[tuple[Ints, int, int, int]] = []
+    known: dict[tuple[int, tuple[int, ...]], int] = {}
+    listed: list[tuple[Ints, tuple[int, ...]]] = []
     of_stratum: list[list[int]] = []
     for row, mask in zip(rows.tolist(), masks, strict=True):
         response_group = int(table.response_group[row])
         mine = []
-        for first, second in _asked(table, mask):
-            at = (response_group, first, second)
+        for items in _asked(table, mask > 0):
+            at = (response_group, items)
             if at not in known:
                 known[at] = len(listed)
-                listed.append((_field_rows(table, *at), first, second, _size(table, second)))
+                listed.append((_field_rows(table, *at), items))
             mine.append(known[at])
         of_stratum.append(mine)
+    widest = max(len(items) for _, items in listed)
+    sizes = np.diff(table.item_start)
     fields = Fields(
-        start=_starts([len(one[0]) for one in listed]),
-        row=np.concatenate([one[0] for one in listed]).astype(np.int64),
-        first=np.array([one[1] for one in listed], dtype=np.int64),
-        second=np.array([one[2] for one in listed], dtype=np.int64),
-        second_size=np.array([one[3] for one in listed], dtype=np.int64),
+        start=_starts([len(found) for found, _ in listed]),
+        row=np.concatenate([found for found, _ in listed]).astype(np.int64),
+        item=np.array([_padded(items, widest, -1) for _, items in listed], dtype=np.int64),
+        size=np.array(
+            [_padded(sizes[list(items)].tolist(), widest, 1) for _, items in listed],
+            dtype=np.int64,
+        ),
     )
     starts = _starts([len(mine) for mine in of_stratum])
     return fields, starts, np.array([f for mine in of_stratum for f in mine], dtype=np.int64)
 
 
-def _asked(table: Table, mask: Ints) -> list[tuple[int, int]]:
-    """Return the (item, other item or -1) that a case with this mask answers."""
-    together = [(int(a), int(b)) for a, b in table.pair_item if mask[a] and mask[b]]
-    paired = {j for pair in together for j in pair}
-    return together + [(int(j), -1) for j in np.flatnonzero(mask) if int(j) not in paired]
+def _asked(table: Table, mask: Bools) -> list[tuple[int, ...]]:
+    """Return the items, or sets of items, that a case with this mask answers."""
+    given = [joint.items for joint in joints(table) if given_jointly(joint, mask[None]).all()]
+    in_set = {j for items in given for j in items}
+    return given + [(int(j),) for j in np.flatnonzero(mask) if int(j) not in in_set]
 
 
-def _field_rows(table: Table, response_group: int, first: int, second: int) -> Ints:
-    if second < 0:
-        return table.response_row[
-            response_group, table.item_start[first] : table.item_start[first + 1]
-        ]
-    (pair,) = np.flatnonzero((table.pair_item == (first, second)).all(axis=1))
-    return table.pair_row[response_group, table.pair_start[pair] : table.pair_start[pair + 1]]
+def _field_rows(table: Table, response_group: int, items: tuple[int, ...]) -> Ints:
+    joint = joint_of(table, set(items))
+    if joint is not None:
+        return table.joint_row[response_group, joint.columns]
+    (item,) = items
+    return table.response_row[response_group, table.item_start[item] : table.item_start[item + 1]]
 
 
-def _size(table: Table, item: int) -> int:
-    return 1 if item < 0 else int(table.item_start[item + 1] - table.item_start[item])
+def _padded(values: Sequence[int], length: int, filling: int) -> list[int]:
+    return [*values, *[filling] * (length - len(values))]
 
 
 def _starts(sizes: Sequence[int]) -> Ints:

@@ -115,10 +115,10 @@ def _new_cases(
             answers = fields.row[fields.start[f] : fields.start[f + 1]]
             by_class = np.swapaxes(rows[:, answers], 1, 2)  # (D, K, answers)
             answer = _categories(by_class[np.arange(n_draws)[:, None], latent], rng)
-            one, two = np.divmod(answer, fields.second_size[f])
-            codes[..., fields.first[f]] = one
-            if fields.second[f] >= 0:
-                codes[..., fields.second[f]] = two
+            for item, size_of in zip(fields.item[f, ::-1], fields.size[f, ::-1], strict=True):
+                answer, category = np.divmod(answer, size_of)
+                if item >= 0:
+                    codes[..., item] = category
         parts.append(codes)
     return np.concatenate(parts, axis=1)
 

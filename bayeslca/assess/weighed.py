@@ -18,7 +18,7 @@ from bayeslca.assess.ladder import Step, climb
 from bayeslca.assess.named_base import without_names, without_rules
 from bayeslca.exceptions import BayesLCAError, ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
-from bayeslca.model.places import Link, Place, PrevalenceVector
+from bayeslca.model.places import ConditionalVector, Link, Place, PrevalenceVector
 
 if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
@@ -136,6 +136,9 @@ def _margin(model: LatentClassModel, place: Place) -> tuple[float, float]:
     vector = place.vector
     if isinstance(vector, PrevalenceVector):
         every = model.priors.prevalence[vector.group]
+    elif isinstance(vector, ConditionalVector):
+        one = model.item_sets[vector.item_set]
+        every = np.asarray(one.given(vector.latent_class, vector.given))
     else:
         by_item = model.priors.response[vector.response_group]
         every = by_item[vector.item][vector.latent_class]

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from itertools import product
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -13,7 +14,14 @@ from bayeslca.model.blocks import BlockArrays
 from bayeslca.model.bounds import Bounds, bounded_blocks, element_bounds
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.contradictions import refuse_contradictions
-from bayeslca.model.places import Link, Place, PrevalenceVector, ResponseVector, Vector
+from bayeslca.model.places import (
+    ConditionalVector,
+    Link,
+    Place,
+    PrevalenceVector,
+    ResponseVector,
+    Vector,
+)
 from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.priors import DEFAULT
@@ -52,16 +60,23 @@ def response_assumptions(model: LatentClassModel) -> Assumptions:
         Where statements contradict each other, or no exact sampler is written for them.
     """
     priors: dict[Vector, VectorPrior] = {}
+    sums = {(j, k) for one in model.item_sets for j in one.others for k in one.classes}
     for g in range(model.n_response_groups):
         for j in range(len(model.items)):
             if g and j not in model.free_items:
                 continue
             for k in range(model.n_classes):
+                if (j, k) in sums:
+                    continue
                 origin = model.priors.response_origin[g][j][k]
                 priors[ResponseVector(g, j, k)] = VectorPrior(
                     tuple(model.priors.response[g][j][k].tolist()),
                     None if origin == DEFAULT else origin,
                 )
+    for s, one in enumerate(model.item_sets):
+        for g in range(model.n_response_groups if one.first in model.free_items else 1):
+            for k, a in product(sorted(one.classes), range(one.sizes[0])):
+                priors[ConditionalVector(g, s, k, a)] = VectorPrior(one.given(k, a))
     return _assumed(priors, [link for link in model.links if not link.on_prevalences])
 
 

@@ -36,6 +36,7 @@ def model_findings(model: LatentClassModel, responses: Responses) -> tuple[Findi
         *_few_cases(model, responses),
         *_small_groups(model, responses),
         *_heavy_priors(model, responses),
+        *_sparse_joint_answers(model, responses),
     )
 
 
@@ -165,6 +166,31 @@ def _heavy_priors(model: LatentClassModel, responses: Responses) -> Iterable[Fin
             about=(*items, *classes),
             value=heaviest.ratio,
         )
+
+
+def _sparse_joint_answers(model: LatentClassModel, responses: Responses) -> Iterable[Finding]:
+    """Point out sets with few cases for each joint answer, in the smallest class expected."""
+    found = [weight for weight in prior_weights(model, responses) if weight.together]
+    for items in dict.fromkeys(weight.items for weight in found):
+        fewest = min(
+            (weight for weight in found if weight.items == items),
+            key=lambda weight: weight.expected or 0.0,
+        )
+        n_joint = len(fewest.concentration)
+        each = (fewest.expected or 0.0) / n_joint
+        if each < CASES_PER_PARAMETER:
+            yield Finding(
+                kind="sparse_joint_answers",
+                level="warning",
+                message=(
+                    f"{', '.join(items)} have {n_joint} joint answers, against about "
+                    f"{fewest.expected:.0f} cases expected in class {fewest.classes[0]}: "
+                    f"{each:.1f} for each. How they go together there rests on the prior."
+                ),
+                remedy="Take fewer items or classes into the set, or merge rare answers.",
+                about=items,
+                value=each,
+            )
 
 
 def _classes(names: tuple[str, ...]) -> str:

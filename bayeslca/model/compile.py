@@ -8,9 +8,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.model.places import Place, ResponseVector
+from bayeslca.model.joint_answers import given_jointly, joint_codes, joints
+from bayeslca.model.places import ConditionalVector, Place, ResponseVector
 from bayeslca.model.table import Table, UnitTable
-from bayeslca.model.table_builder import TableBuilder
+from bayeslca.model.table_builder import Cell, TableBuilder
 from bayeslca.responses.units import MISSING, Units
 
 if TYPE_CHECKING:
@@ -31,9 +32,16 @@ def compile_table(model: LatentClassModel) -> Table:
     )
     for block in assumed.tied.blocks:
         builder.block(block)
-    for g, j, k in product(
-        range(model.n_response_groups), range(len(model.items)), range(model.n_classes)
-    ):
+    groups = range(model.n_response_groups)
+    for one in model.item_sets:
+        builder.answered_together(*one.items)
+    for (s, one), g in product(enumerate(model.item_sets), groups):
+        for k in sorted(one.classes):
+            builder.set_joint(g, s, k, _joint_cells(model, s, g, k))
+    sums = {(j, k) for one in model.item_sets for j in one.others for k in one.classes}
+    for g, j, k in product(groups, range(len(model.items)), range(model.n_classes)):
+        if (j, k) in sums:
+            continue
         vector = ResponseVector(g if j in model.free_items else 0, j, k)
         for category in range(model.items[j].n_categories):
             form = assumed.tied.forms[Place(vector, category)]
@@ -45,11 +53,29 @@ def compile_table(model: LatentClassModel) -> Table:
     return builder.build()
 
 
+def _joint_cells(
+    model: LatentClassModel, item_set: int, group: int, latent_class: int
+) -> list[Cell]:
+    """Return the joint answers of a set: the first item's answer, times the others' given it."""
+    one, forms = model.item_sets[item_set], model.response_assumptions.tied.forms
+    g = group if one.first in model.free_items else 0
+    first = ResponseVector(g, one.first, latent_class)
+    out: list[Cell] = []
+    for a in range(one.sizes[0]):
+        margin = forms[Place(first, a)]
+        others = ConditionalVector(g, item_set, latent_class, a)
+        for at in range(len(one.rest)):
+            given = forms[Place(others, at)]
+            constant = margin.constant * given.constant
+            out.append((constant, (*margin.elements, *given.elements)))
+    return out
+
+
 def compile_units(table: Table, units: Units, log_weight: Floats | None = None) -> UnitTable:
     """Find the rows of each unit's answers.
 
-    A missing answer has no row. Of a pair that is answered together, both answers are one joint
-    row, and a single answer is its own row.
+    A missing answer has no row. Of items that are answered together, two answers or more are one
+    joint row, and a single answer is its own row.
 
     Parameters
     ----------
@@ -65,13 +91,12 @@ def compile_units(table: Table, units: Units, log_weight: Floats | None = None) 
         code = units.pattern[:, j].astype(np.int64)
         at = np.flatnonzero(code != MISSING)
         rows[at, j] = table.response_row[response_group[at], table.item_start[j] + code[at]]
-    for pair, (first, second) in enumerate(table.pair_item):
-        one, two = units.pattern[:, first].astype(np.int64), units.pattern[:, second]
-        at = np.flatnonzero((one != MISSING) & (two != MISSING))
-        n_second = table.item_start[second + 1] - table.item_start[second]
-        joint = table.pair_start[pair] + one[at] * n_second + two[at]
-        rows[at, first] = table.pair_row[response_group[at], joint]
-        rows[at, second] = -1
+    answered = units.pattern != MISSING
+    for joint in joints(table):
+        at = np.flatnonzero(given_jointly(joint, answered))
+        column = joint.start + joint_codes(joint, units.pattern[at])
+        rows[at[:, None], np.asarray(joint.items)] = -1
+        rows[at, joint.items[0]] = table.joint_row[response_group[at], column]
     has_row = rows >= 0
     return UnitTable(
         row_start=np.concatenate([[0], np.cumsum(has_row.sum(axis=1))]).astype(np.int64),

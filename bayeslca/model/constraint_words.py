@@ -78,9 +78,11 @@ def _phrase(term: Term, vocabulary: Vocabulary) -> str:
 
 
 def _answer(term: ResponseTerm, vocabulary: Vocabulary) -> str:
-    item, categories = term.answers[0]
-    names = [vocabulary.items[item].categories[c] for c in categories]
-    return f"{vocabulary.items[item].name}={' or '.join(names)}"
+    said = []
+    for item, categories in term.answers:
+        names = [vocabulary.items[item].categories[c] for c in categories]
+        said.append(f"{vocabulary.items[item].name}={' or '.join(names)}")
+    return " together with ".join(said)
 
 
 def _where(term: ResponseTerm, vocabulary: Vocabulary) -> str:

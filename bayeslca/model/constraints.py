@@ -10,6 +10,8 @@ from collections.abc import Collection, Iterator, Sequence
 from dataclasses import dataclass
 from typing import TypeAlias
 
+from bayeslca.model.answered_together import ItemSet
+from bayeslca.model.joint_zeros import joint_zero_links
 from bayeslca.model.notation import statement_error
 from bayeslca.model.places import Link, LinkSign, Place, PrevalenceVector, ResponseVector, Side
 from bayeslca.model.resolved import PrevalenceTerm, ResolvedRelations, ResponseTerm
@@ -44,6 +46,7 @@ def read_links(
     relations: Sequence[ResolvedRelations],
     vocabulary: Vocabulary,
     free_items: Collection[int] = (),
+    item_sets: Sequence[ItemSet] = (),
 ) -> tuple[Link, ...]:
     """Write out the comparisons of single probabilities that statements make.
 
@@ -53,6 +56,8 @@ def read_links(
     vocabulary : Vocabulary
     free_items : collection of int
         Items whose response probabilities are free by group.
+    item_sets : sequence of ItemSet
+        Items that are answered together: their joint answers can be held at 0.
 
     Raises
     ------
@@ -62,17 +67,24 @@ def read_links(
     found: dict[Link, None] = {}
     for resolved in relations:
         try:
-            found.update(dict.fromkeys(_links(resolved, vocabulary, free_items)))
+            found.update(dict.fromkeys(_links(resolved, vocabulary, free_items, item_sets)))
         except Refusal as refusal:
             raise statement_error(refusal, resolved.text) from None
     return tuple(found)
 
 
 def _links(
-    resolved: ResolvedRelations, vocabulary: Vocabulary, free_items: Collection[int]
+    resolved: ResolvedRelations,
+    vocabulary: Vocabulary,
+    free_items: Collection[int],
+    item_sets: Sequence[ItemSet],
 ) -> Iterator[Link]:
     for relation in resolved.relations:
         for left, sign, right in relation.links():
+            joint = _joint_zero(left, sign, right, resolved)
+            if joint is not None:
+                yield from joint_zero_links(joint, vocabulary, free_items, item_sets, resolved.text)
+                continue
             one, two = _part(left, resolved, vocabulary), _part(right, resolved, vocabulary)
             _refuse_mixed(one, two, right)
             for position in (left, right):
@@ -99,7 +111,7 @@ def _part(expression: Expression, resolved: ResolvedRelations, vocabulary: Vocab
         return _Part(term=term)
     assert isinstance(term, ResponseTerm)
     if len(term.answers) > 1:
-        msg = "the joint probability of several answers cannot be constrained"
+        msg = "the joint probability of several answers cannot be constrained, but for = 0"
         raise Refusal(msg, expression.position, "Constrain each answer's own probability.")
     item, categories = term.answers[0]
     if len(categories) == 1:
@@ -110,6 +122,18 @@ def _part(expression: Expression, resolved: ResolvedRelations, vocabulary: Vocab
         remedy = "Constrain single answers, or test it as a hypothesis of the posterior."
         raise Refusal(msg, expression.position, remedy)
     return _Part(term=term, category=others[0], complement=True)
+
+
+def _joint_zero(
+    left: Expression, sign: Comparison, right: Expression, resolved: ResolvedRelations
+) -> ResponseTerm | None:
+    """Return the joint answers of ``P(fees=yes, accounts=yes | managed) = 0``; None for others."""
+    for one, other in ((left, right), (right, left)):
+        term = resolved.terms[one] if isinstance(one, Probability) else None
+        if isinstance(term, ResponseTerm) and len(term.answers) > 1 and sign == "=":
+            if not any(True for _ in probabilities(other)) and _number(other) == 0.0:
+                return term
+    return None
 
 
 def _number(expression: Expression) -> float:

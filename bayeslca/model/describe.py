@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 from scipy.special import betaincinv
 
 from bayeslca.model.constraint_words import in_words
+from bayeslca.model.describe_together import together_in_words, told_apart_in_words
 from bayeslca.model.identifiability import count_free
 from bayeslca.model.naming_links import naming_links
 from bayeslca.model.pooled_prevalence import PooledPrevalence
@@ -46,9 +47,8 @@ def describe(model: LatentClassModel, responses: Responses | None = None) -> str
         "How common each class is",
         *_prevalences(model, n_cases),
         "",
-        "What each class answers",
-        *_response_priors(model, weights),
-        "",
+        *_answers(model, weights),
+        *together_in_words(model, weights),
         *_constraints(model),
         "What the defaults mean",
         *_defaults(model.n_classes, n_cases),
@@ -87,6 +87,8 @@ def _classes(model: LatentClassModel) -> list[str]:
     for constraint in model.stated.constraints:
         if any(getattr(t, "latent_class", None) is not None for t in constraint.terms.values()):
             out += _indented(f"{constraint.text}{_source(model, constraint.text)}")
+    for line in told_apart_in_words(model):
+        out += _indented(line)
     return out
 
 
@@ -182,10 +184,19 @@ def _pooled(model: LatentClassModel, source: PooledPrevalence) -> list[str]:
     return out + _indented("Response probabilities are the same in all units.")
 
 
+def _answers(model: LatentClassModel, weights: Sequence[PriorWeight]) -> list[str]:
+    """Say what is assumed of answers to items on their own; nothing where all are in sets."""
+    lines = _response_priors(model, weights)
+    return ["What each class answers", *lines, ""] if lines else []
+
+
 def _response_priors(model: LatentClassModel, weights: Sequence[PriorWeight]) -> list[str]:
     out: list[str] = []
+    weights = [weight for weight in weights if not weight.together]
     defaults = [weight for weight in weights if weight.origin == DEFAULT]
     where = "every class" if len(defaults) == len(weights) else "classes without a stated prior"
+    if any(len(one.classes) < model.n_classes for one in model.item_sets):
+        where += " in which they are not answered together"
     for concentration in sorted({w.concentration for w in defaults if not w.shared}):
         size = len(concentration)
         of_size = [w for w in defaults if w.concentration == concentration and not w.shared]

@@ -9,12 +9,13 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from itertools import product
 
 import numpy as np
 
 from bayeslca._typing import Bools, Floats
-from bayeslca.exceptions import ModelError
-from bayeslca.model.probabilities import response_probability
+from bayeslca.model.joint_answers import joints
+from bayeslca.model.probabilities import response_probability, row_probability
 from bayeslca.model.resolved import (
     Answer,
     GroupIndex,
@@ -99,15 +100,20 @@ class ParameterDraws:
         )
 
     def _joint(self, answers: Sequence[Answer], group: int) -> Floats:
-        """Return the probability (S, K) of answers given together: a product, given the class."""
-        if self.table.pair_item.size and len(answers) > 1:
-            msg = (
-                "the joint probability of several answers is not computed where a model lets "
-                "items depend on each other. Ask for single answers."
-            )
-            raise ModelError(msg)
+        """Return the probability (S, K) of answers given together.
+
+        Given the class a product, but for items that are answered together.
+        """
         out = np.ones(self.prevalence[:, group].shape)
-        for item, categories in answers:
+        chosen = dict(answers)
+        for joint in joints(self.table):
+            if chosen.keys() & (set(joint.items) | set(joint.others)) == set(joint.items):
+                ways = product(*(chosen.pop(item) for item in joint.items))
+                codes = np.array(list(ways), dtype=np.int64)
+                at = joint.start + np.ravel_multi_index(tuple(codes.T), joint.sizes)
+                rows = self.table.joint_row[self.table.response_group[group], at]
+                out *= row_probability(self.table, self.elements)[:, rows].sum(axis=1)
+        for item, categories in chosen.items():
             columns = [int(self.table.item_start[item]) + c for c in categories]
             out *= self.response_probability[:, group][:, :, columns].sum(axis=-1)
         return out

@@ -11,6 +11,13 @@ from bayeslca._typing import Bools, Seed
 from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
 from bayeslca.model.agreement import check_agreement
+from bayeslca.model.answered_together import (
+    AnsweredTogether,
+    ItemSet,
+    checked_together,
+    item_sets,
+    margin_priors,
+)
 from bayeslca.model.assumptions import Assumptions, prevalence_source, response_assumptions
 from bayeslca.model.bounds_probability import LogProbability, log_bounds_probability
 from bayeslca.model.cautions import model_findings
@@ -38,6 +45,7 @@ from bayeslca.model.priors import PriorTable, prior_table
 from bayeslca.model.resolve import ModelStatements, read_statements
 from bayeslca.model.resolved import ResolvedNamingRule
 from bayeslca.model.simulate import Parameters, Simulation, simulate
+from bayeslca.model.sums import refuse_links_on_sums, refuse_priors_on_sums
 from bayeslca.model.symmetry import Symmetry, symmetry
 from bayeslca.model.table import Table
 from bayeslca.model.vocabulary import Vocabulary
@@ -79,6 +87,9 @@ class LatentClassModel:
     spread_prior : tuple of float
         Beta parameters of the prior on the spread between units, from 0 (all alike) to 1 (each
         holds one class only); see `bayeslca.model.pooled_prevalence.PooledPrevalence`.
+    answered_together : tuple of AnsweredTogether
+        Sets of items that may go together within a class; a list of names is a set for all
+        classes.
 
     Raises
     ------
@@ -102,6 +113,7 @@ class LatentClassModel:
     free_by_group: bool | tuple[str, ...] = False
     pooled: bool = False
     spread_prior: tuple[float, float] = (1.0, 1.0)
+    answered_together: tuple[AnsweredTogether, ...] = ()
 
     def __post_init__(self) -> None:
         # Lists are welcome where tuples are kept; a frozen dataclass is set through object.
@@ -115,6 +127,7 @@ class LatentClassModel:
         keep(self, "free_by_group", checked_free(self.free_by_group, self.items, self.groups))
         keep(self, "spread_prior", checked_spread(self.spread_prior))
         check_pooled(self)
+        keep(self, "answered_together", checked_together(self.answered_together))
         self._refuse_classes_not_told_apart()
 
     @property
@@ -146,6 +159,17 @@ class LatentClassModel:
             return frozenset(range(len(self.items)) if self.free_by_group else ())
         return frozenset(j for j, i in enumerate(self.items) if i.name in self.free_by_group)
 
+    @cached_property
+    def item_sets(self) -> tuple[ItemSet, ...]:
+        """Sets of items that are answered together, with the classes in which they are."""
+        return item_sets(
+            self.answered_together,
+            self.items,
+            self.class_names,
+            exploratory=self.exploratory,
+            free_items=self.free_items,
+        )
+
     @property
     def n_response_groups(self) -> int:
         """Number of response groups: 1 where all groups share their response probabilities."""
@@ -164,13 +188,23 @@ class LatentClassModel:
     @cached_property
     def priors(self) -> PriorTable:
         """The Dirichlet parameters of all prevalences and response probabilities."""
-        return prior_table(self.stated.priors, self.vocabulary, free_items=self.free_items)
+        refuse_priors_on_sums(self)
+        return prior_table(
+            self.stated.priors,
+            self.vocabulary,
+            free_items=self.free_items,
+            item_defaults=margin_priors(self.item_sets),
+        )
 
     @cached_property
     def links(self) -> tuple[Link, ...]:
         """The comparisons of single probabilities that constraints and naming rules make."""
-        stated = read_links(self.stated.constraints, self.vocabulary, self.free_items)
-        return (*stated, *naming_links(self))
+        stated = read_links(
+            self.stated.constraints, self.vocabulary, self.free_items, self.item_sets
+        )
+        links = (*stated, *naming_links(self))
+        refuse_links_on_sums(self, links)
+        return links
 
     @cached_property
     def response_assumptions(self) -> Assumptions:
@@ -430,6 +464,11 @@ class LatentClassModel:
             if isinstance(self.free_by_group, bool)
             else list(self.free_by_group),
             **({"pooled": True, "spread_prior": list(self.spread_prior)} if self.pooled else {}),
+            **(
+                {"answered_together": [one.as_dict() for one in self.answered_together]}
+                if self.answered_together
+                else {}
+            ),
         }
 
     @classmethod
@@ -448,6 +487,9 @@ class LatentClassModel:
             free_by_group=values.get("free_by_group", False),
             pooled=values.get("pooled", False),
             spread_prior=tuple(values.get("spread_prior", (1.0, 1.0))),
+            answered_together=tuple(
+                AnsweredTogether(**one) for one in values.get("answered_together", ())
+            ),
         )
 
     def __repr__(self) -> str:
@@ -461,6 +503,8 @@ class LatentClassModel:
             parts.append(f"free_by_group={self.free_by_group}")
         if self.pooled:
             parts.append("pooled=True")
+        if self.answered_together:
+            parts.append(f"answered_together={[list(one.items) for one in self.answered_together]}")
         return f"LatentClassModel({', '.join(parts)})"
 
     def _refuse_classes_not_told_apart(self) -> None:

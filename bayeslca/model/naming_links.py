@@ -33,7 +33,10 @@ def naming_links(model: LatentClassModel) -> tuple[Link, ...]:
 
 
 def _speaks_of_classes(model: LatentClassModel) -> bool:
-    """Whether a prior or a constraint is about some classes and not about all alike."""
+    """Whether a prior, a constraint or a set of items is about some classes, not all alike."""
+    for one in model.item_sets:
+        if len(one.classes) < model.n_classes or len(set(one.priors.values())) > 1:
+            return True
     for prior in model.stated.priors:
         if isinstance(prior, ResponsePrior):
             if prior.latent_class is not None:

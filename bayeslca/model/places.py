@@ -1,7 +1,8 @@
 """Places: the single probabilities that constraints speak of, before blocks are made of them.
 
 A *vector* is a set of probabilities that sum to 1: the prevalences of a group, or an item's
-answers in a class (of a response group). A *place* is one probability of a vector.
+answers in a class (of a response group), or the joint answers of a set given its first item's
+answer. A *place* is one probability of a vector.
 """
 
 from __future__ import annotations
@@ -24,7 +25,16 @@ class ResponseVector(NamedTuple):
     latent_class: int
 
 
-Vector: TypeAlias = "PrevalenceVector | ResponseVector"
+class ConditionalVector(NamedTuple):
+    """The joint answers to a set's other items, given the answer to its first, in a class."""
+
+    response_group: int
+    item_set: int
+    latent_class: int
+    given: int
+
+
+Vector: TypeAlias = "PrevalenceVector | ResponseVector | ConditionalVector"
 
 
 class Place(NamedTuple):

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from bayeslca.model.joint_names import conditional_block_names, conditional_element_names
 from bayeslca.model.notation import to_text
 from bayeslca.model.syntax import Event, Name, Probability
 
@@ -34,15 +35,16 @@ def element_names(model: LatentClassModel) -> tuple[str, ...]:
     of a response probability is called so.
     """
     table = model.table
-    names = [""] * table.n_elements
+    given = conditional_element_names(model)
+    names = [given.get(e, "") for e in range(table.n_elements)]
     for j, item in enumerate(model.items):
         for c, category in enumerate(item.categories):
             for k in range(table.n_classes):
                 for g in range(table.n_response_groups):
                     row = int(table.response_row[g, table.item_start[j] + c])
                     event = Event(Name(item.name), "=", (Name(category),))
-                    given = [Event(Name(model.class_names[k])), *_condition(model, row)]
-                    text = to_text(Probability((event,), tuple(given)))
+                    condition = [Event(Name(model.class_names[k])), *_condition(model, row)]
+                    text = to_text(Probability((event,), tuple(condition)))
                     direct = table.direct_element[row, k] >= 0
                     for _, elements in table.cells(row, k):
                         for e in elements:
@@ -53,7 +55,7 @@ def element_names(model: LatentClassModel) -> tuple[str, ...]:
 def block_names(model: LatentClassModel) -> tuple[str, ...]:
     """Return a name like ``P(fees=no, yes | managed)`` per block, after its first element."""
     table = model.table
-    first_use: dict[int, str] = {}
+    first_use = conditional_block_names(model)
     block = table.element_block
     for j, item in enumerate(model.items):
         categories = tuple(Event(Name(category)) for category in item.categories[1:])

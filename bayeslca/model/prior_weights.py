@@ -2,20 +2,29 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
+from itertools import product
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from bayeslca._typing import Floats
+from bayeslca.model.joint_names import conditional_block, conditional_vectors
+from bayeslca.model.notation import to_text
+from bayeslca.model.places import Place, ResponseVector
 from bayeslca.model.position_names import block_names
 from bayeslca.model.priors import DEFAULT
+from bayeslca.model.syntax import Event, Name, Probability
 from bayeslca.responses.units import MISSING
 
 if TYPE_CHECKING:
+    from bayeslca.model.answered_together import ItemSet
     from bayeslca.model.latent_class_model import LatentClassModel
     from bayeslca.responses.responses import Responses
 
+STATED_TOGETHER = "answered_together"
+"""Origin of a prior of joint answers that was given with their set."""
 HEAVY = 0.2
 """A prior that weighs more than this share of the expected cases is pointed out."""
 
@@ -42,6 +51,8 @@ class PriorWeight:
         True where a statement made the block: it stands in several places, or in a part of one.
     places : tuple of (int, int, int)
         Response group, item and class of each place where the block stands.
+    together : bool
+        True for the default prior of the joint answers of a set, taken as one.
     """
 
     block: str
@@ -53,6 +64,7 @@ class PriorWeight:
     expected: float | None
     shared: bool = False
     places: tuple[tuple[int, int, int], ...] = ()
+    together: bool = False
 
     @property
     def ratio(self) -> float | None:
@@ -81,6 +93,8 @@ def prior_weights(
 ) -> tuple[PriorWeight, ...]:
     """Weigh the prior of every block of response probabilities.
 
+    The joint answers of items that are answered together count as one block for each class.
+
     Parameters
     ----------
     model : LatentClassModel
@@ -93,8 +107,11 @@ def prior_weights(
     table = model.table
     answers = None if responses is None else _expected_answers(model, responses, class_shares)
     places = _places(model)
+    in_sets = _blocks_of_sets(model)
     out = []
     for b, name in enumerate(block_names(model)):
+        if b in in_sets:
+            continue
         start, end = int(table.block_start[b]), int(table.block_start[b + 1])
         concentration = tuple(table.element_prior[start:end].tolist())
         at = places[b]
@@ -112,7 +129,55 @@ def prior_weights(
                 places=tuple(at),
             )
         )
-    return tuple(out)
+    return (*out, *_of_sets(model, answers))
+
+
+def _blocks_of_sets(model: LatentClassModel) -> frozenset[int]:
+    """Return the blocks that the default prior of a set's joint answers makes."""
+    reasons = model.response_assumptions.tied.reasons
+    forms = model.response_assumptions.tied.forms
+    found = {conditional_block(model, vector) for vector in conditional_vectors(model)}
+    for one in model.item_sets:
+        for g in range(model.n_response_groups if one.first in model.free_items else 1):
+            for k in one.classes:
+                if model.response_prior_origin(g, one.first, k) == DEFAULT:
+                    place = Place(ResponseVector(g, one.first, k), 0)
+                    found |= {int(model.table.element_block[e]) for e in forms[place].elements}
+    return frozenset(b for b in found if b is not None and not reasons[b])
+
+
+def _places_of_set(
+    model: LatentClassModel, one: ItemSet, group: int | None, latent_class: int
+) -> tuple[tuple[int, int, int], ...]:
+    groups = range(model.n_response_groups) if group is None else (group,)
+    return tuple((g, j, latent_class) for g in groups for j in one.items)
+
+
+def _of_sets(model: LatentClassModel, answers: Floats | None) -> Iterator[PriorWeight]:
+    for one in model.item_sets:
+        names = tuple(model.items[j].name for j in one.items)
+        events = tuple(Event(Name(name)) for name in names)
+        free = one.first in model.free_items
+        for g, k in product(range(model.n_response_groups if free else 1), sorted(one.classes)):
+            given = [Event(Name(model.class_names[k]))]
+            if model.groups is not None and free:
+                level = Name(model.groups.levels[g])
+                given.append(Event(Name(model.groups.name), "=", (level,)))
+            expected = None
+            if answers is not None:
+                of_group = answers[g] if free else answers.sum(axis=0)
+                expected = float(of_group[list(one.items), k].mean())
+            yield PriorWeight(
+                block=to_text(Probability(events, tuple(given))),
+                items=names,
+                classes=(model.class_names[k],),
+                concentration=one.priors[k],
+                origin=STATED_TOGETHER if k in one.stated else DEFAULT,
+                weight=one.weight(k),
+                expected=expected,
+                together=True,
+                places=_places_of_set(model, one, g if free else None, k),
+            )
 
 
 def _origin(model: LatentClassModel, at: list[tuple[int, int, int]]) -> str:

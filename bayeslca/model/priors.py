@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TypeVar
 
@@ -46,6 +46,7 @@ def prior_table(
     vocabulary: Vocabulary,
     default: float = 1.0,
     free_items: Collection[int] = (),
+    item_defaults: Mapping[tuple[int, int], Sequence[float]] | None = None,
 ) -> PriorTable:
     """Fill a table with the stated priors, and with a default where nothing was stated.
 
@@ -57,6 +58,8 @@ def prior_table(
         Dirichlet parameter of every class and category without a stated prior; 1 is uniform.
     free_items : collection of int
         Items whose response probabilities are free by group.
+    item_defaults : mapping from (item, class) to sequence of float, optional
+        Other defaults, of items that are answered together with others.
 
     Raises
     ------
@@ -79,8 +82,16 @@ def prior_table(
                 for k in every if prior.latent_class is None else (prior.latent_class,):
                     _put(response, (g, prior.item, k), prior)
 
-    def parameters(prior: PrevalencePrior | ResponsePrior | None, n: int) -> Floats:
-        return np.full(n, default) if prior is None else np.asarray(prior.concentration, float)
+    others = item_defaults or {}
+
+    def parameters(
+        prior: PrevalencePrior | ResponsePrior | None,
+        n: int,
+        unstated: Sequence[float] | float = default,
+    ) -> Floats:
+        if prior is not None:
+            return np.asarray(prior.concentration, float)
+        return np.broadcast_to(np.asarray(unstated, float), (n,)).copy()
 
     def origin(prior: PrevalencePrior | ResponsePrior | None) -> str:
         return DEFAULT if prior is None else prior.text
@@ -92,7 +103,11 @@ def prior_table(
         response=tuple(
             tuple(
                 tuple(
-                    parameters(response.get((g, j, k)), vocabulary.items[j].n_categories)
+                    parameters(
+                        response.get((g, j, k)),
+                        vocabulary.items[j].n_categories,
+                        others.get((j, k), default),
+                    )
                     for k in classes
                 )
                 for j in items

@@ -16,6 +16,7 @@ from typing import Any
 import numpy as np
 
 from bayeslca._typing import Bools, Floats, Ints
+from bayeslca.model.joint_answers import joints
 from bayeslca.model.table import Table
 from bayeslca.responses.units import MISSING
 
@@ -26,7 +27,7 @@ which items were answered -> codes."""
 
 @dataclass(frozen=True, eq=False)
 class Answers:
-    """All answers of a table, end to end: those to single items, then the joint ones of pairs.
+    """All answers of a table, end to end: those to single items, then the joint ones of sets.
 
     Attributes
     ----------
@@ -38,7 +39,7 @@ class Answers:
     @cached_property
     def row(self) -> Ints:
         """Row of each answer (G, C) in each response group."""
-        return np.concatenate([self.table.response_row, self.table.pair_row], axis=1)
+        return np.concatenate([self.table.response_row, self.table.joint_row], axis=1)
 
     @cached_property
     def never(self) -> Bools:
@@ -49,7 +50,7 @@ class Answers:
     def given(self, codes: Any) -> Any:
         """Return which answers (U, C) the codes (U, J) hold, as 0.0 and 1.0; symbolic.
 
-        A pair answered as a whole is one joint answer, and not two single ones.
+        Answers to several items of a set are one joint answer, and not single ones.
         """
         import pytensor.tensor as pt
 
@@ -58,16 +59,26 @@ class Answers:
         item = np.repeat(np.arange(table.n_items), sizes)
         code = np.arange(item.size) - table.item_start[item]
         single = pt.eq(codes[:, item], code).astype("float64")
-        if not table.pair_item.shape[0]:
+        found = joints(table)
+        if not found:
             return single
-        joint = []
-        keep = [pt.ones_like(single[:, 0])] * table.n_items
-        for first, second in table.pair_item.tolist():
-            one, two = (single[:, _columns(table, j)] for j in (first, second))
-            joint.append((one[:, :, None] * two[:, None, :]).reshape((codes.shape[0], -1)))
-            keep[first] = keep[second] = 1.0 - joint[-1].sum(axis=1)
-        kept = pt.stack(keep, axis=1)[:, item]
-        return pt.concatenate([single * kept, *joint], axis=1)
+        columns = [_columns(table, j) for j in range(table.n_items)]
+        missing = [1.0 - single[:, at].sum(axis=1) for at in columns]
+        alone = [pt.ones_like(missing[0])] * table.n_items
+        together = []
+        for joint in found:
+            given = pt.ones_like(single[:, :1])
+            for j in joint.items:
+                given = (given[:, :, None] * single[:, None, columns[j]]).reshape(
+                    (codes.shape[0], -1)
+                )
+            for j in joint.others:
+                given = given * missing[j][:, None]
+            together.append(given)
+            for j in joint.items:
+                alone[j] = alone[j] - given.sum(axis=1)
+        kept = pt.stack(alone, axis=1)[:, item]
+        return pt.concatenate([single * kept, *together], axis=1)
 
 
 def make_log_density(answers: Answers) -> Callable[..., Any]:
@@ -131,17 +142,18 @@ def make_random(answers: Answers) -> Callable[..., Ints]:
         weight = np.broadcast_to(prevalence * np.exp(log_weight), (*shape, table.n_classes))
         latent_class = _draw_index(weight, rng)
         codes = np.empty((*shape, table.n_items), dtype=np.int64)
-        in_pair = set(table.pair_item.ravel().tolist())
+        whole = [joint for joint in joints(table) if joint.is_whole]
+        in_set = {j for joint in whole for j in joint.items}
         for j in range(table.n_items):
-            if j not in in_pair:
+            if j not in in_set:
                 columns = probability[:, _columns(table, j), :]
                 codes[..., j] = _draw_index(columns[group, :, latent_class], rng)
         n_single = int(table.item_start[-1])
-        for pair, (first, second) in enumerate(table.pair_item.tolist()):
-            at = slice(n_single + table.pair_start[pair], n_single + table.pair_start[pair + 1])
-            joint = _draw_index(probability[:, at, :][group, :, latent_class], rng)
-            n_second = table.item_start[second + 1] - table.item_start[second]
-            codes[..., first], codes[..., second] = np.divmod(joint, n_second)
+        for joint in whole:
+            at = slice(n_single + joint.start, n_single + joint.start + joint.n)
+            answer = _draw_index(probability[:, at, :][group, :, latent_class], rng)
+            for j, code in zip(joint.items, np.unravel_index(answer, joint.sizes), strict=True):
+                codes[..., j] = code
         return np.where(np.broadcast_to(answered, codes.shape) > 0, codes, MISSING)
 
     return random

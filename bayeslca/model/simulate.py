@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, TypeVar
+from typing import TYPE_CHECKING, Any, TypeVar
 
 import numpy as np
 
 from bayeslca._typing import Bools, Floats, Ints, Seed
 from bayeslca.exceptions import ModelError
+from bayeslca.model.joint_answers import joints
+from bayeslca.model.places import ConditionalVector, ResponseVector, Vector
 from bayeslca.model.prevalence import PrevalenceSource
 from bayeslca.model.probabilities import draw_elements, response_probability, row_probability
 from bayeslca.model.table import Table
@@ -136,12 +138,11 @@ def draw_answers(
     for item in range(table.n_items):
         columns = slice(table.item_start[item], table.item_start[item + 1])
         codes[:, item] = _draw_categories(probability[:, :, columns][at], rng)
-    joint = np.swapaxes(row_probability(table, elements)[table.pair_row], -1, -2)
-    for pair, (first, second) in enumerate(table.pair_item):
-        columns = slice(table.pair_start[pair], table.pair_start[pair + 1])
-        answer = _draw_categories(joint[:, :, columns][at], rng)
-        n_second = table.item_start[second + 1] - table.item_start[second]
-        codes[:, first], codes[:, second] = np.divmod(answer, n_second)
+    by_class = np.swapaxes(row_probability(table, elements)[table.joint_row], -1, -2)
+    for joint in joints(table):
+        if joint.is_whole:
+            answer = _draw_categories(by_class[:, :, joint.columns][at], rng)
+            codes[:, list(joint.items)] = np.stack(np.unravel_index(answer, joint.sizes), axis=1)
     return codes
 
 
@@ -149,16 +150,21 @@ def parameters_from(
     model: LatentClassModel,
     prevalence: Floats | Sequence[float] | Mapping[str, float],
     response_probability: Mapping[str, Mapping[str, float | Sequence[float]]],
+    joint_answers: Mapping[tuple[str, ...], Mapping[str, Any]] | None = None,
 ) -> Parameters:
     """Put prevalences and response probabilities into the form that ``simulate`` takes.
 
     Parameters
     ----------
     model : LatentClassModel
-        A model in which every response probability has a block of its own.
+        A model that ties and fixes no response probability. All groups get the same.
     prevalence : mapping from class to probability, or array of shape (K,) or (groups, K)
     response_probability : mapping from item to mapping from class to probability
-        Of all the item's categories in order, or of yes (or the last) for a binary item.
+        Of all the item's categories in order, or of yes (or the last) for a binary item. Classes
+        in which the item is answered together with others may be left out.
+    joint_answers : mapping from items to mapping from class to array, optional
+        Of each set that is answered together, in the order of its items: the probability of each
+        joint answer, an axis for each item.
     """
     if isinstance(prevalence, Mapping):
         prevalence = [_entry(prevalence, name, "prevalence") for name in model.class_names]
@@ -166,14 +172,32 @@ def parameters_from(
         np.asarray(prevalence, dtype=np.float64), (model.n_groups, model.n_classes)
     )
     _check_simplex(shares, "the prevalences")
-    table = model.table
-    if not table.is_direct:
+    tied = model.response_assumptions.tied
+    if any(tied.reasons):
         msg = "this model ties or fixes probabilities; give its elements in Parameters instead."
         raise ModelError(msg)
-    elements = np.full(table.n_elements, np.nan)
+    known: dict[Vector, Floats] = {}
+    for g in range(model.n_response_groups):
+        known |= _known_alone(model, g, response_probability)
+        known |= _known_jointly(model, g, joint_answers or {})
+    elements = np.full(model.table.n_elements, np.nan)
+    for place, form in tied.forms.items():
+        elements[list(form.elements)] = known[place.vector][place.category]
+    return Parameters(elements, shares.copy())
+
+
+def _known_alone(
+    model: LatentClassModel,
+    group: int,
+    response_probability: Mapping[str, Mapping[str, float | Sequence[float]]],
+) -> dict[Vector, Floats]:
+    out: dict[Vector, Floats] = {}
+    in_sets = {(j, k) for one in model.item_sets for j in one.items for k in one.classes}
     for j, item in enumerate(model.items):
-        by_class = _entry(response_probability, item.name, "response_probability")
         for k, name in enumerate(model.class_names):
+            if (j, k) in in_sets:
+                continue
+            by_class = _entry(response_probability, item.name, "response_probability")
             value = np.atleast_1d(_entry(by_class, name, f"response_probability['{item.name}']"))
             if value.size == 1 and item.n_categories == 2:
                 yes = item.categories.index(item.yes) if item.yes else 1
@@ -183,9 +207,37 @@ def parameters_from(
                 msg += f"{value.size} probabilities. Give one for each category, in order."
                 raise ModelError(msg)
             _check_simplex(value, f"the answers to '{item.name}' in class '{name}'")
-            columns = slice(table.item_start[j], table.item_start[j + 1])
-            elements[table.direct_element[table.response_row[0, columns], k]] = value
-    return Parameters(elements, shares.copy())
+            out[ResponseVector(group, j, k)] = value
+    return out
+
+
+def _known_jointly(
+    model: LatentClassModel, group: int, joint_answers: Mapping[tuple[str, ...], Mapping[str, Any]]
+) -> dict[Vector, Floats]:
+    out: dict[Vector, Floats] = {}
+    for s, one in enumerate(model.item_sets):
+        names = tuple(model.items[j].name for j in one.items)
+        if names not in joint_answers:
+            msg = f"joint_answers has no entry for {names}, which are answered together. Add one."
+            raise ModelError(msg)
+        for k in one.classes:
+            name = model.class_names[k]
+            value = np.asarray(_entry(joint_answers[names], name, f"joint_answers[{names}]"))
+            if value.shape != one.sizes:
+                msg = (
+                    f"joint_answers[{names}] in class '{name}' has the shape {value.shape}; it "
+                    f"needs an axis for each item, {one.sizes}."
+                )
+                raise ModelError(msg)
+            _check_simplex(value.ravel(), f"the joint answers to {names} in class '{name}'")
+            joint = value.reshape(one.sizes[0], -1)
+            alone = joint.sum(axis=1)
+            out[ResponseVector(group, one.first, k)] = alone
+            for a, row in enumerate(joint):
+                even = np.full(row.size, 1.0 / row.size)  # where the first answer is never given
+                given = row / alone[a] if alone[a] > 0 else even
+                out[ConditionalVector(group, s, k, a)] = given
+    return out
 
 
 def _entry(mapping: Mapping[str, Entry], name: str, where: str) -> Entry:

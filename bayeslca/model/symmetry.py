@@ -137,7 +137,7 @@ class _Forms:
 @lru_cache(maxsize=8)
 def _forms(table: Table) -> _Forms:
     rows = tuple(
-        np.concatenate([table.response_row[g], table.pair_row[g]]) for g in table.response_group
+        np.concatenate([table.response_row[g], table.joint_row[g]]) for g in table.response_group
     )
     direct = table.direct_element
     if table.is_direct:

@@ -48,14 +48,19 @@ class Table:
         Response columns of item j are item_start[j]:item_start[j + 1].
     response_group : ndarray of int64, shape (prevalence groups,)
         The response group of each (declared) group of cases.
-    pair_item : ndarray of int64, shape (pairs, 2)
-        The two items of each pair that is answered together within a class; (0, 2) when none.
-    pair_start : ndarray of int64, shape (pairs + 1,)
-        Joint answers of pair p are columns pair_start[p]:pair_start[p + 1] of ``pair_row``, the
-        second item's category changing fastest.
-    pair_row : ndarray of int64, shape (G, joint answers)
-        Row of each joint answer in each response group. A case that answered one item of the
-        pair has that item's own row, a sum of joint cells, instead.
+    joint_item : ndarray of int64, shape (joints, widest)
+        The items of each joint answer to items that are answered together within a class, in
+        the set's order, filled with -1; (0, 0) when there are none. A set of two has one entry;
+        a larger one an entry for each way to answer two or more of its items. See
+        `bayeslca.model.joint_answers`.
+    joint_set : ndarray of int64, shape (joints,)
+        The set that each belongs to.
+    joint_start : ndarray of int64, shape (joints + 1,)
+        Joint answers of entry p are columns joint_start[p]:joint_start[p + 1] of ``joint_row``,
+        the last item's category changing fastest.
+    joint_row : ndarray of int64, shape (G, joint answers)
+        Row of each joint answer in each response group. A case that answered one item of a set
+        has that item's own row, a sum of joint cells, instead.
 
     Notes
     -----
@@ -79,9 +84,10 @@ class Table:
     response_row: Ints
     item_start: Ints
     response_group: Ints
-    pair_item: Ints
-    pair_start: Ints
-    pair_row: Ints
+    joint_item: Ints
+    joint_set: Ints
+    joint_start: Ints
+    joint_row: Ints
 
     @property
     def n_rows(self) -> int:

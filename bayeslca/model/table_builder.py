@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from itertools import product
+from itertools import combinations, product
+from math import prod
 
 import numpy as np
 
@@ -42,7 +43,7 @@ class TableBuilder:
         self.response_group = tuple(response_group)
         self.n_response_groups = max(self.response_group) + 1
         self.item_start = np.concatenate([[0], np.cumsum(self.n_categories)]).astype(np.int64)
-        self.pairs: list[tuple[int, int]] = []
+        self.together: list[tuple[int, ...]] = []
         self._block_start = [0]
         self._prior: list[float] = []
         self._lower: dict[int, float] = {}
@@ -129,42 +130,54 @@ class TableBuilder:
             elements = (another, rest[at]) if rest else (another,)
             self.set_row(group, item, other, latent_class, [(1.0, elements)])
 
-    def answered_together(self, first: int, second: int) -> int:
-        """Declare that two items may depend on each other within a class.
+    def answered_together(self, *items: int) -> int:
+        """Declare that two or more items may depend on each other within a class.
 
         Returns
         -------
         int
-            The number of the pair, for ``set_joint``.
+            The number of the set, for ``set_joint``.
         """
-        taken = {item for pair in self.pairs for item in pair}
-        if first == second or taken & {first, second}:
+        taken = {item for items in self.together for item in items}
+        if len(set(items)) < max(2, len(items)) or taken & set(items):
             msg = (
-                f"items {first} and {second} cannot be answered together: an item can be in one "
-                "pair only. Put each item into at most one pair."
+                f"items {', '.join(map(str, items))} cannot be answered together: a set has two "
+                "items or more, and an item can be in one set only. Put each item into at most "
+                "one set."
             )
             raise ModelError(msg)
-        self.pairs.append((first, second))
-        return len(self.pairs) - 1
+        self.together.append(items)
+        return len(self.together) - 1
 
-    def set_joint(self, group: int, pair: int, latent_class: int, elements: Sequence[int]) -> None:
-        """Let the joint answers of a pair be one block; each item's own rows are its sums.
+    def set_joint(
+        self, group: int, together: int, latent_class: int, cells: Sequence[Cell | int]
+    ) -> None:
+        """Say what the joint answers of a set are; the rows of its items are their sums.
 
         Parameters
         ----------
-        group, pair, latent_class : int
-        elements : sequence of int
-            Elements of the joint answers, the second item's category changing fastest.
+        group, together, latent_class : int
+        cells : sequence of Cell or int
+            One for each joint answer, the last item's category changing fastest; an element
+            alone stands for itself.
         """
-        first, second = self.pairs[pair]
-        joint = np.reshape(elements, (self.n_categories[first], self.n_categories[second]))
-        start = self._pair_start()[pair]
-        for at, element in enumerate(elements):
-            self._joint_cells[group, start + at, latent_class] = ((1.0, (int(element),)),)
-        for category, row in enumerate(joint):
-            self.set_row(group, first, category, latent_class, _single(row))
-        for category, column in enumerate(joint.T):
-            self.set_row(group, second, category, latent_class, _single(column))
+        items = self.together[together]
+        sizes = [self.n_categories[j] for j in items]
+        each = [(1.0, (int(c),)) if not isinstance(c, tuple) else c for c in cells]
+        answers = list(product(*map(range, sizes)))
+        for members in _some_of(items):
+            at = [items.index(j) for j in members]
+            start = self._joint_start()[self._joints().index((together, members))]
+            found: dict[tuple[int, ...], list[Cell]] = {}
+            for answer, cell in zip(answers, each, strict=True):
+                found.setdefault(tuple(answer[i] for i in at), []).append(cell)
+            for column, answer in enumerate(product(*(range(sizes[i]) for i in at))):
+                position = (group, int(start) + column, latent_class)
+                self._joint_cells[position] = _kept(found[answer])
+        for i, j in enumerate(items):
+            for category in range(sizes[i]):
+                summed = [c for a, c in zip(answers, each, strict=True) if a[i] == category]
+                self.set_row(group, j, category, latent_class, summed)
 
     def bound(self, element: int, lower: float = 0.0, upper: float = 1.0) -> None:
         """Keep an element between two constants (the narrower of what was said before)."""
@@ -185,8 +198,8 @@ class TableBuilder:
         """
         self._fill_joint_rows()
         columns, response_row = self._rows(self._cells, int(self.item_start[-1]), 0)
-        pair_start = self._pair_start()
-        joint, pair_row = self._rows(self._joint_cells, int(pair_start[-1]), len(columns))
+        joints, joint_start = self._joints(), self._joint_start()
+        joint, joint_row = self._rows(self._joint_cells, int(joint_start[-1]), len(columns))
         rows = columns + joint
         positions = [cells for row in rows for cells in row]
         cells = [cell for position in positions for cell in position]
@@ -204,9 +217,10 @@ class TableBuilder:
             response_row=response_row,
             item_start=self.item_start,
             response_group=np.asarray(self.response_group, dtype=np.int64),
-            pair_item=np.asarray(self.pairs, dtype=np.int64).reshape(-1, 2),
-            pair_start=pair_start,
-            pair_row=pair_row,
+            joint_item=_filled_up([members for _, members in joints]),
+            joint_set=np.asarray([together for together, _ in joints], dtype=np.int64),
+            joint_start=joint_start,
+            joint_row=joint_row,
             cell_start=_starts([len(position) for position in positions]),
             cell_constant=np.asarray([constant for constant, _ in cells], dtype=np.float64),
             cell_element_start=_starts([len(multiplied) for _, multiplied in cells]),
@@ -215,23 +229,33 @@ class TableBuilder:
         _check_sums(table)
         return table
 
-    def _pair_start(self) -> Ints:
-        sizes = [self.n_categories[a] * self.n_categories[b] for a, b in self.pairs]
-        return np.concatenate([[0], np.cumsum(sizes, dtype=np.int64)]).astype(np.int64)
+    def _joints(self) -> list[tuple[int, tuple[int, ...]]]:
+        """Return every way to answer two or more items of a set, with the set's number."""
+        return [
+            (together, members)
+            for together, items in enumerate(self.together)
+            for members in _some_of(items)
+        ]
+
+    def _joint_start(self) -> Ints:
+        sizes = [prod(self.n_categories[j] for j in members) for _, members in self._joints()]
+        return _starts(sizes)
 
     def _fill_joint_rows(self) -> None:
-        """In classes where a pair is independent, a joint answer is the product of its rows."""
-        start = self._pair_start()
+        """In classes where a set is independent, a joint answer is the product of its rows."""
+        start = self._joint_start()
         groups, classes = range(self.n_response_groups), range(self.n_classes)
-        for pair, (first, second) in enumerate(self.pairs):
-            answers = product(range(self.n_categories[first]), range(self.n_categories[second]))
-            for at, (a, b) in enumerate(answers):
+        for joint, (_, members) in enumerate(self._joints()):
+            answers = product(*(range(self.n_categories[j]) for j in members))
+            for at, answer in enumerate(answers):
+                columns = [
+                    int(self.item_start[j]) + c for j, c in zip(members, answer, strict=True)
+                ]
                 for g, k in product(groups, classes):
-                    joint = (g, int(start[pair]) + at, k)
-                    if joint not in self._joint_cells:
-                        one = self._cells[g, int(self.item_start[first]) + a, k]
-                        two = self._cells[g, int(self.item_start[second]) + b, k]
-                        self._joint_cells[joint] = _multiplied(one, two)
+                    position = (g, int(start[joint]) + at, k)
+                    if position not in self._joint_cells:
+                        rows = [self._cells[g, column, k] for column in columns]
+                        self._joint_cells[position] = _multiplied(rows)
 
     def _rows(
         self, cells: Mapping[Position, Cells], n_columns: int, first_row: int
@@ -258,12 +282,25 @@ def _kept(cells: Sequence[Cell]) -> Cells:
     return tuple((float(c), tuple(int(e) for e in elements)) for c, elements in cells if c != 0.0)
 
 
-def _single(elements: Ints) -> list[Cell]:
-    return [(1.0, (int(e),)) for e in elements]
+def _some_of(items: tuple[int, ...]) -> list[tuple[int, ...]]:
+    """Return all choices of two or more of some items, the fewest first."""
+    return [some for n in range(2, len(items) + 1) for some in combinations(items, n)]
 
 
-def _multiplied(one: Cells, two: Cells) -> Cells:
-    return tuple((a * b, x + y) for (a, x), (b, y) in product(one, two))
+def _multiplied(rows: Sequence[Cells]) -> Cells:
+    """Return the cells of a product of rows."""
+    out: Cells = ((1.0, ()),)
+    for row in rows:
+        out = tuple((a * b, x + y) for (a, x), (b, y) in product(out, row))
+    return out
+
+
+def _filled_up(lists: Sequence[Sequence[int]]) -> Ints:
+    """Lay lists of different lengths under each other, filled with -1."""
+    out = np.full((len(lists), max(map(len, lists), default=0)), -1, dtype=np.int64)
+    for row, values in zip(out, lists, strict=True):
+        row[: len(values)] = values
+    return out
 
 
 def _filled(size: int, default: float, values: Mapping[int, float]) -> Floats:

@@ -20,7 +20,7 @@ from bayeslca.posterior import membership as memberships
 from bayeslca.posterior import partial_pooling as partial
 from bayeslca.posterior import quantities as found_quantities
 from bayeslca.posterior import separation as separations
-from bayeslca.posterior import tables
+from bayeslca.posterior import tables, together
 from bayeslca.posterior.quantities import Quantity
 from bayeslca.posterior.summary import Quantities, summary_frame
 from bayeslca.posterior.versions import versions_now
@@ -197,6 +197,34 @@ class Posterior:
         return tables.response_probability_table(
             self, self._response_probability_quantities, interval
         )
+
+    def joint_answers(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return how probable each joint answer is to items that are answered together.
+
+        Returns
+        -------
+        DataFrame
+            A row per set, class in which it is answered together, and joint answer, with the
+            keys ``latent_class``, ``items`` and ``joint_answer``; ``group`` before them where
+            groups differ in response probabilities. No row where nothing is answered together.
+        """
+        return together.joint_answers_table(self, interval)
+
+    def conditional_dependence(self, interval: float = 0.95) -> pd.DataFrame:
+        """Return how pairs of items that are answered together go together within a class.
+
+        Returns
+        -------
+        DataFrame
+            Three rows per pair and class, with the keys ``latent_class``, ``item_1``, ``item_2``
+            and ``measure``: "odds ratio" (for ordered answers, agreeing over disagreeing pairs of
+            cases), "covariance" and "correlation" of the answers given the class, which for two
+            diagnostic tests are those of Dendukuri & Joseph (2001). The mean, spread and error
+            of an odds ratio are left out, as its mean need not exist. ``positive`` is the
+            probability that the two go together more than independent items would. Pairs with
+            an item whose answers have no order are left out.
+        """
+        return together.dependence_table(self, interval)
 
     def membership(
         self,

@@ -223,15 +223,24 @@ def _exact_answer_overlap(posterior: Posterior) -> Floats:
 def _answer_share(posterior: Posterior, weights: tuple[PriorWeight, ...]) -> Floats:
     """Return the prior's share (rows of the table): the largest of the blocks of each answer."""
     table = posterior.table
-    of_block = np.array([np.nan if w.share is None else w.share for w in weights])
-    block = table.element_block
     out = np.full((table.n_response_groups, table.n_classes, int(table.item_start[-1])), np.nan)
-    for g, k, column in np.ndindex(*out.shape):
-        cells = table.cells(int(table.response_row[g, column]), k)
-        mine = [of_block[block[e]] for _, elements in cells for e in elements]
-        if mine:
-            out[g, k, column] = max(mine)
+    for weight in weights:
+        share = np.nan if weight.share is None else weight.share
+        for g, j, k in weight.places:
+            columns = slice(table.item_start[j], table.item_start[j + 1])
+            elements = [
+                _has_elements(posterior, g, c, k) for c in range(columns.start, columns.stop)
+            ]
+            free = np.array(elements)
+            out[g, k, columns] = np.where(free, np.fmax(out[g, k, columns], share), np.nan)
     return out.reshape(-1)
+
+
+def _has_elements(posterior: Posterior, group: int, column: int, latent_class: int) -> bool:
+    """Tell whether an answer is not wholly known."""
+    table = posterior.table
+    cells = table.cells(int(table.response_row[group, column]), latent_class)
+    return any(elements for _, elements in cells)
 
 
 def _prevalence_share(posterior: Posterior, n_rows: int) -> Floats:

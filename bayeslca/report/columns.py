@@ -283,6 +283,19 @@ COLUMNS: dict[str, Column] = {
     "p_mcse": Column("± of p", "Monte Carlo error of p", "number"),
     "p_calibrated": Column("Calibrated p", "rank of p among simulated studies", "share"),
     "p_calibrated_mcse": Column("± of calibrated p", "Monte Carlo error of it", "number"),
+    "items": Column("Items", "items that are answered together within a class", "text"),
+    "joint_answer": Column("Joint answer", "answers given together", "text"),
+    "measure": Column(
+        "Measure",
+        "odds ratio (of ordered items, agreeing over disagreeing pairs of cases), covariance or "
+        "correlation of the answers within the class; an odds ratio has no mean to rely on",
+        "text",
+    ),
+    "positive": Column(
+        "More than by chance",
+        "probability that the items go together more than independent ones would",
+        "share",
+    ),
     "item_1": Column("Item", "the first item of the pair", "text"),
     "item_2": Column("Other item", "the second item of the pair", "text"),
     "odds_ratio": Column(

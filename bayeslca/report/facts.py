@@ -11,6 +11,7 @@ from bayeslca.posterior.tables import OVERALL
 from bayeslca.report.content import ReportContent
 from bayeslca.report.placement import Placement, placement
 from bayeslca.report.wording import about_of, called, in_words, percent_interval, whole
+from bayeslca.responses.test_results import look_like_tests
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -20,10 +21,6 @@ if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.units import Units
 
-TEST_RESULTS = frozenset(
-    {"positive", "negative", "pos", "neg", "+", "-", "reactive", "non-reactive", "nonreactive"}
-)
-"""Answers that make an item look like a diagnostic test."""
 PRIOR_SEED = 1
 PRIOR_DRAWS, FEWEST_PRIOR_DRAWS, PRIOR_ANSWERS = 1000, 200, 2_000_000
 """Studies drawn from the prior: fewer where they are large, so that it takes about a second."""
@@ -168,11 +165,7 @@ class Facts:
     @property
     def looks_diagnostic(self) -> bool:
         """True when the study says that its items are tests, or their answers look like it."""
-        answers = [
-            {category.strip().casefold() for category in item.categories}
-            for item in self.posterior.model.items
-        ]
-        return self.content.diagnostic or any(len(found & TEST_RESULTS) > 1 for found in answers)
+        return self.content.diagnostic or look_like_tests(self.posterior.model.items)
 
     @property
     def untrusted_ties(self) -> tuple[object, ...]:

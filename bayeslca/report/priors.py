@@ -9,9 +9,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats
-from bayeslca.model.places import ResponseVector
+from bayeslca.model.places import ConditionalVector, PrevalenceVector, ResponseVector
 from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.priors import DEFAULT
+from bayeslca.model.probabilities import draw_elements
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -22,6 +23,8 @@ if TYPE_CHECKING:
 
 HEAVY_WORDS = "a fifth"
 """From which part of the expected cases a reader is told: `bayeslca.model.prior_weights.HEAVY`."""
+PRIOR_DRAWS, PRIOR_SEED = 4000, 20_261_201
+"""Of a prior that has no name."""
 
 
 @dataclass(frozen=True)
@@ -40,6 +43,9 @@ class ItemPrior:
         The statement that set the prior, or ``"default"``.
     constraints : tuple of str
         Statements that hold it equal to another, known, bounded or ordered.
+    follows : bool
+        True where the item is answered together with another whose prior is not the default: its
+        own prior then has no name, and ``parameters`` are those of the joint answers' alone.
     """
 
     latent_class: str
@@ -48,6 +54,7 @@ class ItemPrior:
     heaviest: PriorWeight | None
     origin: str
     constraints: tuple[str, ...] = ()
+    follows: bool = False
 
     @property
     def weight(self) -> float:
@@ -82,10 +89,26 @@ def item_priors(posterior: Posterior) -> tuple[ItemPrior, ...]:
             max(at.get((j, k), ()), key=lambda weight: weight.share or 0.0, default=None),
             model.response_prior_origin(0, j, k),
             _constraints(model, j, k),
+            follows=_follows(model, j, k),
         )
         for j, item in enumerate(model.items)
         for k, name in enumerate(model.class_names)
     )
+
+
+def _follows(model: LatentClassModel, item: int, latent_class: int) -> bool:
+    """Tell whether an item's prior is a sum of joint answers that is no Dirichlet."""
+    for one in model.item_sets:
+        if item in one.others and latent_class in one.classes:
+            vectors = [place.vector for link in model.links for place in link.places]
+            tied = any(
+                isinstance(vector, ConditionalVector)
+                or (vector.item, vector.latent_class) == (one.first, latent_class)
+                for vector in vectors
+                if not isinstance(vector, PrevalenceVector)
+            )
+            return tied or model.response_prior_origin(0, one.first, latent_class) != DEFAULT
+    return False
 
 
 def _constraints(model: LatentClassModel, item: int, latent_class: int) -> tuple[str, ...]:
@@ -144,10 +167,14 @@ def priors_table(posterior: Posterior) -> pd.DataFrame:
         for c, category in enumerate(item.categories):
             order = [c, 1 - c] if item.n_categories == 2 else range(item.n_categories)
             written = distribution([weight.parameters[at] for at in order])
+            if weight.follows:
+                summary = _drawn_summary(model, weight, c)
+            else:
+                summary = _summary(weight.parameters, c, written, weight.share)
             rows.append(
                 {**group, "latent_class": weight.latent_class, "item": item.name}
                 | {"category": category}
-                | _summary(weight.parameters, c, written, weight.share)
+                | summary
                 | _stated(model, weight.origin)
                 | {"constraints": "; ".join(weight.constraints)}
             )
@@ -176,6 +203,27 @@ def _stated(model: LatentClassModel, origin: str) -> dict[str, object]:
     if origin == DEFAULT:
         return {"statement": "", "source": ""}
     return {"statement": origin, "source": model.statement_sources.get(origin, "")}
+
+
+def _drawn_summary(model: LatentClassModel, weight: ItemPrior, category: int) -> dict[str, object]:
+    """Return the figures of a prior that has no name, from draws; bounds aside, as elsewhere."""
+    table, rng = model.table, np.random.default_rng(PRIOR_SEED)
+    j = [item.name for item in model.items].index(weight.item)
+    row = table.response_row[0, table.item_start[j] + category]
+    k = model.class_names.index(weight.latent_class)
+    elements = np.stack([draw_elements(table, rng) for _ in range(PRIOR_DRAWS)])
+    drawn = np.zeros(PRIOR_DRAWS)
+    for constant, multiplied in table.cells(int(row), k):
+        drawn += constant * elements[:, list(multiplied)].prod(axis=1)
+    lower, upper = np.quantile(drawn, [0.025, 0.975])
+    return {
+        "prior": "what the joint answers' prior leaves",
+        "prior_mean": float(drawn.mean()),
+        "prior_lower": float(lower),
+        "prior_upper": float(upper),
+        "prior_cases": weight.weight,
+        "prior_share": weight.share,
+    }
 
 
 def _summary(parameters: Floats, at: int, written: str, share: float) -> dict[str, object]:

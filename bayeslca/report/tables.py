@@ -95,6 +95,15 @@ def file_tables(
             "What the priors imply before the data",
             prior.table.rename(columns=PRIOR_NAMES),
         )
+    if posterior.model.item_sets:
+        named["joint_answers"] = (
+            "The probability of each joint answer in each class",
+            posterior.joint_answers(interval=interval),
+        )
+        named["conditional_dependence"] = (
+            "How items that are answered together go together within a class",
+            posterior.conditional_dependence(interval=interval),
+        )
     if content.comparison is not None:
         named["class_counts"] = (
             "How well models with different numbers of classes predict",

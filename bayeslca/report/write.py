@@ -19,6 +19,7 @@ from bayeslca.report.sections.design import design_section, marked
 from bayeslca.report.sections.fit import fit_section
 from bayeslca.report.sections.groups import groups_section
 from bayeslca.report.sections.influence import influence_section
+from bayeslca.report.sections.joint_answers import joint_answers_section
 from bayeslca.report.sections.likelihood import likelihood_section
 from bayeslca.report.sections.limits import limits_section
 from bayeslca.report.sections.membership import membership_section
@@ -91,6 +92,7 @@ def report_sections(facts: Facts, versions: Mapping[str, str]) -> tuple[Section,
         answer_section(facts),
         design_section(facts),
         classes_section(facts),
+        joint_answers_section(facts),
         prevalence_section(facts),
         class_counts_section(facts),
         together_section(facts),

@@ -57,6 +57,7 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
         statements=study.shared_statements,
         groups=responses.groups,
         **study.pooling(2),
+        answered_together=study.shared_together,
     )
     if study.said.groups.compare_free:
         group_models(study, checked)

@@ -162,6 +162,7 @@ def _compared(
             n_classes,
             statements=study.shared_statements,
             **study.pooling(n_classes),
+            answered_together=study.shared_together,
         )
         key = step_key(study.responses, model, sampling, study.said.sampling.seed)
         kept = steps.take(count_fit(n_classes), key)
@@ -174,6 +175,7 @@ def _compared(
         counts,
         statements=study.shared_statements,
         **study.pooling(max(counts)),
+        answered_together=study.shared_together,
         seed=study.said.sampling.seed,
         fitted=fitted,
         own=named,

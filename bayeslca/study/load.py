@@ -13,6 +13,7 @@ from typing import Any
 from pydantic import BaseModel, ValidationError
 
 from bayeslca.exceptions import ModelError, StatementError, StudyError, near_names
+from bayeslca.model.answered_together import AnsweredTogether
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.resolve import read_statements
 from bayeslca.model.vocabulary import Vocabulary
@@ -21,6 +22,8 @@ from bayeslca.responses.responses import Responses
 from bayeslca.study.schema import SourcedStatement, StudyFile
 
 Place = tuple[str | int, ...]
+_KINDS = ("str", "int", "SourcedStatement", "list[str]", "TogetherSection", "list[float]", "float")
+"""What pydantic puts into the place of an error, and the file does not have."""
 
 
 @dataclass(frozen=True)
@@ -107,6 +110,25 @@ class Study:
             if isinstance(said, SourcedStatement)
         }
 
+    @property
+    def answered_together(self) -> tuple[AnsweredTogether, ...]:
+        """Items that are answered together within a class."""
+        return tuple(
+            AnsweredTogether(tuple(said))
+            if isinstance(said, list)
+            else AnsweredTogether(
+                tuple(said.items),
+                None if said.classes is None else tuple(said.classes),
+                tuple(said.prior) if isinstance(said.prior, list) else said.prior,
+            )
+            for said in self.said.model.answered_together
+        )
+
+    @property
+    def shared_together(self) -> tuple[AnsweredTogether, ...]:
+        """Those that hold in every class, and so for any number of classes."""
+        return tuple(one for one in self.answered_together if one.classes is None)
+
     @cached_property
     def model(self) -> LatentClassModel | None:
         """The study's own model; None when the number of classes is left open."""
@@ -124,6 +146,7 @@ class Study:
                 statement_sources=self.statement_sources,
                 free_by_group=self.free_by_group,
                 **self.pooling(classes if isinstance(classes, int) else len(classes)),
+                answered_together=self.answered_together,
             )
         except StatementError as error:
             problem = f"{self._where_stated(error.statement)}: {error.problem}"
@@ -152,6 +175,14 @@ class Study:
                 f"{_where(self.path, self.text, ('model', 'statements'))}: {open_statements[0]!r} "
                 "cannot be read for classes that have no names, and [model] classes is left out. "
                 "Name the classes, or write statements about all classes: P(item=answer | .)."
+            )
+            raise StudyError(msg)
+        named = [name for one in self.answered_together for name in one.classes or ()]
+        if named:
+            msg = (
+                f"{_where(self.path, self.text, ('model', 'answered_together'))}: names the class "
+                f"{named[0]!r}, and [model] classes is left out. Name the classes, "
+                "or leave classes out of answered_together."
             )
             raise StudyError(msg)
 
@@ -238,9 +269,7 @@ def _in_words(path: Path, text: str, error: ValidationError) -> str:
 
 
 def _problem(path: Path, text: str, one: Mapping[str, Any]) -> str:
-    place: Place = tuple(
-        part for part in one["loc"] if part not in ("str", "int", "SourcedStatement", "list[str]")
-    )
+    place: Place = tuple(part for part in one["loc"] if part not in _KINDS)
     where = _where(path, text, place)
     kind = one["type"]
     if kind == "extra_forbidden":

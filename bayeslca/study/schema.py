@@ -95,6 +95,14 @@ class SourcedStatement(_Section):
     source: str
 
 
+class TogetherSection(_Section):
+    """Items that are answered together, in all classes or in some."""
+
+    items: list[str]
+    classes: list[str] | None = None
+    prior: float | list[float] | None = None
+
+
 class ModelSection(_Section):
     """The classes and what is assumed about them."""
 
@@ -106,6 +114,7 @@ class ModelSection(_Section):
     spread_prior: tuple[
         Annotated[float, Field(gt=0, lt=1e6)], Annotated[float, Field(gt=0, lt=1e6)]
     ] = (1.0, 1.0)
+    answered_together: list[list[str] | TogetherSection] = []
 
     @field_validator("classes")
     @classmethod

@@ -15,6 +15,7 @@ from bayeslca.report.blocks import (
 )
 from bayeslca.report.facts import Facts
 from bayeslca.report.priors import HEAVY_WORDS, ItemPrior, distribution, item_priors
+from bayeslca.report.sections.joint_answers import sets_in_words
 from bayeslca.report.sections.prior_predictive import prior_blocks
 from bayeslca.report.wording import (
     called,
@@ -63,8 +64,9 @@ def model_in_words(facts: Facts) -> str:
         else "All cases belong to one class. "
     )
     text += (
-        "Within a class, the answers to different items are independent of each other, and every "
-        "case of the class has the same probability of each answer."
+        "Within a class, the answers to different items are independent of each other"
+        f"{_but_together(facts)}, and every case of the class has the same probability of each "
+        "answer."
     )
     if model.groups and model.pooled:
         name = model.groups.name
@@ -80,6 +82,11 @@ def model_in_words(facts: Facts) -> str:
             "prevalences; the classes look the same in all groups."
         )
     return text
+
+
+def _but_together(facts: Facts) -> str:
+    model = facts.posterior.model
+    return f", but for {sets_in_words(model)}, which may go together" if model.item_sets else ""
 
 
 def answers_in_words(facts: Facts) -> str:
@@ -213,6 +220,8 @@ def _weights_table(facts: Facts) -> PageTable:
 
 
 def _held(facts: Facts, weight: ItemPrior) -> str:
+    if weight.follows:
+        return "what the joint answers' prior leaves"
     return _written(facts, weight) + (" *" if weight.constraints else "")
 
 

@@ -18,6 +18,7 @@ from bayeslca.report.wording import (
     level,
     listed,
     sentence,
+    significant,
     whole,
 )
 
@@ -64,8 +65,9 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
 
 def _priors(facts: Facts) -> str:
     model = facts.posterior.model
+    together = f" {_together(facts)}" if model.item_sets else ""
     if not model.statements:
-        return f"All priors were uniform.{_spread(facts)}"
+        return f"All priors were uniform.{together}{_spread(facts)}"
     rules = [rule.text for rule in model.naming_rules]
     constraints = [constraint.text for constraint in model.stated.constraints]
     priors = [prior.text for prior in model.stated.priors]
@@ -83,7 +85,7 @@ def _priors(facts: Facts) -> str:
         )
     if rules:
         text += f" Classes were named by rule: {listed(rules)}."
-    return text + _spread(facts)
+    return text + together + _spread(facts)
 
 
 def _spread(facts: Facts) -> str:
@@ -96,6 +98,21 @@ def _spread(facts: Facts) -> str:
         f" The spread between units, (1 + c)^(-1/2) for a concentration of c, had the prior "
         f"Beta({a:g}, {b:g}), after Gelman et al. (2013)."
     )
+
+
+def _together(facts: Facts) -> str:
+    """Return the priors of items that are answered together."""
+    model = facts.posterior.model
+    parts = []
+    for one in model.item_sets:
+        names = listed([model.items[j].name for j in one.items])
+        numbers = dict.fromkeys(
+            f"{significant(prior[0])} for each" if len(set(prior)) == 1 else
+            f"parameters {', '.join(f'{a:g}' for a in prior)}"
+            for prior in one.priors.values()
+        )  # fmt: skip
+        parts.append(f"The joint answers to {names} had a Dirichlet prior with {listed(numbers)}.")
+    return " ".join(parts)
 
 
 def _sampling(facts: Facts) -> str:

@@ -18,6 +18,7 @@ from bayeslca.report.sections import (
     design,
     fit,
     influence,
+    joint_answers,
     limits,
     membership,
     outcomes,
@@ -254,18 +255,22 @@ def _nested(facts: Facts) -> Answered:
 
 def _independence(facts: Facts) -> Answered:
     question, checks = "Are the items independent within a class?", facts.content.checks
+    model = facts.posterior.model
+    but = f"Not taken to be: {joint_answers.sets_in_words(model)}. " if model.item_sets else ""
+    places = ((joint_answers.ANCHOR, joint_answers.HEADING),) if model.item_sets else ()
     if checks is not None:
+        text = fit.independence_in_words(checks)
         return Answered(
             question,
-            fit.independence_in_words(checks),
-            (_FIT,),
+            f"{but}Of the others {text[0].lower()}{text[1:]}" if but else text,
+            (*places, _FIT),
             _items("BARG 1B", "14a", facts),
         )
     return Answered(
         question,
-        "It was assumed. Whether pairs of items go together more than the classes explain was "
-        "not checked in this study.",
-        (_PRIORS,),
+        f"{but}It was assumed{' of the others' if but else ''}. Whether pairs of items go together "
+        "more than the classes explain was not checked in this study.",
+        (*places, _PRIORS),
         _items("BARG 1B", "14a", facts),
         done=False,
     )

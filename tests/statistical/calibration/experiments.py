@@ -17,6 +17,7 @@ from threading import Event
 import numpy as np
 from rank_uniformity import p_value
 
+from bayeslca.model.answered_together import AnsweredTogether
 from bayeslca.model.compile import compile_units, split_units, verified_log_weight
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
@@ -265,6 +266,47 @@ def bounded() -> Experiment:
         ),
     )
     return of_model(model, [25], labelled=True)
+
+
+def together_in_all_classes() -> Experiment:
+    """Let a pair go together in both of two named classes, with numbers for each; halves missing.
+
+    Priors tell the classes apart only weakly, so that labellings share the posterior.
+    """
+    model = LatentClassModel(
+        yes_no(4),
+        ("managed", "informal"),
+        statements=(
+            "P(item_3=yes | managed) ~ Beta(4, 1)",
+            "P(item_4=yes | informal) ~ Beta(1, 3)",
+        ),
+        answered_together=[
+            AnsweredTogether(["item_1", "item_2"], ["managed"], prior=[2.0, 0.5, 1.0, 3.0]),
+            AnsweredTogether(["item_1", "item_2"], ["informal"]),
+        ],
+    )
+    return with_missing_halves(of_model(model, [30], labelled=True))
+
+
+def together_in_one_class() -> Experiment:
+    """Let three items go together in one class of two; a prior, and a joint answer ruled out."""
+    model = LatentClassModel(
+        (*yes_no(3), Item("often", ("never", "some", "always"))),
+        ("managed", "informal"),
+        statements=(
+            "P(item_1=yes | managed) ~ Beta(3, 2)",
+            "P(item_1=no, item_2=yes, often=always | managed) = 0",
+        ),
+        answered_together=[AnsweredTogether(["item_1", "item_2", "often"], ["managed"])],
+    )
+    return with_missing_halves(of_model(model, [25], labelled=True))
+
+
+def with_missing_halves(experiment: Experiment) -> Experiment:
+    """Leave out the first item of some cases, the second of others, or the last."""
+    answered = experiment.answered.copy()
+    answered[:6, 0], answered[6:12, 1], answered[10:16, -1] = False, False, False
+    return replace(experiment, answered=answered)
 
 
 def rich() -> Experiment:

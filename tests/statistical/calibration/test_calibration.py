@@ -17,6 +17,8 @@ from experiments import (
     p_values,
     rich,
     smallest,
+    together_in_all_classes,
+    together_in_one_class,
     two_groups,
 )
 from rank_uniformity import p_value
@@ -38,6 +40,8 @@ LEVEL = 1e-3
         pytest.param(named_nearly_alike(), id="named, nearly alike"),
         pytest.param(rich(), id="shared blocks, a constant, a pair, verified cases"),
         pytest.param(bounded(), id="bounds, orders, an equality"),
+        pytest.param(together_in_all_classes(), id="a pair together in all classes"),
+        pytest.param(together_in_one_class(), id="three items together in one class"),
     ],
 )
 def test_ranks_are_uniform(experiment: Experiment) -> None:

@@ -216,7 +216,7 @@ def pair_half_missing_in_one_class():
         builder.set_item(0, 2, k, builder.block([1.0, 2.0 - k]))
     table = builder.build()
     units = unit_table(table, [(0, (1, MISSING, 0), 3, None), (0, (MISSING, 0, 1), 2, None)])
-    joint = [table.pair_row[0, 3], table.response_row[0, 5]]  # both yes, third yes
+    joint = [table.joint_row[0, 3], table.response_row[0, 5]]  # both yes, third yes
     units = replace(
         units,
         row_start=np.append(units.row_start, units.row_start[-1] + 2),

@@ -107,7 +107,7 @@ class Experiment:
         single = [table.response_row[group, table.item_start[j] + a] for j, a in enumerate(pattern)]
         rows = [int(r) for r, a in zip(single[:2], pattern, strict=False) if a >= 0]
         if pattern[2] >= 0 and pattern[3] >= 0:
-            return [*rows, int(table.pair_row[group, 2 * pattern[2] + pattern[3]])]
+            return [*rows, int(table.joint_row[group, 2 * pattern[2] + pattern[3]])]
         return rows + [int(single[j]) for j in (2, 3) if pattern[j] >= 0]
 
     def simulate(self, elements, prevalence, rng: np.random.Generator) -> np.ndarray:
@@ -123,7 +123,7 @@ class Experiment:
             for j in range(2):
                 columns = table.response_row[group, table.item_start[j] : table.item_start[j + 1]]
                 chosen[j] = _choose(probability[columns, k], uniform[i, 1 + j])
-            joint = _choose(probability[table.pair_row[group], k], uniform[i, 3])
+            joint = _choose(probability[table.joint_row[group], k], uniform[i, 3])
             chosen[2], chosen[3] = divmod(joint, 2)
             pattern = tuple(a if o else -1 for a, o in zip(chosen, OBSERVED[i], strict=True))
             counts[self.number[g, pattern, k if VERIFIED[i] else -1]] += 1

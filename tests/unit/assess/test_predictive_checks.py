@@ -115,7 +115,7 @@ def test_a_dependent_pair_is_named_with_its_numbers(misfits: PredictiveChecks) -
     assert pair.about == ("item_3", "item_4")
     assert pair.level == "warning"
     assert "one more class" in pair.remedy
-    assert "later version" in pair.remedy
+    assert 'answered_together = [["item_3", "item_4"]]' in pair.remedy
     assert pair.value is not None
     row = misfits.pairs.query("item_1 == 'item_3' and item_2 == 'item_4'").iloc[0]
     assert row["pair_residual"] == pytest.approx(pair.value)

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from bayeslca.assess.item_pairs import ItemPairs, answer_scores, with_sum
+from bayeslca.assess.item_pairs import ItemPairs, with_sum
+from bayeslca.model.pair_measures import answer_scores
 from bayeslca.responses.item import Item
 
 YES = Item("fees", ("no", "yes"), yes="yes")

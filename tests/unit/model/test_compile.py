@@ -208,9 +208,9 @@ def test_the_joint_row_of_an_independent_class_is_the_product_of_its_own_rows():
     table = dependent_pair()
     elements = draw_elements(table, np.random.default_rng(2))
     rows = row_probability(table, elements)
-    joint = rows[table.pair_row[0], 1].reshape(2, 3)
+    joint = rows[table.joint_row[0], 1].reshape(2, 3)
     np.testing.assert_allclose(joint, np.outer(elements[6:8], elements[8:11]))
-    assert table.pair_row.shape == (1, 6)
+    assert table.joint_row.shape == (1, 6)
 
 
 def test_a_missing_answer_has_no_row():
@@ -297,5 +297,5 @@ def test_answers_that_do_not_sum_to_one_are_refused():
 def test_an_item_is_in_one_pair_only():
     builder = TableBuilder([2, 2, 2], 1)
     builder.answered_together(0, 1)
-    with pytest.raises(ModelError, match="one pair only"):
+    with pytest.raises(ModelError, match="one set only"):
         builder.answered_together(1, 2)
