@@ -18,11 +18,13 @@ import numpy as np
 
 from bayeslca._typing import Floats
 from bayeslca.exceptions import ModelError, near_names
+from bayeslca.model.answered_together import AnsweredTogether
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.notation import to_text
 from bayeslca.model.places import Place, ResponseVector
 from bayeslca.model.pooled_prevalence import PooledPrevalence
+from bayeslca.model.priors import DEFAULT
 from bayeslca.model.syntax import AllClasses, Dirichlet, Event, Name, Prior, Probability
 
 if TYPE_CHECKING:
@@ -92,6 +94,7 @@ def under_other_priors(model: LatentClassModel, name: str) -> UnderOtherPriors:
     same = {field.name: getattr(model, field.name) for field in fields(LatentClassModel)}
     if model.pooled and name != JEFFREYS:  # a spread has no Jeffreys prior
         same["spread_prior"] = tuple(change(np.array(model.spread_prior)).tolist())
+    same["answered_together"] = tuple(_sets(model, change))
     sources = {t: source for t, source in model.statement_sources.items() if t in kept}
     return UnderOtherPriors(
         **{**same, "statements": (*kept, *stated), "statement_sources": sources}
@@ -226,6 +229,41 @@ def _of_tied_groups(
         )
 
 
+def _sets(
+    model: LatentClassModel, change: Callable[[Floats], Floats]
+) -> Iterator[AnsweredTogether]:
+    """Yield sets of items that are answered together, the prior of their joint answers changed."""
+    for one in model.item_sets:
+        names = tuple(model.items[j].name for j in one.items)
+        alike: dict[tuple[float, ...], list[int]] = {}
+        for k in sorted(one.classes):
+            alike.setdefault(
+                tuple(change(np.asarray(one.priors[k], dtype=np.float64)).tolist()), []
+            ).append(k)
+        for prior, classes in alike.items():
+            every = len(classes) == model.n_classes
+            where = None if every else tuple(model.class_names[k] for k in classes)
+            yield AnsweredTogether(names, where, prior[0] if len(set(prior)) == 1 else prior)
+
+
+def _in_a_set(model: LatentClassModel, item: int, latent_class: int, group: int) -> bool:
+    """Tell whether an item's prior in a class is that of its set's joint answers."""
+    for one in model.item_sets:
+        if item in one.items and latent_class in one.classes:
+            stated = model.response_prior_origin(group, item, latent_class) != DEFAULT
+            if item == one.first and not stated and _is_tied(model, group, item, latent_class):
+                msg = "an item that is answered together with another is held equal to a third"
+                raise NoAlternative(msg)
+            return item != one.first or not stated
+    return False
+
+
+def _is_tied(model: LatentClassModel, group: int, item: int, latent_class: int) -> bool:
+    tied = model.response_assumptions.tied
+    form = tied.forms[Place(ResponseVector(group, item, latent_class), 0)]
+    return any(tied.reasons[int(model.table.element_block[e])] for e in form.elements)
+
+
 def _response_priors(model: LatentClassModel, change: Callable[[Floats], Floats]) -> Iterator[str]:
     """Yield statements that give every item's answers their other prior, in each class."""
     stated: set[int] = set()
@@ -234,6 +272,8 @@ def _response_priors(model: LatentClassModel, change: Callable[[Floats], Floats]
         wanted: dict[tuple[int, int], Floats] = {}
         for g in groups:
             for k in range(model.n_classes):
+                if _in_a_set(model, j, k, g):
+                    continue
                 a = _other_prior(model, ResponseVector(g, j, k), change, stated)
                 if a is not None:
                     wanted[g, k] = a
@@ -242,11 +282,13 @@ def _response_priors(model: LatentClassModel, change: Callable[[Floats], Floats]
         first = next(iter(wanted.values()))
         everywhere = len(wanted) == len(groups) * model.n_classes
         if everywhere and all(np.array_equal(a, first) for a in wanted.values()):
-            if not np.all(first == 1.0):
+            in_sets = any(one.first == j for one in model.item_sets)
+            if in_sets or not np.all(first == 1.0):
                 yield _response_prior(item.name, item.categories, (AllClasses(),), first)
             continue
+        first_in = {k for one in model.item_sets if one.first == j for k in one.classes}
         for (g, k), a in wanted.items():
-            if np.all(a == 1.0):
+            if np.all(a == 1.0) and k not in first_in:
                 continue
             given: list[Event | AllClasses] = [Event(Name(model.class_names[k]))]
             if len(groups) > 1 and model.groups is not None:

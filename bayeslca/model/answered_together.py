@@ -218,9 +218,11 @@ def item_sets(
             )
             raise ModelError(msg)
         prior = one.prior or default_concentration(sizes)
-        numbers = prior if isinstance(prior, tuple) else (float(prior),) * prod(sizes)
+        numbers = prior if isinstance(prior, tuple) else (prior,) * prod(sizes)
         stated = before.stated | (mine if one.prior is not None else frozenset())
-        found[at] = ItemSet(at, sizes, {**before.priors, **dict.fromkeys(mine, numbers)}, stated)
+        found[at] = ItemSet(
+            at, sizes, {**before.priors, **dict.fromkeys(mine, tuple(map(float, numbers)))}, stated
+        )
     return tuple(found.values())
 
 

@@ -11,6 +11,7 @@ from scipy import stats
 
 from bayeslca import AnsweredTogether, Groups, Item, LatentClassModel
 from bayeslca.exceptions import ModelError, StatementError
+from bayeslca.model.alternative_priors import under_other_priors
 from bayeslca.model.answered_together import default_concentration
 from bayeslca.model.compile import compile_units
 from bayeslca.model.joint_answers import joints
@@ -410,3 +411,21 @@ def test_dependent_tests_are_not_identified_by_more_herds(
     )
     found = model.identifiability()
     assert (found.n_free, found.rank) == (n_free, rank)
+
+
+@pytest.mark.parametrize(
+    ("name", "joint"),
+    [
+        ("half as strong", [1.0, 0.5, 1.5, 7.0]),
+        ("twice as strong", [4.0, 2.0, 6.0, 28.0]),
+        ("uniform", [1.0] * 4),
+        ("Jeffreys", [0.5] * 4),
+    ],
+)
+def test_other_priors_are_other_priors_of_the_joint_answers(name: str, joint: list[float]) -> None:
+    other = under_other_priors(LatentClassModel(ITEMS, CLASSES, answered_together=BY_CLASS), name)
+    (one,) = other.item_sets
+    assert one.priors[0] == tuple(joint)
+    elements = dict(zip(element_names(other), other.table.element_prior, strict=True))
+    assert elements["P(fees=yes | managed)"] == joint[2] + joint[3]
+    assert elements["P(accounts=no | managed, fees=yes)"] == joint[2]
