@@ -94,7 +94,8 @@ def test_a_number_for_each_joint_answer_is_a_prior_on_both_items() -> None:
     joint = row_probability(model.table, elements)[:, model.table.joint_row[0], 0]
     assert stats.kstest(joint[:, 1], stats.beta(1, 19).cdf).pvalue > 1e-3
     text = " ".join(model.describe().split())
-    assert "Dirichlet(2, 1, 3, 14), which gives fees alone Beta(17, 3) of yes" in text
+    assert "Dirichlet(2, 1, 3, 14) on no and no, no and yes, yes and no, yes and yes" in text
+    assert "which gives fees alone Beta(17, 3) of yes" in text
     assert "accounts alone Beta(15, 5) of yes" in text
 
 
