@@ -330,6 +330,9 @@ def _outcome(
         lines.append(content.checks.verdict)
     if content.influence is not None and content.influence.findings:
         lines.append(content.influence.verdict)
+    found = content.sensitivity
+    if found is not None and any(one.level == "warning" for one in found.findings):
+        lines.append(found.verdict)
     if steps.kept:
         n_kept, n_all = len(steps.kept), len(steps.keys)
         lines.append(f"Kept from the run before, as nothing changed: {n_kept} of {n_all} fits.")
