@@ -177,10 +177,14 @@ def _where(row: dict[str, Any]) -> str:
 
 
 def _odds(row: dict[str, Any]) -> str:
-    """Return ``3.1 (1.2 to 9.4)``; large ones without places that mean nothing."""
-    parts = [
-        "above 1,000" if row[end] > 1000 else significant(row[end]) if row[end] < 100 else
-        decimal(row[end], 0)
-        for end in ("median", "lower", "upper")
-    ]  # fmt: skip
+    """Return ``3.1 (1.2 to 9.4)``; what is far from 1 without places that mean nothing."""
+    parts = [_ratio(float(row[end])) for end in ("median", "lower", "upper")]
     return f"{parts[0]} ({parts[1]} to {parts[2]})"
+
+
+def _ratio(value: float) -> str:
+    if value > 1000:
+        return "above 1,000"
+    if value < 0.001:
+        return "below 0.001"
+    return significant(value) if value < 100 else decimal(value, 0)
