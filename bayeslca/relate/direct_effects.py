@@ -35,8 +35,10 @@ if TYPE_CHECKING:
     from bayeslca.relate.covariates import Design
 
 LEVEL = 0.05
-FEWEST_LEFT = 1e-6
-"""No test where the model's own parameters leave less than this share of the score unexplained."""
+MOST_ROWS = 40_000
+"""Replicated cases, about."""
+LEAST_INFORMATION = 1.0
+"""No test where the answers hold less: a direct effect's standard error would be above 1."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,7 +59,9 @@ class DirectEffects:
     findings: tuple[Finding, ...]
 
 
-def find_direct_effects(posterior: Posterior, design: Design, way: WayDraws) -> DirectEffects:
+def find_direct_effects(
+    posterior: Posterior, design: Design, way: WayDraws, seed: int = 0
+) -> DirectEffects:
     """Test every item and covariate at the posterior means of a model with covariates.
 
     Parameters
@@ -67,44 +71,41 @@ def find_direct_effects(posterior: Posterior, design: Design, way: WayDraws) -> 
     design : Design
     way : WayDraws
         The joint way, or the cut.
+    seed : int
+        Of the replicates of the answers.
 
     Notes
     -----
     With case scores s of a direct effect and u of the model's own parameters, the statistic is
-    sum(e) / sqrt(sum(e^2) n / (n - rank u)), with e what a regression of s on u leaves.
+    sum(s - u B) over its standard deviation. B and that deviation are those of replicates of the
+    answers from the model, with the cases' covariates and missing answers: scores of the cases
+    themselves are too few where an answer is rare.
     """
     import pandas as pd
     from scipy.stats import norm
 
-    codes = posterior.responses.codes[design.used]
-    memberships, expected = _at_the_means(posterior, design, way, codes)
-    shares = memberships[0]
-    own = [(shares - memberships[1])[:, :, None] * design.matrix[:, None, :]]
-    left_over: list[tuple[int, int, Floats]] = []
-    start = posterior.table.item_start
-    for j in range(posterior.table.n_items):
-        for category in range(1, int(start[j + 1] - start[j])):
-            is_answer = (codes[:, j] == category).astype(np.float64)
-            residual = shares * (is_answer[:, None] - expected[:, :, start[j] + category])
-            residual[codes[:, j] == MISSING] = 0.0
-            own.append(residual[:, :, None])
-            left_over.append((j, category, residual.sum(axis=1)))
-    nuisance = np.concatenate([part.reshape(len(codes), -1) for part in own], axis=1)
-    basis, sizes, _ = np.linalg.svd(nuisance, full_matrices=False)
-    basis = basis[:, sizes > 1e-8 * sizes.max()]
-    n, rank = basis.shape
-    rows = []
-    for j, category, residual in left_over:
+    point = _Point.of(posterior, design, way)
+    codes = posterior.responses.codes[design.used].astype(np.int64)
+    rng = np.random.default_rng(seed)
+    replicates = int(np.clip(MOST_ROWS // len(codes), 20, 400))
+    rows = np.tile(np.arange(len(codes)), replicates)
+    own, residuals = point.scores(codes, np.arange(len(codes)))
+    own_again, residuals_again = point.scores(point.replicate(codes[rows], rows, rng), rows)
+    inverse = np.linalg.pinv(own_again.T @ own_again, rcond=1e-10, hermitian=True)
+    out = []
+    for (j, category), residual in residuals.items():
         item = posterior.model.items[j]
         for p, column in enumerate(design.columns):
             if p == 0:
                 continue
             score = residual * design.matrix[:, p]
-            rest = score - basis @ (basis.T @ score)
-            information = float(rest @ rest) * n / max(n - rank, 1)
-            tested = information > FEWEST_LEFT * float(score @ score) and n > rank
-            total = float(score.sum())
-            rows.append(
+            again = residuals_again[j, category] * design.matrix[rows, p]
+            weights = inverse @ (own_again.T @ again)
+            left = again - own_again @ weights
+            information = float(left @ left) / replicates
+            tested = information > LEAST_INFORMATION
+            total = float(score.sum() - own.sum(axis=0) @ weights)
+            out.append(
                 {
                     "item": item.name,
                     "category": item.categories[category],
@@ -114,34 +115,92 @@ def find_direct_effects(posterior: Posterior, design: Design, way: WayDraws) -> 
                     "z": total * information**-0.5 if tested else np.nan,
                 }
             )
-    table = pd.DataFrame(rows)
+    table = pd.DataFrame(out)
     table["p_value"] = 2.0 * norm.sf(np.abs(table["z"]))
     table["p_adjusted"] = _holm(table["p_value"].to_numpy())
     return DirectEffects(table, _findings(table))
 
 
-def _at_the_means(
-    posterior: Posterior, design: Design, way: WayDraws, codes: Ints
-) -> tuple[tuple[Floats, Floats], Floats]:
-    """Return memberships and prevalences (n, K) and P(answer | class) (n, K, A) of each case."""
-    from bayeslca.relate.predictor_tables import probabilities
+@dataclass(frozen=True, eq=False)
+class _Point:
+    """A model with covariates at one value of its parameters; n cases, A answers of all items.
 
-    table = posterior.table
-    elements = way.draws.elements.mean(axis=(0, 1))
-    prevalence = probabilities(design.matrix, way.coefficients.mean(axis=(0, 1)))
-    by_group = response_probability(table, elements)  # (G, K, A)
-    grouped = posterior.model.groups is not None
-    group = posterior.responses.group_codes[design.used] if grouped else np.zeros(len(codes), int)
-    expected = by_group[table.response_group[group]]
-    with np.errstate(divide="ignore"):
-        joint = np.log(prevalence)
-        for j in range(table.n_items):
-            at = np.flatnonzero(codes[:, j] != MISSING)
-            column = table.item_start[j] + codes[at, j]
-            joint[at] += np.log(expected[at, :, column])
-    joint -= joint.max(axis=1, keepdims=True)
-    shares = np.exp(joint)
-    return (shares / shares.sum(axis=1, keepdims=True), prevalence), expected
+    Attributes
+    ----------
+    design : ndarray, shape (n, P)
+    prevalence : ndarray, shape (n, K)
+    response : ndarray, shape (G, K, A)
+        P(answer | class) of each response group.
+    group : ndarray of int, shape (n,)
+        Response group of each case.
+    item_start : ndarray of int, shape (J + 1,)
+    """
+
+    design: Floats
+    prevalence: Floats
+    response: Floats
+    group: Ints
+    item_start: Ints
+
+    @classmethod
+    def of(cls, posterior: Posterior, design: Design, way: WayDraws) -> _Point:
+        """Return the model at its posterior means."""
+        from bayeslca.relate.predictor_tables import probabilities
+
+        table = posterior.table
+        grouped = posterior.model.groups is not None
+        of_case = posterior.responses.group_codes[design.used]
+        group = of_case if grouped else np.zeros_like(of_case)
+        return cls(
+            design.matrix,
+            probabilities(design.matrix, way.coefficients.mean(axis=(0, 1))),
+            response_probability(table, way.draws.elements.mean(axis=(0, 1))),
+            table.response_group[group],
+            np.asarray(table.item_start),
+        )
+
+    def replicate(self, codes: Ints, rows: Ints, rng: np.random.Generator) -> Ints:
+        """Draw answers of the cases in ``rows``, missing where ``codes`` are."""
+        latent_class = _draw(self.prevalence[rows], rng)
+        out = np.full(codes.shape, MISSING, dtype=np.int64)
+        for j in range(codes.shape[1]):
+            columns = slice(self.item_start[j], self.item_start[j + 1])
+            chance = self.response[self.group[rows], latent_class, columns]
+            out[:, j] = np.where(codes[:, j] == MISSING, MISSING, _draw(chance, rng))
+        return out
+
+    def scores(self, codes: Ints, rows: Ints) -> tuple[Floats, dict[tuple[int, int], Floats]]:
+        """Return case scores (n, own parameters) and the residual (n,) of each answer.
+
+        The first answer of an item is left out: it is 1 minus the others.
+        """
+        expected = self.response[self.group[rows]]  # (n, K, A)
+        prevalence = self.prevalence[rows]
+        with np.errstate(divide="ignore"):
+            joint = np.log(prevalence)
+            for j in range(codes.shape[1]):
+                at = np.flatnonzero(codes[:, j] != MISSING)
+                joint[at] += np.log(expected[at, :, self.item_start[j] + codes[at, j]])
+        joint -= joint.max(axis=1, keepdims=True)
+        shares = np.exp(joint)
+        shares /= shares.sum(axis=1, keepdims=True)
+        own = [((shares - prevalence)[:, :, None] * self.design[rows][:, None, :])]
+        residuals = {}
+        for j in range(codes.shape[1]):
+            for category in range(1, int(self.item_start[j + 1] - self.item_start[j])):
+                is_answer = (codes[:, j] == category).astype(np.float64)
+                part = shares * (is_answer[:, None] - expected[:, :, self.item_start[j] + category])
+                part[codes[:, j] == MISSING] = 0.0
+                own.append(part[:, :, None])
+                residuals[j, category] = part.sum(axis=1)
+        return np.concatenate([part.reshape(len(codes), -1) for part in own], axis=1), residuals
+
+
+def _draw(chance: Floats, rng: np.random.Generator) -> Ints:
+    """Draw one of the columns of each row (n, m) by its chances."""
+    cumulative = chance.cumsum(axis=1)
+    picked = rng.random(len(chance))[:, None] * cumulative[:, -1:]
+    return np.asarray((picked > cumulative[:, :-1]).sum(axis=1), dtype=np.int64)
 
 
 def _holm(p_values: Floats) -> Floats:

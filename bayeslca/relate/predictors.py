@@ -227,7 +227,7 @@ class ClassPredictors:
         if way not in self.draws:
             msg = "direct effects are found from draws: ask for the way 'joint' or 'cut' too."
             raise ModelError(msg)
-        return find_direct_effects(self.posterior, self.design, self.draws[way])
+        return find_direct_effects(self.posterior, self.design, self.draws[way], self.seed or 0)
 
     def to_frame(self) -> pd.DataFrame:
         """Return the odds ratios against the first class."""

@@ -255,13 +255,20 @@ def _direct_effects(found: ClassPredictors) -> list[Block]:
         return []
     effects = found.direct_effects_by_item
     table = effects.table
+    n_tested = int(table["z"].notna().sum())
     texts = tuple(f"{sentence(f.message)} {sentence(f.remedy)}" for f in effects.findings)
     said = (
-        f"Of {counted(len(table), 'pair')} of an answer and a covariate, none goes together beyond "
+        f"Of {counted(n_tested, 'pair')} of an answer and a covariate, none goes together beyond "
         "class once all tests are counted (Holm): nothing speaks against covariates acting "
         "through class alone."
     )
-    shown = table.reindex(table["z"].abs().sort_values(ascending=False).index).head(8)
+    if n_tested < len(table):
+        said += (
+            f" {counted(len(table) - n_tested, 'pair')} with too few answers to tell had no test."
+        )
+    shown = (
+        table.dropna().reindex(table.dropna()["z"].abs().sort_values(ascending=False).index).head(8)
+    )
     rows = tuple(
         (
             f"{row['item']} = {row['category']}",

@@ -78,7 +78,8 @@ def test_words_say_what_is_clear(predictors):
 def test_direct_effects_have_a_row_for_each_item_and_column(predictors):
     table = predictors.direct_effects()
     assert len(table) == 6 * 3
-    assert (table["p_adjusted"] >= table["p_value"]).all()
+    tested = table.dropna()
+    assert (tested["p_adjusted"] >= tested["p_value"]).all()
 
 
 @pytest.mark.parametrize(
