@@ -107,7 +107,7 @@ def unsure(n: int, rng: np.random.Generator) -> tuple[np.ndarray, np.ndarray]:
 def test_both_corrections_undo_attenuation(correction: Correction, by: str) -> None:
     """Bolck, Croon & Hagenaars 2004; Vermunt 2010: the placed class alone attenuates."""
     rng = np.random.default_rng(5)
-    z, membership = unsure(8_000, rng)
+    z, membership = unsure(4_000, rng)
     y = rng.normal(2.0 * z, 1.0)
     placed = membership.argmax(axis=1)
     naive = y[placed == 1].mean() - y[placed == 0].mean()
@@ -115,7 +115,7 @@ def test_both_corrections_undo_attenuation(correction: Correction, by: str) -> N
     model = outcome_model("numeric", y, 2)
     found = three_steps(model, membership, correction=correction, class_names=("a", "b"), by=by)  # type: ignore[arg-type]
     gap, error = found.quantities(lambda m, b, s: np.diff(class_means(m, b, s)))
-    assert error[0] < 0.1
+    assert error[0] < 0.15
     assert abs(gap[0] - 2.0) < 4 * error[0]
 
 
