@@ -44,6 +44,8 @@ class FoldComparison:
     @property
     def verdict(self) -> str:
         """Which row predicts left-out folds best, in words."""
+        from bayeslca.assess.comparison import is_tie  # which holds a comparison of this kind
+
         if not self.left_out:
             return "No row could be refitted without a fold of its cases."
         ranked = sorted(self.left_out, key=lambda name: -self.left_out[name].elpd)
@@ -52,7 +54,8 @@ class FoldComparison:
             return f"{text}."
         row = dict(zip(self.left_out, self.table.to_dict("records"), strict=True))[ranked[1]]
         gap = f"{-row['elpd_diff']:.1f} ± {row['elpd_diff_se']:.1f}"
-        return f"{text}; next {row_in_words(ranked[1])}, {gap} behind."
+        tie = ", too close to tell" if is_tie(row["elpd_diff"], row["elpd_diff_se"]) else ""
+        return f"{text}; next {row_in_words(ranked[1])}, {gap} behind{tie}."
 
 
 def compared_by_folds(

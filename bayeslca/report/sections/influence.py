@@ -41,7 +41,7 @@ def influence_section(facts: Facts) -> Section | None:
         caption=(
             "Each marker is a pattern of answers, larger where more cases gave it. To the left: "
             "answers that the model finds improbable. High: leaving out one such case moves a "
-            "prevalence. Orange squares: cases that stand out."
+            "prevalence." + (" Orange squares: cases that stand out." if found.findings else "")
         ),
         alt=sentence(found.verdict),
     )
