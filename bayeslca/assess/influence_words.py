@@ -99,7 +99,9 @@ def verdict_in_words(
 
 def one_of(row: dict[str, Any]) -> str:
     """Return which case is left out: the only one, or one of several."""
-    return rows_in_words(row) if row["count"] == 1 else f"one of {rows_in_words(row)}"
+    if row["count"] == 1:
+        return rows_in_words(row)
+    return f"one of the {int(row['count'])} cases of {rows_in_words(row)}"
 
 
 def influence_findings(table: pd.DataFrame, class_names: Sequence[str]) -> tuple[Finding, ...]:
