@@ -82,16 +82,12 @@ class PooledPrevalence:
         return draw_dirichlets(rng, concentration, self.n_rows), concentration
 
     def draw(self, rng: np.random.Generator, class_counts: Floats) -> Floats:
-        """Draw prevalences (row, K) given the cases in each class (row, K), from scratch.
+        """Refuse: prevalences given classes are drawn with their mean and spread, by a chain.
 
-        Mean and spread are drawn by importance resampling of prior draws: for a single draw
-        without a chain, not for sampling.
+        See `bayeslca.sampling.pooled_source.PooledStep`.
         """
-        _, concentration = self.simulate_many(rng, 2000)
-        log_weight = dirichlet_multinomial(np.asarray(class_counts), concentration)
-        weight = np.exp(log_weight - log_weight.max())
-        chosen = concentration[rng.choice(weight.size, p=weight / weight.sum())]
-        return draw_dirichlets(rng, (chosen + class_counts), 1)[:, 0]
+        msg = "pooled prevalences are drawn together with their mean and spread, by a chain"
+        raise TypeError(msg)
 
     def scatter(self, rng: np.random.Generator) -> Floats:
         """Draw prevalences (row, K) evenly over all possible ones."""
@@ -170,21 +166,3 @@ def draw_dirichlets(rng: np.random.Generator, parameter: Floats, n: int) -> Floa
     logs = np.log(rng.standard_gamma(a + 1.0)) + np.log1p(-rng.random(a.shape)) / a
     shares = np.exp(logs - logs.max(axis=-1, keepdims=True))
     return np.asarray(np.maximum(shares / shares.sum(axis=-1, keepdims=True), SMALLEST))
-
-
-def dirichlet_multinomial(counts: Floats, concentration: Floats) -> Floats:
-    """Return the log probability (S,) of classes in all units, their prevalences summed out.
-
-    Parameters
-    ----------
-    counts : ndarray, shape (row, K)
-    concentration : ndarray, shape (S, K)
-
-    Notes
-    -----
-    Of the cases in their order: without the multinomial coefficient.
-    """
-    a = concentration[:, None, :]
-    total = concentration.sum(axis=-1)[:, None]
-    by_unit = gammaln(total) - gammaln(total + counts.sum(axis=-1))
-    return np.asarray((by_unit + (gammaln(a + counts) - gammaln(a)).sum(axis=-1)).sum(axis=-1))

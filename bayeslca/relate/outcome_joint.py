@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats, Ints, Seed
+from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence, PrevalenceSource
 from bayeslca.model.probabilities import class_shares, log_joint, membership
 from bayeslca.relate.case_units import CaseUnits
@@ -19,6 +20,7 @@ from bayeslca.relate.outcome_quantities import class_means
 from bayeslca.relate.same_classes import same_classes
 from bayeslca.sampling.joint_draws import JointDraws
 from bayeslca.sampling.outcome_step import BY_CLASS, SHARED, OutcomeGibbs
+from bayeslca.sampling.pooled_source import PooledStep
 from bayeslca.sampling.steps import DirichletStep, SourceStep
 
 if TYPE_CHECKING:
@@ -69,6 +71,8 @@ def joint_draws(
     def make_source(rng: np.random.Generator) -> SourceStep:
         if isinstance(source, DirichletPrevalence):
             return DirichletStep(source.concentration, rng)
+        if isinstance(source, PooledPrevalence):
+            return PooledStep(source, rng)
         return _ModelPrevalence(source, rng)
 
     task = joint_task(

@@ -37,8 +37,13 @@ class Pool(NamedTuple):
 
 def pool(source: PooledPrevalence, layout: Layout) -> Pool:
     """Return what the step of one chain needs."""
-    k = source.n_classes
     most = int(np.bincount(layout.prevalence_row, weights=layout.cases).max(initial=0.0))
+    return room_for(source, most)
+
+
+def room_for(source: PooledPrevalence, most: int) -> Pool:
+    """Return the priors with room for units of so many cases at the most."""
+    k = source.n_classes
     return Pool(
         mean_prior=np.ascontiguousarray(source.mean_prior, dtype=np.float64),
         spread_prior=np.asarray(source.spread_prior, dtype=np.float64),

@@ -18,7 +18,8 @@ import math
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.sampling.compiled import compiled_part
+from bayeslca.sampling.compiled import compiled, compiled_part
+from bayeslca.sampling.pool_layout import Pool
 from bayeslca.sampling.split import draw_shares
 
 WIDTH = 1.5
@@ -71,6 +72,22 @@ def draw_pool(
     for g in range(concentration.shape[0]):
         for k in range(n_classes):
             concentration[g, k] = max(total * mean[k], 1e-300)
+
+
+@compiled
+def redraw(pool: Pool, class_count: Ints, concentration: Floats, rng: np.random.Generator) -> None:
+    """Redraw mean and spread from Python; see `draw_pool`."""
+    draw_pool(
+        pool.mean_prior,
+        pool.spread_prior,
+        pool.at_least,
+        pool.parameter,
+        pool.mean,
+        pool.start,
+        class_count,
+        concentration,
+        rng,
+    )
 
 
 @compiled_part

@@ -34,7 +34,7 @@ def data():
 def test_gibbs_and_nuts_agree(data):
     gibbs = MODEL.sample(data, seed=SEED, draws=1500, ess=1000, progress=False)
     nuts = MODEL.sample(
-        data, seed=SEED, sampler="nuts", chains=2, draws=800, ess=200, progress=False
+        data, seed=SEED, sampler="nuts", chains=2, draws=500, ess=100, progress=False
     )
     assert nuts.draws.concentration is not None
 

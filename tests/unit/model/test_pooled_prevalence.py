@@ -10,7 +10,6 @@ from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.pooled_prevalence import (
     PooledPrevalence,
-    dirichlet_multinomial,
     draw_dirichlets,
     spread_of,
 )
@@ -58,18 +57,6 @@ def test_dirichlets_with_tiny_parameters_are_never_zero_nor_nan():
     np.testing.assert_allclose(drawn.sum(axis=-1), 1.0)
     shares = drawn.round().mean(axis=0)  # nearly always one class takes all, by its parameter
     np.testing.assert_allclose(shares, [0.001, 0.908, 0.091], atol=0.04)
-
-
-def test_classes_of_units_are_dirichlet_multinomial():
-    counts = np.array([[3, 0, 2], [1, 4, 0], [0, 0, 0]])
-    alpha = np.array([[1.0, 2.0, 0.5], [9.0, 0.3, 2.0]])
-    for one, found in zip(alpha, dirichlet_multinomial(counts, alpha), strict=True):
-        expected = 0.0
-        for row in counts[:2]:
-            expected += stats.dirichlet_multinomial.logpmf(row, one, row.sum())
-            expected -= stats.multinomial(row.sum(), np.ones(3) / 3).logpmf(row)
-            expected += row.sum() * np.log(1 / 3)  # leaves the coefficient out
-        assert found == pytest.approx(expected)
 
 
 def test_labels_move_in_all_units_together_or_not_at_all():
