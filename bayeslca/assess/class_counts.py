@@ -115,8 +115,24 @@ def checked_prior(prior: PriorOnCount | None, counts: Sequence[int]) -> Floats:
     return np.asarray(weights / weights.sum())
 
 
-def _has_its_rivals(counts: Sequence[int], good: Sequence[int], value: Floats) -> bool:
-    """Whether the best number can be weighed: its neighbours' evidence is reliable too.
+FAR_BELOW = 20.0
+"""Nats below the best beyond which a bridge that nothing guards is believed to lie below it: it may
+be off by some nats, not by so many."""
+
+
+def _far_below(one: Evidence, best: float) -> bool:
+    """Whether an evidence that is not reliable still lies far below the best, by its own bridge."""
+    bridged = any(each.kind == "bridge" and each.is_usable for each in one.estimates)
+    return bridged and not one.modes and best - one.log_evidence > FAR_BELOW
+
+
+def _has_its_rivals(
+    counts: Sequence[int],
+    good: Sequence[int],
+    value: Floats,
+    evidence: Mapping[int, Evidence] | None = None,
+) -> bool:
+    """Whether the best number can be weighed: its neighbours' evidence is reliable, or far below.
 
     Without them it would get a probability near 1 for want of rivals.
     """
@@ -124,7 +140,11 @@ def _has_its_rivals(counts: Sequence[int], good: Sequence[int], value: Floats) -
         return False
     best = good[int(np.argmax(value))]
     beside = [k for k in (best - 1, best + 1) if k in counts]
-    return all(k in good for k in beside) and (len(good) > 1 or len(counts) == 1)
+    top = float(value.max())
+    weighed = [
+        k for k in beside if k in good or (evidence is not None and _far_below(evidence[k], top))
+    ]
+    return weighed == beside and (len(good) > 1 or len(counts) == 1)
 
 
 def _table(
@@ -139,7 +159,7 @@ def _table(
     chance, error = np.full(len(counts), np.nan), np.full(len(counts), np.nan)
     of_chance = np.zeros((len(counts),) * 2)
     rows = [counts.index(k) for k in good]
-    if _has_its_rivals(counts, good, value) and prior[rows].sum() > 0:
+    if _has_its_rivals(counts, good, value, evidence) and prior[rows].sum() > 0:
         chance[rows], of_chance[np.ix_(rows, rows)] = probabilities(value, covariance, prior[rows])
         error[rows] = np.sqrt(np.maximum(np.diag(of_chance)[rows], 0.0))
     steps = {}

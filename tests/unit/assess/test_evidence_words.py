@@ -19,7 +19,8 @@ from bayeslca.assess.class_counts import (
 )
 from bayeslca.assess.compare import compare_class_counts
 from bayeslca.assess.conditionals import FreeParameters, conditional_parameters
-from bayeslca.assess.evidence import log_evidence
+from bayeslca.assess.evidence import Evidence, log_evidence
+from bayeslca.assess.model_evidence import Estimate
 from bayeslca.assess.proposal import Proposal, labels_of
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
@@ -233,6 +234,20 @@ def test_the_best_number_needs_its_neighbours_to_be_weighed(
 ) -> None:
     value = np.array([{1: -90.0, 2: -10.0, 3: -12.0, 4: -13.0}[k] for k in reliable])
     assert _has_its_rivals(counts, reliable, value) is weighed
+
+
+@pytest.mark.parametrize(
+    ("value", "why_not", "weighed"),
+    [(-60.0, "", True), (-25.0, "", False), (-60.0, "the chains disagree", False)],
+)
+def test_a_neighbour_far_below_need_not_be_guarded(
+    value: float, why_not: str, weighed: bool
+) -> None:
+    # Nothing guards the bridge of two classes, but it would have to be off by 20 nats or more.
+    bridge = Estimate("bridge", value, 0.1, why_not)
+    unguarded = Evidence(value, 0.1, False, "nothing guards it", (bridge,))
+    found = _has_its_rivals([2, 3, 4], [3, 4], np.array([-10.0, -12.0]), {2: unguarded})
+    assert found is weighed
 
 
 def test_draws_from_somewhere_else_are_noticed() -> None:
