@@ -138,13 +138,13 @@ def _verdict(by_prior: Mapping[str, ClassCounts], left_out: Mapping[str, str]) -
     for name, one in by_prior.items():
         chance = one.table["probability"]
         if chance.isna().all():
-            parts.append(f"{_under(name)} no number could be weighed reliably")
+            parts.append(f"{_under(name)}, no number could be weighed reliably")
             continue
         shares = {int(k): float(p) for k, p in zip(one.table.index, chance, strict=True)}
         ranked = sorted((k for k in shares if shares[k] >= MOSTLY), key=lambda k: -shares[k])
         best[name] = ranked[0]
-        named = [f"{row_in_words(k)} {shares[k]:.2f}" for k in ranked]
-        parts.append(f"{_under(name)} {listed_with_and(named)}")
+        named = [f"{row_in_words(k)} ({shares[k]:.2f})" for k in ranked]
+        parts.append(f"{_under(name)}, probable are {listed_with_and(named)}")
     text = "; ".join(parts) + "."
     text = text[0].upper() + text[1:]
     if len(best) > 1:

@@ -27,7 +27,7 @@ if TYPE_CHECKING:
     from bayeslca.assess.co_membership import CoMembership
 
 ANCHOR, HEADING = "together", "Which cases go together whatever the number of classes"
-SIZE = (3.7, 4.4)
+SIZE = (3.4, 4.1)
 """Inches: a telephone shows it whole."""
 TYPICAL = 0.5
 """An answer is given for a set when more of its cases than this gave it."""
