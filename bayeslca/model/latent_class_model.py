@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import asdict, dataclass, field
+from dataclasses import dataclass, field
 from functools import cached_property
 from typing import TYPE_CHECKING, Any, Literal
 
 from bayeslca._typing import Bools, Seed
-from bayeslca.exceptions import ModelError
 from bayeslca.findings import Finding
 from bayeslca.model.agreement import check_agreement
 from bayeslca.model.answered_together import (
@@ -34,10 +33,12 @@ from bayeslca.model.model_arguments import (
     checked_free,
     checked_spread,
     checked_statements,
+    refuse_mixed_classes,
 )
 from bayeslca.model.naming import classes_named
 from bayeslca.model.naming_links import naming_links
 from bayeslca.model.places import Link
+from bayeslca.model.plain_values import arguments_from, plain_values, shown
 from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.position_names import element_names, prevalence_names
 from bayeslca.model.prevalence import DirichletPrevalence
@@ -452,76 +453,19 @@ class LatentClassModel:
 
     def to_dict(self) -> dict[str, Any]:
         """Return the model as plain values, for saving."""
-        return {
-            "items": [asdict(item) | {"categories": list(item.categories)} for item in self.items],
-            "classes": self.classes if isinstance(self.classes, int) else list(self.classes),
-            "statements": list(self.statements),
-            "groups": None
-            if self.groups is None
-            else {"name": self.groups.name, "levels": list(self.groups.levels)},
-            "statement_sources": dict(self.statement_sources),
-            "free_by_group": self.free_by_group
-            if isinstance(self.free_by_group, bool)
-            else list(self.free_by_group),
-            **({"pooled": True, "spread_prior": list(self.spread_prior)} if self.pooled else {}),
-            **(
-                {"answered_together": [one.as_dict() for one in self.answered_together]}
-                if self.answered_together
-                else {}
-            ),
-        }
+        return plain_values(self)
 
     @classmethod
     def from_dict(cls, values: Mapping[str, Any]) -> LatentClassModel:
         """Return the model that ``to_dict`` gave."""
-        groups = values["groups"]
-        return cls(
-            items=tuple(
-                Item(**(item | {"categories": tuple(item["categories"])}))
-                for item in values["items"]
-            ),
-            classes=values["classes"],
-            statements=values["statements"],
-            groups=groups and Groups(groups["name"], tuple(groups["levels"])),
-            statement_sources=values["statement_sources"],
-            free_by_group=values.get("free_by_group", False),
-            pooled=values.get("pooled", False),
-            spread_prior=tuple(values.get("spread_prior", (1.0, 1.0))),
-            answered_together=tuple(
-                AnsweredTogether(**one) for one in values.get("answered_together", ())
-            ),
-        )
+        return cls(**arguments_from(values))
 
     def __repr__(self) -> str:
-        classes = self.classes if self.exploratory else list(self.class_names)
-        parts = [f"{len(self.items)} items", f"classes={classes}"]
-        if self.statements:
-            parts.append(f"statements={list(self.statements)}")
-        if self.groups:
-            parts.append(f"groups={self.groups.name}: {', '.join(self.groups.levels)}")
-        if self.free_by_group:
-            parts.append(f"free_by_group={self.free_by_group}")
-        if self.pooled:
-            parts.append("pooled=True")
-        if self.answered_together:
-            parts.append(f"answered_together={[list(one.items) for one in self.answered_together]}")
-        return f"LatentClassModel({', '.join(parts)})"
+        return shown(self)
 
     def _refuse_classes_not_told_apart(self) -> None:
         """Refuse names that nothing stated gives a meaning; also reads all statements."""
         if self.exploratory:
             _ = self.table, self.prevalence_source
-            return
-        mixed = self.symmetry.named_group.mixed_classes()
-        if not mixed:
-            return
-        names = [self.class_names[k] for k in mixed[0]]
-        item = self.items[0]
-        example = f"{item.name}={item.yes or item.categories[-1]}"
-        msg = (
-            f"nothing in the study tells {names[0]} from {' or '.join(names[1:])}. Add a naming "
-            f"rule, such as '{names[0]} is where P({example}) is highest', or a prior, such as "
-            f"'P({example} | {names[0]}) ~ Beta(9, 2)'; or give the number of classes "
-            f"instead of names (classes={self.n_classes})."
-        )
-        raise ModelError(msg)
+        else:
+            refuse_mixed_classes(self)

@@ -149,3 +149,26 @@ def refuse_repeated(names: Sequence[str], what: str) -> None:
     if repeated:
         msg = f"the {what} '{repeated[0]}' is given twice. Give each {what} a name of its own."
         raise ModelError(msg)
+
+
+def refuse_mixed_classes(model: LatentClassModel) -> None:
+    """Refuse names that nothing stated gives a meaning.
+
+    Raises
+    ------
+    ModelError
+        Naming classes that nothing tells apart, with what could.
+    """
+    mixed = model.symmetry.named_group.mixed_classes()
+    if not mixed:
+        return
+    names = [model.class_names[k] for k in mixed[0]]
+    item = model.items[0]
+    example = f"{item.name}={item.yes or item.categories[-1]}"
+    msg = (
+        f"nothing in the study tells {names[0]} from {' or '.join(names[1:])}. Add a naming "
+        f"rule, such as '{names[0]} is where P({example}) is highest', or a prior, such as "
+        f"'P({example} | {names[0]}) ~ Beta(9, 2)'; or give the number of classes "
+        f"instead of names (classes={model.n_classes})."
+    )
+    raise ModelError(msg)
