@@ -42,7 +42,7 @@ class ClassDraws(Protocol):
         ...
 
     def draw_classes(self, number: int, rng: np.random.Generator) -> Ints:
-        """Draw the class of every row of the responses, shape (number, rows)."""
+        """Draw the class of every case, shape (number, cases)."""
         ...
 
 
@@ -77,16 +77,13 @@ def plausible_values(
     _check_number(posterior, number)
     rng = np.random.default_rng(seed_sequence(seed))
     responses = posterior.responses
-    drawn = (
-        _from_answers(posterior, number, rng) if given is None else given.draw_classes(number, rng)
-    )
-    repeats = np.asarray(responses.counts)
-    if given is not None:
-        repeats = np.ones(drawn.shape[1], dtype=np.int64)
+    if given is None:
+        drawn, made = classes_from_answers(posterior, number, rng), ATTENUATED
+    else:
+        drawn, made = given.draw_classes(number, rng), given.made_with
     names = np.asarray(posterior.model.class_names, dtype=object)
-    cases = np.repeat(np.asarray(responses.row_names, dtype=object), repeats)
+    cases = np.repeat(np.asarray(responses.row_names, dtype=object), responses.counts)
     columns = {f"draw_{i + 1}": names[row] for i, row in enumerate(drawn)}
-    made = ATTENUATED if given is None else given.made_with
     return pd.DataFrame({"case": cases, **columns, "made": made})
 
 
@@ -97,7 +94,7 @@ def _check_number(posterior: Posterior, number: int) -> None:
         raise ModelError(msg)
 
 
-def _from_answers(posterior: Posterior, number: int, rng: np.random.Generator) -> Ints:
+def classes_from_answers(posterior: Posterior, number: int, rng: np.random.Generator) -> Ints:
     """Draw a class for each case from P(class | answers, parameters), shape (number, cases)."""
     model, draws, responses = posterior.model, posterior.draws, posterior.responses
     units = model.units(responses)
@@ -121,11 +118,11 @@ def _from_answers(posterior: Posterior, number: int, rng: np.random.Generator) -
                 "be drawn for them. See posterior.membership() for their names."
             )
             raise ModelError(msg)
-        out[i] = _pick(np.concatenate([by_unit, prevalence[s]])[row], rng)
+        out[i] = pick_classes(np.concatenate([by_unit, prevalence[s]])[row], rng)
     return out
 
 
-def _pick(probability: Floats, rng: np.random.Generator) -> Ints:
+def pick_classes(probability: Floats, rng: np.random.Generator) -> Ints:
     """Draw a class for each row (rows, K) of probabilities."""
     below = np.cumsum(probability, axis=1) < rng.random((len(probability), 1))
     return np.asarray(np.minimum(below.sum(axis=1), probability.shape[1] - 1), dtype=np.int64)

@@ -10,11 +10,12 @@ from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
-from bayeslca._typing import Bools, Floats
+from bayeslca._typing import Bools, Floats, Ints
 from bayeslca.exceptions import ModelError, near_names
 from bayeslca.findings import Finding
 from bayeslca.model.probabilities import membership
 from bayeslca.posterior.posterior import Posterior
+from bayeslca.relate import drawn_classes
 from bayeslca.relate import predictor_tables as tables
 from bayeslca.relate.case_table import CaseTable, read_case_table
 from bayeslca.relate.covariates import Design, Missing, design_of
@@ -228,6 +229,18 @@ class ClassPredictors:
             msg = "direct effects are found from draws: ask for the way 'joint' or 'cut' too."
             raise ModelError(msg)
         return find_direct_effects(self.posterior, self.design, self.draws[way], self.seed or 0)
+
+    @property
+    def made_with(self) -> str:
+        """From what `draw_classes` draws, in words."""
+        return drawn_classes.made_with(self)
+
+    def draw_classes(self, number: int, rng: np.random.Generator) -> Ints:
+        """Draw the class of every case given its covariates, shape (number, cases).
+
+        For `bayeslca.plausible_values`, whose ``given`` this is.
+        """
+        return drawn_classes.draw_classes(self, number, rng)
 
     def to_frame(self) -> pd.DataFrame:
         """Return the odds ratios against the first class."""

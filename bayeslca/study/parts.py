@@ -113,9 +113,9 @@ PARTS: tuple[Part, ...] = (
     _influence,
     _priors,
     _maximum_likelihood,
-    _placing,
     _outcomes,
     _predictors,
+    _placing,
 )
 """All parts, in the order in which they are done."""
 

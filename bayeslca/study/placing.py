@@ -57,7 +57,10 @@ def with_placing(study: Study, content: ReportContent, say: Callable[[str], None
     drawn = None
     if said.plausible_values:
         drawn = plausible_values(
-            content.posterior, number=said.plausible_values, seed=study.said.sampling.seed
+            content.posterior,
+            number=said.plausible_values,
+            seed=study.said.sampling.seed,
+            given=content.predictors if _draws(content) else None,
         )
     return replace(
         content,
@@ -65,3 +68,8 @@ def with_placing(study: Study, content: ReportContent, say: Callable[[str], None
         placed=place_cases(content.posterior, at_most=rule.at_most, costs=rule.costs),
         plausible_values=drawn,
     )
+
+
+def _draws(content: ReportContent) -> bool:
+    """Whether the study's regression of class has draws to draw classes from."""
+    return content.predictors is not None and bool(content.predictors.draws)

@@ -8,7 +8,9 @@ import pytest
 
 import bayeslca as lca
 from bayeslca.exceptions import ModelError, ResponsesError
+from bayeslca.model.probabilities import response_probability
 from bayeslca.relate.separation import find_separation
+from tests.unit.relate.conftest import fitted, study
 
 
 def test_odds_ratios_of_all_ways_in_one_table(predictors):
@@ -122,3 +124,38 @@ def test_separation_is_a_finding(sharp_frame, sharp_posterior):
     kinds = {finding.kind for finding in found.findings}
     assert {"covariates_separate_classes", "three_steps_failed"} <= kinds
     assert found.three_steps is None
+
+
+def test_drawn_classes_know_the_covariates():
+    """Cases with the same answers are drawn by their covariate: shares are those of Bayes' rule."""
+    number = 400
+    frame, items = study(sharp=0.75, slope=2.0, n_items=4)
+    posterior = fitted(frame, items, draws=200)
+    predictors = lca.class_predictors(posterior, frame, "age", ways=("cut",), seed=3, draws=200)
+    table = lca.plausible_values(posterior, number=number, seed=5, given=predictors)
+    assert table["made"].unique().tolist() == ["made with the predictors age"]
+    first = (table.filter(like="draw_") == "first").to_numpy().mean(axis=1)
+    exact = _memberships(predictors)
+    error = np.sqrt(exact * (1 - exact) / number)
+    assert np.all(np.abs(first - exact) < 5 * error + 2e-3)  # the largest of 120 cases
+    alone = posterior.membership()["probability_first"].to_numpy()
+    assert np.abs(exact - alone).max() > 0.2
+
+
+def _memberships(predictors):
+    """P(first | answers, covariates), averaged over all draws of the cut, by Bayes' theorem."""
+    found, posterior = predictors.draws["cut"], predictors.posterior
+    response = response_probability(posterior.table, np.concatenate(found.draws.elements))[:, 0]
+    odds = predictors.design.matrix @ np.concatenate(found.coefficients).transpose(0, 2, 1)
+    joint = np.exp(odds - odds.max(axis=-1, keepdims=True))  # (draw, case, K)
+    codes, start = posterior.responses.codes, posterior.table.item_start
+    for j in range(codes.shape[1]):
+        said = codes[:, j] >= 0
+        joint[:, said] *= response[:, :, start[j] + codes[said, j]].transpose(0, 2, 1)
+    return (joint / joint.sum(axis=-1, keepdims=True)).mean(axis=0)[:, 0]
+
+
+def test_drawn_classes_need_a_posterior(sharp_frame, sharp_posterior):
+    found = lca.class_predictors(sharp_posterior, sharp_frame, "age", ways=("three_steps",), seed=1)
+    with pytest.raises(ModelError, match="Add the way 'cut' or 'joint'"):
+        lca.plausible_values(sharp_posterior, number=2, given=found)
