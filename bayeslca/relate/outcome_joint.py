@@ -85,7 +85,7 @@ def joint_draws(
     )
 
     def watch(so_far: JointDraws) -> Mapping[str, Floats]:
-        found = _matched(posterior, so_far)
+        found = with_own_names(posterior, so_far)
         means = class_means(outcome, found.by_class, found.shared)
         return {f"mean of class {k + 1}": means[..., k] for k in range(means.shape[-1])}
 
@@ -100,7 +100,7 @@ def joint_draws(
         threads=threads,
         watch=watch,
     )
-    named = _matched(posterior, drawn)
+    named = with_own_names(posterior, drawn)
     return OutcomeDraws(
         by_class=named.by_class,
         shared=named.shared,
@@ -119,7 +119,7 @@ def _shares(posterior: Posterior, cases: CaseUnits) -> Floats:
     return membership(posterior.table, cases.units, draws.elements[0, -1], draws.prevalence[0, -1])
 
 
-def _matched(posterior: Posterior, drawn: JointDraws) -> OutcomeDraws:
+def with_own_names(posterior: Posterior, drawn: JointDraws) -> OutcomeDraws:
     """Return the draws with the measurement model's names of classes."""
     named = same_classes(posterior, drawn)
     by_class = named.parameter(BY_CLASS)

@@ -13,9 +13,12 @@ from bayeslca.exceptions import ModelError
 from bayeslca.model.symmetry import element_map
 from bayeslca.relate.outcome_checks import distribution, outcome_checks
 from bayeslca.relate.outcome_column import Outcome
+from bayeslca.relate.outcome_joint import with_own_names
 from bayeslca.relate.outcome_model import outcome_model
 from bayeslca.relate.outcome_words import priors_in_words
 from bayeslca.relate.overdispersion import overdispersion
+from bayeslca.sampling.joint_draws import JointDraws
+from bayeslca.sampling.outcome_step import BY_CLASS, SHARED
 from bayeslca.sampling.relabel import Relabelled
 
 CLASSES = ["kept", "left"]
@@ -223,6 +226,30 @@ def test_exploratory_classes_keep_the_measurement_models_names(data: pd.DataFram
     ]
     assert abs(means[0][0] - means[0][1]) > 2.0
     np.testing.assert_allclose(means[0], means[1][::-1], atol=0.5)
+
+
+def test_draws_with_switched_labels_are_matched(data: pd.DataFrame) -> None:
+    responses = lca.Responses.from_frame(data, items=[f"i{j}" for j in range(5)], case="case")
+    posterior = lca.LatentClassModel(responses.items, 2).sample(
+        responses, seed=1, progress=False, draws=50, ess=20, r_hat=1.2
+    )
+    draws = posterior.draws
+    elements, prevalence = draws.elements.copy(), draws.prevalence.copy()
+    by_class = np.tile([[1.0], [2.0]], (*draws.log_prior.shape, 1, 1))
+    mapped = element_map(posterior.table, np.array([[1, 0]]))
+    elements[:, ::2] = elements[:, ::2][..., mapped]
+    prevalence[:, ::2] = prevalence[:, ::2, :, ::-1]
+    by_class[:, ::2] = by_class[:, ::2, ::-1]
+    joint = JointDraws(
+        elements,
+        prevalence,
+        draws.log_likelihood,
+        draws.log_prior,
+        {BY_CLASS: by_class, SHARED: np.zeros((*draws.log_prior.shape, 0))},
+    )
+    found = with_own_names(posterior, joint)
+    np.testing.assert_array_equal(found.by_class, np.broadcast_to([[1.0], [2.0]], by_class.shape))
+    np.testing.assert_allclose(found.prevalence, draws.prevalence)
 
 
 def test_what_cannot_be_asked(posterior: lca.Posterior, data: pd.DataFrame) -> None:

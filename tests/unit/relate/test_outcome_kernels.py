@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -93,6 +94,10 @@ def test_log_prior_is_scipys(name: str) -> None:
     assert model.log_prior(by_class, shared) == pytest.approx(expected)
 
 
+def weighing(model: OutcomeModel, **prior: tuple[float, float]) -> OutcomeModel:
+    return replace(model, prior=replace(model.prior, **prior))
+
+
 def chain(model: OutcomeModel, sweeps: int = 4000) -> tuple[np.ndarray, np.ndarray]:
     """Draws of the parameters of a model with one class."""
     rng = np.random.default_rng(7)
@@ -115,15 +120,17 @@ def assert_drawn_from(draws: np.ndarray, cdf: Callable[[np.ndarray], np.ndarray]
 
 
 def test_one_class_has_closed_forms() -> None:
-    model = outcome_model("binary", YES, 1)
+    # Priors that weigh, so that a wrong one shows
+    model = weighing(outcome_model("binary", YES, 1), pseudo=(9.0, 3.0))
     a, b = model.prior.pseudo
     draws, _ = chain(model)
     assert_drawn_from(draws[:, 0], stats.beta(a + YES.sum(), b + N - YES.sum()).cdf)
     model = outcome_model("count", COUNTS, 1, count_model="poisson")
+    model = weighing(model, pseudo=(30.0, 15.0))
     a, b = model.prior.pseudo
     draws, _ = chain(model)
     assert_drawn_from(draws[:, 0], stats.gamma(a + COUNTS.sum(), scale=1 / (b + N)).cdf)
-    model = outcome_model("ordered", PLACES, 1, n_levels=3)
+    model = weighing(outcome_model("ordered", PLACES, 1, n_levels=3), pseudo=(6.0, 1.0))
     counts = np.bincount(PLACES.astype(int)) + model.prior.pseudo[0]
     draws, _ = chain(model)
     assert_drawn_from(draws[:, 1], stats.beta(counts[1], counts.sum() - counts[1]).cdf)
@@ -137,7 +144,7 @@ def grid_cdf(log_density: np.ndarray, grid: np.ndarray, axis: int):
 
 def test_one_class_by_integration() -> None:
     """Normal and negative binomial against two-dimensional sums over a grid."""
-    model = outcome_model("numeric", NUMBERS, 1)
+    model = weighing(outcome_model("numeric", NUMBERS, 1), location=(2.0, 0.4), spread=(12.0, 2.0))
     df, scale = model.prior.spread
     draws, _ = chain(model)
     mean = np.linspace(0.0, 6.0, 400)
@@ -149,7 +156,7 @@ def test_one_class_by_integration() -> None:
     assert_drawn_from(draws[:, 0], grid_cdf(total, mean, 0))
     assert_drawn_from(np.log(draws[:, 1]), grid_cdf(total, log_var, 1))
 
-    model = outcome_model("count", COUNTS, 1)
+    model = weighing(outcome_model("count", COUNTS, 1), pseudo=(30.0, 15.0), spread=(1.0, 0.3))
     a, b = model.prior.pseudo
     draws, _ = chain(model)
     log_rate, log_size = np.linspace(-1, 3.5, 400), np.linspace(-4, 6, 400)
