@@ -39,6 +39,7 @@ UNWEIGHTED = {
     "maximum-likelihood": "these estimates and criteria",
     "theory": "probabilities of hypotheses and quantities are of the cases as they are",
     "membership": "it is the cases that are placed",
+    "predictors": "odds ratios and class probabilities are of the cases as they are",
     "outcomes": "class means are of the cases as they are",
 }
 """What of a section takes the cases as they are, by its anchor."""

@@ -49,6 +49,7 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
         _sampling(facts),
         _comparison(facts),
         _fit(facts),
+        _predictors(facts),
         design.method_in_words(facts),
         _software(versions),
     ]
@@ -61,6 +62,26 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
             )
         )
     return " ".join(part for part in parts if part)
+
+
+def _predictors(facts: Facts) -> str:
+    """Return how class was related to covariates; empty where it was not."""
+    found = facts.content.predictors
+    if found is None:
+        return ""
+    ways = {
+        "joint": "jointly with the answers",
+        "cut": "by a cut (Plummer 2015)",
+        "three_steps": "in three steps with a correction for the error of placement",
+    }
+    cited = {"fixed_error_likelihood": "Vermunt 2010", "inverse_error_matrix": "Bolck et al. 2004"}
+    if found.three_steps is not None:
+        ways["three_steps"] += f" ({cited[found.three_steps.correction]})"
+    return (
+        f"Class was regressed on {listed(found.design.covariates)} by multinomial logistic "
+        f"regression, {listed([ways[way] for way in found.ways])}; coefficients of every class had "
+        f"normal priors with standard deviation {found.prior_sd[-1]:.3g} (numbers standardised)."
+    )
 
 
 def _priors(facts: Facts) -> str:

@@ -11,6 +11,7 @@ from bayeslca.report.blocks import Banner, PageTable, Paragraph, Picture
 from bayeslca.report.columns import COLUMNS
 from bayeslca.report.content import ReportContent
 from bayeslca.report.facts import Facts
+from bayeslca.report.sections.methods import methods_paragraph
 from bayeslca.report.sections.predictors import predictor_tables, predictors_section
 from tests.unit.report.conftest import make_items, make_posterior
 
@@ -72,3 +73,9 @@ def test_every_column_of_the_files_is_explained(content):
     }
     for _, frame in tables.values():
         assert [name for name in frame.columns if name not in COLUMNS] == []
+
+
+def test_the_methods_paragraph_says_how(content):
+    text = methods_paragraph(Facts(content), {})
+    assert "Class was regressed on age and <b> by multinomial logistic regression" in text
+    assert "by a cut (Plummer 2015)" in text
