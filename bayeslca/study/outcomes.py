@@ -24,9 +24,9 @@ def check_outcomes(study: Study) -> None:
     ------
     StudyError
     """
-    from bayeslca.relate.class_outcomes import read_covariates
     from bayeslca.relate.outcome_column import read_outcome
     from bayeslca.relate.outcome_tables import read_order
+    from bayeslca.relate.outcome_work import read_covariates
 
     for said in study.said.outcomes:
         data, how = _data(study, said)

@@ -225,7 +225,7 @@ def test_every_finding_about_model_and_sampling_is_explained() -> None:
     sources = [
         "model/cautions.py", "sampling/nuts.py", "sampling/relabel.py", "assess/convergence.py",
         "assess/comparison.py", "relate/outcome_words.py", "relate/class_outcomes.py",
-        "relate/outcome_column.py", "assess/influence_words.py",
+        "relate/outcome_column.py", "relate/outcome_work.py", "assess/influence_words.py",
     ]  # fmt: skip
     kinds = {
         kind

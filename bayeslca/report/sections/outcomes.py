@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 import math
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from bayeslca.assess.predictive_words import records
 from bayeslca.posterior.tables import OVERALL
-from bayeslca.relate.outcome_quantities import EFFECTS
 from bayeslca.relate.outcome_tables import likeliest_order
 from bayeslca.relate.outcome_words import MEAN_WORDS, WAY_WORDS, priors_in_words
 from bayeslca.report.blocks import (
@@ -29,15 +28,22 @@ from bayeslca.report.outcome_plots import (
     plot_outcome_means,
 )
 from bayeslca.report.references import REFERENCES
+from bayeslca.report.sections.outcome_blocks import (
+    category_tables,
+    difference_tables,
+    means_table,
+    number_text,
+    order_tables,
+    parameter_tables,
+    value_text,
+)
 from bayeslca.report.wording import (
-    NOTHING,
     called,
     counted,
     decimal,
     level,
     listed,
     percent,
-    percent_interval,
     sentence,
     significant,
     whole,
@@ -52,7 +58,7 @@ if TYPE_CHECKING:
 
 ANCHOR, HEADING = "outcomes", "What follows from class"
 PAPERS = ("Plummer 2015", "Bolck et al. 2004", "Vermunt 2010", "Bakk & Vermunt 2016")
-MOST_ROWS = 12
+MOST_ROWS = 6
 """Rows of a table that are shown unfolded."""
 
 
@@ -100,11 +106,11 @@ def _of_outcome(content: ReportContent, found: ClassOutcomes, number: int) -> li
         Paragraph(outcome_lead(found, content.interval)),
         *([Bullets(noticed)] if noticed else []),
         _means_figure(found, content.interval, number),
-        _means_table(found, content.interval),
-        *_differences(found, content.interval),
-        *_orders(found, orders),
-        *_categories(found, content.interval),
-        *_parameters(found, content.interval),
+        means_table(found, content.interval),
+        *difference_tables(found, content.interval),
+        *order_tables(found, orders),
+        *category_tables(found, content.interval),
+        *parameter_tables(found, content.interval),
         *_moved(content, found),
         *_checks(found, number),
         Paragraph(f"Priors: {'; '.join(priors_in_words(found))}."),
@@ -116,7 +122,7 @@ def outcome_lead(found: ClassOutcomes, interval: float = 0.95) -> str:
     way = next(iter(found.ways)) if "cut" not in found.ways else "cut"
     mine = records(found.means(interval))
     shown = [
-        f"{_value(found, row)} in {called(row['latent_class'])}"
+        f"{value_text(found, row)} in {called(row['latent_class'])}"
         for row in sorted(
             (row for row in mine if row["way"] == way),
             key=lambda row: -row["median"] if math.isfinite(row["median"]) else math.inf,
@@ -133,23 +139,6 @@ def outcome_lead(found: ClassOutcomes, interval: float = 0.95) -> str:
     return text
 
 
-def _value(found: ClassOutcomes, row: dict[str, Any]) -> str:
-    """Return a mean with its interval."""
-    if found.outcome.kind == "binary":
-        if math.isfinite(row["median"]) and not math.isfinite(row["lower"]):
-            return percent(row["median"])
-        return percent_interval(row["median"], row["lower"], row["upper"])
-    return _number(row["median"], row["lower"], row["upper"])
-
-
-def _number(middle: float, lower: float, upper: float) -> str:
-    if not math.isfinite(middle):
-        return NOTHING
-    if not math.isfinite(lower):
-        return f"{significant(middle, 3)} (no interval: at its edge)"
-    return f"{significant(middle, 3)} ({significant(lower, 3)} to {significant(upper, 3)})"
-
-
 def _means_figure(found: ClassOutcomes, interval: float, number: int) -> Picture:
     return Picture(
         draw(
@@ -163,164 +152,6 @@ def _means_figure(found: ClassOutcomes, interval: float, number: int) -> Picture
             alt=outcome_lead(found, interval),
         )
     )
-
-
-def _means_table(found: ClassOutcomes, interval: float) -> PageTable:
-    frame = found.means(interval)
-    by_way = {way: records(frame[frame["way"] == way]) for way in found.ways}
-    rows = tuple(
-        (
-            name,
-            significant(float(found.expected_cases[k]), 3),
-            *(_value(found, by_way[way][k]) for way in found.ways),
-        )
-        for k, name in enumerate(found.class_names)
-    )
-    heads = (
-        Head("Class", numeric=False),
-        Head("Cases", "expected, with a value"),
-        *(Head(WAY_WORDS[way].capitalize(), f"{level(interval)} interval") for way in found.ways),
-    )
-    mean = MEAN_WORDS[found.outcome.kind]
-    notes: tuple[str, ...] = ()
-    if found.outcome.kind == "ordered":
-        notes = (
-            f"Places: {', '.join(f'{i} {t}' for i, t in enumerate(found.outcome.levels, 1))}.",
-        )
-    return PageTable(f"{found.outcome.text}: {mean} by class", heads, rows, notes)
-
-
-def _differences(found: ClassOutcomes, interval: float) -> list[Block]:
-    """Return the differences by the way to report, and folded by every way."""
-    frame = found.differences(interval)
-    rows = sorted(records(frame), key=lambda row: _pair_rank(found, row))
-    main = "cut" if "cut" in found.ways else found.ways[0]
-    caption = f"{found.outcome.text}: differences between classes"
-    own = [row for row in rows if row["way"] == main]
-    tables: list[Block] = [
-        PageTable(
-            f"{caption} ({WAY_WORDS[main]})",
-            _difference_heads(found, interval, by_way=False),
-            tuple(_difference_row(found, row, by_way=False) for row in own),
-        )
-    ]
-    if len(found.ways) > 1:
-        heads = _difference_heads(found, interval, by_way=True)
-        every = tuple(_difference_row(found, row, by_way=True) for row in rows)
-        tables.append(PageTable(f"{caption}, by every way", heads, every, folded=True))
-    return tables
-
-
-def _difference_heads(found: ClassOutcomes, interval: float, *, by_way: bool) -> tuple[Head, ...]:
-    is_binary = found.outcome.kind == "binary"
-    return (
-        Head("Difference", "of class means", numeric=False),
-        *([Head("Way", numeric=False)] if by_way else []),
-        Head("Percentage points" if is_binary else "Size", f"{level(interval)} interval"),
-        Head("Above 0", "probability that the first class has the larger mean"),
-        Head(EFFECTS[found.outcome.kind].capitalize(), f"effect, {level(interval)} interval"),
-    )
-
-
-def _difference_row(found: ClassOutcomes, row: dict[str, Any], *, by_way: bool) -> tuple[str, ...]:
-    size = _points(row) if found.outcome.kind == "binary" else _number(*_ends(row))
-    return (
-        f"{row['latent_class']} less {row['other_class']}",
-        *([WAY_WORDS[row["way"]]] if by_way else []),
-        size,
-        percent(row["probability_larger"]),
-        _number(row["effect"], row["effect_lower"], row["effect_upper"]),
-    )
-
-
-def _ends(row: dict[str, Any]) -> tuple[float, float, float]:
-    return row["median"], row["lower"], row["upper"]
-
-
-def _points(row: dict[str, Any]) -> str:
-    if not math.isfinite(row["median"]):
-        return NOTHING
-    low, mid, high = (decimal(100 * row[name], 0) for name in ("lower", "median", "upper"))
-    return f"{mid} ({low} to {high})"
-
-
-def _pair_rank(found: ClassOutcomes, row: dict[str, Any]) -> tuple[int, int, int]:
-    names, ways = found.class_names, found.ways
-    return (
-        names.index(row["latent_class"]),
-        names.index(row["other_class"]),
-        ways.index(row["way"]),
-    )
-
-
-def _orders(found: ClassOutcomes, orders: tuple[str, ...]) -> list[Block]:
-    if not orders or not found.drawn:
-        return []
-    rows = tuple(
-        (
-            order,
-            WAY_WORDS[row["way"]],
-            percent(row["posterior_probability"]),
-            percent(row["prior_probability"]),
-        )
-        for order in orders
-        for row in records(found.order(order))
-    )
-    heads = (
-        Head("Order of means", numeric=False),
-        Head("Way", numeric=False),
-        Head("Probability", "after the data"),
-        Head("Before", "of any order of so many classes"),
-    )
-    return [PageTable("Orders that the study asks for", heads, rows)]
-
-
-def _categories(found: ClassOutcomes, interval: float) -> list[Block]:
-    if found.outcome.kind != "ordered":
-        return []
-    way = "cut" if "cut" in found.ways else found.ways[0]
-    frame = found.categories(interval)
-    mine = records(frame[frame["way"] == way])
-    n = len(found.outcome.levels)
-    rows = tuple(
-        (
-            name,
-            *(
-                percent_interval(row["median"], row["lower"], row["upper"])
-                for row in mine[k * n : (k + 1) * n]
-            ),
-        )
-        for k, name in enumerate(found.class_names)
-    )
-    heads = (
-        Head("Class", numeric=False),
-        *(Head(text, f"{level(interval)} interval") for text in found.outcome.levels),
-    )
-    return [PageTable(f"{found.outcome.text}: categories by class ({WAY_WORDS[way]})", heads, rows)]
-
-
-def _parameters(found: ClassOutcomes, interval: float) -> list[Block]:
-    frame = found.parameters(interval)
-    if frame.empty:
-        return []
-    rows = tuple(
-        (
-            row["parameter"] + (f" in {row['latent_class']}" if row["latent_class"] else ""),
-            WAY_WORDS[row["way"]],
-            _number(row["median"], row["lower"], row["upper"]),
-        )
-        for row in records(frame)
-        if math.isfinite(row["median"])
-    )
-    heads = (
-        Head("Parameter", numeric=False),
-        Head("Way", numeric=False),
-        Head("Value", f"{level(interval)} interval"),
-    )
-    caption = f"{found.outcome.text}: spread within classes" + (
-        ", and slopes of covariates" if found.covariate_names else ""
-    )
-    return [PageTable(caption, heads, rows, folded=True)]
 
 
 def moved_in_words(found: ClassOutcomes) -> str:
@@ -389,7 +220,7 @@ def _checks(found: ClassOutcomes, number: int) -> list[Block]:
             row["feature"],
             "all cases" if row["latent_class"] == OVERALL else row["latent_class"],
             significant(row["observed"], 3),
-            _number(row["expected"], row["lower"], row["upper"]),
+            number_text(row["expected"], row["lower"], row["upper"]),
             decimal(row["p"], 2) if row["p"] >= 0.01 else "below 0.01",
         )
         for row in records(frame)
@@ -402,7 +233,7 @@ def _checks(found: ClassOutcomes, number: int) -> list[Block]:
         Head("p", "twice the share of replicates as far to one side"),
     )
     caption = f"{found.outcome.text}: check of its distribution ({WAY_WORDS[way]})"
-    return [Picture(figure), PageTable(caption, heads, rows, folded=len(rows) > MOST_ROWS // 2)]
+    return [Picture(figure), PageTable(caption, heads, rows, folded=len(rows) > MOST_ROWS)]
 
 
 def outcome_tables(content: ReportContent) -> dict[str, tuple[str, pd.DataFrame]]:
