@@ -299,7 +299,7 @@ def _unguarded(
         if gap > GUARD_ERRORS * float(np.hypot(step.ladder.mcse, step.emptied.mcse)):
             return f"two estimates of the step from {k - 1} classes differ by {gap:.2f}"
         agreeing = True
-    return "" if agreeing else "a single estimate could be made, and nothing guards it"
+    return "" if agreeing else "only one estimate could be made, with none to check it by"
 
 
 def _generator(posterior: Posterior, seed: Seed) -> np.random.Generator:

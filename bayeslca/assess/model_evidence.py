@@ -181,7 +181,7 @@ def _averaged(ratios: tuple[BridgeRatio, ...], bounds_error: float) -> Estimate:
     why_not = ""
     gap = abs(ratios[0].value - ratios[1].value)
     if not all(one.is_usable for one in ratios):
-        why_not = "the draws and the proposal hardly meet, or few draws decide"
+        why_not = "the draws hardly overlap with the approximation that it starts from"
     elif gap > HALVES_APART * 2.0 * error:
         why_not = f"two halves of the chains differ by {gap:.2f}"
     return Estimate("bridge", value, float(np.hypot(error, bounds_error)), why_not)
@@ -195,7 +195,7 @@ def _importance(proposed: tuple[Floats, ...], bounds_error: float) -> Estimate:
     mean = weights.mean()
     relative = float(weights.std() / mean / np.sqrt(weights.size))
     effective = weights.sum() ** 2 / np.sum(weights**2)
-    few = "few draws decide" if effective < LEAST_EFFECTIVE else ""
+    few = "it rests on a few draws" if effective < LEAST_EFFECTIVE else ""
     value = float(highest + np.log(mean))
     return Estimate("importance", value, float(np.hypot(relative, bounds_error)), few)
 
@@ -224,7 +224,7 @@ def _ordinate(
         errors.append(float(weights.std() / weights.mean() / np.sqrt(n)))
         largest_count = weights.sum() ** 2 / np.sum(weights**2)
         effective = min(effective, n, float(largest_count))
-    why_not = "few draws decide" if effective < LEAST_EFFECTIVE else ""
+    why_not = "it rests on a few draws" if effective < LEAST_EFFECTIVE else ""
     error = float(np.hypot(errors[0], errors[1])) / 2.0
     return Estimate("ordinate", float(np.mean(values)), error, why_not)
 

@@ -115,7 +115,7 @@ def prior_weights(
         start, end = int(table.block_start[b]), int(table.block_start[b + 1])
         concentration = tuple(table.element_prior[start:end].tolist())
         at = places[b]
-        expected = None if answers is None else float(sum(answers[place] for place in at))
+        expected = None if answers is None else _expected_of(model, answers, at)
         out.append(
             PriorWeight(
                 block=name,
@@ -178,6 +178,16 @@ def _of_sets(model: LatentClassModel, answers: Floats | None) -> Iterator[PriorW
                 together=True,
                 places=_places_of_set(model, one, g if free else None, k),
             )
+
+
+def _expected_of(model: LatentClassModel, answers: Floats, at: list[tuple[int, int, int]]) -> float:
+    """Return the answers that bear on a block: a case counts once for a set that it answered."""
+    most: dict[tuple[int, int, int], float] = {}
+    for g, j, k in at:
+        sets = (one.first for one in model.item_sets if j in one.items and k in one.classes)
+        place = (g, next(sets, j), k)
+        most[place] = max(most.get(place, 0.0), float(answers[g, j, k]))
+    return sum(most.values())
 
 
 def _origin(model: LatentClassModel, at: list[tuple[int, int, int]]) -> str:

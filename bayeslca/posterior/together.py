@@ -34,6 +34,7 @@ if TYPE_CHECKING:
     from bayeslca.posterior.posterior import Posterior
 
 MEASURES = ("odds ratio", "covariance", "correlation")
+NO_DEPENDENCE = {"odds ratio": 1.0, "covariance": 0.0, "correlation": 0.0}
 
 
 class _Place(NamedTuple):
@@ -79,7 +80,8 @@ def dependence_table(posterior: Posterior, interval: float) -> pd.DataFrame:
             for name, values in zip(MEASURES, found, strict=True):
                 rows.append(pair | {"measure": name})
                 draws.append(values)
-                above.append(float((found[1] > 0).mean()))
+                # With three answers or more the signs of the measures need not agree.
+                above.append(float((values > NO_DEPENDENCE[name]).mean()))
     columns = ["latent_class", "item_1", "item_2", "measure"]
     keys = pd.DataFrame(rows, columns=None if rows else columns)
     frame = _summarised(posterior, keys, draws, interval)

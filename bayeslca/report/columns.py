@@ -293,7 +293,8 @@ COLUMNS: dict[str, Column] = {
     ),
     "positive": Column(
         "More than by chance",
-        "probability that the items go together more than independent ones would",
+        "probability that the measure is above what independent items would give (1 for an odds "
+        "ratio, 0 for the others)",
         "share",
     ),
     "item_1": Column("Item", "the first item of the pair", "text"),

@@ -13,11 +13,14 @@ from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.prior_predictive import PriorPredictive
 from bayeslca.report.wording import counted
 from bayeslca.responses.responses import Responses
+from bayeslca.study.asked_in_vain import refuse_asked_in_vain
 from bayeslca.study.claims import check_theory
 from bayeslca.study.group_comparison import group_models
 from bayeslca.study.load import Study, load_study
 from bayeslca.study.outcomes import check_outcomes
+from bayeslca.study.placing import check_placing
 from bayeslca.study.predictors import check_predictors
+from bayeslca.study.schema import ClassCountSection, StudyFile
 from bayeslca.study.unit_comparison import unit_models
 
 WIDTH = 79
@@ -48,6 +51,8 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
     study = load_study(path)
     check_theory(study)
     check_outcomes(study)
+    check_placing(study)
+    refuse_asked_in_vain(study)
     covariates = check_predictors(study)
     responses = study.responses
     model = study.model
@@ -122,6 +127,7 @@ def _plan(study: Study, responses: Responses) -> list[str]:
     if counts:
         listed = ", ".join(str(n) for n in counts)
         lines += _wrapped(f"- compare models with {listed} unconstrained classes", indent=4)
+        lines += _of_comparison(study.said.class_count)
     if study.said.groups.compare_free:
         lines += _wrapped("- compare groups that answer alike with groups that do not", indent=4)
     if study.said.groups.compare_pooled:
@@ -141,7 +147,34 @@ def _plan(study: Study, responses: Responses) -> list[str]:
         said = study.said.predictors
         ways = ", ".join(way.replace("_", " ") for way in said.ways)
         lines += _wrapped(f"- relate class to {said.formula} ({ways})", indent=4)
+    lines += _asked_besides(study.said)
     lines += _wrapped(f"- {_expected_time(study, responses)}", indent=4)
+    return lines
+
+
+def _of_comparison(said: ClassCountSection) -> list[str]:
+    lines = []
+    if said.exact:
+        lines.append("- fit each again without one case of every response pattern")
+    if said.folds:
+        lines.append(f"- compare them by {said.folds} folds of cases")
+    if said.also_under:
+        lines += _wrapped(f"- fit each again under priors: {', '.join(said.also_under)}", indent=4)
+    return lines
+
+
+def _asked_besides(said: StudyFile) -> list[str]:
+    lines = []
+    if said.priors.refit:
+        listed = ", ".join(said.priors.refit)
+        lines += _wrapped(f"- fit the answer's model again under priors: {listed}", indent=4)
+    if said.maximum_likelihood is not None:
+        drawn = said.maximum_likelihood.bootstrap
+        tests = f", and to {drawn} tables drawn for each test of one class fewer" if drawn else ""
+        lines += _wrapped(f"- fit every model by maximum likelihood{tests}", indent=4)
+    if said.assignment is not None:
+        bound = f"{said.assignment.at_most:g}"
+        lines += _wrapped(f"- place cases where the expected cost is at most {bound}", indent=4)
     return lines
 
 
@@ -163,8 +196,16 @@ def _expected_time(study: Study, responses: Responses) -> str:
     if study.said.sampling.sampler == "nuts":
         return "NUTS was asked for: expect minutes for each model"
     if seconds < 60:
-        return "expected time: under a minute"
-    return f"expected time: about {round(seconds / 60)} minutes"
+        time = "expected time: under a minute"
+    else:
+        time = f"expected time: about {round(seconds / 60)} minutes"
+    return f"{time}, and more for what is refitted" if _refits(study.said) else time
+
+
+def _refits(said: StudyFile) -> bool:
+    counts, likelihood = said.class_count, said.maximum_likelihood
+    drawn = likelihood is not None and likelihood.bootstrap > 0
+    return bool(counts.exact or counts.folds or counts.also_under or said.priors.refit or drawn)
 
 
 def _wrapped(text: str, indent: int = 0) -> list[str]:

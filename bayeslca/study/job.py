@@ -18,6 +18,7 @@ from bayeslca.relate.weighted_words import posterior_in_words
 from bayeslca.report.content import ReportContent
 from bayeslca.report.sections.outcomes import outcome_lead
 from bayeslca.report.sections.theory import outcome_in_words
+from bayeslca.study.asked_in_vain import refuse_asked_in_vain
 from bayeslca.study.changes import changes_since
 from bayeslca.study.claims import check_theory
 from bayeslca.study.fit_checks import record_of
@@ -86,6 +87,7 @@ def run_study(
     check_theory(study)
     check_outcomes(study)
     check_placing(study)
+    refuse_asked_in_vain(study)
     check_predictors(study)
     steps = Steps(previous)
     fits = len(study.said.class_count.compare) + (study.model is not None)

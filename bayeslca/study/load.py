@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -23,7 +23,22 @@ from bayeslca.study.schema import SourcedStatement, StudyFile
 
 Place = tuple[str | int, ...]
 _KINDS = ("str", "int", "SourcedStatement", "list[str]", "TogetherSection", "list[float]", "float")
+_KINDS_WITH_DETAIL = ("literal[", "dict[", "list[")
 """What pydantic puts into the place of an error, and the file does not have."""
+_EXPECTED = {
+    "list_type": "a list: [..., ...]",
+    "dict_type": "a table: { name = ... }",
+    "model_type": "a table: { key = ... }",
+    "bool_type": "true or false",
+    "string_type": 'a text (string) in quotes: "..."',
+    "int_type": "a whole number",
+    "int_parsing": "a whole number",
+    "int_from_float": "a whole number",
+    "float_type": "a number",
+    "float_parsing": "a number",
+}
+"""What the file should hold, in its own words, by pydantic's kind of error."""
+_OTHER_FORM = {*_EXPECTED, "literal_error"}
 
 
 @dataclass(frozen=True)
@@ -263,13 +278,41 @@ def _can_be_read(statement: str, vocabulary: Vocabulary) -> bool:
 
 
 def _in_words(path: Path, text: str, error: ValidationError) -> str:
-    problems = [_problem(path, text, one) for one in error.errors()]
+    problems = [_problem(path, text, one) for one in _told_once(error.errors())]
     more = f" (and {len(problems) - 1} more: {'; '.join(problems[1:4])})" if problems[1:] else ""
     return problems[0] + more
 
 
+def _place(one: Mapping[str, Any]) -> Place:
+    return tuple(
+        part
+        for part in one["loc"]
+        if part not in _KINDS and not str(part).startswith(_KINDS_WITH_DETAIL)
+    )
+
+
+def _told_once(errors: Iterable[Any]) -> list[dict[str, Any]]:
+    """Join what pydantic says of each form that a key may have; the form that fits best speaks.
+
+    A key of two forms (a list or a table) gives an error for each. One that got further into the
+    value says more than "this is no list"; errors of one place are joined by "or".
+    """
+    found: dict[Place, dict[str, Any]] = {}
+    places = [_place(one) for one in errors]
+    for place, one in zip(places, errors, strict=True):
+        expected = _EXPECTED.get(one["type"], str(one["msg"]).removeprefix("Input should be "))
+        deeper = any(len(other) > len(place) and other[: len(place)] == place for other in places)
+        if deeper and one["type"] in _OTHER_FORM:
+            continue
+        if place not in found:
+            found[place] = {**one, "expected": expected}
+        elif expected not in found[place]["expected"]:
+            found[place]["expected"] += f" or {expected}"
+    return list(found.values())
+
+
 def _problem(path: Path, text: str, one: Mapping[str, Any]) -> str:
-    place: Place = tuple(part for part in one["loc"] if part not in _KINDS)
+    place = _place(one)
     where = _where(path, text, place)
     kind = one["type"]
     if kind == "extra_forbidden":
@@ -282,8 +325,7 @@ def _problem(path: Path, text: str, one: Mapping[str, Any]) -> str:
         return f"{where}: is missing, and a study cannot do without it. Add {place[-1]} = ..."
     if kind == "value_error":
         return f"{where}: {one['ctx']['error']}."
-    expected = str(one["msg"]).removeprefix("Input should be ")
-    return f"{where}: found {one['input']!r}; should be {expected}."
+    return f"{where}: found {one['input']!r}; should be {one['expected']}."
 
 
 def _known_keys(place: Place) -> list[str]:

@@ -39,10 +39,17 @@ def check_placing(study: Study) -> None:
             raise StudyError(msg)
         return
     try:
-        rule.matrix(study.model.class_names)
+        highest = float(rule.matrix(study.model.class_names).max())
     except ModelError as error:
         msg = f"{study.path.name}, [assignment]: {error}"
         raise StudyError(msg) from None
+    if study.model.n_classes > 1 and rule.at_most > highest:
+        msg = (
+            f"{study.path.name}, [assignment] at_most: {rule.at_most:g} is above the highest cost, "
+            f"{highest:g}, so that no case would be left unassigned. Give at most that; with all "
+            "costs 1, 0.2 asks for a probability of 80 %."
+        )
+        raise StudyError(msg)
 
 
 def with_placing(study: Study, content: ReportContent, say: Callable[[str], None]) -> ReportContent:

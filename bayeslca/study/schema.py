@@ -160,15 +160,15 @@ class ClassCountSection(_Section):
         missing = [name for name in compared if name not in given]
         what = ""
         if strange:
-            what = f"names {strange[0]!r}, which [class_count] compare does not list"
+            what = f"names {strange[0]!r}, which compare does not list"
         elif missing:
             what = f"says nothing of {missing[0]} classes; write {missing[0]} = 0 to rule it out"
         elif any(not weight >= 0 for weight in self.prior.values()):
-            what = "has a probability below 0"
+            what = "has a probability below 0, or one that is no number"
         elif abs(sum(self.prior.values()) - 1.0) > 1e-6:
             what = f"adds up to {sum(self.prior.values()):g}, not to 1"
         if what:
-            msg = f"[class_count] prior {what}"
+            msg = f"prior {what}"
             raise ValueError(msg)
         return self
 

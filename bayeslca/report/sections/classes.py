@@ -119,7 +119,8 @@ def _tells_apart(facts: Facts) -> str:
     for item, category in profile_rows(facts.posterior.model.items):
         mine = frame[(frame["item"] == item.name) & (frame["category"] == category)]
         low, high = float(mine["median"].min()), float(mine["median"].max())
-        name = item.text if item.n_categories == 2 else f"{item.text}: {category}"
+        stop = "" if item.text.endswith("?") else ":"
+        name = item.text if item.n_categories == 2 else f"{item.text}{stop} {category}"
         ranges.append((high - low, f"{name} ({percent(low)} to {percent(high)})"))
     ranges.sort(key=lambda pair: -pair[0])
     best = [text for _, text in ranges[:3]]

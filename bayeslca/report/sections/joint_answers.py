@@ -121,9 +121,16 @@ def _dependence_table(facts: Facts, rows: list[dict[str, Any]]) -> PageTable:
         Head("Odds ratio", f"{interval}; 1: independent within the class"),
         Head("More than by chance", "probability that it is above 1"),
         Head("Correlation", f"of the answers within the class, {interval}"),
-        Head("Covariance", "share with both, less what independent items would have"),
+        Head("Covariance", _of_covariance(facts)),
     )
     return PageTable("How items go together within a class", heads, shown)
+
+
+def _of_covariance(facts: Facts) -> str:
+    model = facts.posterior.model
+    if all(len(model.items[j].categories) == 2 for one in model.item_sets for j in one.items):
+        return "share with both, less what independent items would have"
+    return "of the answers, numbered in their order"
 
 
 def _joint_table(facts: Facts) -> PageTable:

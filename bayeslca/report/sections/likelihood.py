@@ -37,6 +37,7 @@ if TYPE_CHECKING:
 
 ANCHOR, HEADING = "maximum-likelihood", "What maximum likelihood says"
 MOST_NAMED = 8
+LEAST_P = 0.001
 
 
 def likelihood_section(facts: Facts) -> Section | None:
@@ -189,7 +190,13 @@ def _fit_table(criteria: CriteriaBeside) -> PageTable:
 
 def _with_p(value: float, p: float) -> str:
     shown = significant(value, 4)
-    return shown if p != p else f"{shown} (p = {significant(p, 2)})"
+    if p != p:
+        return shown
+    return f"{shown} (p {_p(p)})" if p < LEAST_P else f"{shown} (p = {significant(p, 2)})"
+
+
+def _p(p: float) -> str:
+    return f"below {LEAST_P:g}" if p < LEAST_P else decimal(p, 3)
 
 
 def _noticed(facts: Facts) -> list[Block]:
@@ -219,7 +226,7 @@ def _tests(content: ReportContent) -> list[Block]:
             f"{decimal(test.p_value, 3)} ± {significant(test.p_value_mcse, 1)}",
             whole(test.simulated.size) + (" (stopped)" if test.stopped else ""),
             decimal(test.adjusted_statistic, 2),
-            decimal(test.adjusted_p_value, 3),
+            _p(test.adjusted_p_value),
         )
         for test in tests
     )

@@ -58,8 +58,10 @@ def _independence(facts: Facts) -> tuple[str, str]:
             "Items are not independent within a class,",
             f"though the model takes them to be: “{fit.HEADING}” names the pairs. {same}",
         )
+    sets = facts.posterior.model.item_sets
+    of = " of items outside the sets that may go together" if sets else ""
     return (
-        "Independence within a class was assumed,",
+        f"Independence within a class{of} was assumed,",
         f"and nothing was seen against it (“{fit.HEADING}”); few cases can hide much. {same}",
     )
 
@@ -154,7 +156,8 @@ def _small_or_ruled(facts: Facts) -> list[tuple[str, str]]:
                 "what is said of so small a class rests on little.",
             )
         )
-    n_marked = len(facts.marked_answers) + len(facts.marked_prevalences)
+    # Both answers of a yes/no item are one place: the page shows one of them.
+    n_marked = len({key[:3] for key in facts.marked_answers}) + len(facts.marked_prevalences)
     if n_marked:
         entries.append(
             (

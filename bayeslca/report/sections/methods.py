@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import TYPE_CHECKING
 
 from bayeslca.report.blocks import Block, Bullets, Paragraph, Section
 from bayeslca.report.facts import Facts
@@ -21,6 +22,9 @@ from bayeslca.report.wording import (
     significant,
     whole,
 )
+
+if TYPE_CHECKING:
+    from bayeslca.assess.comparison import Comparison
 
 ANCHOR, HEADING = "methods", "A methods paragraph to paste"
 
@@ -173,13 +177,26 @@ def _comparison(facts: Facts) -> str:
     text = (
         f"{in_words(len(comparison.table)).capitalize()} models were compared by the leave-one-out "
         "predictive accuracy of a case's answers, class summed out (Merkle, Furr & Rabe-Hesketh "
-        "2019), estimated by Pareto-smoothed importance sampling (Vehtari, Gelman & Gabry 2017)"
+        f"2019), estimated by {_left_out_by(comparison)}"
     )
+    if comparison.folds is not None:
+        text += f", by {counted(comparison.folds.folds, 'fold')} of cases"
     if "waic" in comparison.table:
         text += ", by WAIC (Watanabe 2010)"
     if "weight" in comparison.table:
         text += " and by stacking weights (Yao et al. 2018)"
     return f"{text}. {sentence(comparison.verdict)}"
+
+
+def _left_out_by(comparison: Comparison) -> str:
+    loos = list(comparison.loo.values())
+    refitted = [loo.refitted for loo in loos if loo.refitted is not None]
+    if refitted and len(refitted) == len(loos) and all(rows.all() for rows in refitted):
+        return "refits without one case of each response pattern"
+    importance = "Pareto-smoothed importance sampling (Vehtari, Gelman & Gabry 2017)"
+    if any(rows.any() for rows in refitted):
+        return f"{importance}, with refits where that is not reliable"
+    return importance
 
 
 def _fit(facts: Facts) -> str:

@@ -62,7 +62,9 @@ def _named(facts: Facts, latent_class: str, item: Item) -> _Named:
     if item.n_categories > 2:
         best = max(item.categories, key=lambda name: cells[(item.name, name)]["median"])
         share = float(cells[(item.name, best)]["median"])
-        return _Named("", share, f"{item.text}: most often “{best}” ({percent(share)}{mark(best)})")
+        stop = "" if item.text.endswith("?") else ":"
+        said = f"{item.text}{stop} most often “{best}” ({percent(share)}{mark(best)})"
+        return _Named("", share, said)
     yes = item.yes or item.categories[-1]
     share = float(cells[(item.name, yes)]["median"])
     return _Named(yes, share, f"{item.text} ({percent(share)}{mark(yes)})")

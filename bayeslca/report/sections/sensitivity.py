@@ -64,7 +64,7 @@ def _how_tried(found: PriorSensitivity) -> str:
         whys = [f"{name}: {why}" for name, why in found.left_out.items()]
         text += f" Left out: {'; '.join(whys)}."
     notes = [
-        sentence(f"{called(row['prior'])}, by {row['method']}: {row['note']}")
+        sentence(f"priors {called(row['prior'])}, by {row['method']}: {row['note']}")
         for row in found.priors.to_dict("records")
         if row["note"]
     ]

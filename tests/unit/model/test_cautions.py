@@ -56,6 +56,15 @@ def test_weights_are_pseudo_cases_against_the_expected_answers():
     assert prior_weights(model)[0].expected is None
 
 
+def test_a_prior_on_the_first_item_of_a_set_is_weighed_against_its_own_answers():
+    """By hand: 60 cases that answered both items, 30 expected in each class."""
+    model = LatentClassModel(
+        BINARY, ("managed", "lapsed"), [PRIOR], answered_together=[["fees", "accounts"]]
+    )
+    stated = [w for w in prior_weights(model, responses_of(BINARY, 60)) if w.origin == PRIOR]
+    assert [w.expected for w in stated] == [pytest.approx(30.0)]
+
+
 def test_missing_answers_do_not_count_against_a_prior():
     responses = responses_of(BINARY, 60)
     codes = responses.codes.copy()

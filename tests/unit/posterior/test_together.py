@@ -142,6 +142,30 @@ def test_ordered_answers_agree_or_disagree_and_unordered_ones_are_left_out() -> 
     assert np.log(median) == pytest.approx(np.log(agree / disagree), abs=0.1)
 
 
+def test_each_measure_has_its_own_probability_of_more_than_by_chance() -> None:
+    """Dirichlet(n + 1), drawn by NumPy: agreeing pairs and covariance need not go along."""
+    items = tuple(
+        Item(name, ("never", "seldom", "always"), ordered=True) for name in ("visits", "phones")
+    )
+    counts = np.array([[120, 60, 20], [40, 60, 0], [20, 0, 0]])
+    together = AnsweredTogether(["visits", "phones"], prior=1.0)
+    model = LatentClassModel(items, 1, answered_together=[together])
+    posterior = model.sample(table_of(counts, items), seed=SEED, progress=False)
+    p = np.random.default_rng(SEED).dirichlet(counts.ravel() + 1.0, 100_000).reshape(-1, 3, 3)
+    pairs = [(a, b, c, d) for a, b, c, d in np.ndindex(3, 3, 3, 3) if a < c]
+    agree = sum(p[:, a, b] * p[:, c, d] for a, b, c, d in pairs if b < d)
+    disagree = sum(p[:, a, b] * p[:, c, d] for a, b, c, d in pairs if b > d)
+    score = np.arange(3)
+    covariance = np.einsum("nab,a,b->n", p, score, score) - (p.sum(axis=2) @ score) * (
+        p.sum(axis=1) @ score
+    )
+    found = posterior.conditional_dependence().set_index("measure")["positive"]
+    exact = {"odds ratio": (agree > disagree).mean(), "covariance": (covariance > 0).mean()}
+    assert abs(exact["odds ratio"] - exact["covariance"]) > 0.2
+    for measure, probability in exact.items():
+        assert found[measure] == pytest.approx(probability, abs=4 * np.sqrt(0.25 / 4000))
+
+
 def test_parameters_of_joint_answers_are_given_as_a_table() -> None:
     items = tuple(Item(name, NO_YES) for name in ("fees", "accounts", "meets"))
     model = LatentClassModel(

@@ -6,6 +6,7 @@ from types import SimpleNamespace
 
 import pytest
 
+from bayeslca.report.sections.likelihood import _with_p as with_p
 from bayeslca.report.sections.likelihood import tests_in_words as in_words
 
 
@@ -25,3 +26,11 @@ def count_test(smaller: int, p: float) -> SimpleNamespace:
 def test_the_first_test_that_does_not_reject_is_named(p_values: list[float], said: str) -> None:
     tests = tuple(count_test(n + 1, p) for n, p in enumerate(p_values))
     assert said in in_words(tests)  # type: ignore[arg-type]
+
+
+@pytest.mark.parametrize(
+    ("p", "shown"),
+    [(1e-12, "137.3 (p below 0.001)"), (0.7, "137.3 (p = 0.70)"), (float("nan"), "137.3")],
+)
+def test_a_p_next_to_nothing_is_not_printed_as_zeros(p: float, shown: str) -> None:
+    assert with_p(137.3, p) == shown

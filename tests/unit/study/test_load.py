@@ -79,7 +79,7 @@ WRONG = [
     ("seed = 7", "seed = ", ["study.toml", "not valid TOML", "line"]),
     ("seed = 7", "seed = 7\nseed = 8", ["study.toml", "not valid TOML"]),
     ("seed = 7", "sead = 7", ["line 17", "[sampling] sead", "unknown key", "near names: 'seed'"]),
-    ("seed = 7", 'seed = "seven"', ["line 17", "[sampling] seed", "'seven'", "integer"]),
+    ("seed = 7", 'seed = "seven"', ["line 17", "[sampling] seed", "'seven'", "whole number"]),
     ("seed = 7", "seed = -1", ["[sampling] seed", "-1", "greater than or equal to 0"]),
     ("seed = 7", "chains = 1", ["[sampling] chains", "greater than or equal to 2"]),
     ("seed = 7", 'sampler = "gibs"', ["[sampling] sampler", "'gibs'", "'gibbs'"]),
@@ -114,6 +114,18 @@ WRONG = [
         "compare = [1, 2]\nprior = { 1 = 0.5, 2 = 0.4 }",
         ["prior adds up to 0.9, not to 1"],
     ),
+    ("compare = [1, 2]", 'prior = "flat"', ["[class_count] prior", "'uniform' or a table"]),
+    ("compare = [1, 2]", 'exact = "yes"', ["[class_count] exact", "true or false"]),
+    (
+        "[class_count]",
+        'answered_together = [{ items = ["fees", "meets"], class = ["managed"] }]\n[class_count]',
+        ["unknown key 'class' (near names: 'classes')"],
+    ),
+    (
+        "[class_count]",
+        'answered_together = ["fees", "meets"]\n[class_count]',
+        ["'fees'; should be a list", "or a table"],
+    ),
     ('classes = ["managed", "lapsed"]', "classes = 0", ["[model] classes", "from 1 up"]),
     ('classes = ["managed", "lapsed"]', "classes = []", ["[model] classes", "list of names"]),
     ('classes = ["managed", "lapsed"]\n', "", ["line", "[model] statements", "Name the classes"]),
@@ -135,8 +147,12 @@ WRONG = [
     ('case = "committee"', 'case = "committee"\nstratum = "s"', ["stratum: there is no column"]),
     ("seed = 7", "seed = 7\npseudo_samples = 3", ["[sampling] pseudo_samples", "20"]),
     ("seed = 7", "seed = 7\n[report]\ninterval = 95", ["[report] interval", "less than 1"]),
-    ("[class_count]", "[items.fees]\nordered = 'yes'\n[class_count]", ["ordered", "boolean"]),
-    ("seed = 7", "seed = 7\n[report]\nshow_cases = 'maybe'", ["[report] show_cases", "boolean"]),
+    ("[class_count]", "[items.fees]\nordered = 'yes'\n[class_count]", ["ordered", "true or false"]),
+    (
+        "seed = 7",
+        "seed = 7\n[report]\nshow_cases = 'maybe'",
+        ["[report] show_cases", "true or false"],
+    ),
     ('file = "answers.csv"', 'file = "answer.csv"', ["answer.csv", "near names: 'answers.csv'"]),
     ('case = "committee"', 'case = "comittee"', ["'comittee'", "near names: 'committee'"]),
     ('"meets"]', '"meats"]', ["'meats'", "near names: 'meets'"]),
@@ -160,7 +176,7 @@ WRONG = [
     (
         '["managed is where P(fees=yes) is highest"]',
         '[{ statement = "P(fees=yes | managed) ~ Beta(9, 2)", scource = "x" }]',
-        ["[model] statements", "near names: 'source'"],
+        ["[model.statements] scource", "near names: 'source'"],
     ),
 ]
 
