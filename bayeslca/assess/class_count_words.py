@@ -14,6 +14,8 @@ if TYPE_CHECKING:
 
 MOST_OF_IT = 0.95
 """The counts named together hold at least this probability."""
+FEWEST_TO_WARN = 3
+"""With fewer classes compared, the largest number is no surprise."""
 
 
 def strength(log_bayes_factor: float) -> str:
@@ -38,7 +40,7 @@ def evidence_in_words(table: pd.DataFrame, *, is_uniform: bool, stated: bool) ->
     good = {k: row for k, row in rows.items() if row["reliable"] and row["probability"] >= 0}
     parts = []
     if len(good) > 1:
-        parts += [_probabilities(good, is_uniform=is_uniform), *_strength(good)]
+        parts += [_probabilities(good, is_uniform=is_uniform), *_at_the_end(good), *_strength(good)]
         parts.append(_depends(is_uniform=is_uniform, stated=stated))
     else:
         parts.append("The evidence says nothing about the number of classes here.")
@@ -72,6 +74,17 @@ def _probabilities(good: dict[int, dict[Any, Any]], *, is_uniform: bool) -> str:
         )
         return text + f": the answers do not settle the number beyond these {_number(named)}."
     return text + "."
+
+
+def _at_the_end(good: dict[int, dict[Any, Any]]) -> list[str]:
+    """Warn that the largest number need not mean so many kinds (docs/number-of-classes.md)."""
+    likeliest = max(good, key=lambda k: good[k]["probability"])
+    if likeliest < max(good) or likeliest < FEWEST_TO_WARN:
+        return []
+    return [
+        "That is the largest number that was compared: a class that the answers hardly touch costs "
+        "little, so it is no sign of so many kinds."
+    ]
 
 
 def _counted(counts: list[int]) -> str:

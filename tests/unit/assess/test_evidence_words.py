@@ -317,3 +317,16 @@ def test_words_pass_over_no_number_without_evidence(reliable: tuple[int, ...], w
 def test_grades_of_kass_and_raftery(factor: float, words: str) -> None:
     # Kass & Raftery (1995), table of 2 ln B: 0-2, 2-6, 6-10, above 10 (from memory).
     assert strength(float(np.log(factor))) == words
+
+
+@pytest.mark.parametrize(
+    ("chances", "said"), [((0.1, 0.3, 0.6), True), ((0.1, 0.6, 0.3), False), ((0.2, 0.8), False)]
+)
+def test_the_largest_number_is_no_sign_of_so_many_kinds(
+    chances: tuple[float, ...], said: bool
+) -> None:
+    table = pd.DataFrame(
+        [row(chance, np.log(chance)) for chance in chances], index=range(1, len(chances) + 1)
+    )
+    words = evidence_in_words(table, is_uniform=True, stated=False)
+    assert ("the largest number that was compared" in words) is said

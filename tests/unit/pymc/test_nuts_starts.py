@@ -34,7 +34,7 @@ def test_chains_start_in_the_labelling_the_priors_favour():
     elements[fees] = 0.2, 0.9  # the wrong way round: managed should pay
     elements[table.direct_element[table.response_row[0, 0]]] = 0.8, 0.1
     prevalence = np.array([[0.3, 0.7]])
-    moved, shares = best_labelling(parts, NAMED.symmetry, elements, prevalence)
+    moved, shares, *_ = best_labelling(parts, NAMED.symmetry, elements, prevalence)
     assert moved[fees].tolist() == [0.9, 0.2]
     assert shares.tolist() == [[0.7, 0.3]]
     assert log_prior(table, source, moved, shares) > log_prior(table, source, elements, prevalence)

@@ -168,5 +168,5 @@ def test_orders_of_three_prevalences_are_refused_by_name():
 def test_another_prior_of_constrained_prevalences_is_refused():
     model = LatentClassModel(ITEMS, ("a", "b"), ("P(i0 | a) > P(i0 | b)", "P(a) > P(b)"))
     data = model.simulate(20, seed=SEED).responses
-    with pytest.raises(ModelError, match="this model constrains them"):
+    with pytest.raises(ModelError, match="neither constrained nor pooled"):
         build(model, data, concentration=np.ones(2))

@@ -255,7 +255,7 @@ def test_impossible_answers_and_bounds_for_the_gibbs_step_are_refused():
     with pytest.raises(ModelError, match="3 cases gave answers that no class allows"):
         build_from_table(table, source, units_of([[0]], count=[3]), plain_names(table))
     bounded = replace(LatentClassModel((FEES,), 1).table, element_lower=np.array([0.2, 0.0]))
-    with pytest.raises(ModelError, match="bounded or ordered"):
+    with pytest.raises(ModelError, match="bounded, ordered or pooled"):
         build_from_table(bounded, source, units_of([[0]]), plain_names(bounded), gibbs=True)
 
 
