@@ -239,8 +239,8 @@ def _findings(
             Finding(
                 "rows_of_other_cases",
                 "note",
-                f"{len(others):,} rows of {title} are of cases without answers and were left "
-                f"out: {', '.join(others[:MOST_SHOWN])}{more}.",
+                f"rows of cases without answers in {title} were left out ({len(others):,}): "
+                f"{', '.join(others[:MOST_SHOWN])}{more}.",
                 about=tuple(others),
                 value=float(len(others)),
             )
@@ -277,7 +277,7 @@ def _kind(
         f"{listed_with_counts(strange, MOST_SHOWN)}, in "
         f"{table.place(np.flatnonzero(np.isin(column.codes, _codes_of(column, strange))))}. If "
         "these mean that there is no value, say so with no_answer; if the column holds "
-        "categories, say so with kinds."
+        "categories, say so with kinds (in a study file: categories)."
     )
     return "number"
 

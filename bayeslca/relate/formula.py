@@ -134,7 +134,8 @@ def read_formula(text: str) -> Formula:
         first = re.sub(r"\x1b\[[0-9;]*m|[⧛⧚]", "", str(error)).strip().splitlines()
         msg = (
             f"{where} cannot be read ({first[0] if first else type(error).__name__}). Write it "
-            "like 'district + age + log(distance)'."
+            "like 'district + age + log(distance)'; a name with spaces stands between backticks: "
+            "`age in years`."
         )
         raise ModelError(msg) from None
     if not has_intercept:

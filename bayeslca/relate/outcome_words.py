@@ -219,6 +219,12 @@ def _about_checks(found: ClassOutcomes) -> Iterator[Finding]:
         )
 
 
+def _plain(number: float) -> str:
+    """Return three digits without a power of ten: ``3,220``, not ``3.22e+03``."""
+    rounded = float(f"{number:.3g}")
+    return f"{rounded:,.0f}" if 1000 <= abs(rounded) < 1e9 else f"{rounded:g}"
+
+
 def _mean(found: ClassOutcomes) -> str:
     return MEAN_WORDS[found.outcome.kind]
 
@@ -229,10 +235,10 @@ def priors_in_words(found: ClassOutcomes) -> tuple[str, ...]:
     out = []
     if model.form == NORMAL:
         out += [
-            f"class means: normal around {prior.location[0]:.3g} with standard deviation "
-            f"{prior.location[1]:.3g} (mean and 2.5 standard deviations of all cases)",
+            f"class means: normal around {_plain(prior.location[0])} with standard deviation "
+            f"{_plain(prior.location[1])} (mean and 2.5 standard deviations of all cases)",
             f"variances{' (one for all classes)' if model.equal_spread else ''}: inverse "
-            f"chi-square worth {prior.spread[0]:g} case of variance {prior.spread[1]:.3g} (a "
+            f"chi-square worth {prior.spread[0]:g} case of variance {_plain(prior.spread[1])} (a "
             "quarter of that of all cases)",
         ]
     elif model.form == BERNOULLI:
@@ -261,7 +267,7 @@ def priors_in_words(found: ClassOutcomes) -> tuple[str, ...]:
         out.append("sizes of the negative binomial: log-normal around 1, from 0.05 to 19 in 95 %")
     if model.n_slopes:
         shown = ", ".join(
-            f"{name} {sd:.2g}"
+            f"{_plain(sd)} for {name}"
             for name, sd in zip(found.covariate_names, prior.slope_sd, strict=True)
         )
         out.append(f"slopes: normal around 0 with standard deviations {shown}")

@@ -53,7 +53,7 @@ def predictor_findings(
     failure : str or None
         Why the three steps gave no result.
     """
-    out = list(design.findings)
+    out = [*design.findings, *_groups(posterior, design)]
     out += _convergence(draws)
     if "joint" in draws and "cut" in draws:
         out += _disagreement(posterior, design, draws)
@@ -80,6 +80,21 @@ def predictor_findings(
             )
         )
     return tuple(out)
+
+
+def _groups(posterior: Posterior, design: Design) -> Iterator[Finding]:
+    """Say that prevalences by group are no part of the regression, unless it has the groups."""
+    groups = posterior.model.groups
+    if groups is None or groups.name in design.covariates:
+        return
+    yield Finding(
+        "groups_not_in_regression",
+        "warning" if posterior.model.pooled else "note",
+        f"the regression does not know the groups of {groups.name}: cases of one group count as "
+        "no more alike than others of the same covariates, so intervals may be too narrow.",
+        remedy=f"Where groups are few, add {groups.name} to the formula.",
+        about=(groups.name,),
+    )
 
 
 def _convergence(draws: Mapping[str, WayDraws]) -> Iterator[Finding]:

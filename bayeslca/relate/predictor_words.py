@@ -16,7 +16,7 @@ WAY_WORDS = {
 }
 CORRECTION_WORDS = {
     "fixed_error_likelihood": "likelihood with the error of placement held fixed (Vermunt 2010)",
-    "inverse_error_matrix": "weights from the inverse error matrix (Bolck, Croon & Hagenaars 2004)",
+    "inverse_error_matrix": "weights from the inverse error matrix (Bolck et al. 2004)",
 }
 SURE = 0.975
 
@@ -25,6 +25,8 @@ def headlines(found: ClassPredictors, interval: float = 0.95) -> list[str]:
     """Say what predicts class, a sentence per clear effect; or that nothing clearly does."""
     table = found.marginal_effects(interval, found.main_way)
     clear = table[(table["lower"] > 0) | (table["upper"] < 0)]
+    if len(found.class_names) == 2:  # the other class says the same, turned round
+        clear = clear[clear["latent_class"] == found.class_names[0]]
     if not len(clear):
         return [
             "No covariate clearly predicts class: every interval of a change in class "

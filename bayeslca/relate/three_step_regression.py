@@ -127,7 +127,7 @@ def three_step_regression(
         why = (
             "the inverse weights, of which some are negative, leave it without one"
             if correction == "inverse_error_matrix" and np.any(target < 0)
-            else "a covariate separates the classes as they were placed"
+            else "a covariate separates the classes, or would if cases were placed without error"
         )
         msg = (
             f"the third step has no finite maximum: {why}. Use the joint or the cut way, whose "

@@ -7,6 +7,11 @@ REFERENCES: dict[str, str] = {
         "Vermunt, J. K. (2010). Latent class modeling with covariates: two improved three-step "
         "approaches. Political Analysis 18, 450-469."
     ),
+    "Polson, Scott & Windle 2013": (
+        "Polson, N. G., Scott, J. G. & Windle, J. (2013). Bayesian inference for logistic models "
+        "using Polya-Gamma latent variables. Journal of the American Statistical Association 108, "
+        "1339-1349."
+    ),
     "Plummer 2015": (
         "Plummer, M. (2015). Cuts in Bayesian graphical models. Statistics and Computing 25, 37-43."
     ),

@@ -56,6 +56,11 @@ def percent(share: float) -> str:
     return NOTHING if not math.isfinite(share) else f"{percent_value(share)} %"
 
 
+def chance(probability: float) -> str:
+    """Return a probability found from draws: never 0 or 100 %, which no number of draws shows."""
+    return percent(min(max(probability, 1e-9), 1.0 - 1e-9))
+
+
 def percent_interval(median: float, lower: float, upper: float) -> str:
     """Return a share with its interval: ``41 % (30 to 52)``."""
     if not math.isfinite(median):

@@ -50,7 +50,7 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
     """
     study = load_study(path)
     check_theory(study)
-    check_outcomes(study)
+    about_outcomes = check_outcomes(study)
     check_placing(study)
     refuse_asked_in_vain(study)
     covariates = check_predictors(study)
@@ -70,6 +70,7 @@ def check_study(path: str | Path, *, prior: bool = False) -> str:
         unit_models(study, checked)
     findings = [*responses.findings, *checked.findings(responses)]
     findings += covariates.findings if covariates is not None else ()
+    findings += [one for one in about_outcomes if one not in findings]
     refused = any(finding.level == "problem" for finding in findings)
     parts = [
         f"{study.said.study.title} ({study.path.name})",
@@ -115,7 +116,10 @@ def _plan(study: Study, responses: Responses) -> list[str]:
     counts = study.said.class_count.compare
     lines = ["What `run` will do"]
     if study.model is not None:
-        lines += _wrapped(f"- fit the study's model, {study.model.n_classes} classes", indent=4)
+        lines += _wrapped(
+            f"- fit the study's model, {counted(study.model.n_classes, 'class', 'classes')}",
+            indent=4,
+        )
     design = responses.design
     if design is not None:
         lines += _wrapped(f"- {design.in_words()}", indent=4)

@@ -14,10 +14,12 @@ import numpy as np
 
 import bayeslca
 from bayeslca.posterior.storage import save
+from bayeslca.relate.predictor_words import headlines
 from bayeslca.relate.weighted_words import posterior_in_words
 from bayeslca.report.content import ReportContent
 from bayeslca.report.sections.outcomes import outcome_lead
 from bayeslca.report.sections.theory import outcome_in_words
+from bayeslca.report.wording import sentence
 from bayeslca.study.asked_in_vain import refuse_asked_in_vain
 from bayeslca.study.changes import changes_since
 from bayeslca.study.claims import check_theory
@@ -326,6 +328,8 @@ def _outcome(
             f"{row['quantity']}: {row['median']:.3g} ({row['lower']:.3g} to {row['upper']:.3g})"
             for row in content.quantities.to_dict("records")
         ]
+    if content.predictors is not None:
+        lines.append(" ".join(sentence(t) for t in headlines(content.predictors, content.interval)))
     lines += [outcome_lead(found) for found in content.outcomes]
     lines.append(content.posterior.diagnostics().verdict)
     if content.checks is not None and not content.checks.reproduces:

@@ -325,6 +325,10 @@ def _problem(path: Path, text: str, one: Mapping[str, Any]) -> str:
         return f"{where}: is missing, and a study cannot do without it. Add {place[-1]} = ..."
     if kind == "value_error":
         return f"{where}: {one['ctx']['error']}."
+    if kind == "list_type" and isinstance(one["input"], dict):
+        return f"{where}: is a list of sections: write it as [[{place[-1]}]], once for each"
+    if kind in ("model_type", "model_attributes_type") and isinstance(one["input"], list):
+        return f"{where}: stands once: write it as [{place[-1]}], not [[{place[-1]}]]"
     return f"{where}: found {one['input']!r}; should be {one['expected']}."
 
 

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from bayeslca.exceptions import BayesLCAError, StudyError
+from bayeslca.findings import Finding
 from bayeslca.report.content import ReportContent
 
 if TYPE_CHECKING:
@@ -17,8 +18,13 @@ if TYPE_CHECKING:
     from bayeslca.study.schema import OutcomeSection
 
 
-def check_outcomes(study: Study) -> None:
+def check_outcomes(study: Study) -> list[Finding]:
     """Read all outcomes and orders, so that what is wrong is said before anything is sampled.
+
+    Returns
+    -------
+    list of Finding
+        What was noticed on reading.
 
     Raises
     ------
@@ -28,20 +34,36 @@ def check_outcomes(study: Study) -> None:
     from bayeslca.relate.outcome_tables import read_order
     from bayeslca.relate.outcome_work import read_covariates
 
+    findings: list[Finding] = []
     for said in study.said.outcomes:
         data, how = _data(study, said)
         try:
-            read_outcome(
+            refuse_one_class(study)
+            outcome = read_outcome(
                 study.responses, data, said.column, said.kind, levels=said.levels, yes=said.yes,
                 label=said.label, **how,
             )  # fmt: skip
-            read_covariates(study.responses, data, said.adjusted_for or None, **how)
+            *_, noticed = read_covariates(study.responses, data, said.adjusted_for or None, **how)
             if study.model is not None:
                 for order in said.orders:
                     read_order(order, study.model.class_names)
         except BayesLCAError as error:
             msg = f"{study.path.name}, [[outcomes]] {said.column}: {error}"
             raise StudyError(msg) from None
+        findings += [one for one in (*outcome.findings, *noticed) if one not in findings]
+    return findings
+
+
+def refuse_one_class(study: Study) -> None:
+    """Refuse to relate other variables to the class where there is one class only.
+
+    Raises
+    ------
+    StudyError
+    """
+    if study.model is not None and study.model.n_classes == 1:
+        msg = "[model] has one class, so nothing can differ between classes; leave this out."
+        raise StudyError(msg)
 
 
 def with_outcomes(

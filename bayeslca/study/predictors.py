@@ -11,6 +11,7 @@ from bayeslca.relate.case_table import CaseTable, Kind, read_case_table
 from bayeslca.relate.covariates import Design, design_of
 from bayeslca.relate.formula import read_formula
 from bayeslca.report.content import ReportContent
+from bayeslca.study.outcomes import refuse_one_class
 
 if TYPE_CHECKING:
     from bayeslca.study.load import Study
@@ -56,6 +57,8 @@ def check_predictors(study: Study) -> Design | None:
         return None
     where = f"{study.path.name}, [predictors]"
     try:
+        refuse_one_class(study)
+        _refuse_what_makes_classes(study)
         table = study_covariates(study)
         assert table is not None
         design = design_of(table, said.formula, missing=said.missing)
@@ -69,6 +72,19 @@ def check_predictors(study: Study) -> Design | None:
         msg = f"{where} against: there is no class {said.against!r}{near}. {known}"
         raise StudyError(msg)
     return design
+
+
+def _refuse_what_makes_classes(study: Study) -> None:
+    said, answers = study.said.predictors, study.said.answers
+    if said is None:
+        return
+    for name in read_formula(said.formula).columns:
+        if name in answers.items:
+            msg = f"{name!r} is an item of [answers]: it makes the classes and cannot predict them."
+            raise StudyError(msg)
+        if name in (answers.case, said.case):
+            msg = f"{name!r} holds the ids of cases: each case would have an effect of its own."
+            raise StudyError(msg)
 
 
 def with_predictors(

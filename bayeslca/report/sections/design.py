@@ -43,6 +43,8 @@ UNWEIGHTED = {
     "outcomes": "class means are of the cases as they are",
 }
 """What of a section takes the cases as they are, by its anchor."""
+RELATED = ("predictors", "outcomes")
+"""Sections on other variables: the design is no part of them in any form."""
 NOT_MARKED = frozenset(
     {"answer", "design", "assumptions", "sampling", "reviewer", "limits", "methods", "reproduce"}
 )
@@ -54,7 +56,13 @@ def marked(section: Section, facts: Facts) -> Section:
     if facts.content.weighted is None or section.anchor in NOT_MARKED:
         return section
     what = UNWEIGHTED.get(section.anchor, "the figures are of the cases as they are")
-    text = f"Unweighted: {what}. Weighted figures stand under “{HEADING}”."
+    text = f"Unweighted: {what}. "
+    text += (
+        "No weighted figures were computed for this; where cases were drawn in clusters, its "
+        "intervals are too narrow."
+        if section.anchor in RELATED
+        else f"Weighted figures stand under “{HEADING}”."
+    )
     return replace(section, blocks=(Paragraph(text), *section.blocks))
 
 

@@ -10,6 +10,7 @@ from bayeslca.report.facts import Facts
 from bayeslca.report.references import cited_in
 from bayeslca.report.sections import design
 from bayeslca.report.sections.assumptions import answers_in_words, model_in_words
+from bayeslca.report.sections.outcomes import outcome_lead
 from bayeslca.report.sections.sampling import starts_in_words
 from bayeslca.report.wording import (
     counted,
@@ -54,6 +55,7 @@ def methods_paragraph(facts: Facts, versions: Mapping[str, str]) -> str:
         _comparison(facts),
         _fit(facts),
         _predictors(facts),
+        _outcomes(facts),
         design.method_in_words(facts),
         _software(versions),
     ]
@@ -212,6 +214,23 @@ def _fit(facts: Facts) -> str:
         studies = counted(checks.calibrated_in, "simulated study", "simulated studies")
         text += f", calibrated by {studies} (Hjort, Dahl & Steinbakk 2006)"
     return f"{text}. {sentence(checks.verdict)}"
+
+
+def _outcomes(facts: Facts) -> str:
+    content = facts.content
+    if not content.outcomes:
+        return ""
+    done = {way for found in content.outcomes for way in found.ways}
+    papers = {
+        "joint": "jointly with the answers",
+        "cut": "by a cut, with classes as the answers alone make them (Plummer 2015)",
+        "inverse_error_matrix": "in three steps by the inverse error matrix (Bolck et al. 2004)",
+        "fixed_error_likelihood": "in three steps by a likelihood with the error of placement held "
+        "fixed (Vermunt 2010; Bakk & Vermunt 2016)",
+    }
+    ways = listed([text for way, text in papers.items() if way in done])
+    leads = " ".join(sentence(outcome_lead(one, content.interval)) for one in content.outcomes)
+    return f"Outcomes were related to class {ways}. {leads}"
 
 
 def _software(versions: Mapping[str, str]) -> str:

@@ -15,6 +15,8 @@ from bayeslca.report.blocks import (
 )
 from bayeslca.report.wording import (
     NOTHING,
+    called,
+    chance,
     decimal,
     level,
     percent,
@@ -50,7 +52,7 @@ def means_table(found: ClassOutcomes, interval: float) -> PageTable:
     by_way = {way: records(frame[frame["way"] == way]) for way in found.ways}
     rows = tuple(
         (
-            name,
+            called(name),
             significant(float(found.expected_cases[k]), 3),
             *(value_text(found, by_way[way][k]) for way in found.ways),
         )
@@ -105,10 +107,10 @@ def _difference_heads(found: ClassOutcomes, interval: float, *, by_way: bool) ->
 def _difference_row(found: ClassOutcomes, row: dict[str, Any], *, by_way: bool) -> tuple[str, ...]:
     size = _points(row) if found.outcome.kind == "binary" else number_text(*_ends(row))
     return (
-        f"{row['latent_class']} less {row['other_class']}",
+        f"{called(row['latent_class'])} less {called(row['other_class'])}",
         *([WAY_WORDS[row["way"]]] if by_way else []),
         size,
-        percent(row["probability_larger"]),
+        chance(row["probability_larger"]),
         number_text(row["effect"], row["effect_lower"], row["effect_upper"]),
     )
 
@@ -141,7 +143,7 @@ def order_tables(found: ClassOutcomes, orders: tuple[str, ...]) -> list[Block]:
         (
             order,
             WAY_WORDS[row["way"]],
-            percent(row["posterior_probability"]),
+            chance(row["posterior_probability"]),
             percent(row["prior_probability"]),
         )
         for order in orders
@@ -166,7 +168,7 @@ def category_tables(found: ClassOutcomes, interval: float) -> list[Block]:
     n = len(found.outcome.levels)
     rows = tuple(
         (
-            name,
+            called(name),
             *(
                 percent_interval(row["median"], row["lower"], row["upper"])
                 for row in mine[k * n : (k + 1) * n]
@@ -188,7 +190,8 @@ def parameter_tables(found: ClassOutcomes, interval: float) -> list[Block]:
         return []
     rows = tuple(
         (
-            row["parameter"] + (f" in {row['latent_class']}" if row["latent_class"] else ""),
+            row["parameter"]
+            + (f" in {called(row['latent_class'])}" if row["latent_class"] else ""),
             WAY_WORDS[row["way"]],
             number_text(row["median"], row["lower"], row["upper"]),
         )
@@ -203,4 +206,7 @@ def parameter_tables(found: ClassOutcomes, interval: float) -> list[Block]:
     caption = f"{found.outcome.text}: spread within classes" + (
         ", and slopes of covariates" if found.covariate_names else ""
     )
-    return [PageTable(caption, heads, rows, folded=True)]
+    notes: tuple[str, ...] = ()
+    if found.outcome.kind == "count":
+        notes = ("Size: the smaller it is, the more counts vary beyond a Poisson's.",)
+    return [PageTable(caption, heads, rows, notes, folded=True)]

@@ -39,6 +39,7 @@ from bayeslca.report.sections.outcome_blocks import (
 )
 from bayeslca.report.wording import (
     called,
+    chance,
     counted,
     decimal,
     level,
@@ -135,7 +136,8 @@ def outcome_lead(found: ClassOutcomes, interval: float = 0.95) -> str:
     )
     if way in found.drawn:
         order, probability = likeliest_order(found, way)
-        text += f" The likeliest order is {order}, with a probability of {percent(probability)}."
+        order = " < ".join(called(name) for name in order.split(" < "))
+        text += f" The likeliest order is {order}, with a probability of {chance(probability)}."
     return text
 
 
@@ -218,7 +220,7 @@ def _checks(found: ClassOutcomes, number: int) -> list[Block]:
     rows = tuple(
         (
             row["feature"],
-            "all cases" if row["latent_class"] == OVERALL else row["latent_class"],
+            "all cases" if row["latent_class"] == OVERALL else called(row["latent_class"]),
             significant(row["observed"], 3),
             number_text(row["expected"], row["lower"], row["upper"]),
             decimal(row["p"], 2) if row["p"] >= 0.01 else "below 0.01",

@@ -259,10 +259,14 @@ def _direct_effects(found: ClassPredictors) -> list[Block]:
     texts = tuple(f"{sentence(f.message)} {sentence(f.remedy)}" for f in effects.findings)
     said = (
         f"Of {counted(n_tested, 'pair')} of an answer and a covariate, none goes together beyond "
-        "class once all tests are counted (Holm): nothing speaks against covariates acting "
-        "through class alone."
+        "class once all tests are counted (Holm). Small direct effects can hide among "
+        f"{cases_in_words(found)}."
     )
-    if n_tested < len(table):
+    if not n_tested:
+        said = (
+            "Too few answers speak of this: not one pair of an answer and a covariate had a test."
+        )
+    elif n_tested < len(table):
         said += (
             f" {counted(len(table) - n_tested, 'pair')} with too few answers to tell had no test."
         )
@@ -282,18 +286,20 @@ def _direct_effects(found: ClassPredictors) -> list[Block]:
     return [
         Subheading("Do covariates act through class alone?"),
         *([Banner("Direct effects", texts)] if texts else [Paragraph(said)]),
-        PageTable(
-            "The largest direct effects",
-            (
-                Head("Answer", "", numeric=False),
-                Head("Covariate", "column of the regression", numeric=False),
-                Head("Log odds", "change in the log odds of the answer, class given"),
-                Head("z", "in standard errors (score test)"),
-                Head("p, all tests", "adjusted for the number of tests"),
-            ),
-            rows,
-            folded=True,
-        ),
+        *[
+            PageTable(
+                "The largest direct effects",
+                (
+                    Head("Answer", "", numeric=False),
+                    Head("Covariate", "column of the regression", numeric=False),
+                    Head("Log odds", "change in the log odds of the answer, class given"),
+                    Head("z", "in standard errors (score test)"),
+                    Head("p, all tests", "adjusted for the number of tests"),
+                ),
+                rows,
+                folded=True,
+            )
+        ][: len(rows) > 0],
     ]
 
 

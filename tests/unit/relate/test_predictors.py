@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from types import SimpleNamespace
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -9,6 +11,7 @@ import pytest
 import bayeslca as lca
 from bayeslca.exceptions import ModelError, ResponsesError
 from bayeslca.model.probabilities import response_probability
+from bayeslca.relate.predictor_findings import _groups
 from bayeslca.relate.separation import find_separation
 from tests.unit.relate.conftest import fitted, study
 
@@ -159,3 +162,14 @@ def test_drawn_classes_need_a_posterior(sharp_frame, sharp_posterior):
     found = lca.class_predictors(sharp_posterior, sharp_frame, "age", ways=("three_steps",), seed=1)
     with pytest.raises(ModelError, match="Add the way 'cut' or 'joint'"):
         lca.plausible_values(sharp_posterior, number=2, given=found)
+
+
+@pytest.mark.parametrize(
+    ("pooled", "covariates", "levels"),
+    [(True, ("age",), ["warning"]), (False, ("age",), ["note"]), (True, ("age", "herd"), [])],
+)
+def test_groups_that_the_regression_does_not_know_are_named(pooled, covariates, levels):
+    model = SimpleNamespace(groups=SimpleNamespace(name="herd"), pooled=pooled)
+    found = list(_groups(SimpleNamespace(model=model), SimpleNamespace(covariates=covariates)))
+    assert [one.level for one in found] == levels
+    assert all("groups of herd" in one.message for one in found)

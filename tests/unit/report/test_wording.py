@@ -88,3 +88,11 @@ def test_significant_digits() -> None:
 def test_duration() -> None:
     assert wording.duration(0.81) == "0.81 seconds"
     assert wording.duration(60 * 3.2) == "3 minutes"
+
+
+@pytest.mark.parametrize(
+    ("probability", "text"),
+    [(1.0, "above 99.9 %"), (0.0, "below 0.1 %"), (0.974, "97 %"), (math.nan, "–")],
+)
+def test_a_probability_from_draws_is_never_certain(probability: float, text: str) -> None:
+    assert wording.chance(probability) == text

@@ -62,3 +62,22 @@ def test_check_says_what_run_will_do(
     code, out, _ = run("check", study)
     assert code == 0
     assert "- relate the count outcome Days out to class" in out
+
+
+def test_check_says_which_values_are_missing(
+    folder: Path, run: Callable[..., tuple[int, str, str]]
+) -> None:
+    study = with_outcome(folder, COUNT, [3, 1, "", 12, 0, 44])
+    code, out, _ = run("check", study)
+    assert code == 0
+    assert "1 of 6 cases have no value of days" in " ".join(out.split())
+
+
+def test_one_section_in_place_of_a_list_is_refused_in_words(
+    folder: Path, run: Callable[..., tuple[int, str, str]]
+) -> None:
+    study = with_outcome(folder, COUNT)
+    study.write_text(study.read_text("utf-8").replace("[[outcomes]]", "[outcomes]"), "utf-8")
+    code, _, err = run("check", study)
+    assert code == 2
+    assert "write it as [[outcomes]]" in err

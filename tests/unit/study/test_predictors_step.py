@@ -57,6 +57,9 @@ def test_check_says_what_will_be_done(tmp_path):
         ),
         ('formula = "district +"', "cannot be read"),
         ('formula = "days_out"\nagainst = "activ"', r"no class 'activ' \(near names: 'active'"),
+        ('formula = "district + fees"', "'fees' is an item of"),
+        ('formula = "committee"', "'committee' holds the ids of cases"),
+        ('formula = "km to parts"', "between backticks"),
         ('formula = "x"\nfile = "other.csv"', "holds none of the 118 cases"),
         ('formula = "x"\nfile = "twice.csv"', "'WP001' in lines 2, 3"),
         ('formula = "x"\nfile = "same.csv"', "covariate 'x' is 1 in all 2 cases"),
@@ -72,6 +75,22 @@ def test_what_is_wrong_is_named(tmp_path, predictors, message):
         (tmp_path / name).write_text("committee,x\n" + rows, encoding="utf-8")
     with pytest.raises(StudyError, match=message):
         check_predictors(study(tmp_path, predictors))
+
+
+def test_one_class_cannot_be_predicted(tmp_path):
+    found = study(tmp_path, 'formula = "district"')
+    text = found.path.read_text("utf-8").replace('["active", "lapsed"]', "1")
+    lines = [line for line in text.splitlines() if not line.startswith("statements")]
+    found.path.write_text("\n".join(lines), encoding="utf-8")
+    with pytest.raises(StudyError, match="has one class"):
+        check_predictors(load_study(found.path))
+
+
+def test_a_list_of_predictors_is_refused_in_words(tmp_path):
+    path = study(tmp_path, 'formula = "district"').path
+    path.write_text(path.read_text("utf-8").replace("[predictors]", "[[predictors]]"))
+    with pytest.raises(StudyError, match=r"write it as \[predictors\], not \[\[predictors\]\]"):
+        load_study(path)
 
 
 @pytest.mark.parametrize(
