@@ -6,6 +6,7 @@ are matched by their ids; what cannot be matched is named, never guessed.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -28,6 +29,7 @@ if TYPE_CHECKING:
 
 Kind = Literal["number", "category"]
 
+_THOUSAND = re.compile(r"[+-]?[1-9]\d{0,2},\d{3}")
 MOST_SHOWN = 5
 MOSTLY = 0.5
 """A column with at least this share of numbers is one of numbers; its other values are named."""
@@ -269,6 +271,13 @@ def _kind(
     strange = {value: n for value, n in counts.items() if number_of(value) is None}
     n_numbers = sum(counts.values()) - sum(strange.values())
     if not strange:
+        thousands = _thousands_or_decimals(counts)
+        if thousands:
+            where = np.flatnonzero(np.isin(column.codes, _codes_of(column, thousands)))
+            problems.add(
+                f"column {column.name!r}: {listed_with_counts(thousands, MOST_SHOWN)} in "
+                f"{table.place(where)}: a thousand, or a decimal? Write it without a comma."
+            )
         return "number"
     if n_numbers < MOSTLY * sum(counts.values()):
         return "category"
@@ -280,6 +289,13 @@ def _kind(
         "categories, say so with kinds (in a study file: categories)."
     )
     return "number"
+
+
+def _thousands_or_decimals(counts: Mapping[str, int]) -> dict[str, int]:
+    """Return numbers such as ``1,234`` that may be thousands; none where commas are decimals."""
+    commas = {value: n for value, n in counts.items() if "," in value}
+    unclear = {value: n for value, n in commas.items() if _THOUSAND.fullmatch(value.strip())}
+    return unclear if len(unclear) == len(commas) else {}
 
 
 def _codes_of(column: RawColumn, values: Mapping[str, int]) -> list[int]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
-from typing import TYPE_CHECKING, Any, Literal
+from typing import TYPE_CHECKING, Any, Literal, cast
 
 import numpy as np
 
@@ -251,6 +251,7 @@ def class_outcomes(
     """
     from bayeslca.relate.outcome_words import outcome_findings
 
+    ways = cast("Sequence[Way]", (ways,) if isinstance(ways, str) else ways)
     _check_options(ways, count_model, spread, corrections, placement)
     if posterior.model.n_classes == 1:
         msg = "the model has one class, so nothing can follow from class. Fit two or more."

@@ -245,7 +245,9 @@ def _scaled(factor: Factor, table: CaseTable, frame: pd.DataFrame) -> Scaled:
 
 
 def _as_categories(values: pd.Series[Any]) -> pd.Series[Any]:
-    return values.map(lambda value: f"{value:g}" if isinstance(value, float) else str(value))
+    return values.map(
+        lambda value: f"{value:g}" if isinstance(value, float) else str(value).strip()
+    )
 
 
 def _natural(level: str) -> tuple[float, str]:
@@ -260,7 +262,15 @@ def _rank(level: str, counts: pd.Series[Any]) -> int:
 
 
 def _numbers(frame: pd.DataFrame, factor: Factor) -> dict[str, Floats]:
-    return {name: frame[name].to_numpy(dtype=np.float64) for name in factor.columns}
+    out: dict[str, Floats] = {}
+    for name in factor.columns:
+        try:
+            out[name] = frame[name].to_numpy(dtype=np.float64)
+        except (TypeError, ValueError):
+            shown = frame[name].iloc[0]
+            msg = f"covariate {name!r} should hold numbers; found values such as {shown!r}."
+            raise ModelError(msg) from None
+    return out
 
 
 def _refuse_unseen(scaled: Scaled, frame: pd.DataFrame) -> None:

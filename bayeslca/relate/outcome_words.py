@@ -287,12 +287,12 @@ def as_terminal_text(found: ClassOutcomes) -> str:
         "",
         f"{MEAN_WORDS[found.outcome.kind].capitalize()} by class ({level:g} % intervals)",
     ]
-    width = max(len(WAY_WORDS[way]) for way in found.ways)
+    width = max(19, *map(len, found.class_names))
     for way in found.ways:
         mine = frame[frame["way"] == way]
         lines.append(f"  {WAY_WORDS[way]}")
         lines += [
-            f"    {row.latent_class:<{width - 16}} {row.median:>9.3g} "
+            f"    {row.latent_class:<{width}} {row.median:>9.3g} "
             f"({row.lower:.3g} to {row.upper:.3g})"
             for row in mine.itertuples()
         ]

@@ -6,7 +6,7 @@ import time
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import TYPE_CHECKING, Any, Literal
+from typing import TYPE_CHECKING, Any, Literal, cast
 
 import numpy as np
 
@@ -333,6 +333,7 @@ def class_predictors(
     ModelError, ResponsesError
         When formula, covariates or options are wrong; each message names the column or the cases.
     """
+    ways = cast("Sequence[Way]", (ways,) if isinstance(ways, str) else ways)
     unknown = [way for way in ways if way not in WAYS]
     if unknown or not ways:
         msg = f"ways={list(ways)}: name one or more of {', '.join(WAYS)}."

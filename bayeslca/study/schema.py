@@ -372,6 +372,20 @@ class StudyFile(_Section):
         return self
 
     @model_validator(mode="after")
+    def _pooled_units_have_no_weights(self) -> StudyFile:
+        answers = self.answers
+        design = {"weight": answers.weight, "cluster": answers.cluster, "stratum": answers.stratum}
+        named = [key for key, column in design.items() if column is not None]
+        if self.model.pooled and named:
+            msg = (
+                f"[answers] {named[0]} and [model] pooled do not go together: weights, clusters "
+                "and strata are worked in for groups with prevalences of their own only; leave "
+                "pooled out and let the units be clusters, or leave the design out"
+            )
+            raise ValueError(msg)
+        return self
+
+    @model_validator(mode="after")
     def _outcomes_can_be_related(self) -> StudyFile:
         columns = [said.column for said in self.outcomes]
         for said in self.outcomes:

@@ -100,3 +100,25 @@ def test_a_table_of_patterns_has_no_cases():
     responses = lca.Responses.from_frame(frame, items=["fees"], counts="n")
     with pytest.raises(ResponsesError, match=r"table of patterns .* which case has which 'age'"):
         read_case_table(responses, other(), ["age"])
+
+
+@pytest.mark.parametrize(
+    ("values", "unclear"),
+    [
+        (["1,234", "300", "12.5"], True),
+        (["1,234", "12,5", "300"], False),  # commas are decimals here
+        (["0,125", "0,250", "0,5"], False),
+        (["300", "12.5", "7"], False),
+    ],
+)
+def test_a_thousand_or_a_decimal_is_asked_about(values, unclear):
+    frame = pd.DataFrame(
+        {"id": ["a", "b", "c"], "i": ["yes", "no", "yes"], "j": ["no", "no", "yes"], "x": values}
+    )
+    responses = lca.Responses.from_frame(frame, items=["i", "j"], case="id")
+    if unclear:
+        with pytest.raises(ResponsesError, match=r"'1,234' .* a thousand, or a decimal"):
+            read_case_table(responses, frame, ["x"])
+    else:
+        wanted = [float(value.replace(",", ".")) for value in values]
+        assert read_case_table(responses, frame, ["x"]).numbers("x").tolist() == wanted

@@ -315,3 +315,10 @@ def test_overdispersion_is_found_and_only_where_it_is() -> None:
     assert 0.6 < poisson.ratio < 1.5
     wide = rng.poisson(rng.gamma(1.0, rate)).astype(float)
     assert overdispersion(wide, membership, rng).p < 0.01
+
+
+def test_one_way_alone_is_printed(posterior: lca.Posterior, data: pd.DataFrame) -> None:
+    """The width of a column once came from the names of the ways, and was negative for one."""
+    found = lca.class_outcomes(posterior, data, "cost", kind="numeric", ways="cut", seed=1)  # type: ignore[arg-type]
+    assert found.ways == ("cut",)
+    assert "    kept " in repr(found)

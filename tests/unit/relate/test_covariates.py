@@ -98,3 +98,11 @@ def test_cases_that_miss_a_covariate_are_left_out_and_counted():
 def test_covariates_that_say_nothing_are_named(columns, formula, message):
     with pytest.raises(ModelError, match=message):
         design_of(table(**columns), formula)
+
+
+def test_new_cases_are_read_as_those_of_the_fit():
+    design = design_of(table(age=AGES, district=DISTRICTS), "age + district")
+    same = design.matrix_of(pd.DataFrame({"age": ["2"], "district": ["lake "]}))
+    assert np.allclose(same[0], design.matrix[1])
+    with pytest.raises(ModelError, match="'age' should hold numbers; found values such as 'old'"):
+        design.matrix_of(pd.DataFrame({"age": ["old"], "district": ["lake"]}))

@@ -38,6 +38,13 @@ def test_what_cannot_be_pooled_is_refused_by_its_key(folder, key, message):
         load_study(path)
 
 
+def test_pooled_units_with_weights_are_refused_before_anything_is_sampled(folder):
+    keys = GROUPED + '\nweight = "w"'
+    path = change(folder, ('case = "committee"', keys), ("[model]", "[model]\npooled = true"))
+    with pytest.raises(StudyError, match=r"weight and \[model\] pooled do not go together"):
+        load_study(path)
+
+
 def test_the_model_and_the_compared_counts_are_pooled(folder):
     path = change(
         folder,
