@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING, Any
 from bayeslca.assess.class_counts import ClassCounts, class_counts
 from bayeslca.assess.comparison_progress import ComparisonMeter, Show, shown
 from bayeslca.assess.comparison_words import Name, listed_with_and, row_in_words
+from bayeslca.assess.prior_words import called
 from bayeslca.assess.seeds_of_rows import entropy_of, seed_of_row
 from bayeslca.exceptions import ModelError
 from bayeslca.model.alternative_priors import HALF, TWICE, distinct_alternatives
@@ -155,12 +156,12 @@ def _verdict(by_prior: Mapping[str, ClassCounts], left_out: Mapping[str, str]) -
             others = [f"{row_in_words(k)} {_under(name)}" for name, k in best.items()]
             text += " The most probable number hangs on the prior: " + listed_with_and(others) + "."
     for name, why in left_out.items():
-        text += f" Not done for priors {name}: {why}."
+        text += f" Not done for priors {called(name)}: {why}."
     return text
 
 
 def _under(name: str) -> str:
-    return f"under the priors {name}" if name == AS_STATED else f"under priors {name}"
+    return f"under the priors {name}" if name == AS_STATED else f"under priors {called(name)}"
 
 
 def _are(best: Mapping[str, int]) -> str:

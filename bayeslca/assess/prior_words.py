@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from bayeslca.assess.power_scaling import RELIABLE_K, SENSITIVE, PowerScaling
 from bayeslca.findings import Finding
+from bayeslca.model.alternative_priors import JEFFREYS
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -185,6 +186,8 @@ def verdict_in_words(
 
 def called(prior: str) -> str:
     """Return how priors of a name are called in a sentence."""
+    if prior == JEFFREYS:
+        return "by Jeffreys' rule"
     return prior if prior.endswith("strong") else f"that are {prior}"
 
 

@@ -33,7 +33,11 @@ def _answers(vocabulary: Vocabulary) -> dict[str, str]:
     names = [item.name for item in items]
     own = [f"{quoted(item.name)}={quoted(item.yes or item.categories[-1])}" for item in items]
     second = own[1 % len(own)]
-    said = {"fees": own[0], "accounts": second, "'pays fees'": own[0]}
+    said = {
+        "fees": own[0],
+        "accounts": second,
+        "'pays fees'": f"'{names[0]}'={own[0].split('=')[-1]}",
+    }
     return {f"{name}=yes": answer for name, answer in said.items() if name.strip("'") not in names}
 
 

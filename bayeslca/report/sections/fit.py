@@ -107,7 +107,7 @@ def independence_in_words(checks: PredictiveChecks) -> str:
         return "There is one item, so there is no pair to look at."
     p = judged_p(rows[0])
     text = (
-        f"It was assumed, and checked pair by pair: the largest of "
+        f"Independence was assumed, and checked pair by pair: the largest of "
         f"{counted(len(overall_rows(checks.pairs)), 'pair residual')} has p "
         f"{p_text(p, checks.replicates)}. "
     )

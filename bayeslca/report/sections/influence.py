@@ -17,7 +17,7 @@ from bayeslca.report.blocks import (
 from bayeslca.report.facts import Facts
 from bayeslca.report.figures import WIDTH, draw
 from bayeslca.report.influence_plot import plot_influence
-from bayeslca.report.wording import decimal, listed, sentence, whole
+from bayeslca.report.wording import called, decimal, listed, sentence, whole
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -90,7 +90,10 @@ def _table(facts: Facts, found: Influence) -> PageTable:
         Head("p", "a new case has answers as improbable"),
         Head("Replicates", "share that hold a case as improbable"),
         *(
-            Head(f"Change of {name}", "prevalence without the case, in points (in posterior sd)")
+            Head(
+                f"Change of {called(name)}",
+                "prevalence without the case, in points (in posterior sd)",
+            )
             for name in names
         ),
         Head("How", "weights: importance sampling; refit: sampled without it", numeric=False),

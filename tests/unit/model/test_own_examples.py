@@ -24,6 +24,7 @@ OWN = Vocabulary((Item("fees", ("no", "yes")),), ("managed", "lapsed"), Groups("
         ("", "P(elisa=positive | infected) > P(elisa=positive | free)"),
         ("P(elisa=positive | infected, herd A)", "P(elisa=positive | infected, herd=A)"),
         ("3 + 4", "P(elisa=positive | infected)"),
+        ("P(elisa two=positive | infected)", "or P('elisa'=positive | infected)"),
     ],
 )
 def test_the_remedy_speaks_of_the_study(text: str, remedy: str) -> None:
