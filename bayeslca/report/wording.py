@@ -8,6 +8,8 @@ from collections.abc import Iterable, Sequence
 NOTHING = "–"
 """What stands where there is no number."""
 
+LEAST_SHOWN = 1e-8
+"""A number nearer to 0 is shown as 0."""
 _SMALL = ("no", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine", "ten")
 
 
@@ -31,7 +33,7 @@ def significant(number: float, digits: int = 2) -> str:
     """Return a number with so many significant digits, without an exponent where it can be."""
     if not math.isfinite(number):
         return NOTHING
-    if number == 0:
+    if abs(number) < LEAST_SHOWN:
         return "0"
     places = max(0, digits - 1 - math.floor(math.log10(abs(number))))
     return decimal(number, min(places, 8))

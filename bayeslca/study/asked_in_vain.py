@@ -31,6 +31,14 @@ def refuse_asked_in_vain(study: Study) -> None:
                 "compared, and compare is empty. List some, or leave it out."
             )
             raise StudyError(msg)
+    likelihood = study.said.maximum_likelihood
+    one_fewer = any(n - 1 in counts.compare for n in counts.compare)
+    if likelihood is not None and likelihood.bootstrap and not one_fewer:
+        msg = (
+            f"{study.path.name}, [maximum_likelihood] bootstrap: it tests one class fewer, and "
+            "[class_count] compare holds no two numbers in a row. List some, or leave it out."
+        )
+        raise StudyError(msg)
     if priors.refit and not priors.sensitivity:
         msg = (
             f"{study.path.name}, [priors] refit: it names other priors to fit under, and "

@@ -5,7 +5,7 @@ from __future__ import annotations
 from bayeslca.model.cautions import CASES_PER_CLASS
 from bayeslca.report.blocks import Bullets, Section
 from bayeslca.report.facts import Facts
-from bayeslca.report.sections import fit
+from bayeslca.report.sections import fit, joint_answers
 from bayeslca.report.sections.class_counts import tie_in_words
 from bayeslca.report.wording import called, counted, level, listed, percent_value, whole
 
@@ -60,6 +60,11 @@ def _independence(facts: Facts) -> tuple[str, str]:
         )
     sets = facts.posterior.model.item_sets
     of = " of items outside the sets that may go together" if sets else ""
+    if len({j for one in sets for j in one.items}) == facts.posterior.table.n_items:
+        return (
+            "Items may go together within a class,",
+            f"as “{joint_answers.HEADING}” says; few cases leave open how much. {same}",
+        )
     return (
         f"Independence within a class{of} was assumed,",
         f"and nothing was seen against it (“{fit.HEADING}”); few cases can hide much. {same}",

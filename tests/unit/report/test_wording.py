@@ -83,6 +83,7 @@ def test_significant_digits() -> None:
     assert wording.significant(0.00123) == "0.0012"
     assert wording.significant(1234.5) == "1,234"
     assert wording.significant(0.0) == "0"
+    assert wording.significant(-3e-12) == "0"
 
 
 def test_duration() -> None:

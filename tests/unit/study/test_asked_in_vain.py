@@ -28,6 +28,7 @@ def said(folder: Path, old: str, new: str) -> Path:
         ('compare = [2]\nalso_under = ["uniform", "uniform"]', "", "'uniform' more than once"),
         ("compare = [2]", '[priors]\nsensitivity = false\nrefit = ["uniform"]', "sensitivity"),
         ("compare = [2]", '[priors]\nrefit = ["uniform", "uniform"]', "more than once"),
+        ("compare = [1, 3]", "[maximum_likelihood]\nbootstrap = 9", "no two numbers in a row"),
         ("compare = [2]", "[assignment]\ncosts = { managd = { lapsed = 2 } }", "'managed'"),
         ("compare = [2]", "[assignment]\nat_most = 20", "20 is above the highest cost, 1"),
     ],
