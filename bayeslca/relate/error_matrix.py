@@ -67,10 +67,11 @@ class ErrorMatrix:
         out = np.empty_like(self.placed)
         for g, share in enumerate(self.share):
             if np.linalg.svd(share, compute_uv=False)[-1] < LEAST_KEPT:
+                of_group = " of a group (each has its own)" if len(self.share) > 1 else ""
                 msg = (
-                    "the classification-error matrix cannot be inverted: cases of two classes are "
-                    "placed alike, so placement says nothing of them. Take fewer classes, or "
-                    "relate by the joint or the cut way."
+                    f"the classification-error matrix{of_group} cannot be inverted: cases "
+                    "of two classes are placed alike, so placement says nothing of them. Take "
+                    "fewer classes, or relate by the joint or the cut way."
                 )
                 raise ModelError(msg)
             mine = self.group == g

@@ -294,6 +294,8 @@ def as_terminal_text(found: ClassOutcomes) -> str:
         lines += [
             f"    {row.latent_class:<{width}} {row.median:>9.3g} "
             f"({row.lower:.3g} to {row.upper:.3g})"
+            if np.isfinite(float(row.median))  # type: ignore[arg-type]
+            else f"    {row.latent_class:<{width}} no estimate"
             for row in mine.itertuples()
         ]
     lines += ["", f"Differences, with their effect ({EFFECTS[found.outcome.kind]}): .differences()"]

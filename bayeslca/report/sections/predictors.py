@@ -259,8 +259,7 @@ def _direct_effects(found: ClassPredictors) -> list[Block]:
     texts = tuple(f"{sentence(f.message)} {sentence(f.remedy)}" for f in effects.findings)
     said = (
         f"Of {counted(n_tested, 'pair')} of an answer and a covariate, none goes together beyond "
-        "class once all tests are counted (Holm). Small direct effects can hide among "
-        f"{cases_in_words(found)}."
+        "class once all tests are counted (Holm). Small direct effects cannot be ruled out."
     )
     if not n_tested:
         said = (

@@ -322,3 +322,14 @@ def test_one_way_alone_is_printed(posterior: lca.Posterior, data: pd.DataFrame) 
     found = lca.class_outcomes(posterior, data, "cost", kind="numeric", ways="cut", seed=1)  # type: ignore[arg-type]
     assert found.ways == ("cut",)
     assert "    kept " in repr(found)
+
+
+def test_a_way_without_an_estimate_prints_no_nan(
+    posterior: lca.Posterior, data: pd.DataFrame
+) -> None:
+    found = lca.class_outcomes(posterior, data, "cost", kind="numeric", ways=("cut",), seed=1)
+    gone = found.means().assign(median=np.nan)
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(type(found), "means", lambda _: gone)
+        assert "no estimate" in repr(found)
+        assert "nan" not in repr(found)
