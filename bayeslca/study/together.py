@@ -30,7 +30,10 @@ def with_together(
             found = average.co_membership()
             why_not = average.caveat
         except ModelError as error:
-            why_not = f"The number of classes could not be averaged over: {error}"
+            # The section on the number of classes says why; here it is enough to say that.
+            none = content.comparison.table["probability"].isna().all()
+            why = "no number has a probability that is reliable" if none else str(error)
+            why_not = f"The number of classes could not be averaged over: {why}"
             found = content.posterior.co_membership()
     except ModelError as error:
         return replace(content, together_why_not=str(error))
