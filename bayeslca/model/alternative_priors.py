@@ -21,11 +21,11 @@ from bayeslca.exceptions import ModelError, near_names
 from bayeslca.model.answered_together import AnsweredTogether
 from bayeslca.model.constrained_prevalence import ConstrainedPrevalence
 from bayeslca.model.latent_class_model import LatentClassModel
-from bayeslca.model.notation import to_text
 from bayeslca.model.places import Place, ResponseVector
 from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.priors import DEFAULT
-from bayeslca.model.syntax import AllClasses, Dirichlet, Event, Name, Prior, Probability
+from bayeslca.model.statements.notation import to_text
+from bayeslca.model.statements.syntax import AllClasses, Dirichlet, Event, Name, Prior, Probability
 
 if TYPE_CHECKING:
     from bayeslca.model.ties import Form

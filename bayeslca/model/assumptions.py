@@ -25,7 +25,7 @@ from bayeslca.model.places import (
 from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.priors import DEFAULT
-from bayeslca.model.resolved import PrevalencePrior
+from bayeslca.model.statements.resolved import PrevalencePrior
 from bayeslca.model.ties import Tied, VectorPrior, tie
 
 if TYPE_CHECKING:

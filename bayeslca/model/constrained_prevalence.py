@@ -171,6 +171,6 @@ class ConstrainedPrevalence:
         ModelError
             Where the constraints have no form on the real line.
         """
-        from bayeslca.model.pymc_prevalence import add_constrained_prevalence
+        from bayeslca.model.pymc.prevalence import add_constrained_prevalence
 
         return add_constrained_prevalence(self, name, dims)

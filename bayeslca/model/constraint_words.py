@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-from bayeslca.model.resolved import PrevalenceTerm, ResolvedRelations, ResponseTerm, Term
-from bayeslca.model.syntax import Comparison, Expression, Number, Probability
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolved import PrevalenceTerm, ResolvedRelations, ResponseTerm, Term
+from bayeslca.model.statements.syntax import Comparison, Expression, Number, Probability
+from bayeslca.model.statements.vocabulary import Vocabulary
 
 TURNED: dict[Comparison, Comparison] = {"<": ">", ">": "<", "<=": ">=", ">=": "<=", "=": "="}
 MORE: dict[Comparison, str] = {

@@ -12,11 +12,11 @@ from typing import TypeAlias
 
 from bayeslca.model.answered_together import ItemSet
 from bayeslca.model.joint_zeros import joint_zero_links
-from bayeslca.model.notation import statement_error
 from bayeslca.model.places import Link, LinkSign, Place, PrevalenceVector, ResponseVector, Side
-from bayeslca.model.resolved import PrevalenceTerm, ResolvedRelations, ResponseTerm
-from bayeslca.model.statement_errors import Refusal
-from bayeslca.model.syntax import (
+from bayeslca.model.statements.notation import statement_error
+from bayeslca.model.statements.resolved import PrevalenceTerm, ResolvedRelations, ResponseTerm
+from bayeslca.model.statements.statement_errors import Refusal
+from bayeslca.model.statements.syntax import (
     Absolute,
     BinaryOperation,
     Comparison,
@@ -26,7 +26,7 @@ from bayeslca.model.syntax import (
     Probability,
     probabilities,
 )
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.vocabulary import Vocabulary
 
 
 @dataclass(frozen=True, slots=True)

@@ -16,7 +16,7 @@ from bayeslca.model.naming_links import naming_links
 from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.prior_weights import HEAVY, PriorWeight, prior_weights
 from bayeslca.model.priors import DEFAULT
-from bayeslca.model.resolved import PrevalencePrior, ResponsePrior
+from bayeslca.model.statements.resolved import PrevalencePrior, ResponsePrior
 
 if TYPE_CHECKING:
     from bayeslca.model.latent_class_model import LatentClassModel

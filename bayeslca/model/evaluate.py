@@ -16,7 +16,7 @@ import numpy as np
 from bayeslca._typing import Bools, Floats
 from bayeslca.model.joint_answers import joints
 from bayeslca.model.probabilities import response_probability, row_probability
-from bayeslca.model.resolved import (
+from bayeslca.model.statements.resolved import (
     Answer,
     GroupIndex,
     MembershipTerm,
@@ -26,7 +26,7 @@ from bayeslca.model.resolved import (
     ResponseTerm,
     Term,
 )
-from bayeslca.model.syntax import (
+from bayeslca.model.statements.syntax import (
     Absolute,
     BinaryOperation,
     Comparison,

@@ -9,9 +9,9 @@ from collections.abc import Iterator
 from itertools import product
 from typing import TYPE_CHECKING
 
-from bayeslca.model.notation import to_text
 from bayeslca.model.places import ConditionalVector, Place
-from bayeslca.model.syntax import Event, Name, Probability
+from bayeslca.model.statements.notation import to_text
+from bayeslca.model.statements.syntax import Event, Name, Probability
 
 if TYPE_CHECKING:
     from bayeslca.model.latent_class_model import LatentClassModel

@@ -10,9 +10,9 @@ from collections.abc import Collection, Iterator, Sequence
 
 from bayeslca.model.answered_together import ItemSet
 from bayeslca.model.places import ConditionalVector, Link, Place
-from bayeslca.model.resolved import ResponseTerm
-from bayeslca.model.statement_errors import Refusal
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolved import ResponseTerm
+from bayeslca.model.statements.statement_errors import Refusal
+from bayeslca.model.statements.vocabulary import Vocabulary
 
 
 def joint_zero_links(

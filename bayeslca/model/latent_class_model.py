@@ -43,17 +43,17 @@ from bayeslca.model.pooled_prevalence import PooledPrevalence
 from bayeslca.model.position_names import element_names, prevalence_names
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.priors import PriorTable, prior_table
-from bayeslca.model.resolve import ModelStatements, read_statements
-from bayeslca.model.resolved import ResolvedNamingRule
 from bayeslca.model.simulate import Parameters, Simulation, simulate
+from bayeslca.model.statements.resolve import ModelStatements, read_statements
+from bayeslca.model.statements.resolved import ResolvedNamingRule
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.model.sums import refuse_links_on_sums, refuse_priors_on_sums
 from bayeslca.model.symmetry import Symmetry, symmetry
 from bayeslca.model.table import Table
-from bayeslca.model.vocabulary import Vocabulary
 from bayeslca.responses.item import Groups, Item
 
 if TYPE_CHECKING:
-    from bayeslca.assess.maximum_likelihood import MaximumLikelihood
+    from bayeslca.assess.likelihood.maximum_likelihood import MaximumLikelihood
     from bayeslca.model.prior_predictive import PriorPredictive
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.responses import Responses
@@ -410,7 +410,7 @@ class LatentClassModel:
             One start of one's own instead: parameters, or the probability of each class for
             each row of the responses.
         """
-        from bayeslca.assess.maximum_likelihood import maximum_likelihood
+        from bayeslca.assess.likelihood.maximum_likelihood import maximum_likelihood
 
         return maximum_likelihood(
             self, responses, starting_points=starting_points, seed=seed, start=start
@@ -440,7 +440,7 @@ class LatentClassModel:
         into : pymc.Model, optional
             Add to this model instead of a new one.
         """
-        from bayeslca.model.pymc_model import build
+        from bayeslca.model.pymc.model import build
 
         return build(
             self,

@@ -10,9 +10,9 @@ from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import StatementError
 from bayeslca.model.permutations import PermutationGroup
 from bayeslca.model.probabilities import response_probability
-from bayeslca.model.resolved import Answer, ResolvedNamingRule
+from bayeslca.model.statements.resolved import Answer, ResolvedNamingRule
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.model.table import Table
-from bayeslca.model.vocabulary import Vocabulary
 
 
 def check_naming_rules(rules: Sequence[ResolvedNamingRule], vocabulary: Vocabulary) -> None:

@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 
 from bayeslca.exceptions import StatementError
 from bayeslca.model.places import Link, Place, PrevalenceVector, ResponseVector, Vector
-from bayeslca.model.resolved import MembershipTerm, ResolvedNamingRule, ResponsePrior
+from bayeslca.model.statements.resolved import MembershipTerm, ResolvedNamingRule, ResponsePrior
 
 if TYPE_CHECKING:
     from bayeslca.model.latent_class_model import LatentClassModel

@@ -7,8 +7,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca.model.joint_names import conditional_block_names, conditional_element_names
-from bayeslca.model.notation import to_text
-from bayeslca.model.syntax import Event, Name, Probability
+from bayeslca.model.statements.notation import to_text
+from bayeslca.model.statements.syntax import Event, Name, Probability
 
 if TYPE_CHECKING:
     from bayeslca.model.latent_class_model import LatentClassModel

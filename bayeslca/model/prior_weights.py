@@ -11,11 +11,11 @@ import numpy as np
 
 from bayeslca._typing import Floats
 from bayeslca.model.joint_names import conditional_block, conditional_vectors
-from bayeslca.model.notation import to_text
 from bayeslca.model.places import Place, ResponseVector
 from bayeslca.model.position_names import block_names
 from bayeslca.model.priors import DEFAULT
-from bayeslca.model.syntax import Event, Name, Probability
+from bayeslca.model.statements.notation import to_text
+from bayeslca.model.statements.syntax import Event, Name, Probability
 from bayeslca.responses.units import MISSING
 
 if TYPE_CHECKING:

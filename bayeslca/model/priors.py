@@ -10,8 +10,8 @@ import numpy as np
 
 from bayeslca._typing import Floats
 from bayeslca.exceptions import StatementError
-from bayeslca.model.resolved import PrevalencePrior, ResponsePrior
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolved import PrevalencePrior, ResponsePrior
+from bayeslca.model.statements.vocabulary import Vocabulary
 
 _Key = TypeVar("_Key")
 _Stated = TypeVar("_Stated", PrevalencePrior, ResponsePrior)

@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING
 
 from bayeslca.exceptions import StatementError
 from bayeslca.model.places import Link, ResponseVector
-from bayeslca.model.resolved import ResponsePrior
+from bayeslca.model.statements.resolved import ResponsePrior
 
 if TYPE_CHECKING:
     from bayeslca.model.latent_class_model import LatentClassModel

@@ -117,7 +117,7 @@ def fit(
     found = Posterior(model, responses, watch.relabelled(drawn))
     if not drawn.limit_reached:
         return found  # the chains agree: there is one mode
-    from bayeslca.assess.mode_mixing import with_modes_mixed
+    from bayeslca.assess.convergence.mode_mixing import with_modes_mixed
 
     mixed = with_modes_mixed(found, drawn)
     if mixed is drawn:

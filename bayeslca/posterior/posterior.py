@@ -34,13 +34,13 @@ if TYPE_CHECKING:
     import pandas as pd
     from xarray import DataTree
 
-    from bayeslca.assess.co_membership import CoMembership
-    from bayeslca.assess.convergence import Diagnostics
-    from bayeslca.assess.hypotheses import HypothesisTest
-    from bayeslca.assess.influence import Influence
-    from bayeslca.assess.leave_one_unit_out import LeaveOneUnitOut
-    from bayeslca.assess.predictive_checks import PredictiveChecks
-    from bayeslca.assess.prior_sensitivity import PriorSensitivity
+    from bayeslca.assess.convergence.diagnosis import Diagnostics
+    from bayeslca.assess.fit.predictive_checks import PredictiveChecks
+    from bayeslca.assess.hypothesis.hypotheses import HypothesisTest
+    from bayeslca.assess.left_out.influence import Influence
+    from bayeslca.assess.left_out.leave_one_unit_out import LeaveOneUnitOut
+    from bayeslca.assess.priors.prior_sensitivity import PriorSensitivity
+    from bayeslca.assess.together.co_membership import CoMembership
     from bayeslca.posterior.prior_overlap import PriorMarks
 
 Rows = Literal["cases", "patterns"]
@@ -341,7 +341,7 @@ class Posterior:
         StatementError
             When a statement claims nothing, or the model gives it no meaning.
         """
-        from bayeslca.assess.hypotheses import hypothesis_test
+        from bayeslca.assess.hypothesis.hypotheses import hypothesis_test
 
         return hypothesis_test(self, *statements, seed=seed)
 
@@ -362,7 +362,7 @@ class Posterior:
         ModelError
             When the responses have no units, or the prevalences of units are constrained.
         """
-        from bayeslca.assess.leave_one_unit_out import leave_one_unit_out
+        from bayeslca.assess.left_out.leave_one_unit_out import leave_one_unit_out
 
         return leave_one_unit_out(self, refit=refit, seed=seed)
 
@@ -391,7 +391,7 @@ class Posterior:
         progress : callable, optional
             Called with what is being done, in words.
         """
-        from bayeslca.assess.prior_sensitivity import prior_sensitivity
+        from bayeslca.assess.priors.prior_sensitivity import prior_sensitivity
 
         return prior_sensitivity(
             self,
@@ -436,7 +436,7 @@ class Posterior:
         progress : bool or callable
             Of the calibration: called with studies done and studies to do.
         """
-        from bayeslca.assess.predictive_checks import predictive_checks
+        from bayeslca.assess.fit.predictive_checks import predictive_checks
 
         return predictive_checks(
             self,
@@ -461,7 +461,7 @@ class Posterior:
         ModelError
             When there are too many distinct response patterns.
         """
-        from bayeslca.assess.co_membership import co_membership
+        from bayeslca.assess.together.co_membership import co_membership
 
         return co_membership(self, seed=seed)
 
@@ -486,7 +486,7 @@ class Posterior:
         progress : bool or callable
             Of the refits.
         """
-        from bayeslca.assess.influence import influence
+        from bayeslca.assess.left_out.influence import influence
 
         return influence(self, exact=exact, seed=seed, threads=threads, progress=progress)
 
@@ -537,7 +537,7 @@ class Posterior:
 
     @cached_property
     def _diagnostics(self) -> Diagnostics:
-        from bayeslca.assess.convergence import diagnose
+        from bayeslca.assess.convergence.diagnosis import diagnose
 
         return diagnose(self)
 

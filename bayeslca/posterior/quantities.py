@@ -23,8 +23,8 @@ from bayeslca.model.evaluate import (
     varies_by_group,
 )
 from bayeslca.model.prior_draws import draw_prior
-from bayeslca.model.resolve import resolve
-from bayeslca.model.resolved import ResolvedQuantity
+from bayeslca.model.statements.resolve import resolve
+from bayeslca.model.statements.resolved import ResolvedQuantity
 from bayeslca.posterior.summary import SUMMARY_COLUMNS, Quantities, check_interval
 
 if TYPE_CHECKING:

@@ -10,21 +10,21 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.co_membership import CoMembership
-    from bayeslca.assess.compare import Comparison
-    from bayeslca.assess.counts_under_other_priors import CountsUnderOtherPriors
-    from bayeslca.assess.criteria_beside import CriteriaBeside
-    from bayeslca.assess.hypotheses import HypothesisTest
-    from bayeslca.assess.influence import Influence
-    from bayeslca.assess.likelihood_ratio import LikelihoodRatioTest
-    from bayeslca.assess.predictive_checks import PredictiveChecks
-    from bayeslca.assess.prior_sensitivity import PriorSensitivity
-    from bayeslca.assess.rivals import Rivals
+    from bayeslca.assess.class_count.counts_under_other_priors import CountsUnderOtherPriors
+    from bayeslca.assess.comparison.compare import Comparison
+    from bayeslca.assess.fit.predictive_checks import PredictiveChecks
+    from bayeslca.assess.hypothesis.hypotheses import HypothesisTest
+    from bayeslca.assess.hypothesis.rivals import Rivals
+    from bayeslca.assess.left_out.influence import Influence
+    from bayeslca.assess.likelihood.criteria_beside import CriteriaBeside
+    from bayeslca.assess.likelihood.likelihood_ratio import LikelihoodRatioTest
+    from bayeslca.assess.priors.prior_sensitivity import PriorSensitivity
+    from bayeslca.assess.together.co_membership import CoMembership
     from bayeslca.posterior.posterior import Posterior
-    from bayeslca.relate.class_outcomes import ClassOutcomes
+    from bayeslca.relate.outcomes.class_outcomes import ClassOutcomes
     from bayeslca.relate.placing import PlacingRule
-    from bayeslca.relate.predictors import ClassPredictors
-    from bayeslca.relate.weighted_posterior import WeightedPosterior
+    from bayeslca.relate.predictors.class_predictors import ClassPredictors
+    from bayeslca.relate.weighted.weighted_posterior import WeightedPosterior
     from bayeslca.responses.responses import Responses
 
 
@@ -70,7 +70,7 @@ class UnitComparison:
     Attributes
     ----------
     table : DataFrame
-        See `bayeslca.assess.leave_one_unit_out.compare_units`.
+        See `bayeslca.assess.left_out.leave_one_unit_out.compare_units`.
     posteriors : mapping of str to Posterior
         By the rows' names: "pooled", "each alone", "all as one".
     """

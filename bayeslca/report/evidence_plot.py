@@ -14,7 +14,7 @@ from bayeslca.report.wording import percent
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from bayeslca.assess.class_counts import ClassCounts
+    from bayeslca.assess.class_count.class_counts import ClassCounts
 
 
 def plot_count_probabilities(counts: ClassCounts, *, ax: Axes | None = None) -> Axes:

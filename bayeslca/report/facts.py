@@ -16,7 +16,7 @@ from bayeslca.responses.test_results import look_like_tests
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.convergence import Diagnostics
+    from bayeslca.assess.convergence.diagnosis import Diagnostics
     from bayeslca.model.prior_predictive import PriorPredictive
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.units import Units

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.assess.predictive_words import DOUBTFUL, overall_rows
+from bayeslca.assess.fit.predictive_words import DOUBTFUL, overall_rows
 from bayeslca.report.axes import new_axes
 from bayeslca.report.palette import FAINT, INK, class_colour, ink_on, plain
 from bayeslca.report.wording import decimal, level
@@ -12,7 +12,7 @@ from bayeslca.report.wording import decimal, level
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from bayeslca.assess.predictive_checks import PredictiveChecks
+    from bayeslca.assess.fit.predictive_checks import PredictiveChecks
 
 STRONGEST = 4.0
 """Pair residual at which the colour is as strong as it gets."""

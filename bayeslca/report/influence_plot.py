@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from bayeslca.assess.influence_words import INFLUENTIAL, SURPRISING, influential, records
+from bayeslca.assess.left_out.influence_words import INFLUENTIAL, SURPRISING, influential, records
 from bayeslca.report.axes import new_axes
 from bayeslca.report.palette import FAINT, INK, class_colour
 from bayeslca.report.wording import decimal
@@ -14,7 +14,7 @@ from bayeslca.report.wording import decimal
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from bayeslca.assess.influence import Influence
+    from bayeslca.assess.left_out.influence import Influence
 
 NAMED = 5
 """Patterns that are named by their row: those that stand out, or else the furthest out."""

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from bayeslca.relate.outcome_words import MEAN_WORDS, WAY_WORDS
+from bayeslca.relate.outcomes.words import MEAN_WORDS, WAY_WORDS
 from bayeslca.report.axes import LABEL_WIDTH, legend_above, new_axes, percent_axis, quiet
 from bayeslca.report.figures import WIDTH
 from bayeslca.report.palette import FAINT, INK, class_colour, class_marker, plain
@@ -15,7 +15,7 @@ from bayeslca.report.wording import level
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from bayeslca.relate.class_outcomes import ClassOutcomes
+    from bayeslca.relate.outcomes.class_outcomes import ClassOutcomes
 
 SPREAD = 0.16
 """Distance between the ways of one class, in rows."""

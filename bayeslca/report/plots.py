@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from bayeslca.assess.comparison_words import OWN
+from bayeslca.assess.comparison.words import OWN
 from bayeslca.report.axes import LABEL_WIDTH, legend_above, new_axes, percent_axis, quiet
 from bayeslca.report.ordered_plot import chosen_items, plot_ordered_item
 from bayeslca.report.palette import (
@@ -31,7 +31,7 @@ if TYPE_CHECKING:
     import pandas as pd
     from matplotlib.axes import Axes
 
-    from bayeslca.assess.compare import Comparison
+    from bayeslca.assess.comparison.compare import Comparison
     from bayeslca.posterior.posterior import Posterior
     from bayeslca.responses.item import Item
 

@@ -13,7 +13,7 @@ from bayeslca.report.wording import called, level
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from bayeslca.relate.predictors import ClassPredictors, Way
+    from bayeslca.relate.predictors.class_predictors import ClassPredictors, Way
 
 __all__ = ["plot_class_probabilities"]
 

@@ -12,7 +12,7 @@ from bayeslca.report.palette import INK, PRIOR_MARK, class_colour, plain
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from bayeslca.assess.prior_sensitivity import PriorSensitivity
+    from bayeslca.assess.priors.prior_sensitivity import PriorSensitivity
 
 ROW = 0.62
 """Height of a row in inches."""

@@ -22,7 +22,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.model.prior_predictive import PriorPredictive
-    from bayeslca.relate.weighted_posterior import WeightedPosterior
+    from bayeslca.relate.weighted.weighted_posterior import WeightedPosterior
     from bayeslca.report.content import ReportContent
 
 

@@ -7,14 +7,14 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayeslca._typing import Floats, Ints
-from bayeslca.assess.co_membership import set_name
+from bayeslca.assess.together.co_membership import set_name
 from bayeslca.report.axes import new_axes
 from bayeslca.report.palette import INK, shade
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from bayeslca.assess.co_membership import CoMembership
+    from bayeslca.assess.together.co_membership import CoMembership
 
 MOST_SHOWN = 240
 """Cases along a side; of more, as many are shown, evenly spaced."""

@@ -24,7 +24,7 @@ from bayeslca.exceptions import SamplingError
 from bayeslca.findings import Finding
 from bayeslca.model.prior_density import log_prior
 from bayeslca.model.probabilities import log_unit_likelihood
-from bayeslca.model.pymc_model import Parts, build
+from bayeslca.model.pymc.model import Parts, build
 from bayeslca.model.symmetry import Symmetry
 from bayeslca.sampling.draws import Draws
 from bayeslca.sampling.nuts_starts import starting_values

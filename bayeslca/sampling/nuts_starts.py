@@ -15,7 +15,7 @@ from bayeslca._typing import Floats
 from bayeslca.exceptions import SamplingError
 from bayeslca.model.prior_density import log_prior
 from bayeslca.model.probabilities import draw_elements
-from bayeslca.model.pymc_model import Parts
+from bayeslca.model.pymc.model import Parts
 from bayeslca.model.symmetry import Symmetry, element_map
 from bayeslca.sampling.chain import make_task
 from bayeslca.sampling.starting_points import StartingPoints, find_starting_points

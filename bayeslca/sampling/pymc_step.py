@@ -17,7 +17,7 @@ from pytensor.graph.traversal import ancestors
 from bayeslca._typing import Floats
 from bayeslca.exceptions import ModelError, SamplingError
 from bayeslca.model.prevalence import DirichletPrevalence
-from bayeslca.model.pymc_model import Parts
+from bayeslca.model.pymc.model import Parts
 from bayeslca.sampling.gibbs import sweep
 from bayeslca.sampling.layout import arrange, workspace
 

@@ -8,8 +8,8 @@ from dataclasses import fields
 from pathlib import Path
 from typing import Any
 
-from bayeslca.model.resolve import resolve
-from bayeslca.model.resolved import ResolvedRelations
+from bayeslca.model.statements.resolve import resolve
+from bayeslca.model.statements.resolved import ResolvedRelations
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.posterior.quantities import Quantity
 from bayeslca.study.results import open_results

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from bayeslca.assess.folds import refuse_folds
+from bayeslca.assess.left_out.folds import refuse_folds
 from bayeslca.exceptions import ModelError, StudyError
 
 if TYPE_CHECKING:

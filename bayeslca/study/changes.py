@@ -12,7 +12,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from bayeslca.posterior.posterior import Posterior
-    from bayeslca.relate.weighted_posterior import WeightedPosterior
+    from bayeslca.relate.weighted.weighted_posterior import WeightedPosterior
 
 KEYS = ["group", "latent_class", "item", "category"]
 

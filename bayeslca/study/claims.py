@@ -7,13 +7,13 @@ from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from bayeslca.exceptions import BayesLCAError, StudyError
-from bayeslca.model.resolve import resolve
-from bayeslca.model.resolved import ResolvedQuantity, ResolvedRelations
+from bayeslca.model.statements.resolve import resolve
+from bayeslca.model.statements.resolved import ResolvedQuantity, ResolvedRelations
 from bayeslca.report.content import Claim, ReportContent
 
 if TYPE_CHECKING:
-    from bayeslca.assess.hypotheses import HypothesisTest
-    from bayeslca.assess.rivals import Rivals
+    from bayeslca.assess.hypothesis.hypotheses import HypothesisTest
+    from bayeslca.assess.hypothesis.rivals import Rivals
     from bayeslca.study.load import Study
 
 
@@ -51,7 +51,7 @@ def check_theory(study: Study) -> None:
 
 def with_theory(study: Study, content: ReportContent, say: Callable[[str], None]) -> ReportContent:
     """Test the study's hypotheses and compute its quantities."""
-    from bayeslca.assess.rivals import compare_rivals
+    from bayeslca.assess.hypothesis.rivals import compare_rivals
 
     say("Testing the hypotheses")
     posterior = content.posterior

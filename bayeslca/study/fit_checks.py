@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 from bayeslca.report.content import ReportContent
 
 if TYPE_CHECKING:
-    from bayeslca.assess.predictive_checks import PredictiveChecks
+    from bayeslca.assess.fit.predictive_checks import PredictiveChecks
     from bayeslca.study.load import Study
 
 OF_OTHERS = 500

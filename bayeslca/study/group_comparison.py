@@ -36,7 +36,7 @@ def with_group_comparison(
     study: Study, content: ReportContent, steps: Steps, progress: JobProgress
 ) -> ReportContent:
     """Fit and compare both models, if the study asks for it."""
-    from bayeslca.assess.compare import compare
+    from bayeslca.assess.comparison.compare import compare
 
     if not study.said.groups.compare_free:
         return content

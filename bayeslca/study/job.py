@@ -14,8 +14,8 @@ import numpy as np
 
 import bayeslca
 from bayeslca.posterior.storage import save
-from bayeslca.relate.predictor_words import headlines
-from bayeslca.relate.weighted_words import posterior_in_words
+from bayeslca.relate.predictors.words import headlines
+from bayeslca.relate.weighted.words import posterior_in_words
 from bayeslca.report.content import ReportContent
 from bayeslca.report.sections.outcomes import outcome_lead
 from bayeslca.report.sections.theory import outcome_in_words
@@ -38,7 +38,7 @@ from bayeslca.study.steps import OWN_FIT, UNIT_FITS, Steps, count_fit, step_key
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.compare import Comparison
+    from bayeslca.assess.comparison.compare import Comparison
     from bayeslca.posterior.posterior import Posterior
 
 
@@ -153,7 +153,7 @@ def _own_posterior(study: Study, steps: Steps, progress: JobProgress) -> Posteri
 def _compared(
     study: Study, steps: Steps, own: Posterior | None, progress: JobProgress
 ) -> Comparison | None:
-    from bayeslca.assess.compare import class_count_model, compare_class_counts
+    from bayeslca.assess.comparison.compare import class_count_model, compare_class_counts
 
     counts = study.said.class_count.compare
     if not counts:

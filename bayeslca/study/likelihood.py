@@ -9,8 +9,8 @@ from typing import TYPE_CHECKING
 from bayeslca.report.content import ReportContent
 
 if TYPE_CHECKING:
-    from bayeslca.assess.criteria_beside import CriteriaBeside
-    from bayeslca.assess.likelihood_ratio import LikelihoodRatioTest
+    from bayeslca.assess.likelihood.criteria_beside import CriteriaBeside
+    from bayeslca.assess.likelihood.likelihood_ratio import LikelihoodRatioTest
     from bayeslca.study.load import Study
 
 Say = Callable[[str], None]
@@ -24,8 +24,8 @@ def with_maximum_likelihood(study: Study, content: ReportContent, say: Say) -> R
     ModelError
         When no model of the study can be fitted so.
     """
-    from bayeslca.assess.compare import compare
-    from bayeslca.assess.criteria_beside import criteria_beside
+    from bayeslca.assess.comparison.compare import compare
+    from bayeslca.assess.likelihood.criteria_beside import criteria_beside
 
     said, seed = study.said.maximum_likelihood, study.said.sampling.seed
     if said is None:
@@ -51,7 +51,7 @@ def _tests(
 
     Ctrl-C ends a test with the tables that are done, and leaves out the tests after it.
     """
-    from bayeslca.assess.likelihood_ratio import likelihood_ratio_test
+    from bayeslca.assess.likelihood.likelihood_ratio import likelihood_ratio_test
 
     found: list[LikelihoodRatioTest] = []
     counts = sorted(name for name in criteria.fits if isinstance(name, int))

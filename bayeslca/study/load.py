@@ -15,8 +15,8 @@ from pydantic import BaseModel, ValidationError
 from bayeslca.exceptions import ModelError, StatementError, StudyError, near_names
 from bayeslca.model.answered_together import AnsweredTogether
 from bayeslca.model.latent_class_model import LatentClassModel
-from bayeslca.model.resolve import read_statements
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolve import read_statements
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.responses.item import ItemSpec
 from bayeslca.responses.responses import Responses
 from bayeslca.study.schema import SourcedStatement, StudyFile

@@ -30,9 +30,9 @@ def check_outcomes(study: Study) -> list[Finding]:
     ------
     StudyError
     """
-    from bayeslca.relate.outcome_column import read_outcome
-    from bayeslca.relate.outcome_tables import read_order
-    from bayeslca.relate.outcome_work import read_covariates
+    from bayeslca.relate.outcomes.column import read_outcome
+    from bayeslca.relate.outcomes.tables import read_order
+    from bayeslca.relate.outcomes.work import read_covariates
 
     findings: list[Finding] = []
     for said in study.said.outcomes:
@@ -70,7 +70,7 @@ def with_outcomes(
     study: Study, content: ReportContent, say: Callable[[str], None]
 ) -> ReportContent:
     """Relate the study's outcomes to the classes that the answer rests on."""
-    from bayeslca.relate.class_outcomes import class_outcomes
+    from bayeslca.relate.outcomes.class_outcomes import class_outcomes
 
     if not study.said.outcomes or content.posterior.model.n_classes == 1:
         return content

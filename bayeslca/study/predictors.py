@@ -8,8 +8,8 @@ from typing import TYPE_CHECKING
 
 from bayeslca.exceptions import BayesLCAError, StudyError, near_names
 from bayeslca.relate.case_table import CaseTable, Kind, read_case_table
-from bayeslca.relate.covariates import Design, design_of
-from bayeslca.relate.formula import read_formula
+from bayeslca.relate.predictors.covariates import Design, design_of
+from bayeslca.relate.predictors.formula import read_formula
 from bayeslca.report.content import ReportContent
 from bayeslca.study.outcomes import refuse_one_class
 
@@ -94,7 +94,7 @@ def with_predictors(
     said = study.said.predictors
     if said is None or content.posterior.model.n_classes == 1:
         return content
-    from bayeslca.relate.predictors import class_predictors
+    from bayeslca.relate.predictors.class_predictors import class_predictors
 
     found = class_predictors(
         content.posterior,

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from bayeslca.exceptions import StatementError
 from bayeslca.model.elicitation import beta_from_most_likely, describe_beta
-from bayeslca.model.notation import parse
-from bayeslca.model.syntax import Prior
+from bayeslca.model.statements.notation import parse
+from bayeslca.model.statements.syntax import Prior
 
 ANY_TARGET = "P(item=answer | class)"
 

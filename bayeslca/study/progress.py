@@ -9,11 +9,11 @@ from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
-from bayeslca.assess.comparison_progress import left_in_words
+from bayeslca.assess.comparison.progress import left_in_words
 from bayeslca.sampling.progress import Progress, in_words
 
 if TYPE_CHECKING:
-    from bayeslca.assess.comparison_progress import FitProgress
+    from bayeslca.assess.comparison.progress import FitProgress
 
 Tell = Callable[[str, float, str], None]
 """Takes what is done now, how much of the whole is done (0 to 1), and figures."""

@@ -10,7 +10,7 @@ from bayeslca.report.content import ReportContent
 from bayeslca.study.changes import weighted_changes
 
 if TYPE_CHECKING:
-    from bayeslca.relate.weighted_posterior import WeightedPosterior
+    from bayeslca.relate.weighted.weighted_posterior import WeightedPosterior
     from bayeslca.study.load import Study
     from bayeslca.study.progress import JobProgress
     from bayeslca.study.steps import Steps
@@ -22,7 +22,7 @@ def with_sample_design(
     """Fit pseudo-samples of the model that the answer rests on, where the sample has a design."""
     if study.responses.design is None:
         return content
-    from bayeslca.relate.sample_weighted import sample_weighted
+    from bayeslca.relate.weighted.sample_weighted import sample_weighted
 
     said = study.said.sampling
     weighted = sample_weighted(

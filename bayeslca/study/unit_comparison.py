@@ -44,7 +44,7 @@ def with_unit_comparison(
     study: Study, content: ReportContent, steps: Steps, progress: JobProgress
 ) -> ReportContent:
     """Fit and compare the models by leaving one unit out at a time, if the study asks for it."""
-    from bayeslca.assess.leave_one_unit_out import compare_units
+    from bayeslca.assess.left_out.leave_one_unit_out import compare_units
 
     if not study.said.groups.compare_pooled or content.posterior.model.n_classes == 1:
         return content

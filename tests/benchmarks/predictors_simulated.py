@@ -21,7 +21,7 @@ import pandas as pd
 import bayeslca as lca
 from bayeslca.exceptions import ModelError
 from bayeslca.relate.error_matrix import error_matrix
-from bayeslca.relate.three_step_regression import three_step_regression
+from bayeslca.relate.predictors.three_steps import three_step_regression
 
 CLASSES, SLOPE = ("high", "low"), 1.0
 CASES = (50, 118, 500)

@@ -18,10 +18,10 @@ import pytest
 from scipy.special import logsumexp
 
 from bayeslca import Item, LatentClassModel, Responses
-from bayeslca.assess.em import climb
-from bayeslca.assess.em_layout import AllBlocks
-from bayeslca.assess.em_runs import scattered
-from bayeslca.assess.likelihood_ratio import likelihood_ratio_test
+from bayeslca.assess.likelihood.em import climb
+from bayeslca.assess.likelihood.em_layout import AllBlocks
+from bayeslca.assess.likelihood.em_runs import scattered
+from bayeslca.assess.likelihood.likelihood_ratio import likelihood_ratio_test
 from bayeslca.model.compile import compile_units
 
 SEED = 20261213

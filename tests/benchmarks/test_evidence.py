@@ -11,7 +11,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess.class_counts import class_counts
+from bayeslca.assess.class_count.class_counts import class_counts
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.responses.responses import Responses
 

@@ -17,11 +17,11 @@ import numpy as np
 import pandas as pd
 
 import bayeslca as lca
-from bayeslca.assess.em_layout import AllBlocks
-from bayeslca.relate.design_variance import replicate_factors
-from bayeslca.relate.pseudo_samples import rounded
-from bayeslca.relate.sample_weighted import fit_counts
-from bayeslca.relate.weighted_score import WeightedUnits
+from bayeslca.assess.likelihood.em_layout import AllBlocks
+from bayeslca.relate.weighted.design_variance import replicate_factors
+from bayeslca.relate.weighted.pseudo_samples import rounded
+from bayeslca.relate.weighted.sample_weighted import fit_counts
+from bayeslca.relate.weighted.weighted_score import WeightedUnits
 
 SEED = 20_261_201
 ITEMS = ["fees", "accounts", "spare_parts", "mechanic", "fenced", "meets"]

@@ -223,9 +223,12 @@ def test_every_key_of_a_study_file_is_explained() -> None:
 def test_every_finding_about_model_and_sampling_is_explained() -> None:
     text = "".join(page.read_text(encoding="utf-8") for page in PAGES)
     sources = [
-        "model/cautions.py", "sampling/nuts.py", "sampling/relabel.py", "assess/convergence.py",
-        "assess/comparison.py", "relate/outcome_words.py", "relate/class_outcomes.py",
-        "relate/outcome_column.py", "relate/outcome_work.py", "assess/influence_words.py",
+        "model/cautions.py", "sampling/nuts.py", "sampling/relabel.py",
+        "assess/convergence/diagnosis.py",
+        "assess/comparison/comparison.py", "relate/outcomes/words.py",
+        "relate/outcomes/class_outcomes.py",
+        "relate/outcomes/column.py", "relate/outcomes/work.py",
+        "assess/left_out/influence_words.py",
     ]  # fmt: skip
     kinds = {
         kind

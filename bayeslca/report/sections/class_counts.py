@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.assess.comparison_words import verdict_in_words
-from bayeslca.assess.counts_under_other_priors import AS_STATED
+from bayeslca.assess.class_count.counts_under_other_priors import AS_STATED
+from bayeslca.assess.comparison.words import verdict_in_words
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -31,7 +31,7 @@ from bayeslca.report.wording import (
 )
 
 if TYPE_CHECKING:
-    from bayeslca.assess.compare import Comparison
+    from bayeslca.assess.comparison.compare import Comparison
 
 ANCHOR, HEADING = "class-counts", "How many classes the data support"
 

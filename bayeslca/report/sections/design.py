@@ -6,8 +6,8 @@ from collections.abc import Mapping
 from dataclasses import replace
 from typing import Any
 
-from bayeslca.relate.weighted_posterior import WeightedPosterior
-from bayeslca.relate.weighted_words import posterior_in_words
+from bayeslca.relate.weighted.weighted_posterior import WeightedPosterior
+from bayeslca.relate.weighted.words import posterior_in_words
 from bayeslca.report.blocks import Block, Bullets, Head, PageTable, Paragraph, Section
 from bayeslca.report.facts import Facts
 from bayeslca.report.references import REFERENCES

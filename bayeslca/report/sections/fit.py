@@ -5,8 +5,8 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.assess.predictive_tables import CHECKS
-from bayeslca.assess.predictive_words import (
+from bayeslca.assess.fit.predictive_tables import CHECKS
+from bayeslca.assess.fit.predictive_words import (
     furthest_pairs,
     judged_p,
     overall_rows,
@@ -42,7 +42,7 @@ from bayeslca.report.wording import (
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.predictive_checks import PredictiveChecks
+    from bayeslca.assess.fit.predictive_checks import PredictiveChecks
 
 ANCHOR, HEADING = "fit", "Does the model fit"
 MOST_SHOWN = 10

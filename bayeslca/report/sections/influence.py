@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.assess.influence_words import influential, records, rows_in_words
+from bayeslca.assess.left_out.influence_words import influential, records, rows_in_words
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -22,7 +22,7 @@ from bayeslca.report.wording import called, decimal, listed, sentence, whole
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.influence import Influence
+    from bayeslca.assess.left_out.influence import Influence
     from bayeslca.report.content import ReportContent
 
 ANCHOR, HEADING = "influence", "Cases that stand out"

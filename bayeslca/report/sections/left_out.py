@@ -11,7 +11,7 @@ from bayeslca.report.wording import counted, decimal, sentence
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.compare import Comparison
+    from bayeslca.assess.comparison.compare import Comparison
     from bayeslca.report.content import ReportContent
 
 

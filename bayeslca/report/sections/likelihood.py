@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import fields
 from typing import TYPE_CHECKING
 
-from bayeslca.assess.criteria_beside import SHOWN
-from bayeslca.assess.fit_statistics import Criteria
+from bayeslca.assess.likelihood.criteria_beside import SHOWN
+from bayeslca.assess.likelihood.fit_statistics import Criteria
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -30,9 +30,9 @@ from bayeslca.report.wording import (
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.criteria_beside import CriteriaBeside
-    from bayeslca.assess.likelihood_ratio import LikelihoodRatioTest
-    from bayeslca.assess.maximum_likelihood import MaximumLikelihood
+    from bayeslca.assess.likelihood.criteria_beside import CriteriaBeside
+    from bayeslca.assess.likelihood.likelihood_ratio import LikelihoodRatioTest
+    from bayeslca.assess.likelihood.maximum_likelihood import MaximumLikelihood
     from bayeslca.report.content import ReportContent
 
 ANCHOR, HEADING = "maximum-likelihood", "What maximum likelihood says"
@@ -64,7 +64,7 @@ def likelihood_tables(content: ReportContent) -> dict[str, tuple[str, pd.DataFra
     """Return the tables for files, by name, each with what it holds."""
     import pandas as pd
 
-    from bayeslca.assess.fit_statistics import criteria_table
+    from bayeslca.assess.likelihood.fit_statistics import criteria_table
 
     criteria = content.criteria
     if criteria is None:

@@ -25,7 +25,7 @@ from bayeslca.report.wording import (
 )
 
 if TYPE_CHECKING:
-    from bayeslca.assess.comparison import Comparison
+    from bayeslca.assess.comparison.comparison import Comparison
 
 ANCHOR, HEADING = "methods", "A methods paragraph to paste"
 

@@ -5,9 +5,9 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.assess.predictive_words import records
-from bayeslca.relate.outcome_quantities import EFFECTS
-from bayeslca.relate.outcome_words import MEAN_WORDS, WAY_WORDS
+from bayeslca.assess.fit.predictive_words import records
+from bayeslca.relate.outcomes.quantities import EFFECTS
+from bayeslca.relate.outcomes.words import MEAN_WORDS, WAY_WORDS
 from bayeslca.report.blocks import (
     Block,
     Head,
@@ -25,7 +25,7 @@ from bayeslca.report.wording import (
 )
 
 if TYPE_CHECKING:
-    from bayeslca.relate.class_outcomes import ClassOutcomes
+    from bayeslca.relate.outcomes.class_outcomes import ClassOutcomes
 
 
 def value_text(found: ClassOutcomes, row: dict[str, Any]) -> str:

@@ -7,10 +7,10 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from bayeslca.assess.predictive_words import records
+from bayeslca.assess.fit.predictive_words import records
 from bayeslca.posterior.tables import OVERALL
-from bayeslca.relate.outcome_tables import likeliest_order
-from bayeslca.relate.outcome_words import MEAN_WORDS, WAY_WORDS, priors_in_words
+from bayeslca.relate.outcomes.tables import likeliest_order
+from bayeslca.relate.outcomes.words import MEAN_WORDS, WAY_WORDS, priors_in_words
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -53,7 +53,7 @@ from bayeslca.report.wording import (
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.relate.class_outcomes import ClassOutcomes
+    from bayeslca.relate.outcomes.class_outcomes import ClassOutcomes
     from bayeslca.report.content import ReportContent
     from bayeslca.report.facts import Facts
 

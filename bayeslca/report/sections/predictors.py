@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.relate.predictor_words import (
+from bayeslca.relate.predictors.words import (
     CORRECTION_WORDS,
     WAY_WORDS,
     cases_in_words,
@@ -40,7 +40,7 @@ from bayeslca.report.wording import (
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.relate.predictors import ClassPredictors
+    from bayeslca.relate.predictors.class_predictors import ClassPredictors
 
 ANCHOR, HEADING = "predictors", "What predicts class"
 MOST_PICTURES = 6

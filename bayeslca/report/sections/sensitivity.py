@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.assess.grades import bayes_factor_text
-from bayeslca.assess.prior_words import best_known, called
+from bayeslca.assess.hypothesis.grades import bayes_factor_text
+from bayeslca.assess.priors.words import best_known, called
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -27,7 +27,7 @@ from bayeslca.report.wording import NOTHING, decimal, percent, sentence, signifi
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.prior_sensitivity import PriorSensitivity
+    from bayeslca.assess.priors.prior_sensitivity import PriorSensitivity
 
 ANCHOR, HEADING = "prior-sensitivity", "What the priors did"
 FAR_MARK, UNSURE_MARK = "!", "?"

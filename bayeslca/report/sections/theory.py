@@ -5,9 +5,9 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
-from bayeslca.assess.grades import SOURCE, bayes_factor_text
-from bayeslca.assess.hypotheses import HypothesisTest
-from bayeslca.assess.rivals import Rivals
+from bayeslca.assess.hypothesis.grades import SOURCE, bayes_factor_text
+from bayeslca.assess.hypothesis.hypotheses import HypothesisTest
+from bayeslca.assess.hypothesis.rivals import Rivals
 from bayeslca.report.blocks import (
     Block,
     Bullets,

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import TYPE_CHECKING, Any
 
-from bayeslca.assess.co_membership import set_name
+from bayeslca.assess.together.co_membership import set_name
 from bayeslca.report.blocks import (
     Block,
     Bullets,
@@ -24,7 +24,7 @@ from bayeslca.report.wording import NOTHING, decimal, listed, percent, sentence,
 if TYPE_CHECKING:
     import pandas as pd
 
-    from bayeslca.assess.co_membership import CoMembership
+    from bayeslca.assess.together.co_membership import CoMembership
 
 ANCHOR, HEADING = "together", "Which cases go together whatever the number of classes"
 SIZE = (3.4, 4.1)

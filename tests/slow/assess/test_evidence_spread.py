@@ -15,9 +15,9 @@ import pandas as pd
 import pytest
 from scipy.stats import chi2
 
-from bayeslca.assess.class_counts import class_counts
-from bayeslca.assess.evidence import log_evidence_of_counts
-from bayeslca.assess.unknown_count import sample_class_count
+from bayeslca.assess.class_count.class_counts import class_counts
+from bayeslca.assess.class_count.unknown_count import sample_class_count
+from bayeslca.assess.evidence.log_evidence import log_evidence_of_counts
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses

@@ -13,8 +13,8 @@ import pandas as pd
 import pytest
 from scipy.special import logsumexp
 
-from bayeslca.assess.exact_loo import leave_one_out
-from bayeslca.assess.information_criteria import mcse_of_mean
+from bayeslca.assess.comparison.information_criteria import mcse_of_mean
+from bayeslca.assess.left_out.exact_loo import leave_one_out
 from bayeslca.model.compile import compile_units
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_unit_likelihood

@@ -11,7 +11,7 @@ import numpy as np
 from scipy.stats import binom
 
 from bayeslca import Item, LatentClassModel, Responses
-from bayeslca.assess.likelihood_ratio import likelihood_ratio_test
+from bayeslca.assess.likelihood.likelihood_ratio import likelihood_ratio_test
 
 SEED = 20261212
 TABLES = 300

@@ -8,7 +8,7 @@ from arviz_stats.base import array_stats
 
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.pooled_prevalence import spread_of
-from bayeslca.model.pymc_model import Parts
+from bayeslca.model.pymc.model import Parts
 from bayeslca.responses.item import Groups, Item
 
 pm = pytest.importorskip("pymc")

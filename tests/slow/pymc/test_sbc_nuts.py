@@ -14,7 +14,7 @@ from scipy.stats import kstest
 from bayeslca._compat import as_tree
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import draw_elements, log_unit_likelihood
-from bayeslca.model.pymc_model import Names, Parts, build_from_table
+from bayeslca.model.pymc.model import Names, Parts, build_from_table
 from bayeslca.responses.item import Item
 from bayeslca.responses.units import Units
 

@@ -11,7 +11,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess.compare import Comparison, compare_class_counts
+from bayeslca.assess.comparison.compare import Comparison, compare_class_counts
 from bayeslca.responses.responses import Responses
 
 SEED = 20261205

@@ -14,11 +14,11 @@ import pytest
 from scipy.special import gammaln
 
 from bayeslca._typing import Ints
-from bayeslca.assess.co_membership import CoMembership
-from bayeslca.assess.compare import compare_class_counts
-from bayeslca.assess.comparison import Comparison
-from bayeslca.assess.partition import variation_of_information
-from bayeslca.assess.unknown_count import sample_class_count
+from bayeslca.assess.class_count.unknown_count import sample_class_count
+from bayeslca.assess.comparison.compare import compare_class_counts
+from bayeslca.assess.comparison.comparison import Comparison
+from bayeslca.assess.together.co_membership import CoMembership
+from bayeslca.assess.together.partition import variation_of_information
 from bayeslca.responses.responses import Responses
 
 SEED = 20261205

@@ -10,9 +10,9 @@ import pandas as pd
 import pytest
 from scipy.special import gammaln
 
-from bayeslca.assess.compare import compare, compare_class_counts
-from bayeslca.assess.comparison import Comparison
-from bayeslca.assess.counts_under_other_priors import AS_STATED, CountsUnderOtherPriors
+from bayeslca.assess.class_count.counts_under_other_priors import AS_STATED, CountsUnderOtherPriors
+from bayeslca.assess.comparison.compare import compare, compare_class_counts
+from bayeslca.assess.comparison.comparison import Comparison
 from bayeslca.exceptions import ModelError
 from bayeslca.responses.responses import Responses
 

@@ -16,11 +16,11 @@ import pandas as pd
 import pytest
 from scipy.special import betaln, gammaln
 
-from bayeslca.assess import mode_mixing
-from bayeslca.assess.empty_class_ladder import can_be_joined, ladder_step, rung_of
-from bayeslca.assess.evidence import log_evidence, log_evidence_of_counts
-from bayeslca.assess.proposal import Labels
-from bayeslca.assess.unknown_count import sample_class_count
+from bayeslca.assess.class_count.unknown_count import sample_class_count
+from bayeslca.assess.convergence import mode_mixing
+from bayeslca.assess.evidence.empty_class_ladder import can_be_joined, ladder_step, rung_of
+from bayeslca.assess.evidence.log_evidence import log_evidence, log_evidence_of_counts
+from bayeslca.assess.evidence.proposal import Labels
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses
@@ -450,7 +450,7 @@ def test_stated_errors_are_the_spread_of_short_runs() -> None:
 def test_without_the_other_labelling_the_evidence_would_be_wrong(
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:
-    from bayeslca.assess import model_evidence
+    from bayeslca.assess.evidence import model_evidence
 
     def one_labelling(free: Any, group: Any) -> Labels:
         return Labels((), np.arange(free.prior.size), None)

@@ -12,7 +12,7 @@ import pandas as pd
 import pytest
 from scipy.special import gammaln
 
-from bayeslca.assess.unknown_count import sample_class_count
+from bayeslca.assess.class_count.unknown_count import sample_class_count
 from bayeslca.exceptions import ModelError
 from bayeslca.responses.responses import Responses
 

@@ -16,8 +16,8 @@ import pandas as pd
 import pytest
 from scipy.special import betaln, gammaln, logsumexp
 
-from bayeslca.assess.exact_loo import LeaveOneOut, leave_one_out
-from bayeslca.assess.folds import k_fold, leave_one_group_out
+from bayeslca.assess.left_out.exact_loo import LeaveOneOut, leave_one_out
+from bayeslca.assess.left_out.folds import k_fold, leave_one_group_out
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses

@@ -12,7 +12,7 @@ import pytest
 from scipy.integrate import quad
 from scipy.stats import beta
 
-from bayeslca.assess.influence import Influence, influence
+from bayeslca.assess.left_out.influence import Influence, influence
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from bayeslca.assess.leave_one_unit_out import _refitted, leave_one_unit_out
+from bayeslca.assess.left_out.leave_one_unit_out import _refitted, leave_one_unit_out
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.simulate import Parameters
 from bayeslca.responses.item import Groups, Item
@@ -52,7 +52,7 @@ def test_a_unit_that_is_left_out_is_predicted_worse_than_one_that_is_kept(poster
     """The mutation: without the weights the figure is that of the fit that saw the unit."""
     from scipy.special import logsumexp
 
-    from bayeslca.assess.leave_one_unit_out import unit_log_likelihood
+    from bayeslca.assess.left_out.leave_one_unit_out import unit_log_likelihood
 
     values = unit_log_likelihood(posterior, posterior.responses.units, np.arange(12), 0)
     seen = logsumexp(values, axis=(0, 1)) - np.log(values[..., 0].size)

@@ -19,8 +19,8 @@ from numpy.testing import assert_allclose
 from scipy.stats import chi2
 
 from bayeslca import LatentClassModel, Responses
-from bayeslca.assess.fit_statistics import criteria_table, information_criteria
-from bayeslca.assess.maximum_likelihood import MaximumLikelihood
+from bayeslca.assess.likelihood.fit_statistics import criteria_table, information_criteria
+from bayeslca.assess.likelihood.maximum_likelihood import MaximumLikelihood
 
 SEED = 20261208
 REFERENCES = Path(__file__).parents[2] / "references"

@@ -13,9 +13,9 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess import mode_mixing
-from bayeslca.assess.evidence import log_evidence
-from bayeslca.assess.mode_mixing import _chosen
+from bayeslca.assess.convergence import mode_mixing
+from bayeslca.assess.convergence.mode_mixing import _chosen
+from bayeslca.assess.evidence.log_evidence import log_evidence
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.responses.responses import Responses

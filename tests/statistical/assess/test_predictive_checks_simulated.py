@@ -10,8 +10,8 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess.predictive_checks import PredictiveChecks, predictive_checks
-from bayeslca.assess.predictive_words import furthest_pairs
+from bayeslca.assess.fit.predictive_checks import PredictiveChecks, predictive_checks
+from bayeslca.assess.fit.predictive_words import furthest_pairs
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.responses.item import Item
 from bayeslca.responses.responses import Responses

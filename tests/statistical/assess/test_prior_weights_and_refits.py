@@ -7,7 +7,7 @@ import pandas as pd
 import pytest
 from scipy.stats import norm
 
-from bayeslca.assess.prior_sensitivity import PriorSensitivity
+from bayeslca.assess.priors.prior_sensitivity import PriorSensitivity
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.responses.item import ItemSpec
 from bayeslca.responses.responses import Responses

@@ -12,7 +12,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from bayeslca.assess.information_criteria import psis_loo, relative_efficiency, waic
+from bayeslca.assess.comparison.information_criteria import psis_loo, relative_efficiency, waic
 from bayeslca.model.compile import compile_units
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_unit_likelihood

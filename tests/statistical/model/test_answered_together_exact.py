@@ -14,7 +14,7 @@ import pytest
 from scipy.special import gammaln, logsumexp
 
 from bayeslca import AnsweredTogether, Item, LatentClassModel, Responses
-from bayeslca.assess.evidence import log_evidence
+from bayeslca.assess.evidence.log_evidence import log_evidence
 from bayeslca.model.compile import compile_units
 from bayeslca.model.probabilities import log_unit_likelihood
 from bayeslca.model.simulate import parameters_from

@@ -16,7 +16,7 @@ from bayeslca._compat import as_tree
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_unit_likelihood
-from bayeslca.model.pymc_model import Parts, build
+from bayeslca.model.pymc.model import Parts, build
 from bayeslca.responses.item import Item
 from bayeslca.responses.responses import Responses
 from bayeslca.sampling.nuts import sample_pymc_model

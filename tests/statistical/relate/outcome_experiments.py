@@ -16,8 +16,8 @@ from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_joint
 from bayeslca.model.simulate import draw_answers, draw_classes, draw_parameters
 from bayeslca.model.table import UnitTable
-from bayeslca.relate.outcome_model import OutcomeModel, OutcomePrior
-from bayeslca.relate.outcome_quantities import class_means, simulate_outcome
+from bayeslca.relate.outcomes.model import OutcomeModel, OutcomePrior
+from bayeslca.relate.outcomes.quantities import class_means, simulate_outcome
 from bayeslca.responses.item import Item
 from bayeslca.responses.units import Units
 from bayeslca.sampling.joint_chain import JointChain, joint_task

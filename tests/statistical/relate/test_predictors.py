@@ -14,7 +14,7 @@ from bayeslca.model.compile import compile_units
 from bayeslca.model.probabilities import class_shares, log_joint
 from bayeslca.model.table_builder import TableBuilder
 from bayeslca.relate.error_matrix import error_matrix
-from bayeslca.relate.three_step_regression import three_step_regression
+from bayeslca.relate.predictors.three_steps import three_step_regression
 from bayeslca.responses.units import Units
 from bayeslca.sampling.joint_chain import JointChain, joint_task
 from bayeslca.sampling.joint_gibbs import sample_held

@@ -10,11 +10,11 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess import co_membership as module
-from bayeslca.assess.averaged import Averaged, averaged, shared_out
-from bayeslca.assess.class_counts import ClassCounts, class_counts
-from bayeslca.assess.co_membership import CoMembership, set_name
-from bayeslca.assess.comparison import comparison_of
+from bayeslca.assess.class_count.averaged import Averaged, averaged, shared_out
+from bayeslca.assess.class_count.class_counts import ClassCounts, class_counts
+from bayeslca.assess.comparison.comparison import comparison_of
+from bayeslca.assess.together import co_membership as module
+from bayeslca.assess.together.co_membership import CoMembership, set_name
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import membership

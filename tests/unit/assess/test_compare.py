@@ -12,7 +12,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess.compare import (
+from bayeslca.assess.comparison.compare import (
     Comparison,
     FitProgress,
     class_count_model,
@@ -20,8 +20,8 @@ from bayeslca.assess.compare import (
     compare_class_counts,
     seed_of_row,
 )
-from bayeslca.assess.comparison import is_tie
-from bayeslca.assess.comparison_words import verdict_in_words
+from bayeslca.assess.comparison.comparison import is_tie
+from bayeslca.assess.comparison.words import verdict_in_words
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.responses.responses import Responses

@@ -10,8 +10,8 @@ import pandas as pd
 import pytest
 from numpy.testing import assert_allclose
 
-from bayeslca.assess.convergence import Diagnostics, diagnose
-from bayeslca.assess.modes import largest_r_hat
+from bayeslca.assess.convergence.diagnosis import Diagnostics, diagnose
+from bayeslca.assess.convergence.modes import largest_r_hat
 from bayeslca.model.compile import compile_units
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.probabilities import log_unit_likelihood

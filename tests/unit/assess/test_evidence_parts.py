@@ -8,12 +8,12 @@ import numpy as np
 import pytest
 from scipy.special import betaln, gammaln
 
-from bayeslca.assess.bridge_sampling import BridgeRatio, bridge_ratio, effective_draws
-from bayeslca.assess.empty_class_ladder import empty_class_constant
-from bayeslca.assess.evidence import probabilities
-from bayeslca.assess.join import join
-from bayeslca.assess.model_evidence import Estimate
-from bayeslca.assess.permanent import log_permanents, log_sum_of_permanents
+from bayeslca.assess.evidence.bridge_sampling import BridgeRatio, bridge_ratio, effective_draws
+from bayeslca.assess.evidence.empty_class_ladder import empty_class_constant
+from bayeslca.assess.evidence.join import join
+from bayeslca.assess.evidence.log_evidence import probabilities
+from bayeslca.assess.evidence.model_evidence import Estimate
+from bayeslca.assess.evidence.permanent import log_permanents, log_sum_of_permanents
 
 SEED = 20261210
 

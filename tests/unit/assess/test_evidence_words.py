@@ -10,18 +10,18 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess.class_count_words import evidence_in_words, strength
-from bayeslca.assess.class_counts import (
+from bayeslca.assess.class_count.class_counts import (
     ClassCounts,
     _has_its_rivals,
     checked_prior,
     class_counts,
 )
-from bayeslca.assess.compare import compare_class_counts
-from bayeslca.assess.conditionals import FreeParameters, conditional_parameters
-from bayeslca.assess.evidence import Evidence, log_evidence
-from bayeslca.assess.model_evidence import Estimate
-from bayeslca.assess.proposal import Proposal, labels_of
+from bayeslca.assess.class_count.words import evidence_in_words, strength
+from bayeslca.assess.comparison.compare import compare_class_counts
+from bayeslca.assess.evidence.conditionals import FreeParameters, conditional_parameters
+from bayeslca.assess.evidence.log_evidence import Evidence, log_evidence
+from bayeslca.assess.evidence.model_evidence import Estimate
+from bayeslca.assess.evidence.proposal import Proposal, labels_of
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior

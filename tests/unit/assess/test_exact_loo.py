@@ -10,11 +10,16 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess import exact_loo, refits
-from bayeslca.assess.compare import FitProgress, compare, compare_class_counts
-from bayeslca.assess.exact_loo import leave_one_out
-from bayeslca.assess.folds import fold_counts, group_standard_error, k_fold, leave_one_group_out
-from bayeslca.assess.one_case_bridge import one_case_bridge
+from bayeslca.assess.comparison.compare import FitProgress, compare, compare_class_counts
+from bayeslca.assess.left_out import exact_loo, refits
+from bayeslca.assess.left_out.exact_loo import leave_one_out
+from bayeslca.assess.left_out.folds import (
+    fold_counts,
+    group_standard_error,
+    k_fold,
+    leave_one_group_out,
+)
+from bayeslca.assess.left_out.one_case_bridge import one_case_bridge
 from bayeslca.exceptions import ModelError, SamplingError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior

@@ -10,7 +10,7 @@ import pytest
 from scipy.integrate import quad
 from scipy.stats import beta, betabinom
 
-from bayeslca.assess.order_probability import forest, log_probability
+from bayeslca.assess.hypothesis.order_probability import forest, log_probability
 from bayeslca.exceptions import ModelError, StatementError
 from bayeslca.model.blocks import BlockArrays
 from bayeslca.model.latent_class_model import LatentClassModel

@@ -12,7 +12,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from bayeslca.assess.information_criteria import (
+from bayeslca.assess.comparison.information_criteria import (
     difference,
     psis_loo,
     relative_efficiency,

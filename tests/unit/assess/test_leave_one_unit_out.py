@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 from scipy.special import gammaln, logsumexp
 
-from bayeslca.assess.leave_one_unit_out import compare_units, leave_one_unit_out
-from bayeslca.assess.unit_likelihood import (
+from bayeslca.assess.left_out.leave_one_unit_out import compare_units, leave_one_unit_out
+from bayeslca.assess.left_out.unit_likelihood import (
     exact_log_likelihood,
     exact_work,
     log_likelihood_of_unit,

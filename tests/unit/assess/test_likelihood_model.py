@@ -10,7 +10,7 @@ import pytest
 from numpy.testing import assert_allclose
 
 from bayeslca import Item, LatentClassModel, Responses, compare, criteria_beside
-from bayeslca.assess.likelihood_model import likelihood_model
+from bayeslca.assess.likelihood.likelihood_model import likelihood_model
 
 NAMES = ("fees", "accounts", "meets", "fenced", "mechanic")
 ITEMS = tuple(Item(name, ("no", "yes")) for name in NAMES)

@@ -9,11 +9,11 @@ from numpy.testing import assert_allclose
 from scipy.optimize import minimize
 
 from bayeslca import Groups, Item, LatentClassModel, Responses
-from bayeslca.assess.em import climb, expect, maximise, work_for
-from bayeslca.assess.em_layout import AllBlocks
-from bayeslca.assess.em_runs import climb_from, scattered
-from bayeslca.assess.maximum_likelihood import maximum_likelihood
-from bayeslca.assess.observed_information import Score
+from bayeslca.assess.likelihood.em import climb, expect, maximise, work_for
+from bayeslca.assess.likelihood.em_layout import AllBlocks
+from bayeslca.assess.likelihood.em_runs import climb_from, scattered
+from bayeslca.assess.likelihood.maximum_likelihood import maximum_likelihood
+from bayeslca.assess.likelihood.observed_information import Score
 from bayeslca.exceptions import ModelError
 from bayeslca.model.compile import compile_units
 from bayeslca.model.probabilities import log_unit_likelihood, membership

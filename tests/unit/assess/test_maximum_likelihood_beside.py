@@ -10,7 +10,7 @@ import pandas as pd
 import pytest
 
 import bayeslca as lca
-from bayeslca.assess.criteria_beside import criteria_beside
+from bayeslca.assess.likelihood.criteria_beside import criteria_beside
 
 ITEMS = tuple(lca.Item(name, ("no", "yes")) for name in ("fees", "accounts", "meets", "fenced"))
 YES = np.array([[0.95, 0.9, 0.95, 0.85], [0.1, 0.15, 0.05, 0.2]])

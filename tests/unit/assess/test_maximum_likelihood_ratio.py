@@ -7,10 +7,14 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.stats import chi2, gamma
 
-import bayeslca.assess.likelihood_ratio as likelihood_ratio_module
+import bayeslca.assess.likelihood.likelihood_ratio as likelihood_ratio_module
 from bayeslca import Groups, Item, LatentClassModel, Responses
-from bayeslca.assess.likelihood_ratio import _Drawer, class_count_test, likelihood_ratio_test
-from bayeslca.assess.lo_mendell_rubin import (
+from bayeslca.assess.likelihood.likelihood_ratio import (
+    _Drawer,
+    class_count_test,
+    likelihood_ratio_test,
+)
+from bayeslca.assess.likelihood.lo_mendell_rubin import (
     adjusted_test,
     chi_square_weights,
     weighted_chi_square_tail,

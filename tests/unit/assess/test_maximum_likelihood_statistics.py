@@ -10,15 +10,15 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.stats import power_divergence
 
-import bayeslca.assess.saturated as saturated_module
+import bayeslca.assess.likelihood.saturated as saturated_module
 from bayeslca import Groups, Item, LatentClassModel, Responses
-from bayeslca.assess.fit_statistics import (
+from bayeslca.assess.likelihood.fit_statistics import (
     criteria_table,
     information_criteria,
     pearson,
     relative_entropy,
 )
-from bayeslca.assess.saturated import saturated
+from bayeslca.assess.likelihood.saturated import saturated
 from bayeslca.model.compile import compile_units
 from bayeslca.model.probabilities import log_unit_likelihood
 from bayeslca.responses.units import MISSING, Units, collapse

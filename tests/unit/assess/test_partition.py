@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from sklearn.metrics import mutual_info_score
 
-from bayeslca.assess.partition import point_partition, variation_of_information
+from bayeslca.assess.together.partition import point_partition, variation_of_information
 
 SEED = 20261203
 

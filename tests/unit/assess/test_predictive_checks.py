@@ -8,12 +8,12 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess.calibrated_p import simulated_responses
-from bayeslca.assess.posterior_p import posterior_p, two_sided_p
-from bayeslca.assess.predictive_checks import PredictiveChecks, predictive_checks
-from bayeslca.assess.predictive_tables import CHECKS, freeman_tukey
-from bayeslca.assess.predictive_words import judged_p, p_text
-from bayeslca.assess.replicates import Both, spread_draws
+from bayeslca.assess.fit.calibrated_p import simulated_responses
+from bayeslca.assess.fit.posterior_p import posterior_p, two_sided_p
+from bayeslca.assess.fit.predictive_checks import PredictiveChecks, predictive_checks
+from bayeslca.assess.fit.predictive_tables import CHECKS, freeman_tukey
+from bayeslca.assess.fit.predictive_words import judged_p, p_text
+from bayeslca.assess.fit.replicates import Both, spread_draws
 from bayeslca.exceptions import BayesLCAError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.simulate import Parameters

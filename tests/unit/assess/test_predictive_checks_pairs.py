@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from bayeslca.assess.item_pairs import ItemPairs, with_sum
+from bayeslca.assess.fit.item_pairs import ItemPairs, with_sum
 from bayeslca.model.pair_measures import answer_scores
 from bayeslca.responses.item import Item
 

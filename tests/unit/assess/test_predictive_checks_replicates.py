@@ -10,8 +10,8 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from bayeslca.assess.replicates import POWER, Replicates, replicates
-from bayeslca.assess.strata import strata_of
+from bayeslca.assess.fit.replicates import POWER, Replicates, replicates
+from bayeslca.assess.fit.strata import strata_of
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.table_builder import TableBuilder
 from bayeslca.responses.item import Groups, Item
@@ -182,7 +182,7 @@ def test_replicates_have_the_discrepancies_of_their_own_tables(name: str) -> Non
 
 def joint_counts(model: LatentClassModel, items: tuple[Item, ...], elements: Any) -> Any:
     """Joint answers of the replicates of the test above, taken where they are counted."""
-    from bayeslca.assess import replicates as room
+    from bayeslca.assess.fit import replicates as room
 
     kept: list[Any] = []
 

@@ -9,9 +9,9 @@ import pandas as pd
 import pytest
 from scipy.stats import beta
 
-from bayeslca.assess.power_scaling import SENSITIVE
-from bayeslca.assess.prior_sensitivity import PriorSensitivity
-from bayeslca.assess.prior_words import best_known
+from bayeslca.assess.priors.power_scaling import SENSITIVE
+from bayeslca.assess.priors.prior_sensitivity import PriorSensitivity
+from bayeslca.assess.priors.words import best_known
 from bayeslca.exceptions import ModelError, StatementError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior

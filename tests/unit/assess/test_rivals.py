@@ -9,7 +9,7 @@ import pandas as pd
 import pytest
 from scipy.stats import beta
 
-from bayeslca.assess.rivals import NONE_OF_THESE, compare_rivals
+from bayeslca.assess.hypothesis.rivals import NONE_OF_THESE, compare_rivals
 from bayeslca.exceptions import ModelError
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from bayeslca.assess.stacking import stacking_weights
+from bayeslca.assess.comparison.stacking import stacking_weights
 
 SEED = 20261202
 COUNTS = np.array([3, 1, 9, 4, 6, 2, 5, 8])
@@ -25,7 +25,7 @@ def test_weights_agree_with_arviz_on_expanded_cases() -> None:
     rng = np.random.default_rng(SEED)
     chains, draws = 4, 200
     trees, ours = {}, []
-    from bayeslca.assess.information_criteria import psis_loo
+    from bayeslca.assess.comparison.information_criteria import psis_loo
 
     for m, level in enumerate(pointwise()):
         values = level + 0.1 * rng.normal(size=(chains, draws, COUNTS.size))

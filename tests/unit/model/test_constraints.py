@@ -12,8 +12,8 @@ from bayeslca.exceptions import ModelError, StatementError
 from bayeslca.model.constraint_words import in_words
 from bayeslca.model.constraints import read_links
 from bayeslca.model.places import Link, Place, PrevalenceVector, ResponseVector
-from bayeslca.model.resolve import read_statements
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolve import read_statements
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.responses.item import Groups
 
 ITEMS = (

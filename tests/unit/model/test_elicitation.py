@@ -12,8 +12,8 @@ from scipy import stats
 
 from bayeslca.exceptions import ModelError
 from bayeslca.model.elicitation import beta_from_most_likely, describe_beta
-from bayeslca.model.notation import parse
-from bayeslca.model.syntax import Prior
+from bayeslca.model.statements.notation import parse
+from bayeslca.model.statements.syntax import Prior
 
 REFERENCES = Path(__file__).parents[2] / "references"
 with (REFERENCES / "beta_prior_elicitation.csv").open(encoding="utf-8") as file:

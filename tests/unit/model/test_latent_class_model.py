@@ -203,7 +203,7 @@ def test_elements_that_are_only_a_part_are_called_so():
 
 
 def test_names_of_parameters_can_be_read_back():
-    from bayeslca.model.notation import parse, to_text
+    from bayeslca.model.statements.notation import parse, to_text
 
     model = LatentClassModel(ITEMS, ("managed", "lapsed"), RULES, DISTRICTS)
     for name in (*element_names(model), *sum(prevalence_names(model), ()), *block_names(model)):

@@ -11,8 +11,8 @@ from hypothesis import strategies as st
 
 from bayeslca.exceptions import StatementError
 from bayeslca.model.naming import apply_naming_rules, classes_named
-from bayeslca.model.resolve import read_statements
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolve import read_statements
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.responses.item import Item
 
 ITEMS = (

@@ -7,8 +7,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from bayeslca.exceptions import StatementError
-from bayeslca.model.notation import DEEPEST, parse, to_text
-from bayeslca.model.syntax import (
+from bayeslca.model.statements.notation import DEEPEST, parse, to_text
+from bayeslca.model.statements.syntax import (
     Absolute,
     AllClasses,
     Beta,

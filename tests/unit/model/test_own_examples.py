@@ -5,8 +5,8 @@ from __future__ import annotations
 import pytest
 
 from bayeslca.exceptions import StatementError
-from bayeslca.model.resolve import resolve
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolve import resolve
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.responses.item import Groups, Item
 
 TESTS = Vocabulary(

@@ -120,6 +120,6 @@ def test_the_stated_prior_is_that_of_the_mean():
 
 def test_maximum_likelihood_leaves_pooling_out():
     """Pooling is a prior: without it each unit has prevalences of its own."""
-    from bayeslca.assess.likelihood_model import likelihood_model
+    from bayeslca.assess.likelihood.likelihood_model import likelihood_model
 
     assert likelihood_model(model()) == model(pooled=False)

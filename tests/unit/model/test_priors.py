@@ -7,8 +7,8 @@ import pytest
 
 from bayeslca.exceptions import StatementError
 from bayeslca.model.priors import DEFAULT, prior_table
-from bayeslca.model.resolve import read_statements
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.resolve import read_statements
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.responses.item import Groups, Item
 
 ITEMS = (Item("fees", ("no", "yes"), yes="yes"), Item("type", ("a", "b", "c")))

@@ -7,9 +7,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from bayeslca.exceptions import ModelError, StatementError
-from bayeslca.model.notation import parse
-from bayeslca.model.resolve import kind_of, read_statements, resolve
-from bayeslca.model.resolved import (
+from bayeslca.model.statements.notation import parse
+from bayeslca.model.statements.resolve import kind_of, read_statements, resolve
+from bayeslca.model.statements.resolved import (
     MembershipTerm,
     PrevalencePrior,
     PrevalenceTerm,
@@ -19,7 +19,7 @@ from bayeslca.model.resolved import (
     ResponsePrior,
     ResponseTerm,
 )
-from bayeslca.model.vocabulary import Vocabulary
+from bayeslca.model.statements.vocabulary import Vocabulary
 from bayeslca.responses.item import Groups, Item
 
 ITEMS = (

@@ -68,7 +68,7 @@ def test_it_is_saved_and_read_with_its_concentration(posterior, tmp_path):
 
 
 def test_evidence_is_refused_in_words_and_hypotheses_are_not(posterior):
-    from bayeslca.assess.evidence import log_evidence
+    from bayeslca.assess.evidence.log_evidence import log_evidence
 
     found = log_evidence(posterior)
     assert not found.reliable

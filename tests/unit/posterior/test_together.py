@@ -9,7 +9,7 @@ from scipy.special import gammaln
 from statsmodels.stats.contingency_tables import Table2x2
 
 from bayeslca import AnsweredTogether, Item, LatentClassModel, Posterior, Responses
-from bayeslca.assess.evidence import log_evidence
+from bayeslca.assess.evidence.log_evidence import log_evidence
 from bayeslca.exceptions import ModelError
 from bayeslca.model.simulate import parameters_from
 

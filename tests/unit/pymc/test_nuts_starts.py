@@ -8,8 +8,8 @@ from bayeslca.model.compile import compile_units
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.prior_density import log_prior
 from bayeslca.model.probabilities import log_unit_likelihood
-from bayeslca.model.pymc_blocks import Names, block_variables
-from bayeslca.model.pymc_model import Parts, as_cases
+from bayeslca.model.pymc.blocks import Names, block_variables
+from bayeslca.model.pymc.model import Parts, as_cases
 from bayeslca.responses.item import Item
 from bayeslca.responses.responses import Responses
 from bayeslca.sampling.nuts import draw_with_nuts, nuts_findings

@@ -10,8 +10,8 @@ from bayeslca.exceptions import ModelError
 from bayeslca.model.compile import compile_units
 from bayeslca.model.prior_density import inside_bounds, log_prior
 from bayeslca.model.probabilities import log_unit_likelihood
-from bayeslca.model.pymc_bounds import bounded_transform, coordinates
-from bayeslca.model.pymc_model import Parts, build
+from bayeslca.model.pymc.bounds import bounded_transform, coordinates
+from bayeslca.model.pymc.model import Parts, build
 from bayeslca.model.simulate import draw_parameters
 from bayeslca.responses.item import Groups
 

@@ -11,7 +11,7 @@ from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.model.prevalence import DirichletPrevalence
 from bayeslca.model.prior_density import log_prior
 from bayeslca.model.probabilities import draw_elements, log_unit_likelihood, response_probability
-from bayeslca.model.pymc_model import Names, Parts, as_cases, build, build_from_table
+from bayeslca.model.pymc.model import Names, Parts, as_cases, build, build_from_table
 from bayeslca.model.table_builder import TableBuilder
 from bayeslca.responses.item import Groups, Item
 from bayeslca.responses.responses import Responses

@@ -9,7 +9,7 @@ from bayeslca import AnsweredTogether, Item, LatentClassModel
 from bayeslca.model.compile import compile_units
 from bayeslca.model.prior_density import log_prior
 from bayeslca.model.probabilities import draw_elements, log_unit_likelihood
-from bayeslca.model.pymc_model import Parts
+from bayeslca.model.pymc.model import Parts
 
 pytestmark = pytest.mark.pymc
 pm = pytest.importorskip("pymc")

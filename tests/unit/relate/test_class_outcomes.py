@@ -11,12 +11,12 @@ import pytest
 import bayeslca as lca
 from bayeslca.exceptions import ModelError
 from bayeslca.model.symmetry import element_map
-from bayeslca.relate.outcome_checks import distribution, outcome_checks
-from bayeslca.relate.outcome_column import Outcome
-from bayeslca.relate.outcome_joint import with_own_names
-from bayeslca.relate.outcome_model import outcome_model
-from bayeslca.relate.outcome_words import priors_in_words
-from bayeslca.relate.overdispersion import overdispersion
+from bayeslca.relate.outcomes.checks import distribution, outcome_checks
+from bayeslca.relate.outcomes.column import Outcome
+from bayeslca.relate.outcomes.joint import with_own_names
+from bayeslca.relate.outcomes.model import outcome_model
+from bayeslca.relate.outcomes.overdispersion import overdispersion
+from bayeslca.relate.outcomes.words import priors_in_words
 from bayeslca.sampling.joint_draws import JointDraws
 from bayeslca.sampling.outcome_step import BY_CLASS, SHARED
 from bayeslca.sampling.relabel import Relabelled

@@ -8,7 +8,7 @@ import pytest
 
 from bayeslca.exceptions import ModelError
 from bayeslca.relate.case_table import CaseTable
-from bayeslca.relate.covariates import design_of
+from bayeslca.relate.predictors.covariates import design_of
 
 
 def table(**columns):

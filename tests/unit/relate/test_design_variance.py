@@ -8,7 +8,11 @@ import numpy as np
 import pytest
 import statsmodels.api as sm
 
-from bayeslca.relate.design_variance import cluster_totals, replicate_factors, total_covariance
+from bayeslca.relate.weighted.design_variance import (
+    cluster_totals,
+    replicate_factors,
+    total_covariance,
+)
 from bayeslca.responses.sample_design import SampleDesign
 
 SEED = 41

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from bayeslca.exceptions import ModelError
-from bayeslca.relate.formula import read_formula
+from bayeslca.relate.predictors.formula import read_formula
 
 
 def test_terms_factors_and_columns():

@@ -10,7 +10,7 @@ import pytest
 
 import bayeslca as lca
 from bayeslca.exceptions import ModelError, ResponsesError
-from bayeslca.relate.outcome_column import Outcome, OutcomeKind, read_outcome
+from bayeslca.relate.outcomes.column import Outcome, OutcomeKind, read_outcome
 
 CASES = ["a", "b", "c", "d", "e", "f"]
 

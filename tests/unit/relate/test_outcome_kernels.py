@@ -10,8 +10,8 @@ import pytest
 from scipy import stats
 from scipy.special import expit, gammaln
 
-from bayeslca.relate.outcome_model import OutcomeModel, outcome_model
-from bayeslca.relate.outcome_quantities import category_probabilities, class_means, effects
+from bayeslca.relate.outcomes.model import OutcomeModel, outcome_model
+from bayeslca.relate.outcomes.quantities import category_probabilities, class_means, effects
 from bayeslca.sampling.outcome_density import fill_log_density
 from bayeslca.sampling.outcome_draws import inner_chain
 

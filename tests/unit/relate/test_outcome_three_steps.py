@@ -10,10 +10,10 @@ from statsmodels.miscmodels.ordinal_model import OrderedModel
 
 from bayeslca.exceptions import ModelError
 from bayeslca.relate.climb import climb
-from bayeslca.relate.outcome_free import FreeNumbers
-from bayeslca.relate.outcome_model import outcome_model
-from bayeslca.relate.outcome_quantities import class_means, effects
-from bayeslca.relate.outcome_three_steps import CORRECTIONS, Correction, three_steps
+from bayeslca.relate.outcomes.free import FreeNumbers
+from bayeslca.relate.outcomes.model import outcome_model
+from bayeslca.relate.outcomes.quantities import class_means, effects
+from bayeslca.relate.outcomes.three_steps import CORRECTIONS, Correction, three_steps
 
 RNG = np.random.default_rng(sum(map(ord, "three steps")))
 N, K = 240, 3

@@ -11,8 +11,8 @@ import pytest
 import bayeslca as lca
 from bayeslca.exceptions import ModelError, ResponsesError
 from bayeslca.model.probabilities import response_probability
-from bayeslca.relate.predictor_findings import _groups
-from bayeslca.relate.separation import find_separation
+from bayeslca.relate.predictors.findings import _groups
+from bayeslca.relate.predictors.separation import find_separation
 from tests.unit.relate.conftest import fitted, study
 
 

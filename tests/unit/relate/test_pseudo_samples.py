@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from bayeslca.relate.pseudo_samples import rounded, shrinkage, tilted
+from bayeslca.relate.weighted.pseudo_samples import rounded, shrinkage, tilted
 
 SEED = 42
 

@@ -12,9 +12,9 @@ import pytest
 
 import bayeslca as lca
 from bayeslca.exceptions import ModelError, SamplingError
-from bayeslca.relate.sample_weighted import sample_weighted
-from bayeslca.relate.weighted_likelihood import weighted_maximum_likelihood
-from bayeslca.relate.weighted_posterior import WeightedPosterior
+from bayeslca.relate.weighted.sample_weighted import sample_weighted
+from bayeslca.relate.weighted.weighted_likelihood import weighted_maximum_likelihood
+from bayeslca.relate.weighted.weighted_posterior import WeightedPosterior
 
 SEED = 43
 ITEMS = [f"item_{j}" for j in range(6)]

@@ -9,8 +9,8 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from bayeslca.assess.comparison import Comparison
-from bayeslca.assess.comparison_words import verdict_in_words
+from bayeslca.assess.comparison.comparison import Comparison
+from bayeslca.assess.comparison.words import verdict_in_words
 from bayeslca.findings import Finding
 from bayeslca.model.latent_class_model import LatentClassModel
 from bayeslca.posterior.posterior import Posterior

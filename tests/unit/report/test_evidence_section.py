@@ -9,8 +9,8 @@ import numpy as np
 import pandas as pd
 from matplotlib.figure import Figure as Drawing
 
-from bayeslca.assess.class_count_words import evidence_in_words
-from bayeslca.assess.class_counts import ClassCounts
+from bayeslca.assess.class_count.class_counts import ClassCounts
+from bayeslca.assess.class_count.words import evidence_in_words
 from bayeslca.report.blocks import PageTable, Paragraph, Picture
 from bayeslca.report.evidence_plot import plot_count_probabilities
 from bayeslca.report.facts import Facts

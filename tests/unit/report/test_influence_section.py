@@ -10,8 +10,12 @@ import pandas as pd
 import pytest
 from matplotlib.figure import Figure as Drawing
 
-from bayeslca.assess.influence import Influence
-from bayeslca.assess.influence_words import influence_findings, influential, verdict_in_words
+from bayeslca.assess.left_out.influence import Influence
+from bayeslca.assess.left_out.influence_words import (
+    influence_findings,
+    influential,
+    verdict_in_words,
+)
 from bayeslca.report.blocks import Bullets, PageTable, Paragraph, Picture
 from bayeslca.report.columns import column
 from bayeslca.report.facts import Facts

@@ -8,8 +8,8 @@ from types import SimpleNamespace
 import pandas as pd
 import pytest
 
-from bayeslca.assess.hypotheses import HypothesisTest
-from bayeslca.assess.rivals import Rivals
+from bayeslca.assess.hypothesis.hypotheses import HypothesisTest
+from bayeslca.assess.hypothesis.rivals import Rivals
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.report.blocks import PageTable, Paragraph, Section, Subheading
 from bayeslca.report.content import Claim

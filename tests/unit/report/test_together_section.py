@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 from matplotlib.figure import Figure as Drawing
 
-from bayeslca.assess.co_membership import CoMembership
-from bayeslca.assess.partition import Partition
+from bayeslca.assess.together.co_membership import CoMembership
+from bayeslca.assess.together.partition import Partition
 from bayeslca.report.blocks import Bullets, PageTable, Paragraph, Picture
 from bayeslca.report.facts import Facts
 from bayeslca.report.sections.together import sets_table, together_section

@@ -6,7 +6,7 @@ import math
 
 import pytest
 
-from bayeslca.assess.compare import FitProgress
+from bayeslca.assess.comparison.compare import FitProgress
 from bayeslca.sampling.progress import Progress
 from bayeslca.study.progress import JobProgress, job_progress
 

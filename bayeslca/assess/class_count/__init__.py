@@ -1,0 +1,1 @@
+"""How probable each number of classes is, and what is averaged over it."""

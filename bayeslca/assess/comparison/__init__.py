@@ -1,0 +1,1 @@
+"""Models beside each other: predictive accuracy, ties, weights."""

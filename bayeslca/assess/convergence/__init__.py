@@ -1,0 +1,1 @@
+"""Did the sampling find what there is: convergence, modes and their weights."""

@@ -1,0 +1,1 @@
+"""Does the model reproduce the answers: posterior predictive checks."""

@@ -1,0 +1,1 @@
+"""Hypotheses and their rivals, weighed by Bayes factors."""

@@ -1,0 +1,1 @@
+"""Cases, folds, groups and units left out: exact predictions, influence."""

@@ -1,0 +1,1 @@
+"""Maximum likelihood beside the posterior, and tests of one class fewer."""

@@ -1,0 +1,1 @@
+"""What the priors do: power scaling, weights and refits under other priors."""

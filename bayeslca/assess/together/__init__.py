@@ -1,0 +1,1 @@
+"""Which cases are of one class, whatever the classes are called."""

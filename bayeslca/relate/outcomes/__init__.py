@@ -1,0 +1,1 @@
+"""Outcomes that follow from class: jointly, by a cut, and in three steps."""

@@ -1,0 +1,1 @@
+"""Predictors of class: jointly, by a cut, and in three steps."""

@@ -1,0 +1,1 @@
+"""Complex samples: weights, clusters and strata."""
