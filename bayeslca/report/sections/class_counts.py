@@ -106,7 +106,8 @@ def _about_evidence(comparison: Comparison) -> list[Block]:
     text = (
         "The evidence is the probability of all answers under a model, averaged over its priors; "
         "its logarithm is shown. It weighs a model by its priors as well as by its fit, so that "
-        "flatter priors speak for fewer classes; predictive accuracy depends on them far less. A "
+        "other priors can speak for fewer classes or for more; predictive accuracy depends on them "
+        "far less. A "
         "number of classes counts classes that hold no case of this sample, too: a probable "
         "larger number need not mean that more kinds were seen. Neither figure tells whether the "
         "classes are kinds that exist outside the model."
