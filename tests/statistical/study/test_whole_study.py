@@ -128,7 +128,7 @@ def test_unchanged_fits_are_kept_byte_for_byte(study: Path) -> None:
     before = {path.name: path.read_bytes() for path in results.rglob("*.nc")}
     change(study, 'title = "Two kinds"', 'title = "Kinds"')
     outcome = run_study(study, results, replace=True, quiet=True)
-    assert "3 of 3 fits were unchanged" in outcome.words
+    assert "3 of 3 fits" in outcome.words
     assert {path.name: path.read_bytes() for path in results.rglob("*.nc")} == before
     assert "Kinds" in (results / "report.html").read_text(encoding="utf-8")
 
@@ -141,7 +141,7 @@ def test_what_moved_is_shown(study: Path) -> None:
         '["managed is where P(fees=yes) is highest", "P(meets=yes | lapsed) ~ Beta(1, 20)"]',
     )
     outcome = run_study(study, results, replace=True, quiet=True)
-    assert "2 of 3 fits were unchanged" in outcome.words
+    assert "2 of 3 fits" in outcome.words
     page = re.sub("<[^>]+>", " ", (results / "report.html").read_text(encoding="utf-8"))
     assert "meets = yes in lapsed" in page
 
