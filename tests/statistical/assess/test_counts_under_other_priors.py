@@ -103,7 +103,7 @@ def test_a_prior_that_changes_nothing_is_left_out_and_said() -> None:
     )
     same = plain.under_other_priors(["uniform"], progress=False)
     assert list(same.by_prior) == [AS_STATED]
-    assert "Not done for priors uniform: it is the study's own prior" in same.verdict
+    assert "Not done for priors that are uniform: it is the study's own prior" in same.verdict
     with pytest.raises(ModelError, match="no alternative prior 'half'"):
         plain.under_other_priors(["half"], progress=False)
     with pytest.raises(ModelError, match="no numbers of classes were compared"):

@@ -7,7 +7,7 @@ from pathlib import Path
 import pandas as pd
 import pytest
 
-from bayeslca.exceptions import ModelError, StudyError
+from bayeslca.exceptions import StudyError
 from bayeslca.study.job import run_study
 from bayeslca.study.load import load_study
 
@@ -50,5 +50,5 @@ def test_wrong_values_are_refused(folder: Path) -> None:
         load_study(said(folder, "compare = [1, 2]", "compare = [1, 2]\nfolds = 1"))
     text = (folder / "study.toml").read_text(encoding="utf-8")
     (folder / "study.toml").write_text(text.replace("folds = 1", "folds = 9"), encoding="utf-8")
-    with pytest.raises(ModelError, match="folds=9 for 6 cases"):
+    with pytest.raises(StudyError, match="folds=9 for 6 cases"):
         run_study(folder / "study.toml", folder / "results", quiet=True)
