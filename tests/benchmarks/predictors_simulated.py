@@ -2,8 +2,9 @@
 
 Two classes, log odds 1 per standard deviation of a covariate, six yes/no items; 50, 118 and 500
 cases; response probabilities 0.7/0.3 (low separation), 0.8/0.2 and 0.9/0.1. For each study the
-slope by the modal class, by classes imputed from the answers alone, and by every way of
-`class_predictors`. Results are added to a file, so that it can be stopped and run on:
+slope by the true classes (what chance did to the data), by the modal class, by classes imputed
+from the answers alone, and by every way of `class_predictors`. Results are added to a file, so
+that it can be stopped and run on:
 
     python tests/benchmarks/predictors_simulated.py results.csv --studies 100 --seconds 240
     python tests/benchmarks/predictors_simulated.py results.csv --show
@@ -67,6 +68,7 @@ def one_study(n: int, separation: str, number: int) -> list[dict[str, object]]:
     share = membership["probability_high"].to_numpy()
     design = np.column_stack([np.ones(n), x])
     rows = {
+        "classes known": of_known(design, is_low.astype(int)),
         "modal class": of_known(design, (share < 0.5).astype(int)),
         "imputed without x": of_known(design, (rng.random(n) > share).astype(int)),
     }
