@@ -112,7 +112,7 @@ def draw_parameters(table: Table, source: PrevalenceSource, rng: np.random.Gener
 
 def draw_classes(prevalence: Floats, group: Ints, rng: np.random.Generator) -> Ints:
     """Draw the class (n,) of cases in groups (n,) from prevalences (groups, K)."""
-    return _draw_categories(prevalence[group], rng)
+    return draw_categories(prevalence[group], rng)
 
 
 def draw_answers(
@@ -137,11 +137,11 @@ def draw_answers(
     codes = np.empty((latent_class.size, table.n_items), dtype=np.int16)
     for item in range(table.n_items):
         columns = slice(table.item_start[item], table.item_start[item + 1])
-        codes[:, item] = _draw_categories(probability[:, :, columns][at], rng)
+        codes[:, item] = draw_categories(probability[:, :, columns][at], rng)
     by_class = np.swapaxes(row_probability(table, elements)[table.joint_row], -1, -2)
     for joint in joints(table):
         if joint.is_whole:
-            answer = _draw_categories(by_class[:, :, joint.columns][at], rng)
+            answer = draw_categories(by_class[:, :, joint.columns][at], rng)
             codes[:, list(joint.items)] = np.stack(np.unravel_index(answer, joint.sizes), axis=1)
     return codes
 
@@ -264,8 +264,8 @@ def group_sizes(n: int | Sequence[int], n_groups: int) -> list[int]:
     return sizes
 
 
-def _draw_categories(probability: Floats, rng: np.random.Generator) -> Ints:
-    """Draw one category per row of probabilities (n, R); never one of probability 0."""
-    cumulated = np.cumsum(probability, axis=1)
-    at = rng.random(len(probability))[:, None] * cumulated[:, -1:]
-    return np.asarray((at >= cumulated).sum(axis=1))
+def draw_categories(probability: Floats, rng: np.random.Generator) -> Ints:
+    """Draw a category for each leading place of (..., R); never one of probability 0."""
+    cumulated = np.cumsum(probability, axis=-1)
+    at = rng.random(cumulated.shape[:-1])[..., None] * cumulated[..., -1:]
+    return np.asarray((at >= cumulated).sum(axis=-1))

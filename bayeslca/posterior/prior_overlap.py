@@ -106,8 +106,8 @@ def prior_draws(posterior: Posterior) -> ParameterDraws:
 def mean_membership(posterior: Posterior) -> Floats:
     """Return P(class | answers) (U, K) of each unit, averaged over the draws."""
     draws, table = posterior.draws, posterior.table
-    elements = draws.elements.reshape(-1, table.n_elements)
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    elements = draws.flat_elements
+    prevalence = draws.flat_prevalence
     total = np.zeros((posterior.unit_table.n_units, table.n_classes))
     for _, joint in log_joint(table, posterior.unit_table, elements, prevalence):
         total += class_shares(joint).sum(axis=2).T

@@ -18,10 +18,11 @@ from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
-from bayeslca._typing import Floats, Ints, Seed
+from bayeslca._typing import Ints, Seed
 from bayeslca.exceptions import ModelError
 from bayeslca.model.compile import compile_units
 from bayeslca.model.probabilities import membership
+from bayeslca.model.simulate import draw_categories
 from bayeslca.posterior.membership import group_of_row
 from bayeslca.sampling.run import seed_sequence
 
@@ -118,11 +119,5 @@ def classes_from_answers(posterior: Posterior, number: int, rng: np.random.Gener
                 "be drawn for them. See posterior.membership() for their names."
             )
             raise ModelError(msg)
-        out[i] = pick_classes(np.concatenate([by_unit, prevalence[s]])[row], rng)
+        out[i] = draw_categories(np.concatenate([by_unit, prevalence[s]])[row], rng)
     return out
-
-
-def pick_classes(probability: Floats, rng: np.random.Generator) -> Ints:
-    """Draw a class for each row (rows, K) of probabilities."""
-    below = np.cumsum(probability, axis=1) < rng.random((len(probability), 1))
-    return np.asarray(np.minimum(below.sum(axis=1), probability.shape[1] - 1), dtype=np.int64)

@@ -100,8 +100,8 @@ def same_classes(posterior: Posterior, draws: JointDraws) -> SameClasses:
     refuse_classes_apart(posterior)
     model, table, units = posterior.model, posterior.table, posterior.unit_table
     group = model.symmetry.named_group
-    elements = draws.elements.reshape(-1, table.n_elements)
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    elements = draws.flat_elements
+    prevalence = draws.flat_prevalence
     found = np.tile(identity(table.n_prevalence_rows, table.n_classes), (len(elements), 1, 1))
     if model.naming_rules:
         found = permutations_by_rules(
@@ -149,7 +149,7 @@ def _reference(posterior: Posterior) -> Floats:
     shares = membership(
         posterior.table,
         posterior.unit_table,
-        draws.elements.reshape(-1, posterior.table.n_elements)[::step],
-        draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])[::step],
+        draws.flat_elements[::step],
+        draws.flat_prevalence[::step],
     )
     return np.asarray(shares.mean(axis=0))

@@ -44,8 +44,8 @@ def align(
     if group.is_identity:
         return found
     draws = found.draws
-    elements = draws.elements.reshape(-1, draws.elements.shape[-1])
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    elements = draws.flat_elements
+    prevalence = draws.flat_prevalence
     best = np.empty((elements.shape[0], group.n_groups, group.n_classes), dtype=np.int64)
     for piece, joint in log_joint(model.table, unit_table, elements, prevalence):
         costs = matching_costs(class_shares(joint), reference, unit_table, group.n_groups)

@@ -128,7 +128,7 @@ def _moves(table: Table, units: UnitTable) -> tuple[Ints, Ints]:
         maps.append(mapped)
     return (
         np.asarray(permutations, dtype=np.int64).reshape(-1, table.n_classes),
-        np.asarray(maps, dtype=np.int64).reshape(-1, table.n_elements),
+        np.asarray(maps, dtype=np.int64).reshape(len(maps), table.n_elements),
     )
 
 

@@ -60,6 +60,16 @@ class JointDraws:
         return int(self.log_likelihood.shape[1])
 
     @property
+    def flat_elements(self) -> Floats:
+        """Elements of all chains end to end, shape (chain x draw, E); E may be 0."""
+        return self.elements.reshape(self.n_chains * self.n_draws, self.elements.shape[-1])
+
+    @property
+    def flat_prevalence(self) -> Floats:
+        """Prevalences of all chains end to end, shape (chain x draw, G, K)."""
+        return self.prevalence.reshape(-1, *self.prevalence.shape[2:])
+
+    @property
     def n_classes(self) -> int:
         """Number of latent classes."""
         return int(self.prevalence.shape[3])

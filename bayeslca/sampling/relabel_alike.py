@@ -37,8 +37,8 @@ def relabel_alike(
         P(class | answers) of the units in the other fit.
     """
     table = model.table
-    elements = draws.elements.reshape(-1, table.n_elements).copy()
-    prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:]).copy()
+    elements = draws.flat_elements.copy()
+    prevalence = draws.flat_prevalence.copy()
     if model.naming_rules:
         n_groups = table.n_prevalence_rows
         sizes = np.bincount(unit_table.prevalence_row, unit_table.count, minlength=n_groups)

@@ -115,8 +115,8 @@ def influence(
         named = matched_prevalence(
             posterior.model,
             posterior.unit_table,
-            elements.reshape(-1, elements.shape[-1]),
-            prevalence.reshape(-1, *prevalence.shape[2:]),
+            np.concatenate(elements),
+            np.concatenate(prevalence),
             reference,
         )
         return named.reshape(prevalence.shape)

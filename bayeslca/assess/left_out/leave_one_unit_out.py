@@ -223,7 +223,7 @@ def unit_log_likelihood(posterior: Posterior, units: Units, present: Ints, seed:
     step = max(1, -(-draws.n_chains * draws.n_draws // MOST_DRAWS))
     elements = draws.elements[:, ::step]
     shape = elements.shape[:2]
-    flat = elements.reshape(-1, table.n_elements)
+    flat = np.concatenate(elements)
     out = np.empty((*shape, present.size))
     if model.groups is None:  # nothing of the unit's own to sum out
         unit_table = compile_units(table, replace(units, group=np.zeros_like(units.group)))

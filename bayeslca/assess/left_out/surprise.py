@@ -18,6 +18,7 @@ from bayeslca.assess.fit.replicates import spread_draws
 from bayeslca.assess.fit.strata import Strata, strata_of
 from bayeslca.model.compile import compile_units
 from bayeslca.model.probabilities import log_unit_likelihood, row_probability
+from bayeslca.model.simulate import draw_categories
 from bayeslca.responses.units import MISSING, Units, collapse
 
 if TYPE_CHECKING:
@@ -70,7 +71,7 @@ def surprise(posterior: Posterior, log_density: Floats, seed: int) -> Surprise:
     wanted = int(np.clip(MOST_CASES // n_cases, FEWEST_REPLICATES, MOST_REPLICATES))
     draws = posterior.draws
     at = spread_draws(draws.n_draws, draws.n_chains, wanted)
-    elements = draws.elements[:, at].reshape(-1, draws.elements.shape[-1])
+    elements = np.concatenate(draws.elements[:, at])
     prevalence = draws.prevalence[:, at].reshape(-1, *draws.prevalence.shape[2:])
     rows = row_probability(posterior.table, elements)
     codes = _new_cases(posterior, strata, rows, prevalence, np.random.default_rng(seed))
@@ -107,27 +108,20 @@ def _new_cases(
     parts = []
     for s, size in enumerate(strata.size.tolist()):
         shares = prevalence[:, strata.prevalence_row[s]]
-        latent = _categories(
+        latent = draw_categories(
             np.broadcast_to(shares[:, None], (n_draws, size, table.n_classes)), rng
         )
         codes = np.full((n_draws, size, table.n_items), MISSING, dtype=np.int16)
         for f in strata.field[strata.field_start[s] : strata.field_start[s + 1]]:
             answers = fields.row[fields.start[f] : fields.start[f + 1]]
             by_class = np.swapaxes(rows[:, answers], 1, 2)  # (D, K, answers)
-            answer = _categories(by_class[np.arange(n_draws)[:, None], latent], rng)
+            answer = draw_categories(by_class[np.arange(n_draws)[:, None], latent], rng)
             for item, size_of in zip(fields.item[f, ::-1], fields.size[f, ::-1], strict=True):
                 answer, category = np.divmod(answer, size_of)
                 if item >= 0:
                     codes[..., item] = category
         parts.append(codes)
     return np.concatenate(parts, axis=1)
-
-
-def _categories(probability: Floats, rng: np.random.Generator) -> Ints:
-    """Draw a category for each leading place of (..., R)."""
-    cumulated = np.cumsum(probability, axis=-1)
-    at = rng.random(cumulated.shape[:-1])[..., None] * cumulated[..., -1:]
-    return np.asarray((at >= cumulated[..., :-1]).sum(axis=-1))
 
 
 def _scored(posterior: Posterior, strata: Strata, codes: Ints, n_draws: int) -> tuple[Ints, Floats]:
@@ -147,7 +141,7 @@ def _scored(posterior: Posterior, strata: Strata, codes: Ints, n_draws: int) -> 
     log_p = log_unit_likelihood(
         table,
         compile_units(table, seen),
-        draws.elements[:, at].reshape(-1, table.n_elements),
+        np.concatenate(draws.elements[:, at]),
         draws.prevalence[:, at].reshape(-1, *draws.prevalence.shape[2:]),
     )
     density = logsumexp(log_p, axis=0) - np.log(len(log_p))

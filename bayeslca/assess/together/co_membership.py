@@ -309,8 +309,8 @@ def flat_draws(posterior: Posterior) -> tuple[Floats, Floats]:
     """Return the draws of elements (S, E) and prevalences (S, groups, K), chain after chain."""
     draws = posterior.draws
     return (
-        draws.elements.reshape(-1, draws.elements.shape[-1]),
-        draws.prevalence.reshape(-1, *draws.prevalence.shape[2:]),
+        draws.flat_elements,
+        draws.flat_prevalence,
     )
 
 

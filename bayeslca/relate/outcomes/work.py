@@ -111,8 +111,8 @@ class OutcomeWork:
     def membership_draws(self) -> Floats:
         """P(class | answers) of each case at some draws, shape (draw, N, K)."""
         draws, table = self.posterior.draws, self.posterior.table
-        elements = draws.elements.reshape(-1, table.n_elements)
-        prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+        elements = draws.flat_elements
+        prevalence = draws.flat_prevalence
         most = max(FIRST_STEP_DRAWS, min(1000, 40_000_000 // (elements.shape[1] + 1)))
         size = self.cases.units.n_units * table.n_classes
         most = int(np.clip(20_000_000 // size, FIRST_STEP_DRAWS, most))

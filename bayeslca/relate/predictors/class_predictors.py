@@ -430,8 +430,8 @@ def _three_steps(
     counts = responses.counts[kept]
     group = None if posterior.model.groups is None else responses.group_codes[kept]
     draws = posterior.draws
-    flat_elements = draws.elements.reshape(-1, posterior.table.n_elements)
-    flat_prevalence = draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])
+    flat_elements = draws.flat_elements
+    flat_prevalence = draws.flat_prevalence
     step = max(1, len(flat_elements) // FIRST_STEP_DRAWS)
     shares = membership(
         posterior.table, posterior.unit_table, flat_elements[::step], flat_prevalence[::step]

@@ -25,6 +25,7 @@ import numpy as np
 from bayeslca._typing import Floats, Ints
 from bayeslca.findings import Finding
 from bayeslca.model.probabilities import response_probability
+from bayeslca.model.simulate import draw_categories
 from bayeslca.posterior.posterior import Posterior
 from bayeslca.relate.predictors.ways import WayDraws
 from bayeslca.responses.units import MISSING
@@ -161,12 +162,12 @@ class _Point:
 
     def replicate(self, codes: Ints, rows: Ints, rng: np.random.Generator) -> Ints:
         """Draw answers of the cases in ``rows``, missing where ``codes`` are."""
-        latent_class = _draw(self.prevalence[rows], rng)
+        latent_class = draw_categories(self.prevalence[rows], rng)
         out = np.full(codes.shape, MISSING, dtype=np.int64)
         for j in range(codes.shape[1]):
             columns = slice(self.item_start[j], self.item_start[j + 1])
             chance = self.response[self.group[rows], latent_class, columns]
-            out[:, j] = np.where(codes[:, j] == MISSING, MISSING, _draw(chance, rng))
+            out[:, j] = np.where(codes[:, j] == MISSING, MISSING, draw_categories(chance, rng))
         return out
 
     def scores(self, codes: Ints, rows: Ints) -> tuple[Floats, dict[tuple[int, int], Floats]]:
@@ -194,13 +195,6 @@ class _Point:
                 own.append(part[:, :, None])
                 residuals[j, category] = part.sum(axis=1)
         return np.concatenate([part.reshape(len(codes), -1) for part in own], axis=1), residuals
-
-
-def _draw(chance: Floats, rng: np.random.Generator) -> Ints:
-    """Draw one of the columns of each row (n, m) by its chances."""
-    cumulative = chance.cumsum(axis=1)
-    picked = rng.random(len(chance))[:, None] * cumulative[:, -1:]
-    return np.asarray((picked > cumulative[:, :-1]).sum(axis=1), dtype=np.int64)
 
 
 def _holm(p_values: Floats) -> Floats:

@@ -14,7 +14,8 @@ from scipy.special import softmax
 from bayeslca._typing import Floats, Ints
 from bayeslca.exceptions import ModelError
 from bayeslca.model.probabilities import membership
-from bayeslca.relate.plausible_values import classes_from_answers, pick_classes
+from bayeslca.model.simulate import draw_categories
+from bayeslca.relate.plausible_values import classes_from_answers
 from bayeslca.relate.predictors.ways import regression
 
 if TYPE_CHECKING:
@@ -64,7 +65,7 @@ def draw_classes(found: ClassPredictors, number: int, rng: np.random.Generator) 
     for i, s in enumerate(chosen):
         prevalence = softmax(relation.rows @ coefficients[s].T, axis=1)
         shares = membership(posterior.table, relation.cases.units, elements[s], prevalence)
-        out[i, used] = pick_classes(shares[unit], rng)
+        out[i, used] = draw_categories(shares[unit], rng)
     return out
 
 

@@ -143,7 +143,7 @@ def _disagreement(
 def _moved_classes(posterior: Posterior, joint: WayDraws) -> Iterator[Finding]:
     table = posterior.table
     before = posterior.response_probability_draws
-    flat = joint.draws.elements.reshape(-1, table.n_elements)
+    flat = joint.draws.flat_elements
     after = response_probability(table, flat[:: max(1, len(flat) // 1000)]).mean(axis=0)
     change = after - before.mean(axis=(0, 1))
     moved = np.abs(change) * (np.abs(change) > before.std(axis=(0, 1)))
@@ -170,8 +170,8 @@ def _separation(posterior: Posterior, design: Design) -> Iterator[Finding]:
     shares = membership(
         posterior.table,
         posterior.unit_table,
-        draws.elements.reshape(-1, posterior.table.n_elements)[::step],
-        draws.prevalence.reshape(-1, *draws.prevalence.shape[2:])[::step],
+        draws.flat_elements[::step],
+        draws.flat_prevalence[::step],
     ).mean(axis=0)
     unit = posterior.units.unit_of_row[design.used]
     answered = unit >= 0

@@ -97,7 +97,7 @@ def jointly_by_nuts(
     pm_model = predictors_to_pymc(posterior, relation)
     parts = Parts.of(pm_model)
     names = [variable.name for variable in pm_model.free_RVs]
-    flat = posterior.draws.elements.reshape(-1, posterior.table.n_elements)
+    flat = posterior.draws.flat_elements
     at = np.linspace(0, len(flat) - 1, chains).astype(int)
     starts = [_start(parts, elements, relation) for elements in flat[at]]
     seeds = [int(s) for s in seed_sequence(seed).generate_state(chains)]

@@ -188,7 +188,7 @@ def inner_sweeps(
     doubled until the mean autocorrelation of every coefficient from one end to the other is
     below 0.05.
     """
-    elements = posterior.draws.elements.reshape(-1, posterior.table.n_elements)
+    elements = posterior.draws.flat_elements
     at = np.linspace(0, len(elements) - 1, PILOTS).astype(int)
     held = np.repeat(elements[at][:, None], PILOT_DRAWS, axis=1)
     sweeps, step = FIRST_SWEEPS, 5

@@ -166,8 +166,8 @@ def fit_counts(
     """Fit every pseudo-sample (n, unit) by a short chain."""
     model, n = unweighted.model, len(counts)
     task = make_task(model.table, units.cases, model.prevalence_source, model.symmetry)
-    elements = unweighted.draws.elements.reshape(-1, model.table.n_elements)
-    prevalence = unweighted.draws.prevalence.reshape(-1, *unweighted.draws.prevalence.shape[2:])
+    elements = unweighted.draws.flat_elements
+    prevalence = unweighted.draws.flat_prevalence
     children = seed.spawn(n)
     stop = threading.Event()
     meter = _Meter((WARMUP + draws * THIN) * n)

@@ -270,7 +270,7 @@ def _modes(posterior: WeightedPosterior) -> list[Finding]:
     likelihood = posterior.likelihood
     if likelihood is None:
         return []
-    draws = posterior.draws.prevalence.reshape(-1, *posterior.draws.prevalence.shape[2:])
+    draws = posterior.draws.flat_prevalence
     apart = np.abs(draws.mean(axis=0) - likelihood.parameters.prevalence)
     sd = np.maximum(draws.std(axis=0), 1e-12)
     if float(np.max(apart / sd)) < 3.0:

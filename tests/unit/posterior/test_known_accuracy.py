@@ -9,7 +9,7 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.integrate import quad
 
-from bayeslca import Item, LatentClassModel, Responses, log_evidence
+from bayeslca import Item, LatentClassModel, Responses, log_evidence, plausible_values
 from bayeslca.posterior.posterior import Posterior
 
 POSITIVE, N, SENSITIVITY, FALSE_POSITIVE = 40, 200, 0.9, 0.1
@@ -56,3 +56,13 @@ def test_all_tables_are_made_without_free_response_probabilities(posterior: Post
     assert len(posterior.separation()) == 1
     assert posterior.diagnostics().trustworthy
     assert posterior.predictive_checks(replicates=100, seed=1).reproduces
+
+
+def test_the_later_steps_of_a_study_are_done_without_free_response_probabilities(
+    posterior: Posterior,
+) -> None:
+    first, second = posterior.responses.row_names
+    assert posterior.influence(seed=1, progress=False).verdict
+    assert 0 < posterior.co_membership(seed=1).between(first, second) < 1
+    assert posterior.prior_sensitivity(refit=[], seed=1).verdict
+    assert len(plausible_values(posterior, number=2, seed=1)) == N
